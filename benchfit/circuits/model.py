@@ -1,0 +1,202 @@
+"""What a circuit is: a map from parts to the phases of one cycle.
+
+While a phase lasts, the timing node obeys dv/dt = drive − curvature·v: a first-order lag with asymptote
+drive/curvature, or a constant-current ramp where the curvature is 0. It ends when the node crosses the
+phase's threshold, plus a dead time in which it goes on. Everything else in the program knows phases and
+parts, and no circuit by name.
+
+All numbers are arrays of one common (broadcast) shape: a circuit is evaluated for many sets of parts at once.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+Parts = Mapping[str, Array]
+
+
+@dataclass(frozen=True)
+class Part:
+    """Anything the build sheet gives a nominal for.
+
+    Attributes
+    ----------
+    name, unit, says : str
+        Name as in the sheet, base unit, one line of description.
+    coordinate : "log", "linear" or "inverse"
+        The scale in which it is fitted: ln x; x where zero or a sign is possible; 1/x for parts that are
+        absent at infinity (a leak resistance, a slew rate).
+    nominal : str or None
+        Default nominal with tolerance as text, None where the sheet must give one. ``"absent"`` for parasitics.
+    base : callable or None
+        For a default that follows other parts (V_maintain = V_extinguish − 5 V): parts → value. ``nominal`` then
+        holds the spread about it ("± 3 V" or "± 10 %") alone.
+    tolerance : str
+        Tolerance taken when the sheet gives a nominal without one.
+    kind : str
+        "resistor", "capacitor", "supply", "level", "threshold", "ratio", "device", "time", "current" or "parasitic":
+        what sort of thing it is at the bench. Prior odds and next readings go by it.
+    optional : bool
+        The sheet may say "none", or leave it out without a default taking its place.
+    """
+
+    name: str
+    unit: str
+    says: str
+    coordinate: Literal["log", "linear", "inverse"] = "log"
+    nominal: str | None = None
+    base: Callable[[Parts], Array] | None = None
+    tolerance: str = "5 %"
+    kind: str = "resistor"
+    optional: bool = False
+
+
+@dataclass(frozen=True, eq=False)
+class Phase:
+    """One stretch of the cycle: dv/dt = drive − curvature·v until ``threshold``, then on for ``delay``.
+
+    Attributes
+    ----------
+    node : str
+        The node that times this phase.
+    rising : bool
+    drive : Array
+        dv/dt at v = 0 (V/s), that is asymptote/τ.
+    curvature : Array
+        κ = 1/τ (1/s); 0 for a constant-current ramp.
+    threshold : Array
+        Where it ends (V), before the dead time.
+    delay : Array
+        Dead time (s).
+    start : Array or None
+        Voltage at which the circuit makes this phase start; None: where the phase before it ended.
+    jump : Array
+        Step (V) that the node makes as this phase begins.
+    output : "high", "low" or ""
+        State of the output meanwhile; "" where the circuit has none.
+    """
+
+    node: str
+    rising: bool
+    drive: Array
+    curvature: Array
+    threshold: Array
+    delay: Array | float = 0.0
+    start: Array | None = None
+    jump: Array | float = 0.0
+    output: Literal["high", "low", ""] = ""
+
+
+@dataclass(frozen=True, eq=False)
+class Condition:
+    """Something that must hold for the circuit to oscillate: ``margin`` > 0.
+
+    ``says`` is what the built circuit would be seen to do where it fails; ``code`` is "never-reaches",
+    "never-fires", "latched" or "stuck". ``part`` and ``limit`` give the bound on a part that would make it run:
+    ``bound`` "above" means that the part must be above ``limit``.
+    """
+
+    code: str
+    margin: Array
+    says: str
+    part: str = ""
+    limit: Array | None = None
+    bound: Literal["above", "below"] = "below"
+
+
+@dataclass(frozen=True, eq=False)
+class Cycle:
+    """The phases of one cycle in order, the output's levels, and the conditions under which it runs.
+
+    ``levels`` maps "high", "low" (V) and "rise_time", "fall_time" (s, 10 % to 90 %) to what the parts say of the
+    output; what they do not say is left out. ``rests`` maps a node to the level at which it is held while
+    another node's phase lasts. ``remarks`` are sentences (code, mask, says) about a regime that the closed
+    form enters, shown where the mask holds.
+    """
+
+    phases: tuple[Phase, ...]
+    conditions: tuple[Condition, ...] = ()
+    levels: Mapping[str, Array] = None  # type: ignore[assignment]
+    rests: Mapping[str, Array] = None  # type: ignore[assignment]
+    remarks: tuple[tuple[str, NDArray[np.bool_], str], ...] = ()
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "levels", dict(self.levels or {}))
+        object.__setattr__(self, "rests", dict(self.rests or {}))
+
+
+@dataclass(frozen=True)
+class Node:
+    """A place where a probe can be clipped.
+
+    ``shape`` as in the cycle stage's Assignment: "timing", "jumping", "holding" or "square".
+    ``loads`` is true where a probe there loads the circuit (a timing node that is not a low-impedance one).
+    """
+
+    name: str
+    shape: Literal["timing", "jumping", "holding", "square"]
+    says: str
+    loads: bool = False
+
+
+@dataclass(frozen=True)
+class Circuit:
+    """A relaxation-oscillator topology.
+
+    Attributes
+    ----------
+    name, title : str
+        As in the sheet; one line for people.
+    parts : tuple of Part
+        Parasitics included.
+    nodes : tuple of Node
+    cycle : callable
+        parts → Cycle. The parts hold every name of ``parts`` (absent optional ones as NaN-free neutral values: inf
+        resistances, zero voltages) and the probe's ``G_probe:NODE`` (S) and ``C_probe:NODE`` (F) for each node that
+        it can load.
+    swaps : tuple of pairs
+        Parts that are easily exchanged for each other when a board is stuffed.
+    equations : tuple of str
+        For ``benchfit circuits NAME``.
+    drawing : str
+        A small drawing in text.
+    alternatives : tuple of tuples
+        Sets of parts of which the sheet gives one: (("R",), ("R_charge", "R_discharge")).
+    """
+
+    name: str
+    title: str
+    parts: tuple[Part, ...]
+    nodes: tuple[Node, ...]
+    cycle: Callable[[Parts], Cycle]
+    swaps: tuple[tuple[str, str], ...] = ()
+    equations: tuple[str, ...] = ()
+    drawing: str = ""
+    alternatives: tuple[tuple[tuple[str, ...], ...], ...] = ()
+    example: Mapping[str, str] = None  # type: ignore[assignment]
+    hazards: tuple[str, ...] = ()
+
+    def part(self, name: str) -> Part:
+        """The part of that name; KeyError where the circuit has none."""
+        for part in self.parts:
+            if part.name == name:
+                return part
+        raise KeyError(name)
+
+    def node(self, name: str) -> Node:
+        """The node of that name; KeyError where the circuit has none."""
+        for node in self.nodes:
+            if node.name == name:
+                return node
+        raise KeyError(name)
+
+
+def require_example(circuit: Circuit) -> Mapping[str, str]:
+    """The sheet values of a circuit's runnable starter build."""
+    return dict(circuit.example or {})

@@ -1,0 +1,1 @@
+"""Samples → the constants of one cycle with their covariance."""
