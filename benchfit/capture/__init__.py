@@ -1,5 +1,6 @@
 """Captures, and how they are read from any scope's CSV."""
 
 from benchfit.capture.model import Capture, Channel
+from benchfit.capture.read import read
 
-__all__ = ["Capture", "Channel"]
+__all__ = ["Capture", "Channel", "read"]
