@@ -1,18 +1,12 @@
-"""Text ↔ value with unit and tolerance: the one place that knows how a value is written.
-
-A value is a number with an SI prefix and a unit ("4.7 kΩ", "0.1 uF"), or an RKM code ("4k7", IEC 60062); a
-tolerance may follow it. SI prefixes are case-sensitive. What is left over after that is an error, never ignored.
-"""
+"""Text → value with unit and tolerance."""
 
 from __future__ import annotations
 
 import math
 import re
-from dataclasses import dataclass, replace
 
 from benchfit.errors import QuantityError
-
-__all__ = ["Spread", "Toleranced", "duration", "parse", "parse_spread", "percent", "si"]
+from benchfit.quantity.value import Spread, Toleranced
 
 _UNITS = {
     "Ω": ("Ω", "\u2126", "ohm", "Ohm"),
@@ -57,77 +51,13 @@ _SIGNED = rf"[+-]?{_NUMBER}"
 _SHARES = {"%": 1e-2, "ppm": 1e-6}
 
 
-@dataclass(frozen=True)
-class Toleranced:
-    """A value with its limits.
-
-    Attributes
-    ----------
-    nominal, low, high : float
-        In ``unit`` (base SI); low ≤ nominal ≤ high.
-    unit : str
-        "Ω", "F", "V", "A", "s", "Hz", "S", "K", "°C", "V/s", "1/V", or "" for a ratio.
-    stated : bool
-        A tolerance stood in the text; else the limits are a default (or the nominal itself).
-    text : str
-        As it was written.
-    """
-
-    nominal: float
-    low: float
-    high: float
-    unit: str
-    stated: bool
-    text: str
-
-    @property
-    def is_exact(self) -> bool:
-        """Whether the limits leave it no room."""
-        return self.low == self.high
-
-    def prior_linear(self) -> tuple[float, float]:
-        """Mean and standard deviation of the rectangle between the limits (JCGM 100:2008, 4.3.7), in ``unit``."""
-        return 0.5 * (self.low + self.high), (self.high - self.low) / math.sqrt(12)
-
-    def prior_log(self) -> tuple[float, float]:
-        """Mean and standard deviation of ln x, a rectangle between ln low and ln high.
-
-        Raises
-        ------
-        QuantityError
-            Where the lower limit is not above 0.
-        """
-        if self.low <= 0:
-            raise QuantityError(f'"{self.text}": the lower limit must be above 0', text=self.text)
-        low, high = math.log(self.low), math.log(self.high)
-        return 0.5 * (low + high), (high - low) / math.sqrt(12)
-
-    def reciprocal(self, unit: str) -> Toleranced:
-        """1/x with the limits exchanged: a period as a frequency. The value must not reach 0."""
-        if self.low * self.high <= 0:
-            raise QuantityError(f'"{self.text}": must not reach 0', text=self.text)
-        return replace(self, nominal=1 / self.nominal, low=1 / self.high, high=1 / self.low, unit=unit)
-
-
-@dataclass(frozen=True)
-class Spread:
-    """A tolerance alone: how far below and above a nominal (both ≥ 0), as fractions of it or in ``unit``."""
-
-    down: float
-    up: float
-    is_relative: bool
-    unit: str
-    text: str
-
-    def about(self, nominal: float, *, stated: bool = False, text: str = "") -> Toleranced:
-        """The nominal (in ``unit``) with this spread about it."""
-        scale = abs(nominal) if self.is_relative else 1.0
-        low, high = nominal - self.down * scale, nominal + self.up * scale
-        return Toleranced(nominal, low, high, self.unit, stated, text or self.text)
-
-
 def parse(
-    text_or_number: object, unit: str, *, key: str = "", default_tolerance: str | None = None, ratio: bool = False
+    text_or_number: object,
+    unit: str,
+    *,
+    key: str = "",
+    default_tolerance: str | None = None,
+    ratio: bool = False,
 ) -> Toleranced:
     """A value with its tolerance, in the base unit.
 
@@ -140,7 +70,7 @@ def parse(
     key : str
         What the value is of, for the error's sentence.
     default_tolerance : str, optional
-        Tolerance ("5 %", "± 3 V") that is taken where the text has none; without it the limits are the nominal.
+        Tolerance ("5 %", "± 3 V") taken where the text has none; without it the limits are the nominal.
     ratio : bool
         The value is a ratio; the same as a unit of "". A ratio may be written with % or ppm, and a tolerance
         in per cent is still a share of the value: "50 % ± 2 %" is 0.49 to 0.51.
@@ -161,7 +91,7 @@ def parse(
 
 
 def parse_spread(text: str, unit: str, *, key: str = "") -> Spread:
-    """A tolerance alone ("± 3 V", "10 %", "-60 %/+200 %", "J"), relative to a nominal that is computed elsewhere.
+    """A tolerance alone ("± 3 V", "10 %", "-60 %/+200 %", "J") of a nominal that is computed elsewhere.
 
     Raises
     ------
@@ -177,7 +107,7 @@ def parse_spread(text: str, unit: str, *, key: str = "") -> Spread:
 
 
 def duration(text_or_number: object, *, key: str = "") -> float:
-    """A stretch of time on a command line, in s: "60s", "5m", "48h", "2d", "1h30m", "500ms", or a number of seconds.
+    """A stretch of time on a command line, in s: "60s", "5m", "48h", "1h30m", "500ms", or a number of s.
 
     Here m is minutes, as clocks have it; :func:`parse` has the SI's m.
     """
@@ -283,7 +213,7 @@ class _Reader:
         return _scaled(f"{coded[1]}{coded[2] or '0'}.{coded[4]}", factor)
 
     def mark(self, letter: str) -> float | None:
-        """The factor of a letter that stands for the decimal mark (IEC 60062; the V of 3V3 is common practice)."""
+        """The factor of a letter in place of the decimal mark (IEC 60062; the V of 3V3 is common practice)."""
         if letter == "R":
             return 1.0 if self.unit == "Ω" else None
         if letter == "K":
@@ -366,7 +296,8 @@ class _Reader:
         kind = f"a value in {self.unit}" if self.unit else "a ratio"
         shown = f'"{self.given}"' if isinstance(self.given, str) else repr(self.given)
         return QuantityError(
-            f"{_of(self.key)}{shown} is not {kind}{f' ({why})' if why else ''}; write {base}, or text such as {examples}",
+            f"{_of(self.key)}{shown} is not {kind}{f' ({why})' if why else ''}; "
+            f"write {base}, or text such as {examples}",
             text=str(self.given), key=self.key, expected=examples,
         )  # fmt: skip
 
@@ -396,80 +327,7 @@ def _slope(suffix: str) -> float | None:
 
 
 def _scaled(number: str, factor: float) -> float:
-    """number · factor, rounded once: "33.2" n is the double nearest to 33.2e-9, not 33.2 times that of 1e-9."""
+    """number · factor, rounded once: 33.2 n is the double nearest to 33.2e-9, not 33.2 times that of 1e-9."""
     exponent = round(math.log10(factor))
     mantissa, _, power = number.lower().partition("e")
     return float(f"{mantissa}e{int(power or 0) + exponent}")
-
-
-_STEPS = (("f", -15), ("p", -12), ("n", -9), ("µ", -6), ("m", -3), ("", 0), ("k", 3), ("M", 6), ("G", 9), ("T", 12))
-_UNKNOWN = "unknown"
-
-
-def si(value: float, unit: str, u: float | None = None, k: float = 2) -> str:
-    """A value with its expanded uncertainty U = k·u and an SI prefix, as "4.702 ± 0.011 kΩ".
-
-    U has two significant digits and the value as many decimals (JCGM 100:2008, 7.2.6); without u the value has four
-    significant digits. The prefix goes by the value (by U where that is larger). What is not finite is "unknown".
-    """
-    if not math.isfinite(value):
-        return _UNKNOWN
-    half = _expanded(u, k)
-    size = max(abs(value), half)
-    if unit in ("", "1", "°C", "1/V", "%"):
-        prefix, exponent = "", 0
-    elif unit == "V/s" and size >= 1e3:
-        return si(value * 1e-6, "V/µs", u and u * 1e-6, k) if size >= 1e5 else si(value * 1e-3, "V/ms", u and u * 1e-3, k)
-    elif unit.startswith("V/") and unit != "V/s":
-        prefix, exponent = "", 0
-    else:
-        prefix, exponent = _prefix(value, half)
-    name = "" if unit == "1" else unit
-    number = _with_half(value, half, exponent)
-    return f"{number} {prefix}{name}".rstrip()
-
-
-def percent(x: float, u: float | None = None, *, k: float = 2, signed: bool = False) -> str:
-    """A fraction in per cent with its expanded uncertainty, as "16.2 ± 0.4 %"; ``signed`` shows a plus sign."""
-    if not math.isfinite(x):
-        return _UNKNOWN
-    text = _with_half(x, _expanded(u, k), -2, digits=3)
-    return f"{'+' if signed and x > 0 else ''}{text} %"
-
-
-def _expanded(u: float | None, k: float) -> float:
-    return k * abs(u) if u is not None and math.isfinite(u) else 0.0
-
-
-def _prefix(value: float, half: float) -> tuple[str, int]:
-    """The SI prefix with which the number as printed has one to three digits before the point."""
-    size = max(abs(value), half)
-    if size == 0:
-        return "", 0
-    decimals = _decimals(half, size)
-    size = max(float(f"{size:.4g}"), round(size, decimals)) if half == 0 else round(size, decimals)
-    fitting = [step for step in _STEPS if size >= 10 ** step[1] * (1 - 1e-12)]
-    return fitting[-1] if fitting else _STEPS[0]
-
-
-def _decimals(half: float, size: float, digits: int = 4) -> int:
-    """Decimals (of the base unit) that show U to two significant digits, or ``digits`` of a value without U."""
-    if half > 0:
-        shown = float(f"{half:.1e}")
-        return 1 - math.floor(math.log10(shown) + 1e-12)
-    return digits - 1 - math.floor(math.log10(size) + 1e-12) if size > 0 else 0
-
-
-def _with_half(value: float, half: float, exponent: int, digits: int = 4) -> str:
-    """The value (± U) in units of 10^exponent."""
-    scaled, half = value / 10.0**exponent, half / 10.0**exponent
-    decimals = _decimals(half, abs(scaled), digits)
-    if half == 0:
-        if scaled != 0 and not 1e-4 <= abs(scaled) < 1e6:
-            return f"{scaled:.{digits - 1}e}"
-        text = f"{scaled:.{digits}g}" if abs(scaled) < 10 ** (digits - 1) else f"{scaled:.0f}"
-        return text
-    if not 1e-12 <= half or abs(scaled) >= 1e15:
-        return f"{scaled:.6e} ± {half:.1e}"
-    shown = max(decimals, 0)
-    return f"{round(scaled, decimals) + 0.0:.{shown}f} ± {round(half, decimals):.{shown}f}"
