@@ -11,7 +11,7 @@ All numbers are arrays of one common (broadcast) shape: a circuit is evaluated f
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
@@ -44,6 +44,9 @@ class Part:
         what sort of thing it is at the bench. Prior odds and next readings go by it.
     optional : bool
         The sheet may say "none", or leave it out without a default taking its place.
+    reach : callable or None
+        Range (low, high) in which a fault of this part is looked for, from the nominal parts and
+        ``p["period"]``; None: the usual range of its kind.
     """
 
     name: str
@@ -55,6 +58,7 @@ class Part:
     tolerance: str = "5 %"
     kind: str = "resistor"
     optional: bool = False
+    reach: Callable[[Parts], tuple[float, float]] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -76,8 +80,10 @@ class Phase:
         Dead time (s).
     start : Array or None
         Voltage at which the circuit makes this phase start; None: where the phase before it ended.
-    jump : Array
-        Step (V) that the node makes as this phase begins.
+    gain, jump : Array
+        The phase starts at gain·v + jump (V), v being where the phase before it ended: a step at the corner.
+    slope : Array
+        Relative change of the capacitance per volt (1/V): C = C_0·(1 + slope·v), κ and drive being those of C_0.
     output : "high", "low" or ""
         State of the output meanwhile; "" where the circuit has none.
     """
@@ -89,25 +95,26 @@ class Phase:
     threshold: Array
     delay: Array | float = 0.0
     start: Array | None = None
+    gain: Array | float = 1.0
     jump: Array | float = 0.0
+    slope: Array | float = 0.0
     output: Literal["high", "low", ""] = ""
 
 
 @dataclass(frozen=True, eq=False)
 class Condition:
-    """Something that must hold for the circuit to oscillate: ``margin`` > 0.
+    """Something that must hold for the circuit to oscillate: ``margin`` > 0 (in volts or amperes).
 
-    ``says`` is what the built circuit would be seen to do where it fails; ``code`` is "never-reaches",
-    "never-fires", "latched" or "stuck". ``part`` and ``limit`` give the bound on a part that would make it run:
-    ``bound`` "above" means that the part must be above ``limit``.
+    ``says`` is what the built circuit is seen to do where it fails; ``code`` is "never-reaches", "never-fires",
+    "latched" or "stuck"; ``part`` the part whose change most simply makes it run; ``rests`` the voltage at which
+    the timing node is then found.
     """
 
     code: str
     margin: Array
     says: str
     part: str = ""
-    limit: Array | None = None
-    bound: Literal["above", "below"] = "below"
+    rests: Array | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -122,13 +129,9 @@ class Cycle:
 
     phases: tuple[Phase, ...]
     conditions: tuple[Condition, ...] = ()
-    levels: Mapping[str, Array] = None  # type: ignore[assignment]
-    rests: Mapping[str, Array] = None  # type: ignore[assignment]
+    levels: Mapping[str, Array] = field(default_factory=dict)
+    rests: Mapping[str, Array] = field(default_factory=dict)
     remarks: tuple[tuple[str, NDArray[np.bool_], str], ...] = ()
-
-    def __post_init__(self) -> None:
-        object.__setattr__(self, "levels", dict(self.levels or {}))
-        object.__setattr__(self, "rests", dict(self.rests or {}))
 
 
 @dataclass(frozen=True)
@@ -154,12 +157,12 @@ class Circuit:
     name, title : str
         As in the sheet; one line for people.
     parts : tuple of Part
-        Parasitics included.
+        Parasitics included. The names that ``cycle`` receives are those that the build has; an optional part that
+        it has not is missing from the mapping, a parasitic never is.
     nodes : tuple of Node
     cycle : callable
-        parts → Cycle. The parts hold every name of ``parts`` (absent optional ones as NaN-free neutral values: inf
-        resistances, zero voltages) and the probe's ``G_probe:NODE`` (S) and ``C_probe:NODE`` (F) for each node that
-        it can load.
+        parts → Cycle. Besides the parts it receives the probe's ``G_probe:NODE`` (S) and ``C_probe:NODE`` (F) for
+        each node that a probe can load (left out where there is none).
     swaps : tuple of pairs
         Parts that are easily exchanged for each other when a board is stuffed.
     equations : tuple of str
@@ -168,6 +171,12 @@ class Circuit:
         A small drawing in text.
     alternatives : tuple of tuples
         Sets of parts of which the sheet gives one: (("R",), ("R_charge", "R_discharge")).
+    example : mapping
+        Part name → text of a starter build that runs as it stands.
+    hazards : tuple of str
+        Cautions that belong to this circuit.
+    aliases : mapping
+        Other names for nodes: {"output": "collector1"}.
     """
 
     name: str
@@ -179,8 +188,9 @@ class Circuit:
     equations: tuple[str, ...] = ()
     drawing: str = ""
     alternatives: tuple[tuple[tuple[str, ...], ...], ...] = ()
-    example: Mapping[str, str] = None  # type: ignore[assignment]
+    example: Mapping[str, str] = field(default_factory=dict)
     hazards: tuple[str, ...] = ()
+    aliases: Mapping[str, str] = field(default_factory=dict)
 
     def part(self, name: str) -> Part:
         """The part of that name; KeyError where the circuit has none."""
@@ -191,12 +201,9 @@ class Circuit:
 
     def node(self, name: str) -> Node:
         """The node of that name; KeyError where the circuit has none."""
+        name = self.aliases.get(name, name)
         for node in self.nodes:
             if node.name == name:
                 return node
         raise KeyError(name)
 
-
-def require_example(circuit: Circuit) -> Mapping[str, str]:
-    """The sheet values of a circuit's runnable starter build."""
-    return dict(circuit.example or {})

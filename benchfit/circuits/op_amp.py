@@ -1,0 +1,105 @@
+"""Op-amp or comparator astable: an inverting hysteresis switch that charges its own capacitor through R."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from benchfit.circuits.lag import lag, parasitics, phase, slewing
+from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Node, Part, Parts
+
+_NONE = np.float64(np.inf)
+
+
+def _threshold(p: Parts, output: Array, r_top: Array) -> Array:
+    """Voltage at the + input while the output is at ``output`` (Millman's theorem over three arms)."""
+    bias = 1 / p.get("R_bias", _NONE)
+    top, bottom = 1 / r_top, 1 / p["R_bottom"]
+    current = output * top + p["V_reference"] * bottom + p.get("supply", np.float64(0.0)) * bias
+    return current / (top + bottom + bias)
+
+
+def _cycle(p: Parts) -> Cycle:
+    high, low = p["V_high"], p["V_low"]
+    pull = p.get("R_pull", np.float64(0.0))
+    if "R" in p:
+        r_charge = r_discharge = p["R"]
+        to, from_ = high, low
+    else:
+        r_charge, r_discharge = p["R_charge"], p["R_discharge"]
+        to, from_ = high - p["V_diode"], low + p["V_diode"]
+    upper = _threshold(p, high, p["R_top"] + pull)
+    lower = _threshold(p, low, p["R_top"])
+    up = lag(p, (1 / (r_charge + pull), to))
+    down = lag(p, (1 / r_discharge, from_))
+    swing = high - low
+    # The drive of a phase is late by the slewing of the edge that begins it: the phase before runs on meanwhile.
+    falling = p["delay"] + slewing(swing, p["slew"], down.curvature)
+    rising = p["delay"] + slewing(swing, p["slew"], up.curvature)
+    resistor = "R" if "R" in p else "R_charge"
+    levels = {} if "R_pull" in p else {"high": high, "low": low}
+    if np.all(np.isfinite(p["slew"])):
+        levels["rise_time"] = levels["fall_time"] = 0.8 * swing / p["slew"]
+    return Cycle(
+        phases=(
+            phase(up, upper, rising=True, before=down, delay=falling, output="high"),
+            phase(down, lower, rising=False, before=up, delay=rising, output="low"),
+        ),
+        conditions=(
+            Condition("never-reaches", up.asymptote - upper,
+                      "the capacitor stops charging below the upper threshold; the output stays high",
+                      resistor, up.asymptote),
+            Condition("never-reaches", lower - down.asymptote,
+                      "the capacitor stops discharging above the lower threshold; the output stays low",
+                      resistor if "R" in p else "R_discharge", down.asymptote),
+            Condition("stuck", upper - lower, "there is no hysteresis: the output rests near the reference",
+                      "R_top", 0.5 * (upper + lower)),
+        ),
+        levels=levels,
+    )
+
+
+CIRCUIT = Circuit(
+    name="op-amp",
+    title="op-amp or comparator astable (hysteresis on the + input, R from output to − input, C to ground)",
+    parts=(
+        Part("R", "Ω", "timing resistor, output to − input"),
+        Part("C", "F", "timing capacitor, − input to ground", tolerance="10 %", kind="capacitor"),
+        Part("R_top", "Ω", "hysteresis divider, output to + input", tolerance="5 %"),
+        Part("R_bottom", "Ω", "hysteresis divider, + input to the reference", tolerance="5 %"),
+        Part("V_reference", "V", "reference at the divider's foot", "linear", "0 V ± 0 V", None, "5 %", "supply"),
+        Part("V_high", "V", "output high level", "linear", None, None, "5 %", "level"),
+        Part("V_low", "V", "output low level", "linear", None, None, "5 %", "level"),
+        Part("R_bias", "Ω", "from the + input to the supply", optional=True),
+        Part("supply", "V", "supply that R_bias goes to", "log", None, None, "5 %", "supply", True),
+        Part("R_pull", "Ω", "pull-up of an open-collector output; V_high is then the supply", optional=True),
+        Part("R_charge", "Ω", "timing resistor of the charge, with steering diodes"),
+        Part("R_discharge", "Ω", "timing resistor of the discharge, with steering diodes"),
+        Part("V_diode", "V", "drop of a steering diode", "linear", "0.6 V ± 0.1 V", None, "15 %", "device", True),
+        *parasitics("R", "R_charge", slew=True),
+    ),
+    nodes=(
+        Node("capacitor", "timing", "the − input, where the capacitor sits", True),
+        Node("output", "square", "the output"),
+    ),
+    cycle=_cycle,
+    swaps=(("R_top", "R_bottom"), ("R_charge", "R_discharge"), ("R", "R_top"), ("R", "R_bottom")),
+    alternatives=((("R",), ("R_charge", "R_discharge")),),
+    equations=(
+        "charge:    A = V_high, τ = R·C, until E_up = (V_high/R_top + V_reference/R_bottom)/(1/R_top + 1/R_bottom)",
+        "discharge: A = V_low,  τ = R·C, until E_down, likewise with V_low",
+        "T = R·C·{ln[(V_high − E_down)/(V_high − E_up)] + ln[(E_up − V_low)/(E_down − V_low)]}",
+    ),
+    drawing="""\
+            ┌────── R ───────┐
+            │    ┌─────┐     │
+       C ───┴────┤−    │     │
+       │         │     ├─────┼── output
+      ───    ┌───┤+    │     │
+      gnd    │   └─────┘     │
+             ├──── R_top ────┘
+             R_bottom
+             │
+             V_reference""",
+    example={"R": "10k 1%", "C": "100n 5%", "R_top": "10k 1%", "R_bottom": "10k 1%",
+             "V_high": "13.5 V 5%", "V_low": "-13.5 V 5%"},
+)
