@@ -1,0 +1,1 @@
+"""What helps people work on the project: test benches, sample makers, studies, set-up scripts."""
