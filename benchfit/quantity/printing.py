@@ -13,9 +13,9 @@ _UNKNOWN = "unknown"
 def si(value: float, unit: str, u: float | None = None, k: float = 2) -> str:
     """A value with its expanded uncertainty U = k·u and an SI prefix, as "4.702 ± 0.011 kΩ".
 
-    U has two significant digits and the value as many decimals (JCGM 100:2008, 7.2.6); without u the value has
-    four significant digits. The prefix goes by the value (by U where that is larger). What is not finite is
-    "unknown".
+    U has two significant digits and the value as many decimals (JCGM 100:2008, 7.2.6); without u the value
+    has four significant digits. The prefix goes by the value (by U where that is larger). What is not finite
+    is "unknown".
     """
     if not math.isfinite(value):
         return _UNKNOWN
@@ -36,7 +36,7 @@ def si(value: float, unit: str, u: float | None = None, k: float = 2) -> str:
 
 
 def percent(x: float, u: float | None = None, *, k: float = 2, signed: bool = False) -> str:
-    """A fraction in per cent with its expanded uncertainty, as "16.20 ± 0.40 %"; ``signed``: with plus sign."""
+    """A fraction in per cent with its expanded uncertainty, as "16.20 ± 0.40 %"; ``signed``: with a plus."""
     if not math.isfinite(x):
         return _UNKNOWN
     text = _with_half(x, _expanded(u, k), -2, digits=3)

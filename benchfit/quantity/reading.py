@@ -48,6 +48,7 @@ _LETTERS = {
 _PICOFARAD_LETTERS = {"B": 0.1, "C": 0.25, "D": 0.5, "F": 1.0, "G": 2.0}  # of capacitors under 10 pF, in pF
 _NUMBER = r"(?:\d+(?:\.\d+)?|\.\d+)(?:[eE][+-]?\d+)?"
 _SIGNED = rf"[+-]?{_NUMBER}"
+_LIMIT = r"[^,]*?[^,.]"
 _SHARES = {"%": 1e-2, "ppm": 1e-6}
 
 
@@ -66,13 +67,13 @@ def parse(
     text_or_number : str, int or float
         As in a build sheet; a bare number is in the base unit (a ratio as a fraction).
     unit : str
-        Base unit that is wanted, "" for a ratio.
+        Base unit that is wanted, "" or "1" for a ratio.
     key : str
         What the value is of, for the error's sentence.
     default_tolerance : str, optional
         Tolerance ("5 %", "± 3 V") taken where the text has none; without it the limits are the nominal.
     ratio : bool
-        The value is a ratio; the same as a unit of "". A ratio may be written with % or ppm, and a tolerance
+        The value is a ratio; the same as a unit of "1". A ratio may be written with % or ppm, and a tolerance
         in per cent is still a share of the value: "50 % ± 2 %" is 0.49 to 0.51.
 
     Raises
@@ -82,7 +83,7 @@ def parse(
 
     Source: SI brochure (prefixes), IEC 60062:2016 (RKM code and tolerance letters).
     """
-    reader = _Reader("" if ratio or unit == "1" else _canonical(unit), key, text_or_number)
+    reader = _Reader("1" if ratio else _canonical(unit), key, text_or_number)
     found = reader.read()
     if found.stated or default_tolerance is None:
         return found
@@ -98,10 +99,10 @@ def parse_spread(text: str, unit: str, *, key: str = "") -> Spread:
     QuantityError
         Where the text is no tolerance of a quantity in ``unit``.
     """
-    reader = _Reader("" if unit == "1" else _canonical(unit), key, text)
+    reader = _Reader(_canonical(unit), key, text)
     spread = reader.spread(reader.clean)
     if spread is None:
-        expected = '"± 10 %"' + (f', "± 3 {reader.unit}"' if reader.unit else "") + ' or "-20 %/+80 %"'
+        expected = '"± 10 %"' + (f', "± 3 {reader.unit}"' if reader.unit != "1" else "") + ' or "-20 %/+80 %"'
         raise QuantityError(f'{_of(key)}"{text}" is not a tolerance; write {expected}', text=text, key=key)
     return spread
 
@@ -134,9 +135,9 @@ class _Reader:
             raise self.refusal()
         if not isinstance(self.given, str):
             return self.toleranced(float(self.given), None)
-        limits = re.fullmatch(r"(.*[^.])\.\.([^.].*)", self.clean)
+        limits = re.fullmatch(rf"(?:(.+?), )?({_LIMIT})\.\.(?!\.)({_LIMIT})", self.clean)
         if limits:
-            return self.limits(limits[1].strip(), limits[2].strip())
+            return self.limits(limits[1], limits[2].strip(), limits[3].strip())
         whole = self.value(self.clean)
         if whole is not None:
             return self.toleranced(whole, None)
@@ -161,20 +162,23 @@ class _Reader:
         found = (re.fullmatch(pattern, self.clean) for pattern in patterns)
         return [(m[1], m[2]) for m in found if m]
 
-    def limits(self, first: str, second: str) -> Toleranced:
-        """"60..80 V": the nominal is the middle; a bare first limit takes the second one's unit."""
+    def limits(self, nominal: str | None, first: str, second: str) -> Toleranced:
+        """"60..80 V": the nominal is the middle, unless it stands before ("0.05 V, 0 .. 0.2 V")."""
         low, high = self.pair(first, second)
-        if low is None or high is None:
+        middle = self.value(nominal) if nominal else None
+        if low is None or high is None or (nominal and middle is None):
             raise self.refusal()
-        if not low <= high:
-            raise self.refusal("the lower limit stands first")
-        return Toleranced(0.5 * (low + high), low, high, self.unit, True, str(self.given))
+        if middle is None:
+            middle = 0.5 * (low + high)
+        if not low <= middle <= high:
+            raise self.refusal("the lower limit stands first, and the nominal lies between them")
+        return Toleranced(middle, low, high, self.unit, True, str(self.given))
 
     def pair(self, first: str, second: str) -> tuple[float | None, float | None]:
         """Two values of one unit, which the first may leave to the second."""
         high = self.value(second)
         if not re.fullmatch(_SIGNED, first):
-            is_bare = re.fullmatch(_SIGNED, second) is not None and self.unit != "" and high != 0
+            is_bare = re.fullmatch(_SIGNED, second) is not None and self.unit != "1" and high != 0
             return (None, None) if is_bare else (self.value(first), high)
         unit = re.fullmatch(rf"{_SIGNED}( ?[^\d ]*)", second)
         return self.value(first + unit[1] if unit else first), high
@@ -182,7 +186,7 @@ class _Reader:
     def shared(self, head: str, tail: str) -> Toleranced | None:
         """"4.702 ± 0.011 kΩ": a bare value takes the unit that follows its tolerance."""
         match = re.fullmatch(r"(?:±|\+/-|\+-)\s*(.+)", tail)
-        if not match or self.unit == "" or not re.fullmatch(_SIGNED, head):
+        if not match or self.unit == "1" or not re.fullmatch(_SIGNED, head):
             return None
         value, half = self.pair(head, match[1])
         if value is None or half is None or re.fullmatch(_SIGNED, match[1]):
@@ -205,7 +209,7 @@ class _Reader:
             factor = self.factor(plain[2], is_spaced=" " in text)
             return None if factor is None else _scaled(plain[1], factor)
         coded = re.fullmatch(r"([+-]?)(\d*)([^\d\s.+-])(\d+) ?([^\d ]*)", text)
-        if not coded or self.unit == "":
+        if not coded or self.unit == "1":
             return None
         factor = self.mark(coded[3])
         if factor is None or (coded[5] and coded[5] not in _UNITS[self.unit]):
@@ -213,7 +217,7 @@ class _Reader:
         return _scaled(f"{coded[1]}{coded[2] or '0'}.{coded[4]}", factor)
 
     def mark(self, letter: str) -> float | None:
-        """The factor of a letter in place of the decimal mark (IEC 60062; the V of 3V3 is common practice)."""
+        """The factor of a letter in place of the decimal mark (IEC 60062; the V of 3V3: common practice)."""
         if letter == "R":
             return 1.0 if self.unit == "Ω" else None
         if letter == "K":
@@ -226,7 +230,7 @@ class _Reader:
         """The factor to the base unit of what follows a number; None where it is no prefix and unit of it."""
         if not suffix:
             return 1.0
-        if self.unit == "":
+        if self.unit == "1":
             return _SHARES.get(suffix)
         if is_spaced and suffix in ("M", "G", "T", "K") and self.unit in ("Ω", "F", "K"):
             raise self.refusal(f"{suffix} after a space may be a prefix or a tolerance letter")
@@ -272,7 +276,7 @@ class _Reader:
         if not may_be_absolute:
             return None
         bare = re.fullmatch(_NUMBER, text) is not None
-        if bare and self.unit != "" and float(text) != 0:
+        if bare and self.unit != "1" and float(text) != 0:
             return None
         value = self.value(text)
         return None if value is None or value < 0 else (value, False)
@@ -292,8 +296,9 @@ class _Reader:
 
     def refusal(self, why: str = "") -> QuantityError:
         examples = _EXAMPLES.get(self.unit, '"0.63", "50 %", "0.63 ± 5%"')
-        base = f"a number in {self.unit}" if self.unit else "a fraction"
-        kind = f"a value in {self.unit}" if self.unit else "a ratio"
+        is_ratio = self.unit == "1"
+        base = "a fraction" if is_ratio else f"a number in {self.unit}"
+        kind = "a ratio" if is_ratio else f"a value in {self.unit}"
         shown = f'"{self.given}"' if isinstance(self.given, str) else repr(self.given)
         return QuantityError(
             f"{_of(self.key)}{shown} is not {kind}{f' ({why})' if why else ''}; "
@@ -307,9 +312,9 @@ def _of(key: str) -> str:
 
 
 def _canonical(unit: str) -> str:
-    """The unit by its own spelling; units that no prefix table knows (compound ones) are kept as they are."""
-    if unit == "":
-        return unit
+    """The unit in the spelling that results carry."""
+    if unit in ("", "1"):
+        return "1"
     for name, spellings in _UNITS.items():
         if unit in spellings:
             return name

@@ -17,7 +17,7 @@ class Toleranced:
     nominal, low, high : float
         In ``unit`` (base SI); low ≤ nominal ≤ high.
     unit : str
-        "Ω", "F", "V", "A", "s", "Hz", "S", "K", "°C", "V/s", "1/V", or "" for a ratio.
+        "Ω", "F", "V", "A", "s", "Hz", "S", "K", "°C", "V/s", "1/V", or "1" for a ratio.
     stated : bool
         A tolerance stood in the text; else the limits are a default (or the nominal itself).
     text : str
@@ -37,7 +37,7 @@ class Toleranced:
         return self.low == self.high
 
     def prior_linear(self) -> tuple[float, float]:
-        """Mean and standard deviation (in ``unit``) of the rectangle between the limits: JCGM 100:2008, 4.3.7."""
+        """Mean and standard deviation (in ``unit``) of the rectangle between the limits: JCGM 100, 4.3.7."""
         return 0.5 * (self.low + self.high), (self.high - self.low) / math.sqrt(12)
 
     def prior_log(self) -> tuple[float, float]:
