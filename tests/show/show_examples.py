@@ -122,7 +122,7 @@ def healthy() -> Explanation:
         circuit="schmitt-inverter",
         title="Seed tray mister",
         parts=(
-            part("R", "Ohm", 100e3, 100.9e3, 1.1e3, "build sheet", 0.02),
+            part("R", "Ω", 100e3, 100.9e3, 1.1e3, "build sheet", 0.02),
             part("C", "F", 220e-9, 214e-9, 3.1e-9, "capture"),
             part("V_upper", "V", 2.9, 2.904, 0.032, "capture", 0.1),
             part("V_lower", "V", 1.9, 1.877, 0.021, "capture", 0.1),
@@ -177,8 +177,8 @@ def fault_settled() -> Explanation:
         title="Greenhouse fan chopper",
         parts=(
             part("supply", "V", 5.0, 5.01, 0.05, "build sheet", 0.02),
-            part("RA", "Ohm", 22e3, 32.8e3, 260.0),
-            part("RB", "Ohm", 33e3, 22.3e3, 180.0),
+            part("RA", "Ω", 22e3, 32.8e3, 260.0),
+            part("RB", "Ω", 33e3, 22.3e3, 180.0),
             part("C", "F", 1e-6, 1.004e-6, 8e-9, "capture", 0.1),
             part("k_upper", "", 2 / 3, 0.669, 0.004),
             part("k_lower", "", 1 / 3, 0.3315, 0.003, "capture", 0.08),
@@ -260,10 +260,10 @@ def unsettled() -> Explanation:
         circuit="op-amp",
         title="Tide gauge beeper",
         parts=(
-            part("R", "Ohm", 10e3, 10.4e3, 520.0, "build sheet"),
+            part("R", "Ω", 10e3, 10.4e3, 520.0, "build sheet"),
             part("C", "F", 85e-9, 97.3e-9, 4.9e-9, "capture", 0.1),
-            part("R_top", "Ohm", 10e3, 9.98e3, 60.0, "build sheet", 0.01),
-            part("R_bottom", "Ohm", 10e3, 10.02e3, 60.0, "build sheet", 0.01),
+            part("R_top", "Ω", 10e3, 9.98e3, 60.0, "build sheet", 0.01),
+            part("R_bottom", "Ω", 10e3, 10.02e3, 60.0, "build sheet", 0.01),
             part("V_high", "V", 13.0, 12.9, 0.21, "capture", 0.1),
             part("V_low", "V", -13.0, -12.4, 0.2, "capture", 0.1),
             PartFound("slew", 0.51e6, 0.03e6, "V/s", None, None, None, None, "capture"),
@@ -329,10 +329,10 @@ def no_oscillation() -> Explanation:
         title="Mast beacon flasher",
         parts=(
             part("supply", "V", 125.0, 124.7, 1.4, "build sheet", 0.02),
-            part("R", "Ohm", 1.1e6, 1.104e6, 31e3, "build sheet"),
+            part("R", "Ω", 1.1e6, 1.104e6, 31e3, "build sheet"),
             part("C", "F", 120e-9, 126e-9, 7e-9, "capture", 0.1),
             part("V_strike", "V", 90.0, 91.3, 3.8, "build sheet", 0.08),
-            PartFound("R_leak", 2.24e6, 0.15e6, "Ohm", None, None, None, None, "capture"),
+            PartFound("R_leak", 2.24e6, 0.15e6, "Ω", None, None, None, None, "capture"),
         ),
         miss={"frequency": Miss(12.0, None, None, 0.021), "duty": None},
         suspects=(
@@ -340,7 +340,7 @@ def no_oscillation() -> Explanation:
                 ("R_leak",),
                 {"R_leak": 2.24e6},
                 0.94,
-                "2.2 MΩ load the capacitor: the charge ends at 83 V, its time constant short in the same ratio",
+                "2.2 MΩ load the capacitor: the charge ends at 83 V, its time constant short in proportion",
             ),
             Suspect(("supply",), {"supply": -0.33}, 0.04, "the supply is a third low"),
             Suspect(("R",), {"R": 0.8}, 0.02, "R is far too large"),
@@ -409,7 +409,7 @@ def joint() -> Explanation:
         circuit="op-amp",
         title="Tide gauge beeper",
         parts=(
-            part("R", "Ohm", 10e3, 9.97e3, 90.0, "capture"),
+            part("R", "Ω", 10e3, 9.97e3, 90.0, "capture"),
             part("C", "F", 85e-9, 101.4e-9, 0.9e-9, "capture", 0.1),
             *base.parts[2:],
         ),
@@ -480,7 +480,7 @@ def cancelling() -> Explanation:
         title="Rowing coach metronome",
         parts=(
             part("supply", "V", 9.0, 9.03, 0.03, "reading", 0.02),
-            part("R", "Ohm", 470e3, 473e3, 2.4e3, "reading"),
+            part("R", "Ω", 470e3, 473e3, 2.4e3, "reading"),
             part("C", "F", 1e-6, 0.508e-6, 4e-9, "capture", 0.1),
             part("eta", "", 0.63, 0.811, 0.006, "capture", 0.06),
             part("V_valley", "V", 1.6, 1.61, 0.02, "capture", 0.25),
@@ -530,7 +530,7 @@ def probe_loads() -> Explanation:
         title="Mast beacon flasher",
         parts=(
             part("supply", "V", 125.0, 124.9, 0.7, "build sheet", 0.02),
-            part("R", "Ohm", 1.1e6, 1.118e6, 3.2e3, "reading"),
+            part("R", "Ω", 1.1e6, 1.118e6, 3.2e3, "reading"),
             part("C", "F", 120e-9, 116.1e-9, 1.9e-9, "capture", 0.1),
             part("V_strike", "V", 90.0, 91.2, 1.1, "capture", 0.08),
             part("V_extinguish", "V", 60.0, 60.4, 0.8, "capture", 0.08),
@@ -596,8 +596,7 @@ def extreme() -> Explanation:
         measured=rc_measured(1.234567e9, 0.5, 1e-6, -1e-6, (1e4, -1e4), (1e-12, 1e3)),
         circuit="op-amp",
         parts=tuple(
-            part(n, "Ohm", 10.0 ** (i - 3), 10.0 ** (i - 3) * 1.1, 10.0 ** (i - 5))
-            for i, n in enumerate(names)
+            part(n, "Ω", 10.0 ** (i - 3), 10.0 ** (i - 3) * 1.1, 10.0 ** (i - 5)) for i, n in enumerate(names)
         ),
         miss={"frequency": miss(1e-3, 1.234567e9, 0.0, [(n, 1e11, 1e3) for n in names], 0.1), "duty": None},
         suspects=tuple(Suspect((n,), {n: 0.1}, 1 / 12, f"{n} is 10 % high") for n in names),
