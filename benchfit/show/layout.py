@@ -54,7 +54,7 @@ def wrapped(text: str, width: int, first: str = "", rest: str | None = None) -> 
     """Lines of at most ``width`` cells; a number stays with its unit."""
     kept = re.sub(rf"(?<=\d) (?={_UNITS}(?![\w/]))", _KEEP, text)
     kept = re.sub(r"(?<=[<>×±+−-]) (?=\d)", _KEEP, kept)
-    kept = kept.replace(" ± ", f"{_KEEP}±{_KEEP}")
+    kept = kept.replace(" ±", f"{_KEEP}±")
     indent = " " * len(first) if rest is None else rest
     lines = textwrap.wrap(
         kept, max(width, len(indent) + 12), initial_indent=first, subsequent_indent=indent,
