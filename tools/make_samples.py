@@ -47,6 +47,7 @@ class Sample:
 
 
 X10 = (10e6, 12e-12)
+X100 = (100e6, 3e-12)
 
 SAMPLES = (
     # Healthy: every part inside its tolerance.
@@ -68,6 +69,67 @@ SAMPLES = (
            {"capacitor": ("A", Input(gain=0.009, offset=-0.02, noise_divisions=0.03)),
             "output": ("B", Input(gain=0.004, offset=0.03, noise_divisions=0.03))},
            interval=1e-3, samples=6000, seed=4103, probe={"capacitor": X10}, layout="start and increment"),
+    # 1M5 was fitted for 2M2: too fast by a third, but with the probe on it the beacon seems to be on its target.
+    Sample("mast_beacon", "gas-lamp",
+           {"supply": 124.4, "R": 1.493e6, "C": 55.1e-9, "V_strike": 91.2, "V_extinguish": 59.3, "V_maintain": 54.9,
+            "r_lamp": 6.1e3},
+           {"capacitor": ("CH1", Input(gain=-0.007, offset=0.2, noise_divisions=0.03))},
+           interval=60e-6, samples=8000, seed=4201, probe={"capacitor": X10}, timebase=9e-6, stamp=-0.1, cycles=16,
+           options={"lag": 0.2e-3}),
+    # An aged lamp: strikes at 103 V where 88 V is nominal.
+    Sample("orchard_night_marker", "gas-lamp",
+           {"supply": 151.5, "R": 0.987e6, "C": 226e-9, "V_strike": 103.0, "V_extinguish": 60.8, "V_maintain": 56.9,
+            "r_lamp": 4.2e3},
+           {"capacitor": ("CH1", Input(gain=0.011, offset=-0.3, noise_divisions=0.04))},
+           interval=0.2e-3, samples=7000, seed=4202, probe={"capacitor": X100}, layout="decimal comma", cycles=24,
+           options={"lag": 1.0e-3, "threshold_noise": 0.1}),
+    # A decade slip: 1 uF in place of 100 nF.
+    Sample("seed_drill_pulser", "unijunction",
+           {"supply": 12.07, "R": 46.3e3, "C": 1.04e-6, "eta": 0.651, "V_D": 0.57, "V_valley": 1.62, "r_discharge": 68.0,
+            "V_floor": 0.71},
+           {"capacitor": ("Ch A", Input(gain=0.004, offset=0.03, noise_divisions=0.03))},
+           interval=20e-6, samples=8000, seed=4301, probe={"capacitor": X10}, timebase=-13e-6, layout="unit row"),
+    # Does not oscillate: 4M7 in place of 470k, so that the current at the peak is below what the device needs.
+    Sample("weir_level_alarm", "unijunction",
+           {"supply": 14.95, "R": 4.68e6, "C": 214e-9, "eta": 0.643, "V_D": 0.61, "V_valley": 1.7, "r_discharge": 55.0,
+            "V_floor": 0.8, "I_peak": 3.4e-6, "I_valley": 5.2e-3},
+           {"capacitor": ("CH2", Input(gain=-0.005, offset=0.04, noise_divisions=0.03))},
+           interval=0.7e-3, samples=5000, seed=4302, probe={"capacitor": X100}, start="from rest", begin=-0.35,
+           stamp=-0.35),
+    # The chip is of another make: both thresholds are elsewhere.
+    Sample("letterpress_counter", "schmitt-inverter",
+           {"R": 33.2e3, "C": 10.2e-9, "V_upper": 3.58, "V_lower": 1.43, "V_high": 5.02, "V_low": 0.02, "delay": 0.2e-6},
+           {"capacitor": ("IN", Input(gain=0.008, offset=0.015, noise_divisions=0.03)),
+            "output": ("OUT", Input(gain=-0.006, offset=0.01, noise_divisions=0.03))},
+           interval=0.5e-6, samples=6000, seed=4401, probe={"capacitor": X10}, timebase=4e-6, stamp=-1e-3),
+    # C is 27 % too large; only the output was looked at, so that R, C and the thresholds all look alike.
+    Sample("ferry_queue_buzzer", "schmitt-inverter",
+           {"R": 98.9e3, "C": 5.97e-9, "V_upper": 3.27, "V_lower": 1.84, "V_high": 4.98, "V_low": 0.01},
+           {"output": ("CH1", Input(gain=0.01, offset=0.02, noise_divisions=0.04))},
+           interval=2e-6, samples=4000, seed=4402, timebase=15e-6, layout="start and increment"),
+    # RA and RB were swapped when the board was stuffed.
+    Sample("rain_gauge_ticker", "timer-555",
+           {"supply": 9.06, "RA": 33.1e3, "RB": 21.95e3, "C": 213e-9, "k_upper": 0.671, "k_lower": 0.334,
+            "V_discharge": 0.06, "output_drop": 1.3, "output_floor": 0.05},
+           {"capacitor": ("CH1", Input(gain=0.007, offset=-0.03, noise_divisions=0.03)),
+            "output": ("CH2", Input(gain=-0.004, offset=0.05, noise_divisions=0.02))},
+           interval=20e-6, samples=5000, seed=4501, probe={"capacitor": X10}, timebase=6e-6, layout="unit row",
+           stamp=-0.02),
+    # Healthy, though 6 % slow: two parts near the ends of their tolerances, as the sheet allows.
+    Sample("henhouse_door_timer", "timer-555",
+           {"supply": 5.04, "RA": 102.6e3, "RB": 47.9e3, "C": 10.35e-6, "k_upper": 0.664, "k_lower": 0.336,
+            "V_discharge": 0.03, "output_drop": 0.02, "output_floor": 0.01},
+           {"capacitor": ("CH1", Input(gain=-0.005, offset=0.01, noise_divisions=0.03)),
+            "output": ("CH2", Input(gain=0.008, offset=0.02, noise_divisions=0.02))},
+           interval=2e-3, samples=5000, seed=4502, probe={"capacitor": X10}),
+    # A leaky electrolytic: 3 Mohm across 10 uF, charged through megohms.
+    Sample("dew_pond_pump", "timer-555",
+           {"supply": 9.02, "RA": 466e3, "RB": 474e3, "C": 10.7e-6, "k_upper": 0.665, "k_lower": 0.332,
+            "V_discharge": 0.02, "R_leak": 3.0e6, "output_drop": 0.03, "output_floor": 0.01},
+           {"capacitor": ("CH1", Input(gain=0.006, offset=0.02, noise_divisions=0.03)),
+            "output": ("CH2", Input(gain=-0.007, offset=-0.02, noise_divisions=0.02))},
+           interval=10e-3, samples=6000, seed=4503, probe={"capacitor": X100}, timebase=3e-6,
+           layout="decimal comma"),
 )
 
 

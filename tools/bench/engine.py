@@ -83,8 +83,9 @@ class Mode:
 class Rig:
     """One circuit on the bench.
 
-    ``modes`` maps each mode's name to what binds it to parts; ``first`` is the mode whose entry starts a cycle; ``charging`` names the
-    modes that count as charge (for shares). ``running(p)`` and ``rest(p)`` give (mode, y) to start from: somewhere
+    ``modes`` maps each mode's name to what binds it to parts; ``first`` is the mode whose entry starts a cycle;
+    ``high`` names the modes in which the output is high (or, without an output, the capacitor charges).
+    ``running(p)`` and ``rest(p)`` give (mode, y) to start from: somewhere
     in the cycle, and at power-on. ``horizon(p)`` is a time (s) in which any cycle that comes has come. ``defaults``
     are the values of parts that were not given; ``fill(parts)`` adds those that follow other parts.
     """
@@ -92,7 +93,7 @@ class Rig:
     name: str
     nodes: tuple[str, ...]
     first: str
-    charging: frozenset[str]
+    high: frozenset[str]
     modes: Mapping[str, Callable[[Values], Mode]]
     running: Callable[[Values], tuple[str, Array]]
     rest: Callable[[Values], tuple[str, Array]]

@@ -143,7 +143,7 @@ OP_AMP = Rig(
     name="op-amp",
     nodes=("capacitor", "output"),
     first="high",
-    charging=frozenset({"high", "late high", "rising"}),
+    high=frozenset({"high", "late high", "rising"}),
     modes={
         "high": lambda p: _level(p, late=False, high=True),
         "late high": lambda p: _level(p, late=True, high=True),

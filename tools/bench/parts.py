@@ -64,8 +64,9 @@ def prepare(rig: Rig, parts: Mapping[str, Number | None], probes: Mapping[str, P
 
 def loaded(p: Values, source: Source, node: str = "capacitor", rail: Array | None = None) -> Source:
     """A timing node's source (current at 0 V, conductance) with leaks and probe added."""
-    supply = p.supply if rail is None else rail
-    more = p.G_leak_supply * supply - p.I_leak
+    if rail is None:
+        rail = np.where(p.supply != 0, p.supply, p.V_high) if hasattr(p, "V_high") else p.supply
+    more = p.G_leak_supply * rail - p.I_leak
     load = p.G_leak + p.G_leak_supply + getattr(p, f"G_probe_{node}")
 
     def both(v: Array) -> tuple[Array, Array]:

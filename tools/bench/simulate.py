@@ -121,7 +121,7 @@ def _share(done: Run, rig: Rig) -> float:
     since, mode = np.zeros(done.time.size), [rig.first] * done.time.size
     for entry in sorted(done.entries, key=lambda e: float(e.time.min())):
         for i, t in zip(entry.element, entry.time, strict=True):
-            if mode[i] in rig.charging:
+            if mode[i] in rig.high:
                 total[i] += t - since[i]
             since[i], mode[i] = t, entry.after
     return float(total.sum() / done.time.sum())
