@@ -1,0 +1,254 @@
+"""Questions and answers: lines of text and counted blocks, whole or a named error, within the time-out."""
+
+from __future__ import annotations
+
+import logging
+import time
+from collections.abc import Mapping
+from typing import Final, NoReturn
+
+from benchfit.errors import InstrumentError
+from benchfit.instrument import faults
+from benchfit.instrument.block import BlockError, Header, excerpt, missing_header_bytes, parse_header
+from benchfit.instrument.wire import Wire
+
+TEXT_LIMIT: Final = 1 << 16
+LIST_LIMIT: Final = 1 << 28
+# pyvisa-py looks at its own clock only while nothing arrives: an answer that trickles in would hold a long
+# read for ever. Short reads, each with a short time-out, leave the clock to us.
+PART: Final = 4096
+FIRST_PART: Final = 64
+FIRST_SLICE: Final = 0.05
+NEXT_SLICE: Final = 0.004
+QUIET: Final = 0.15
+
+traffic = logging.getLogger("benchfit.instrument.traffic")
+
+
+class Link:
+    """An open connection: commands out, answers in.
+
+    Parameters
+    ----------
+    resource : str
+        VISA resource string.
+    library : str
+        VISA library: "@py", "@ivi", a path.
+    timeout : float
+        Longest wait for an answer (s), > 0. A block must bring its next 4,096 bytes within it.
+    write_termination, read_termination : str
+        Line ends; "" for read_termination: an answer ends when nothing follows.
+    serial : mapping
+        Settings of a serial line: baud_rate, data_bits, parity, stop_bits.
+
+    Raises
+    ------
+    InstrumentError
+        It cannot be opened; see ``Wire``.
+    """
+
+    def __init__(
+        self,
+        resource: str,
+        *,
+        library: str = "@py",
+        timeout: float = 5.0,
+        write_termination: str = "\n",
+        read_termination: str = "\n",
+        serial: Mapping[str, object] | None = None,
+    ) -> None:
+        if not 0 < timeout < float("inf"):
+            says = f"a time-out must be above 0 s and finite, got {timeout} s"
+            raise faults.fault("timeout", resource, "", says)
+        self.resource = resource
+        self.timeout = timeout
+        self.write_termination = write_termination
+        self.read_termination = read_termination
+        self._wire = Wire(resource, library, timeout, read_termination[-1:], serial or {})
+        self.is_socket = self._wire.is_socket
+
+    def close(self) -> None:
+        """Close the connection; harmless when it is closed already or the peer is gone."""
+        self._wire.close()
+
+    def __enter__(self) -> Link:
+        return self
+
+    def __exit__(self, *exc: object) -> None:
+        self.close()
+
+    def write(self, command: str) -> None:
+        """Send one command. Raises InstrumentError."""
+        traffic.debug("%s <- %s", self.resource, command)
+        self._wire.write((command + self.write_termination).encode("ascii"), command)
+
+    def query(self, command: str, *, timeout: float | None = None, limit: int = TEXT_LIMIT) -> str:
+        """The text that answers ``command``, without its line end.
+
+        Raises InstrumentError: no whole answer within ``timeout`` (s; default: the link's), a dropped
+        connection, or bytes that are no text.
+        """
+        self.write(command)
+        raw = self._line(command, timeout or self.timeout, limit)
+        try:
+            text = raw.decode("ascii").strip("\r\n \t\0")
+        except UnicodeDecodeError:
+            self._refuse("unreadable", command, f"answered {excerpt(raw)} where text was expected")
+        traffic.debug("%s -> %s", self.resource, text[:80])
+        return text
+
+    def query_data(self, command: str, *, expected_bytes: int | None = None, text: bool = False) -> bytes:
+        """The bytes of the block that answers ``command``; with ``text`` a bare line of numbers will do.
+
+        ``expected_bytes``, where the preamble announced it, is checked before the data are awaited.
+
+        Raises InstrumentError: kinds "timeout", "short-block", "wrong-length", "unreadable", "disconnected".
+        """
+        self.write(command)
+        try:
+            if self._wire.is_stream:
+                data = self._from_stream(command, expected_bytes, text)
+            else:
+                message = self._line(command, self.timeout, LIST_LIMIT, stop=False)
+                data = self._from_message(message, expected_bytes, text, command)
+        except BlockError as error:
+            self._refuse(error.kind, command, error.says)
+        traffic.debug("%s -> %d bytes of data", self.resource, len(data))
+        return data
+
+    def drain(self, wait: float) -> bytes:
+        """Whatever arrives until nothing has come for ``wait`` (s), at most 64 KiB; for trying line ends."""
+        found = bytearray()
+        quiet_since = time.monotonic()
+        while time.monotonic() - quiet_since < wait and len(found) < TEXT_LIMIT:
+            data, _ = self._wire.some(PART, min(wait, QUIET), stop=False, command="")
+            if data:
+                found += data
+                quiet_since, wait = time.monotonic(), min(wait, QUIET)
+        return bytes(found)
+
+    # -- lines ----------------------------------------------------------------------------------------------
+
+    def _line(self, command: str, timeout: float, limit: int, *, stop: bool = True) -> bytes:
+        """Bytes up to the line end (``stop``) or to the message's end."""
+        deadline = time.monotonic() + timeout
+        found = bytearray()
+        stop = stop and self._wire.is_stream and bool(self.read_termination)
+        while True:
+            left = deadline - time.monotonic()
+            if left <= 0:
+                raise faults.timed_out(self, command, timeout, bytes(found))
+            size = PART if found else FIRST_PART
+            data, ended = self._wire.some(size, self._slice(left, bool(found)), stop=stop, command=command)
+            found += data
+            if ended:
+                return bytes(found)
+            if self.is_socket and not stop and found and not data and self._is_quiet(command, found):
+                return bytes(found)
+            if len(found) > limit:
+                self._refuse("unreadable", command, f"answered more than {limit:,} bytes without a line end")
+
+    def _is_quiet(self, command: str, found: bytearray) -> bool:
+        """True when nothing follows for a while; what does follow is added to ``found``."""
+        data, _ = self._wire.some(PART, QUIET, stop=False, command=command)
+        found += data
+        return not data
+
+    def _slice(self, left: float, begun: bool) -> float:
+        """How long one read may wait (s): a little on a socket, else all the time that is left."""
+        return min(left, NEXT_SLICE if begun else FIRST_SLICE) if self.is_socket else left
+
+    # -- blocks ---------------------------------------------------------------------------------------------
+
+    def _from_stream(self, command: str, expected: int | None, text: bool) -> bytes:
+        start = self._exactly(1, command)
+        while start.isspace() and len(start) < 8:
+            start = self._exactly(1, command)
+        if text and start != b"#":
+            return start + self._line(command, self.timeout, LIST_LIMIT)
+        while missing := missing_header_bytes(start):
+            start += self._exactly(missing, command)
+        count = self._count(parse_header(start), expected, command)
+        if count is None:
+            return self._until_quiet(command)
+        data = self._exactly(count, command, of=count)
+        self._expect_line_end(command, count)
+        return data
+
+    def _count(self, header: Header, expected: int | None, command: str) -> int | None:
+        """How many bytes follow: from the header, else from the preamble; None where neither says."""
+        if header.count is None:
+            return expected
+        if expected is not None and header.count != expected:
+            says = f"announced a block of {header.count:,} bytes where the preamble makes it {expected:,}"
+            self._refuse("wrong-length", command, says)
+        return header.count
+
+    def _exactly(self, count: int, command: str, of: int = 0) -> bytes:
+        """``count`` bytes, whatever values they have: a data byte may look like a line end."""
+        found = bytearray()
+        deadline = time.monotonic() + self.timeout
+        while len(found) < count:
+            left = deadline - time.monotonic()
+            if left <= 0:
+                if of:
+                    raise faults.short_block(self, command, len(found), of)
+                raise faults.timed_out(self, command, self.timeout, bytes(found))
+            size = min(PART, count - len(found))
+            try:
+                data, _ = self._wire.some(size, self._slice(left, bool(found)), stop=False, command=command)
+            except InstrumentError as error:
+                if of and error.facts.get("kind") == "disconnected":
+                    raise faults.broken_off(self, command, len(found), of) from error
+                raise
+            before = len(found) // PART
+            found += data
+            if len(found) // PART > before:
+                deadline = time.monotonic() + self.timeout
+        return bytes(found)
+
+    def _expect_line_end(self, command: str, count: int) -> None:
+        """Take the line end off the wire, or it would answer the next question."""
+        if not self.read_termination:
+            return
+        rest = self._line(command, self.timeout, TEXT_LIMIT)
+        if rest.strip(b"\r\n \0"):
+            says = f"sent {excerpt(rest)} after a block of {count:,} bytes where its line end was expected"
+            self._refuse("wrong-length", command, says)
+
+    def _until_quiet(self, command: str) -> bytes:
+        """An indefinite block on a stream: it has no other end than a line end that nothing follows."""
+        found = bytearray()
+        end = self.read_termination.encode()
+        deadline = time.monotonic() + self.timeout
+        while time.monotonic() < deadline:
+            data, _ = self._wire.some(PART, QUIET if found else FIRST_SLICE, stop=False, command=command)
+            if data:
+                found += data
+                deadline = time.monotonic() + self.timeout
+            elif found and found.endswith(end):
+                return bytes(found.removesuffix(end))
+            if len(found) > LIST_LIMIT:
+                self._refuse("unreadable", command, f"sent more than {LIST_LIMIT:,} bytes without an end")
+        raise faults.short_block(self, command, len(found), None)
+
+    def _from_message(self, message: bytes, expected: int | None, text: bool, command: str) -> bytes:
+        """The block in a whole message, as a bus with an END line gives it."""
+        body = message.lstrip(b" ")
+        if text and body[:1] != b"#":
+            return body
+        if missing_header_bytes(body):
+            raise BlockError("short-block", f"a block's header broke off after {excerpt(body)}")
+        header = parse_header(body)
+        data = body[header.size :]
+        count = self._count(header, expected, command)
+        if count is None:
+            return data.removesuffix(b"\n").removesuffix(b"\r")
+        if len(data) < count:
+            raise BlockError("short-block", f"announced {count:,} bytes and sent {len(data):,}")
+        if data[count:].strip(b"\r\n \0"):
+            raise BlockError("wrong-length", f"announced {count:,} bytes and sent {len(data):,}")
+        return data[:count]
+
+    def _refuse(self, kind: str, command: str, says: str) -> NoReturn:
+        raise faults.fault(kind, self.resource, command, says)
