@@ -56,7 +56,7 @@ CIRCUIT = Circuit(
              "resistor", True),
         Part("V_threshold", "V", "trip point of the first gate", "log", "± 10 %", lambda p: p["supply"] / 2, "10 %", "threshold"),
         Part("V_clamp", "V", "drop of the input's clamp", "linear", "0.6 V ± 0.1 V", None, "15 %", "device"),
-        Part("R_gate", "Ω", "the gate's own output resistance", "linear", "250 Ω, 0 .. 500 Ω", None, "100 %", "device"),
+        Part("R_gate", "Ω", "the gate's own output resistance", "linear", "250 Ω ± 100 %", None, "100 %", "device"),
         *parasitics("R"),
     ),
     nodes=(

@@ -83,7 +83,7 @@ CIRCUIT = Circuit(
     ),
     cycle=_cycle,
     swaps=(("R_top", "R_bottom"), ("R_charge", "R_discharge"), ("R", "R_top"), ("R", "R_bottom")),
-    alternatives=((("R",), ("R_charge", "R_discharge")),),
+    alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),
     equations=(
         "charge:    A = V_high, τ = R·C, until E_up = (V_high/R_top + V_reference/R_bottom)/(1/R_top + 1/R_bottom)",
         "discharge: A = V_low,  τ = R·C, until E_down, likewise with V_low",

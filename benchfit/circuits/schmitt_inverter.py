@@ -45,7 +45,7 @@ CIRCUIT = Circuit(
         Part("V_upper", "V", "threshold of the rising input", tolerance="15 %", kind="threshold"),
         Part("V_lower", "V", "threshold of the falling input", tolerance="15 %", kind="threshold"),
         Part("V_high", "V", "output high level", "linear", None, None, "5 %", "level"),
-        Part("V_low", "V", "output low level", "linear", "0.05 V, 0 .. 0.1 V", None, "5 %", "level"),
+        Part("V_low", "V", "output low level", "linear", "0 V ± 0.1 V", None, "5 %", "level"),
         Part("R_charge", "Ω", "timing resistor of the charge, with steering diodes"),
         Part("R_discharge", "Ω", "timing resistor of the discharge, with steering diodes"),
         Part("V_diode", "V", "drop of a steering diode", "linear", "0.6 V ± 0.1 V", None, "15 %", "device", True),
@@ -57,7 +57,7 @@ CIRCUIT = Circuit(
     ),
     cycle=_cycle,
     swaps=(("R_charge", "R_discharge"),),
-    alternatives=((("R",), ("R_charge", "R_discharge")),),
+    alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),
     equations=(
         "charge:    A = V_high, τ = R·C, until V_upper",
         "discharge: A = V_low,  τ = R·C, until V_lower",

@@ -47,7 +47,7 @@ CIRCUIT = Circuit(
         Part("C", "F", "timing capacitor to ground", tolerance="10 %", kind="capacitor"),
         Part("k_upper", "1", "upper threshold over the supply", "log", "0.666666666666666667 ± 5 %", None, "5 %", "threshold"),
         Part("k_lower", "1", "lower threshold over the supply", "log", "0.333333333333333333 ± 8 %", None, "8 %", "threshold"),
-        Part("V_discharge", "V", "discharge pin while it conducts", "linear", "0.05 V, 0 .. 0.2 V", None, "100 %", "device"),
+        Part("V_discharge", "V", "discharge pin while it conducts", "linear", "0.05 V -100 %/+300 %", None, "100 %", "device"),
         Part("V_diode", "V", "drop of the steering diode across RB", "linear", None, None, "15 %", "device", True),
         *parasitics("RA"),
     ),

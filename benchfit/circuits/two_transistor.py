@@ -81,7 +81,7 @@ CIRCUIT = Circuit(
         Part("V_BE", "V", "base–emitter voltage hard on", "linear", "0.68 V ± 0.05 V", None, "8 %", "device"),
         Part("V_on", "V", "base–emitter voltage at which it begins to conduct", "linear", "± 0.05 V",
              lambda p: p["V_BE"] - 0.12, "8 %", "device"),
-        Part("V_CE", "V", "collector voltage hard on", "linear", "0.1 V, 0 .. 0.25 V", None, "100 %", "device"),
+        Part("V_CE", "V", "collector voltage hard on", "linear", "0.1 V -100 %/+150 %", None, "100 %", "device"),
         Part("V_breakdown", "V", "reverse breakdown of the base–emitter junction", "log", "7 V ± 1.5 V", None, "20 %", "device"),
         *parasitics("R1"),
     ),

@@ -1,0 +1,286 @@
+"""Weigh every hypothesis against the data: evidence of single causes on grids, of pairs by Laplace's method."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import chdtrc, logsumexp
+
+from benchfit.explain import odds
+from benchfit.explain.hypotheses import Freed, Hypothesis, freed_of, singles
+from benchfit.explain.infer import IDENTITY, Batch, Relaxed, relax, whitener
+from benchfit.explain.model import Array, Model
+
+STARTS = 13
+_Q = np.array([-5.0, -3.5, -2.5, -1.75, -1.2, -0.75, -0.35, 0.0, 0.35, 0.75, 1.2, 1.75, 2.5, 3.5, 5.0])
+
+
+@dataclass(frozen=True, eq=False)
+class Weighed:
+    """A hypothesis with its evidence and what it makes of the build.
+
+    Attributes
+    ----------
+    causes : tuple of str
+    prior : float
+        Prior probability (of all variants of these causes together).
+    log_evidence : float
+        ln of the mean likelihood under the hypothesis, up to one common constant; −inf where nothing fits.
+    mean : ndarray, shape (n,)
+        Posterior mean of the state.
+    covariance : ndarray, shape (n, n)
+    mode : ndarray, shape (n,)
+        Best state.
+    misfit : float
+        Squared whitened residuals and pulls of the priors at the best state.
+    probability : float
+        Posterior probability.
+    """
+
+    causes: tuple[str, ...]
+    prior: float
+    log_evidence: float
+    mean: Array
+    covariance: Array
+    mode: Array
+    misfit: float
+    probability: float = 0.0
+
+
+def _batch(model: Model, hypotheses: Sequence[Hypothesis], owns: int, moves: bool = True) -> Batch:
+    """One row a hypothesis, own parameters at the middle of their range."""
+    rows = len(hypotheses)
+    center = np.tile(model.center, (rows, 1))
+    spread = np.tile(model.spread, (rows, 1))
+    own = np.full((rows, owns), -1)
+    gauge = np.zeros((rows, owns), int)
+    t, low, high = np.zeros((rows, owns)), np.zeros((rows, owns)), np.ones((rows, owns))
+    for r, hypothesis in enumerate(hypotheses):
+        for index, value in hypothesis.shifts:
+            center[r, index] = value
+        for k, way in enumerate(hypothesis.freed):
+            own[r, k], gauge[r, k] = way.index, way.gauge
+            low[r, k], high[r, k] = way.low, way.high
+            t[r, k] = 0.5 * (way.low + way.high)
+            spread[r, way.index] = 0.0
+    return Batch(center, spread, own, gauge, t, low, high, moves)
+
+
+def _starts(way: Freed) -> Array:
+    """Where the search of one freed parameter begins: all over its range, closer about the nominal."""
+    even = np.linspace(way.low, way.high, STARTS)
+    if way.hole is None:
+        return even
+    middle = 0.5 * (way.hole[0] + way.hole[1])
+    near = middle + np.array([-0.3, 0.3]) * (way.near or 1.0)
+    return np.clip(np.concatenate([even, near]), way.low, way.high)
+
+
+def weigh(model: Model) -> list[Weighed]:
+    """Every hypothesis that the circuit and the sheet allow, by falling probability (which sum to 1)."""
+    white = whitener(model.covariance)
+    hypotheses = singles(model)
+    fixed = [h for h in hypotheses if not h.freed]
+    free = [h for h in hypotheses if h.freed]
+    found = _weigh_fixed(model, fixed, white) + _weigh_free(model, free, white)
+    merged = _merge(found)
+    if not _explains(model, merged):
+        merged = _merge(found + _weigh_pairs(model, merged, white))
+    return merged
+
+
+def _explains(model: Model, found: Sequence[Weighed]) -> bool:
+    """Whether one of the live hypotheses fits the record as well as its noise and floors allow."""
+    best = min((w.misfit for w in found[:4] if w.probability > 0.02), default=np.inf)
+    return bool(chdtrc(max(len(model.observations), 1), best) > 1e-3)
+
+
+def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
+    done = relax(model, _batch(model, hypotheses, 0), 6, white)
+    return [
+        Weighed(h.causes, h.weight, float(done.log_weight[r]), done.state[r], done.covariance[r], done.state[r],
+                float(done.cost[r]))
+        for r, h in enumerate(hypotheses)
+    ]
+
+
+def _weigh_free(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
+    if not hypotheses:
+        return []
+    best = _search(model, hypotheses, white)
+    # A grid about the best value, cut where the tolerance begins: evidence is an integral, not a height.
+    repeated, points, weights = [], [], []
+    for r, h in enumerate(hypotheses):
+        way = h.freed[0]
+        width = best.own_u[r, 0]
+        width = float(width) if np.isfinite(width) and width > 0 else (way.high - way.low) / 4
+        for low, high in _pieces(way):
+            t = np.unique(_piece_grid(low, high, float(best.t[r, 0]), width))
+            if t.size < 2:
+                continue
+            repeated.extend([r] * t.size)
+            points.extend(t)
+            gaps = np.diff(t)
+            weights.extend(0.5 * (np.concatenate([[0.0], gaps]) + np.concatenate([gaps, [0.0]])))
+    rows = np.array(repeated)
+    batch = _batch(model, hypotheses, 1, moves=False).take(rows)
+    batch = replace(batch, t=np.array(points)[:, None])
+    done = relax(model, batch, 4, white)
+    found = []
+    for r, h in enumerate(hypotheses):
+        mine = np.flatnonzero(rows == r)
+        way = h.freed[0]
+        t = batch.t[mine, 0]
+        inner = np.clip(t, way.low, way.high)
+        if way.hole is not None:
+            inner = np.where(np.abs(inner - way.hole[1]) < 1e-12, way.hole[1] + 1e-9, inner)
+            inner = np.where(np.abs(inner - way.hole[0]) < 1e-12, way.hole[0] - 1e-9, inner)
+        with np.errstate(divide="ignore"):
+            logs = done.log_weight[mine] + np.log(way.density(inner) * np.array(weights)[mine])
+        found.append(_averaged(h, logs, done, mine, best, r))
+    return found
+
+
+def _pieces(way: Freed) -> list[tuple[float, float]]:
+    if way.hole is None:
+        return [(way.low, way.high)]
+    pieces = [(way.low, min(way.high, way.hole[0])), (max(way.low, way.hole[1]), way.high)]
+    return [(a, b) for a, b in pieces if b > a]
+
+
+def _piece_grid(low: float, high: float, best: float, width: float) -> Array:
+    center = float(np.clip(best, low, high))
+    grid = np.concatenate([center + width * _Q, np.linspace(low, high, 7)])
+    if not low < best < high:
+        # The tail beyond the edge: it falls off with the distance from the best value.
+        tail = width * width / max(abs(best - center), width)
+        grid = np.concatenate([grid, center + tail * _Q])
+    return np.clip(grid, low, high)
+
+
+def _averaged(
+    h: Hypothesis, logs: Array, done: Relaxed, mine: NDArray[np.int64], best: Relaxed, row: int
+) -> Weighed:
+    total = float(logsumexp(logs)) if logs.size and np.any(np.isfinite(logs)) else -np.inf
+    if not np.isfinite(total):
+        return Weighed(h.causes, h.weight, -np.inf, best.state[row], best.covariance[row], best.state[row], np.inf)
+    p = np.exp(logs - total)
+    live = p > 1e-9
+    p, rows = p[live], mine[live]
+    states = done.state[rows]
+    mean = p @ np.nan_to_num(states)
+    away = np.nan_to_num(states) - mean
+    covariance = np.tensordot(p, done.covariance[rows], 1) + (away * p[:, None]).T @ away
+    top = rows[np.argmax(p)]
+    return Weighed(h.causes, h.weight, total, mean, covariance, done.state[top], float(np.min(done.cost[rows])))
+
+
+def _search(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> Relaxed:
+    """The best state of each hypothesis with one freed parameter, from many starts."""
+    begins = [_starts(h.freed[0]) for h in hypotheses]
+    rows = np.repeat(np.arange(len(hypotheses)), [b.size for b in begins])
+    batch = _batch(model, hypotheses, 1).take(rows)
+    batch = replace(batch, t=np.concatenate(begins)[:, None])
+    rough = relax(model, batch, 3, white)
+    keep = []
+    for r in range(len(hypotheses)):
+        mine = np.flatnonzero(rows == r)
+        keep.append(mine[np.argmin(rough.cost[mine])])
+    chosen = np.array(keep)
+    return relax(model, replace(batch.take(chosen), t=rough.t[chosen]), 8, white)
+
+
+def _weigh_pairs(model: Model, found: Sequence[Weighed], white: Array) -> list[Weighed]:
+    """Two causes at once: the best single ones with every other that the data can tell from it."""
+    freed = freed_of(model)
+    names = list(freed)
+    leaders = [w.causes[0] for w in found if len(w.causes) == 1 and np.isfinite(w.log_evidence)][:6]
+    weights = {n: odds.weight(n, model.parameters[model.index[n]].part.kind) for n in names}  # type: ignore[union-attr]
+    total = sum(weights[a] * weights[b] for i, a in enumerate(names) for b in names[i + 1 :])
+    hypotheses: list[Hypothesis] = []
+    begins: list[tuple[float, float]] = []
+    groups: list[int] = []
+    modes = {w.causes[0]: w.mode for w in found if len(w.causes) == 1}
+    done: set[frozenset[str]] = set()
+    for first in leaders:
+        for second in names:
+            if first == second or frozenset((first, second)) in done:
+                continue
+            done.add(frozenset((first, second)))
+            prior = odds.PAIR * weights[first] * weights[second] / total
+            for a in freed[first]:
+                for b in freed[second]:
+                    group = len(done)
+                    at = _gauged(a, float(modes[first][a.index]))
+                    for begin in np.linspace(b.low, b.high, 7):
+                        for other in (at, 0.5 * (a.low + a.high)):
+                            hypotheses.append(Hypothesis((first, second), prior, (), (a, b)))
+                            begins.append((other, float(begin)))
+                            groups.append(group)
+    if not hypotheses:
+        return []
+    batch = replace(_batch(model, hypotheses, 2), t=np.array(begins))
+    rough = relax(model, batch, 3, white)
+    keep = np.array([
+        mine[np.argmin(rough.cost[mine])] for g in sorted(set(groups)) for mine in [np.flatnonzero(np.array(groups) == g)]
+    ])
+    fine = relax(model, replace(batch.take(keep), t=rough.t[keep]), 8, white)
+    return [_pair(hypotheses[row], fine, r) for r, row in enumerate(keep)]
+
+
+def _gauged(way: Freed, x: float) -> float:
+    if way.gauge == IDENTITY:
+        return float(np.clip(x, way.low, way.high))
+    size = abs(x)
+    if size == 0:
+        return 0.5 * (way.low + way.high)
+    t = -np.log(size) if way.gauge == 3 else np.log(size)
+    return float(np.clip(t, way.low, way.high))
+
+
+def _pair(h: Hypothesis, fine: Relaxed, r: int) -> Weighed:
+    """Laplace in the two freed parameters; a width beyond the range counts as the range."""
+    density = 1.0
+    volume = 1.0
+    for k, way in enumerate(h.freed):
+        width = way.high - way.low
+        t = np.array([fine.t[r, k]])
+        density *= float(way.density(t)[0])
+        u = fine.own_u[r, k]
+        volume *= min(np.sqrt(2 * np.pi) * u, width) if np.isfinite(u) else width
+    if density <= 0 or not np.isfinite(fine.cost[r]):
+        return Weighed(h.causes, h.weight, -np.inf, fine.state[r], fine.covariance[r], fine.state[r], np.inf)
+    evidence = float(fine.log_weight[r] + np.log(density * volume))
+    return Weighed(h.causes, h.weight, evidence, fine.state[r], fine.covariance[r], fine.state[r], float(fine.cost[r]))
+
+
+def _merge(found: Sequence[Weighed]) -> list[Weighed]:
+    """Variants with the same causes become one entry; probabilities are normalised."""
+    groups: dict[frozenset[str], list[Weighed]] = {}
+    for w in found:
+        groups.setdefault(frozenset(w.causes), []).append(w)
+    merged = []
+    for variants in groups.values():
+        prior = sum(v.prior for v in variants)
+        logs = np.array([v.log_evidence + np.log(v.prior) if v.prior > 0 else -np.inf for v in variants])
+        total = float(logsumexp(logs)) if np.any(np.isfinite(logs)) else -np.inf
+        best = variants[int(np.argmax(logs))]
+        if not np.isfinite(total):
+            merged.append(replace(best, prior=prior, log_evidence=-np.inf))
+            continue
+        p = np.exp(logs - total)
+        mean = sum((q * v.mean for q, v in zip(p, variants, strict=True) if q > 0), np.zeros_like(best.mean))
+        covariance = np.zeros_like(best.covariance)
+        for q, v in zip(p, variants, strict=True):
+            if q > 0:
+                covariance += q * (v.covariance + np.outer(v.mean - mean, v.mean - mean))
+        merged.append(Weighed(best.causes, prior, total - float(np.log(prior)), mean, covariance, best.mode, best.misfit))
+    logs = np.array([w.log_evidence + np.log(w.prior) for w in merged])
+    if not np.any(np.isfinite(logs)):
+        return merged
+    p = np.exp(logs - logsumexp(logs))
+    done = [replace(w, probability=float(q)) for w, q in zip(merged, p, strict=True)]
+    return sorted(done, key=lambda w: (-w.probability, len(w.causes)))
