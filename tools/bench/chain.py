@@ -1,7 +1,7 @@
 """The measuring chain: what an oscilloscope makes of the waveforms.
 
-Shown is (1 + gain)·v + offset + noise on a clock (1 + timebase)·t, through the input coupling, clipped to the screen
-and quantised.
+Shown is (1 + gain)·v + offset + noise on a clock (1 + timebase)·t, through the input coupling, clipped to the
+screen and quantised.
 """
 
 from __future__ import annotations
@@ -23,10 +23,10 @@ CODES_PER_DIVISION = 25
 class Input:
     """One channel's setting.
 
-    ``noise`` rms in V, or relative to the screen with ``noise_divisions`` (divisions rms); ``range`` (low, high) in V,
-    None for the smallest 1-2-5 setting that holds the waveform in eight divisions; ``bits`` None: no quantisation.
-    ``corner`` (Hz) of the high-pass where ``coupling`` is "ac". ``ratio``: the export is divided by it (an
-    unscaled probe).
+    ``noise`` rms in V, or relative to the screen with ``noise_divisions`` (divisions rms); ``range`` (low,
+    high) in V, None for the smallest 1-2-5 setting that holds the waveform in eight divisions; ``bits`` None:
+    no quantisation. ``corner`` (Hz) of the high-pass where ``coupling`` is "ac". ``ratio``: the export is
+    divided by it (an unscaled probe).
     """
 
     gain: float = 0.0
@@ -50,8 +50,18 @@ class Record:
     truth_begin: float
 
 
-def measure(waves: Waves, nodes: Mapping[str, Input], interval: float, samples: int, *, timebase: float = 0.0,
-            aperture: float = 0.0, begin: float | None = None, start: float = 0.0, seed: int = 0) -> Record:
+def measure(
+    waves: Waves,
+    nodes: Mapping[str, Input],
+    interval: float,
+    samples: int,
+    *,
+    timebase: float = 0.0,
+    aperture: float = 0.0,
+    begin: float | None = None,
+    start: float = 0.0,
+    seed: int = 0,
+) -> Record:
     """Record some nodes.
 
     Parameters
@@ -60,8 +70,8 @@ def measure(waves: Waves, nodes: Mapping[str, Input], interval: float, samples: 
     interval, samples : the record as shown (s, count)
     timebase : relative error of the clock; the samples are truly taken every interval/(1 + timebase)
     aperture : rms jitter of the sampling instants (s)
-    begin : time (s) on the waves' axis at which the record begins; None: at random. Before 0 everything is at 0 V.
-    start : time stamp of the first sample (s)
+    begin : time (s) on the waves' axis at which the record begins; None: at random. Before 0 everything is at
+    0 V. start : time stamp of the first sample (s)
     """
     rng = np.random.default_rng(seed)
     step = interval / (1.0 + timebase)
@@ -85,7 +95,9 @@ def _begin(waves: Waves, length: float, begin: float | None, rng: np.random.Gene
         return float(rng.uniform(0.0, waves.period))
     room = waves.span - waves.starts[0] - length
     if room < 0:
-        raise ValueError(f"{waves.span - waves.starts[0]:.3g} s were simulated, {length:.3g} s are to be recorded")
+        raise ValueError(
+            f"{waves.span - waves.starts[0]:.3g} s were simulated, {length:.3g} s are to be recorded"
+        )
     return float(waves.starts[0] + rng.uniform(0.0, min(room, waves.period)))
 
 

@@ -4,11 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 
-from tools.bench.engine import Array, End, Mode, Rig, Values
+from tools.bench.engine import Array, End, Mode, Numbers, Rig, Values
 from tools.bench.parts import loaded
 
-# States of the two-transistor circuit: bases 1 and 2 without the drop in the capacitors' legs, and the voltages that
-# collectors 1 and 2 have recovered to.
+# States of the two-transistor circuit: bases 1 and 2 without the drop in the capacitors' legs, and the
+# voltages that collectors 1 and 2 have recovered to.
 BASE, COLLECTOR = {1: 0, 2: 1}, {1: 2, 2: 3}
 
 
@@ -24,7 +24,9 @@ def _half(p: Values, off: int, late: bool) -> Mode:
     resistor, nominal, load, other = _pair(p, off)
     on = 3 - off
     aside = p.C_stray + getattr(p, f"C_probe_base{off}")
-    source = loaded(p, lambda v: (p.supply / resistor + 0.0 * v, 1.0 / resistor + 0.0 * v), f"base{off}", p.supply)
+    source = loaded(
+        p, lambda v: (p.supply / resistor + 0.0 * v, 1.0 / resistor + 0.0 * v), f"base{off}", p.supply
+    )
 
     def base(w: Array) -> tuple[Array, Array]:
         c = nominal * (1.0 + p.C_slope * (w - p.V_CE))
@@ -45,8 +47,12 @@ def _half(p: Values, off: int, late: bool) -> Mode:
 
     def nodes(y: Array) -> dict[str, Array]:
         held = 0.0 * y[0]
-        return {f"base{off}": base(y[BASE[off]])[0], f"base{on}": p.V_BE + held,
-                f"collector{off}": recovery(y[COLLECTOR[off]])[0], f"collector{on}": p.V_CE + held}
+        return {
+            f"base{off}": base(y[BASE[off]])[0],
+            f"base{on}": p.V_BE + held,
+            f"collector{off}": recovery(y[COLLECTOR[off]])[0],
+            f"collector{on}": p.V_CE + held,
+        }
 
     def swap(y: Array) -> Array:
         out = np.empty_like(y)
@@ -70,7 +76,7 @@ def _transistors_start(p: Values) -> Array:
     return np.stack([np.maximum(p.V_BE - p.supply + p.V_CE, -p.V_breakdown), p.V_BE, p.V_CE, p.V_CE])
 
 
-def _fill(parts: dict[str, object]) -> dict[str, object]:
+def _fill(parts: Numbers) -> Numbers:
     out = dict(parts)
     if out["V_on"] is None:
         out["V_on"] = np.asarray(out["V_BE"]) - 0.12
@@ -78,18 +84,24 @@ def _fill(parts: dict[str, object]) -> dict[str, object]:
 
 
 TWO_TRANSISTOR = Rig(
-    name="two-transistor", nodes=("base1", "base2", "collector1", "collector2"), first="off 1",
+    name="two-transistor",
+    nodes=("base1", "base2", "collector1", "collector2"),
+    first="off 1",
     high=frozenset({"off 1", "late 1"}),
     modes={
-        "off 1": lambda p: _half(p, 1, late=False), "late 1": lambda p: _half(p, 1, late=True),
-        "off 2": lambda p: _half(p, 2, late=False), "late 2": lambda p: _half(p, 2, late=True),
+        "off 1": lambda p: _half(p, 1, late=False),
+        "late 1": lambda p: _half(p, 1, late=True),
+        "off 2": lambda p: _half(p, 2, late=False),
+        "late 2": lambda p: _half(p, 2, late=True),
     },
     running=lambda p: ("off 1", _transistors_start(p)),
     rest=lambda p: ("off 1", np.stack([0.0 * p.C1, p.V_BE, p.V_CE, p.V_CE])),
-    horizon=lambda p: 60.0 * (p.R1 * (p.C1 + p.C_stray + p.C_probe_base1)
-                              + p.R2 * (p.C2 + p.C_stray + p.C_probe_base2)) + 20.0 * p.delay,
+    horizon=lambda p: (
+        60.0 * (p.R1 * (p.C1 + p.C_stray + p.C_probe_base1) + p.R2 * (p.C2 + p.C_stray + p.C_probe_base2))
+        + 20.0 * p.delay
+    ),
     required=("supply", "R1", "C1", "R2", "C2", "RC1", "RC2"),
-    defaults={"V_BE": 0.68, "V_on": None, "V_CE": 0.1, "V_breakdown": 7.0},  # type: ignore[dict-item]
+    defaults={"V_BE": 0.68, "V_on": None, "V_CE": 0.1, "V_breakdown": 7.0},
     fill=_fill,
 )
 
@@ -127,14 +139,19 @@ def _gate(p: Values, falling: bool, late: bool) -> Mode:
 
     if late:
         lag = p.late_down if falling else p.late_up
-        return Mode(lambda y: at(y[0])[1][None], nodes, lasts=np.maximum(p.delay + lag, 0.0),
-                    then="rise" if falling else "fall", jump=kick)
+        return Mode(
+            lambda y: at(y[0])[1][None],
+            nodes,
+            lasts=np.maximum(p.delay + lag, 0.0),
+            then="rise" if falling else "fall",
+            jump=kick,
+        )
     trip = p.trip_down if falling else p.trip_up
     end = End(lambda y: sign * (p.V_threshold + trip - at(y[0])[0]), "late fall" if falling else "late rise")
     return Mode(lambda y: at(y[0])[1][None], nodes, ends=(end,))
 
 
-def _gate_fill(parts: dict[str, object]) -> dict[str, object]:
+def _gate_fill(parts: Numbers) -> Numbers:
     out = dict(parts)
     series = out.pop("R_series")
     out["G_series"] = 0.0 if series is None else 1.0 / np.asarray(series)
@@ -144,15 +161,20 @@ def _gate_fill(parts: dict[str, object]) -> dict[str, object]:
 
 
 GATE_PAIR = Rig(
-    name="gate-pair", nodes=("capacitor", "output"), first="fall", high=frozenset({"fall", "late fall"}),
+    name="gate-pair",
+    nodes=("capacitor", "output"),
+    first="fall",
+    high=frozenset({"fall", "late fall"}),
     modes={
-        "fall": lambda p: _gate(p, falling=True, late=False), "late fall": lambda p: _gate(p, falling=True, late=True),
-        "rise": lambda p: _gate(p, falling=False, late=False), "late rise": lambda p: _gate(p, falling=False, late=True),
+        "fall": lambda p: _gate(p, falling=True, late=False),
+        "late fall": lambda p: _gate(p, falling=True, late=True),
+        "rise": lambda p: _gate(p, falling=False, late=False),
+        "late rise": lambda p: _gate(p, falling=False, late=True),
     },
     running=lambda p: ("fall", (p.V_threshold + p.supply)[None].copy()),
     rest=lambda p: ("rise", 0.0 * p.C[None]),
     horizon=lambda p: 60.0 * (p.R + p.R_gate) * (p.C + p.C_stray + p.C_probe_capacitor) + 20.0 * p.delay,
     required=("supply", "R", "C"),
-    defaults={"R_series": None, "V_threshold": None, "V_clamp": 0.6, "R_gate": 250.0, "soft": 0.0},  # type: ignore[dict-item]
+    defaults={"R_series": None, "V_threshold": None, "V_clamp": 0.6, "R_gate": 250.0, "soft": 0.0},
     fill=_gate_fill,
 )

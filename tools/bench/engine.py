@@ -1,21 +1,24 @@
 """A small integrator for switched circuits: many builds (or many cycles) side by side.
 
-A rig (one circuit on the bench) is a set of modes. In each mode the states obey a differential equation, which is
-integrated with the Runge–Kutta pair of Dormand and Prince (J. Comput. Appl. Math. 6 (1980) 19), order 5(4), every
-element with its own step size. A mode ends at an event g(y) >= 0, or when its time is up. The event is located on
-the integrator itself (shorter and shorter steps from the same start), and samples are taken the same way: there is no
-interpolation formula, and nothing here knows that the solution may be an exponential.
+A rig (one circuit on the bench) is a set of modes. In each mode the states obey a differential equation,
+which is integrated with the Runge–Kutta pair of Dormand and Prince (J. Comput. Appl. Math. 6 (1980) 19),
+order 5(4), every element with its own step size. A mode ends at an event g(y) >= 0, or when its time is up.
+The event is located on the integrator itself (shorter and shorter steps from the same start), and samples are
+taken the same way: there is no interpolation formula, and nothing here knows that the solution may be an
+exponential.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
+Numbers = dict[str, Any]
 RTOL = 1e-10
 ATOL = 1e-12
 
@@ -56,7 +59,8 @@ class Values:
 
 @dataclass(frozen=True, eq=False)
 class End:
-    """A way out of a mode: when g(y), shape (n,), turns from negative to positive; y then jumps to ``jump(y)``."""
+    """A way out of a mode: when g(y), shape (n,), turns from negative to positive; y then jumps to
+    ``jump(y)``."""
 
     when: Callable[[Array], Array]
     then: str
@@ -67,8 +71,8 @@ class End:
 class Mode:
     """One stretch of the cycle, bound to the parts of n elements.
 
-    ``rates(y)`` is dy/dt, shape (states, n); ``nodes(y)`` the voltages that a probe would see. ``lasts`` is the time
-    (s) after which the mode ends of itself for ``then``.
+    ``rates(y)`` is dy/dt, shape (states, n); ``nodes(y)`` the voltages that a probe would see. ``lasts`` is
+    the time (s) after which the mode ends of itself for ``then``.
     """
 
     rates: Callable[[Array], Array]
@@ -83,11 +87,12 @@ class Mode:
 class Rig:
     """One circuit on the bench.
 
-    ``modes`` maps each mode's name to what binds it to parts; ``first`` is the mode whose entry starts a cycle;
-    ``high`` names the modes in which the output is high (or, without an output, the capacitor charges).
-    ``running(p)`` and ``rest(p)`` give (mode, y) to start from: somewhere
-    in the cycle, and at power-on. ``horizon(p)`` is a time (s) in which any cycle that comes has come. ``defaults``
-    are the values of parts that were not given; ``fill(parts)`` adds those that follow other parts.
+    ``modes`` maps each mode's name to what binds it to parts; ``first`` is the mode whose entry starts a
+    cycle; ``high`` names the modes in which the output is high (or, without an output, the capacitor
+    charges). ``running(p)`` and ``rest(p)`` give (mode, y) to start from: somewhere
+    in the cycle, and at power-on. ``horizon(p)`` is a time (s) in which any cycle that comes has come.
+    ``defaults`` are the values of parts that were not given; ``fill(parts)`` adds those that follow other
+    parts.
     """
 
     name: str
@@ -99,8 +104,8 @@ class Rig:
     rest: Callable[[Values], tuple[str, Array]]
     horizon: Callable[[Values], Array]
     required: tuple[str, ...]
-    defaults: Mapping[str, float] = field(default_factory=dict)
-    fill: Callable[[dict[str, float]], dict[str, float]] = dict
+    defaults: Mapping[str, Any] = field(default_factory=dict)
+    fill: Callable[[Numbers], Numbers] = dict
 
 
 @dataclass(frozen=True, eq=False)
@@ -157,7 +162,8 @@ def advance(rates: Callable[[Array], Array], y: Array, h: Array) -> tuple[Array,
 
 
 def _locate(mode: Mode, when: Callable[[Array], Array], y: Array, h: Array) -> Array:
-    """Fraction of the step at which the event comes, by the Illinois variant of the rule of false position."""
+    """Fraction of the step at which the event comes, by the Illinois variant of the rule of false
+    position."""
     lo, hi = np.zeros_like(h), np.ones_like(h)
     g_lo, g_hi = when(y), when(advance(mode.rates, y, h)[0])
     side = np.zeros(h.size, dtype=int)
@@ -239,8 +245,17 @@ class _Pass:
         self.scale[:, live] = np.maximum(scale, np.abs(self.y[:, live]) * 0.1)
         self.exit[live] = leave
 
-    def _hit(self, live: NDArray[np.int64], hit: NDArray[np.int64], j: int, y: Array, h: Array, new: Array,
-             moved: Array, leave: NDArray[np.int64]) -> None:
+    def _hit(
+        self,
+        live: NDArray[np.int64],
+        hit: NDArray[np.int64],
+        j: int,
+        y: Array,
+        h: Array,
+        new: Array,
+        moved: Array,
+        leave: NDArray[np.int64],
+    ) -> None:
         part = self.mode_of(live[hit])
         x = _locate(part, part.ends[j].when, y[:, hit], h[hit])
         earlier = x * h[hit] < moved[hit]
@@ -251,8 +266,16 @@ class _Pass:
         new[:, first] = advance(self.mode_of(live[first]).rates, y[:, first], moved[first])[0]
 
 
-def run(rig: Rig, p: Values, mode: str, y: Array, *, cycles: int | None = None, until: Array | None = None,
-        keep: bool = False) -> Run:
+def run(
+    rig: Rig,
+    p: Values,
+    mode: str,
+    y: Array,
+    *,
+    cycles: int | None = None,
+    until: Array | None = None,
+    keep: bool = False,
+) -> Run:
     """Integrate n elements from one mode and their states y (states, n).
 
     Parameters
@@ -267,7 +290,9 @@ def run(rig: Rig, p: Values, mode: str, y: Array, *, cycles: int | None = None, 
     n = p.size
     if until is None:
         until = rig.horizon(p) * (cycles or 1)
-    out = Run(np.zeros(n), np.array(y, dtype=float), [mode] * n, np.zeros(n, dtype=int), np.zeros(n, dtype=bool))
+    out = Run(
+        np.zeros(n), np.array(y, dtype=float), [mode] * n, np.zeros(n, dtype=int), np.zeros(n, dtype=bool)
+    )
     waiting: dict[str, NDArray[np.int64]] = {mode: np.arange(n)}
     for _ in range(200000):
         if not waiting:
@@ -278,8 +303,17 @@ def run(rig: Rig, p: Values, mode: str, y: Array, *, cycles: int | None = None, 
     raise RuntimeError(f"{rig.name}: the bench's modes chase each other")
 
 
-def _stay(rig: Rig, p: Values, name: str, index: NDArray[np.int64], until: Array, cycles: int | None, keep: bool,
-          out: Run, waiting: dict[str, NDArray[np.int64]]) -> None:
+def _stay(
+    rig: Rig,
+    p: Values,
+    name: str,
+    index: NDArray[np.int64],
+    until: Array,
+    cycles: int | None,
+    keep: bool,
+    out: Run,
+    waiting: dict[str, NDArray[np.int64]],
+) -> None:
     mine = p.take(index)
     stay = _Pass(rig.modes[name](mine), out.state[:, index], until[index] - out.time[index])
     stay.mode_of = lambda some: rig.modes[name](mine.take(some))
@@ -294,10 +328,14 @@ def _stay(rig: Rig, p: Values, name: str, index: NDArray[np.int64], until: Array
         if not some.size:
             continue
         bound = stay.mode_of(some)
-        after, jump = (bound.then, bound.jump) if j == len(mode.ends) else (bound.ends[j].then, bound.ends[j].jump)
+        after, jump = (
+            (bound.then, bound.jump) if j == len(mode.ends) else (bound.ends[j].then, bound.ends[j].jump)
+        )
         state = left[:, some] if jump is None else jump(left[:, some])
         out.state[:, index[some]] = state
-        out.entries.append(Entry(name, after, index[some], out.time[index[some]].copy(), left[:, some], state))
+        out.entries.append(
+            Entry(name, after, index[some], out.time[index[some]].copy(), left[:, some], state)
+        )
         _enter(rig, after, index[some], cycles, out, waiting)
     over = np.flatnonzero(stay.exit < 0)
     out.state[:, index[over]] = left[:, over]
@@ -306,8 +344,14 @@ def _stay(rig: Rig, p: Values, name: str, index: NDArray[np.int64], until: Array
         out.mode[int(i)] = name
 
 
-def _enter(rig: Rig, name: str, index: NDArray[np.int64], cycles: int | None, out: Run,
-           waiting: dict[str, NDArray[np.int64]]) -> None:
+def _enter(
+    rig: Rig,
+    name: str,
+    index: NDArray[np.int64],
+    cycles: int | None,
+    out: Run,
+    waiting: dict[str, NDArray[np.int64]],
+) -> None:
     for i in index:
         out.mode[int(i)] = name
     if name == rig.first:

@@ -7,15 +7,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tools.bench.engine import Array, End, Mode, Rig, Values
+from tools.bench.engine import Array, End, Mode, Numbers, Rig, Values
 from tools.bench.parts import Source, conductance, grounded, loaded
-
-Numbers = dict[str, object]
 
 
 @dataclass(frozen=True, eq=False)
 class _Face:
-    """What differs: source of the charge and of the discharge, the two trip levels, the output's two levels."""
+    """What differs: source of the charge and of the discharge, the two trip levels, the output's two
+    levels."""
 
     up: Callable[[Values], Source]
     down: Callable[[Values], Source]
@@ -42,18 +41,31 @@ def _mode(p: Values, face: _Face, rising: bool, late: bool) -> Mode:
     return Mode(rates, nodes, ends=(End(lambda y: lower + p.trip_down - node(y[0]), "late discharge"),))
 
 
-def _rig(name: str, face: _Face, horizon: Callable[[Values], Array], required: tuple[str, ...],
-         defaults: dict[str, float], fill: Callable[[Numbers], Numbers]) -> Rig:
+def _rig(
+    name: str,
+    face: _Face,
+    horizon: Callable[[Values], Array],
+    required: tuple[str, ...],
+    defaults: Numbers,
+    fill: Callable[[Numbers], Numbers],
+) -> Rig:
     return Rig(
-        name=name, nodes=("capacitor", "output"), first="charge", high=frozenset({"charge", "late charge"}),
+        name=name,
+        nodes=("capacitor", "output"),
+        first="charge",
+        high=frozenset({"charge", "late charge"}),
         modes={
             "charge": lambda p: _mode(p, face, rising=True, late=False),
             "late charge": lambda p: _mode(p, face, rising=True, late=True),
             "discharge": lambda p: _mode(p, face, rising=False, late=False),
             "late discharge": lambda p: _mode(p, face, rising=False, late=True),
         },
-        running=lambda p: ("charge", face.trips(p)[1][None].copy()), rest=lambda p: ("charge", 0.0 * p.C[None]),
-        horizon=horizon, required=required, defaults=defaults, fill=fill,
+        running=lambda p: ("charge", face.trips(p)[1][None].copy()),
+        rest=lambda p: ("charge", 0.0 * p.C[None]),
+        horizon=horizon,
+        required=required,
+        defaults=defaults,
+        fill=fill,
     )
 
 
@@ -92,14 +104,21 @@ SCHMITT = _rig(
     ),
     horizon=lambda p: 60.0 * _whole(p) / np.minimum(p.G_up, p.G_down) + 20.0 * p.delay,
     required=("C", "V_upper", "V_lower", "V_high"),
-    defaults={"V_low": 0.0, "V_diode": 0.6, "supply": 0.0, "R": None, "R_charge": None,  # type: ignore[dict-item]
-              "R_discharge": None},  # type: ignore[dict-item]
+    defaults={
+        "V_low": 0.0,
+        "V_diode": 0.6,
+        "supply": 0.0,
+        "R": None,
+        "R_charge": None,
+        "R_discharge": None,
+    },
     fill=_schmitt_fill,
 )
 
 
 def _timer_charge(p: Values) -> Source:
-    """Through RA and RB; or through RA and the diode, which takes over while RB would drop more than it does."""
+    """Through RA and RB; or through RA and the diode, which takes over while RB would drop more than it
+    does."""
 
     def source(v: Array) -> tuple[Array, Array]:
         both = 1.0 / (p.RA + p.RB)
@@ -144,7 +163,14 @@ TIMER_555 = _rig(
     ),
     horizon=lambda p: 60.0 * _whole(p) * (p.RA + p.RB) + 20.0 * p.delay,
     required=("supply", "RA", "RB", "C"),
-    defaults={"k_upper": 2.0 / 3.0, "k_lower": 1.0 / 3.0, "V_discharge": 0.05, "V_diode": None,  # type: ignore[dict-item]
-              "r_switch": 0.0, "output_drop": 0.0, "output_floor": 0.0},
+    defaults={
+        "k_upper": 2.0 / 3.0,
+        "k_lower": 1.0 / 3.0,
+        "V_discharge": 0.05,
+        "V_diode": None,
+        "r_switch": 0.0,
+        "output_drop": 0.0,
+        "output_floor": 0.0,
+    },
     fill=_timer_fill,
 )

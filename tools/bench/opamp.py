@@ -4,18 +4,21 @@ from __future__ import annotations
 
 import numpy as np
 
-from tools.bench.engine import Array, End, Mode, Rig, Values
+from tools.bench.engine import Array, End, Mode, Numbers, Rig, Values
 from tools.bench.parts import Source, conductance, grounded, loaded
 
 # An output said to switch at once crosses its swing in this fraction of the timing constant.
 INSTANT = 1e-11
 
 
-def fill(parts: dict[str, object]) -> dict[str, object]:
+def fill(parts: Numbers) -> Numbers:
     """Steering resistors where R serves both ways, and conductances of the network."""
     out = dict(parts)
     both, up, down = (out.pop(name, None) for name in ("R", "R_charge", "R_discharge"))
-    out["G_up"], out["G_down"] = conductance(both if up is None else up), conductance(both if down is None else down)
+    out["G_up"], out["G_down"] = (
+        conductance(both if up is None else up),
+        conductance(both if down is None else down),
+    )
     if both is not None:
         out["V_diode"] = 0.0
     out["G_top"], out["G_bottom"] = conductance(out.pop("R_top")), conductance(out.pop("R_bottom"))
@@ -93,14 +96,19 @@ def _level(p: Values, late: bool, high: bool) -> Mode:
 
     if late:
         wait = p.delay + (p.late_up if high else p.late_down)
-        return Mode(rates, nodes, lasts=np.maximum(wait, 0.0), then="falling" if high else "rising", jump=leave)
+        return Mode(
+            rates, nodes, lasts=np.maximum(wait, 0.0), then="falling" if high else "rising", jump=leave
+        )
     sign, trip = (1.0, p.trip_up) if high else (-1.0, p.trip_down)
-    past = End(lambda y: sign * (node(y[0]) - _plus(p, output(y)) - trip), "late high" if high else "late low")
+    past = End(
+        lambda y: sign * (node(y[0]) - _plus(p, output(y)) - trip), "late high" if high else "late low"
+    )
     return Mode(rates, nodes, ends=(past,))
 
 
 def _moving(p: Values, rising: bool) -> Mode:
-    """Output on its way at the slew rate; it turns back if the timing node overtakes the divider meanwhile."""
+    """Output on its way at the slew rate; it turns back if the timing node overtakes the divider
+    meanwhile."""
     sign = 1.0 if rising else -1.0
     rate_of = _slew(p)
 
@@ -121,8 +129,12 @@ def _moving(p: Values, rising: bool) -> Mode:
         return y[1] - (alpha + gamma * at(y)[1])
 
     there = End(goal, "high" if rising else "low")
-    noise, least = (p.trip_down, 1e-9 * (p.V_high - p.V_low)) if rising else (p.trip_up, 1e-9 * (p.V_high - p.V_low))
-    back = End(lambda y: sign * (at(y)[1] - _plus(p, y[1]) - noise) - least, "falling" if rising else "rising")
+    noise, least = (
+        (p.trip_down, 1e-9 * (p.V_high - p.V_low)) if rising else (p.trip_up, 1e-9 * (p.V_high - p.V_low))
+    )
+    back = End(
+        lambda y: sign * (at(y)[1] - _plus(p, y[1]) - noise) - least, "falling" if rising else "rising"
+    )
     return Mode(rates, nodes, ends=(there, back))
 
 
@@ -156,7 +168,15 @@ OP_AMP = Rig(
     rest=_rest,
     horizon=_horizon,
     required=("C", "R_top", "R_bottom", "V_high", "V_low"),
-    defaults={"V_reference": 0.0, "supply": 0.0, "V_diode": 0.6, "R": None, "R_charge": None, "R_discharge": None,
-              "R_bias": None, "R_pull": None},
+    defaults={
+        "V_reference": 0.0,
+        "supply": 0.0,
+        "V_diode": 0.6,
+        "R": None,
+        "R_charge": None,
+        "R_discharge": None,
+        "R_bias": None,
+        "R_pull": None,
+    },
     fill=fill,
 )

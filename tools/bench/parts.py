@@ -1,4 +1,5 @@
-"""Parts as the bench uses them: parasitics as conductances, probes as loads, and the capacitor with its leg."""
+"""Parts as the bench uses them: parasitics as conductances, probes as loads, and the capacitor with its
+leg."""
 
 from __future__ import annotations
 
@@ -23,8 +24,9 @@ def conductance(resistance: Number | None) -> Array:
         return 1.0 / np.asarray(resistance, dtype=float)
 
 
-def prepare(rig: Rig, parts: Mapping[str, Number | None], probes: Mapping[str, Probe] | None = None,
-            **extra: Number) -> Values:
+def prepare(
+    rig: Rig, parts: Mapping[str, Number | None], probes: Mapping[str, Probe] | None = None, **extra: Number
+) -> Values:
     """All numbers that the rig's modes need, of one shape (n,).
 
     Parameters
@@ -76,13 +78,15 @@ def loaded(p: Values, source: Source, node: str = "capacitor", rail: Array | Non
     return both
 
 
-def grounded(p: Values, source: Source, node: str = "capacitor") -> tuple[Callable[[Array], Array],
-                                                                         Callable[[Array], Array]]:
-    """The capacitor from a node to ground: (dv/dt, voltage at the node), functions of the voltage on its plates.
+def grounded(
+    p: Values, source: Source, node: str = "capacitor"
+) -> tuple[Callable[[Array], Array], Callable[[Array], Array]]:
+    """The capacitor from a node to ground: (dv/dt, voltage at the node), functions of the voltage on its
+    plates.
 
-    The capacitor's leg has a resistance ESR, and its capacitance follows its voltage, C·(1 + C_slope·v). Stray and
-    probe capacitance sit at the node; the node's own fast settling (ESR with the stray capacitance) is taken as
-    instantaneous: of the node's current i the leg takes k·i, k = C/(C + C_stray + C_probe).
+    The capacitor's leg has a resistance ESR, and its capacitance follows its voltage, C·(1 + C_slope·v).
+    Stray and probe capacitance sit at the node; the node's own fast settling (ESR with the stray capacitance)
+    is taken as instantaneous: of the node's current i the leg takes k·i, k = C/(C + C_stray + C_probe).
     """
     aside = p.C_stray + getattr(p, f"C_probe_{node}")
 

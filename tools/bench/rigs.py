@@ -11,6 +11,17 @@ from tools.bench.triangle import TRIANGLE
 
 RIGS: dict[str, Rig] = {
     rig.name: rig
-    for rig in (OP_AMP, GAS_LAMP, UNIJUNCTION, SCHMITT, TIMER_555, PROGRAMMABLE, TRIGGER_DIODE, TWO_TRANSISTOR,
-                GATE_PAIR, TRIANGLE, CURRENT_RAMP)
+    for rig in (
+        OP_AMP,
+        GAS_LAMP,
+        UNIJUNCTION,
+        SCHMITT,
+        TIMER_555,
+        PROGRAMMABLE,
+        TRIGGER_DIODE,
+        TWO_TRANSISTOR,
+        GATE_PAIR,
+        TRIANGLE,
+        CURRENT_RAMP,
+    )
 }

@@ -22,7 +22,8 @@ class Waves:
     Attributes
     ----------
     period, high_share : float
-        Long-run mean period (s) and share of it in which the circuit charges; NaN where it does not oscillate.
+        Long-run mean period (s) and share of it in which the circuit charges; NaN where it does not
+        oscillate.
     ends_in : str
         The mode in which a build that does not oscillate came to rest ("" where it oscillates).
     starts : ndarray
@@ -81,7 +82,9 @@ def settle(rig: Rig, p: Values, most: int = 60) -> tuple[Run, NDArray[np.bool_]]
             break
         index = np.flatnonzero(alive)
         again = run(rig, p.take(index), rig.first, done.state[:, index], cycles=1)
-        moved = np.max(np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0)
+        moved = np.max(
+            np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0
+        )
         alive[index[again.cycles < 1]] = False
         done.state[:, index] = again.state
         if np.all(moved[again.cycles >= 1] < SETTLED):
@@ -102,12 +105,15 @@ def _repeat(p: Values, n: int) -> Values:
 
 
 def _chain(rig: Rig, p: Values, first: Array, n: int) -> tuple[Run, Array]:
-    """n cycles with their own noise, each from where the one before ended: repeated side by side until they agree."""
+    """n cycles with their own noise, each from where the one before ended: repeated side by side until they
+    agree."""
     y = np.repeat(first[:, None], n, axis=1)
     for _ in range(50):
         done = run(rig, p, rig.first, y, cycles=1, keep=True)
         if (done.cycles < 1).any():
-            raise RuntimeError(f"{rig.name}: a cycle did not come; the noise on the thresholds stops this build")
+            raise RuntimeError(
+                f"{rig.name}: a cycle did not come; the noise on the thresholds stops this build"
+            )
         after = np.concatenate([first[:, None], done.state[:, :-1]], axis=1)
         moved = np.max(np.abs(after - y))
         y = after
@@ -127,9 +133,18 @@ def _share(done: Run, rig: Rig) -> float:
     return float(total.sum() / done.time.sum())
 
 
-def simulate(circuit_name: str, parts: Mapping[str, Number | None], *, probe: Mapping[str, Probe] | None = None,
-             cycles: int = 1, seed: int = 0, start: str = "running", threshold_noise: float = 0.0, lag: float = 0.0,
-             **options: float) -> Waves:
+def simulate(
+    circuit_name: str,
+    parts: Mapping[str, Number | None],
+    *,
+    probe: Mapping[str, Probe] | None = None,
+    cycles: int = 1,
+    seed: int = 0,
+    start: str = "running",
+    threshold_noise: float = 0.0,
+    lag: float = 0.0,
+    **options: float,
+) -> Waves:
     """Integrate one build.
 
     Parameters
@@ -139,14 +154,15 @@ def simulate(circuit_name: str, parts: Mapping[str, Number | None], *, probe: Ma
     probe : mapping of node to (resistance in ohm, capacitance in F)
         What hangs on the nodes while they are looked at.
     cycles : int
-        How many cycles to integrate where they differ (noise, or start "from rest"); without noise a running build
-        is integrated over one settled cycle, which repeats.
+        How many cycles to integrate where they differ (noise, or start "from rest"); without noise a running
+        build is integrated over one settled cycle, which repeats.
     start : "running" or "from rest"
         Settled, or from power-on.
     threshold_noise : float
         Rms of the trip levels from one cycle to the next (V).
     lag : float
-        Mean of an exponentially distributed lag at the upper trip (s), on top of ``delay``: a lamp's statistical lag.
+        Mean of an exponentially distributed lag at the upper trip (s), on top of ``delay``: a lamp's
+        statistical lag.
     options : the rig's own refinements (``valley_bend``, ``lamp_bend``, ...).
     """
     rig = RIGS[circuit_name]
@@ -159,18 +175,25 @@ def simulate(circuit_name: str, parts: Mapping[str, Number | None], *, probe: Ma
     noisy = threshold_noise > 0 or lag > 0
     if start == "running" and not noisy:
         cycles = 1
-    own = _repeat(p, cycles).changed(**_draw(rng, cycles, threshold_noise, lag)) if noisy else _repeat(p, cycles)
+    own = (
+        _repeat(p, cycles).changed(**_draw(rng, cycles, threshold_noise, lag))
+        if noisy
+        else _repeat(p, cycles)
+    )
     if start == "running":
         done, lengths = _chain(rig, own, settled.state[:, 0], cycles)
         return _waves(rig, own, done.steps, lengths, 0.0, not noisy, _share(done, rig))
     return _from_rest(rig, own, cycles, settled.state[:, 0])
 
 
-def _waves(rig: Rig, own: Values, steps: list[Steps], lengths: Array, lead: float, repeats: bool,
-           share: float) -> Waves:
+def _waves(
+    rig: Rig, own: Values, steps: list[Steps], lengths: Array, lead: float, repeats: bool, share: float
+) -> Waves:
     starts = lead + np.concatenate([[0.0], np.cumsum(lengths)])
     moved = tuple(replace(s, time=s.time + starts[s.element]) for s in steps)
-    return Waves(rig, own, moved, starts, float(starts[-1]), repeats, float(lengths.mean()), share, periods=lengths)
+    return Waves(
+        rig, own, moved, starts, float(starts[-1]), repeats, float(lengths.mean()), share, periods=lengths
+    )
 
 
 def _from_rest(rig: Rig, own: Values, cycles: int, settled: Array) -> Waves:
@@ -192,12 +215,25 @@ def _resting(rig: Rig, p: Values, start: str) -> Waves:
     span = float(done.time[0])
     last = Steps(done.mode[0], np.array([0]), np.array([span]), np.zeros(1), done.state[:, :1])
     steps = (*done.steps, last) if start == "from rest" else (replace(last, time=np.zeros(1)),)
-    return Waves(rig, one, steps, np.empty(0), span if start == "from rest" else 0.0, False, float("nan"),
-                 float("nan"), ends_in=done.mode[0])
+    return Waves(
+        rig,
+        one,
+        steps,
+        np.empty(0),
+        span if start == "from rest" else 0.0,
+        False,
+        float("nan"),
+        float("nan"),
+        ends_in=done.mode[0],
+    )
 
 
 def trips(waves_entries: list[Entry]) -> list[tuple[str, str, float]]:
     """The mode changes of the first element in order of time: (from, to, s)."""
-    all_of = [(e.before, e.after, float(t)) for e in waves_entries for i, t in zip(e.element, e.time, strict=True)
-              if i == 0]
+    all_of = [
+        (e.before, e.after, float(t))
+        for e in waves_entries
+        for i, t in zip(e.element, e.time, strict=True)
+        if i == 0
+    ]
     return sorted(all_of, key=lambda x: x[2])

@@ -1,4 +1,5 @@
-"""Triangle generator: an integrator and a comparator with hysteresis round it, whose output waits and slews."""
+"""Triangle generator: an integrator and a comparator with hysteresis round it, whose output waits and
+slews."""
 
 from __future__ import annotations
 
@@ -30,8 +31,11 @@ def _level(p: Values, high: bool, late: bool) -> Mode:
         wait = p.delay + (p.late_up if high else p.late_down)
         return Mode(rates, _nodes, lasts=np.maximum(wait, 0.0), then="falling" if high else "rising")
     sign, trip = (-1.0, p.trip_up) if high else (1.0, p.trip_down)
-    return Mode(rates, _nodes,
-                ends=(End(lambda y: sign * (_input(p, y) - trip), "late high" if high else "late low"),))
+    return Mode(
+        rates,
+        _nodes,
+        ends=(End(lambda y: sign * (_input(p, y) - trip), "late high" if high else "late low"),),
+    )
 
 
 def _moving(p: Values, rising: bool) -> Mode:
@@ -54,7 +58,9 @@ def _upper(p: Values) -> Array:
 
 
 TRIANGLE = Rig(
-    name="triangle", nodes=("capacitor", "output"), first="high",
+    name="triangle",
+    nodes=("capacitor", "output"),
+    first="high",
     high=frozenset({"high", "late high", "falling"}),
     modes={
         "high": lambda p: _level(p, high=True, late=False),

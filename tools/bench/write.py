@@ -38,8 +38,10 @@ def unit_row(record: Record, names: Mapping[str, str]) -> str:
 
 def start_and_increment(record: Record, names: Mapping[str, str]) -> str:
     """Sequence number and values; start and increment stand in the header."""
-    head = [["X", *names.values(), "Start", "Increment"],
-            ["Sequence", *("Volt" for _ in names), f"{record.start:.9E}", f"{record.interval:.9E}"]]
+    head = [
+        ["X", *names.values(), "Start", "Increment"],
+        ["Sequence", *("Volt" for _ in names), f"{record.start:.9E}", f"{record.interval:.9E}"],
+    ]
     body = [[str(i), *row[1:]] for i, row in enumerate(_columns(record, names))]
     return "\n".join(",".join(row) for row in [*head, *body]) + "\n"
 
@@ -47,7 +49,10 @@ def start_and_increment(record: Record, names: Mapping[str, str]) -> str:
 def decimal_comma(record: Record, names: Mapping[str, str]) -> str:
     """Semicolons and decimal commas; names, units, a blank row; times in milliseconds; a byte order mark."""
     head = [["Time", *names.values()], ["(ms)", *("(V)" for _ in names)], []]
-    times = [f"{1e3 * (record.start + i * record.interval):.9g}" for i in range(next(iter(record.channels.values())).size)]
+    times = [
+        f"{1e3 * (record.start + i * record.interval):.9g}"
+        for i in range(next(iter(record.channels.values())).size)
+    ]
     body = [[t, *row[1:]] for t, row in zip(times, _columns(record, names), strict=True)]
     text = [";".join(cell.replace(".", ",") for cell in row) for row in [*head, *body]]
     return "\ufeff" + "\r\n".join(text) + "\r\n"
