@@ -1,4 +1,4 @@
-"""The project's own virtual environment: made when need be, installed into when ``pyproject.toml`` has changed.
+"""The project's virtual environment: made when need be, installed into when ``pyproject.toml`` has changed.
 
 Standard library only: this runs before anything is installed.
 """
@@ -30,8 +30,8 @@ def ensure(extra: str = "") -> Path:
     What is done is said on standard error, so that standard output stays the program's own. Ends the process
     with one sentence where a step fails.
     """
-    if sys.version_info < (3, 11):
-        sys.exit(f"benchfit needs Python 3.11 or newer, and this is {sys.version.split()[0]}; start another one")
+    if sys.version_info < (3, 11):  # noqa: UP036 (what starts this may be older than what the project needs)
+        sys.exit(f"benchfit needs Python 3.11 or newer; this is {sys.version.split()[0]}")
     if not python().exists():
         _say(f"making {VENV.name}")
         uv = shutil.which("uv")
@@ -60,11 +60,12 @@ def start(words: Sequence[str]) -> int:
 def _install(extras: str) -> None:
     target = f"{REPO}[{extras}]" if extras else str(REPO)
     uv = shutil.which("uv")
+    what = f"installing benchfit{f' [{extras}]' if extras else ''}"
     if uv:
-        _say(f"installing benchfit{f' [{extras}]' if extras else ''} with uv")
+        _say(f"{what} with uv")
         _run([uv, "pip", "install", "-q", "--python", str(python()), "-e", target])
         return
-    _say(f"installing benchfit{f' [{extras}]' if extras else ''} with pip; the first time this takes a minute or so")
+    _say(f"{what} with pip; the first time this takes a minute or so")
     pip = [str(python()), "-m", "pip"]
     if subprocess.run([*pip, "--version"], capture_output=True).returncode:
         _run([str(python()), "-m", "ensurepip"])

@@ -10,7 +10,7 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
-from tools.environment import ensure, start  # noqa: E402
+from tools.environment import ensure, start
 
 if __name__ == "__main__":
     ensure()

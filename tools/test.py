@@ -1,4 +1,4 @@
-"""Run the tests: ``python3 tools/test.py``; further words go to pytest, as in ``python3 tools/test.py -m long``.
+"""Run the tests: ``python3 tools/test.py``; further words go to pytest: ``python3 tools/test.py -m long``.
 
 Makes the environment ``.venv`` and installs benchfit with its ``dev`` extra into it if need be.
 """
@@ -11,7 +11,7 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
-from tools.environment import REPO, ensure, start  # noqa: E402
+from tools.environment import REPO, ensure, start
 
 if __name__ == "__main__":
     ensure("dev")

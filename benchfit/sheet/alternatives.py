@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection
+from collections.abc import Callable, Collection, Sequence
 from typing import NoReturn
 
 from benchfit.circuits.model import Circuit
@@ -31,23 +31,23 @@ def left_out(circuit: Circuit, given: Collection[str]) -> frozenset[str]:
 def check_complete(circuit: Circuit, given: Collection[str], fail: Callable[[str, str], NoReturn]) -> None:
     """Refuse a build that names two sets of one choice, or that leaves out a part that it needs."""
     choices = {name for choice in circuit.alternatives for names in choice for name in names}
-    missing = [
-        part.name
-        for part in circuit.parts
-        if part.nominal is None and part.base is None and not part.optional
-        and part.name not in choices and part.name not in given
-    ]  # fmt: skip
+    needed = [p.name for p in circuit.parts if p.nominal is None and p.base is None and not p.optional]
+    missing = [name for name in needed if name not in choices and name not in given]
     for choice in circuit.alternatives:
         taken = chosen(choice, given)
         if len(taken) > 1:
-            words = " or ".join(" and ".join(names) for names in choice)
+            words = " or ".join(_listed(names) for names in choice)
             key = next(name for name in given if name in taken[-1])
             fail(f"parts.{key}", f"give {words}, not both")
         if not taken:
-            missing.append(f"{' and '.join(choice[0])} (or {' and '.join(choice[-1])})")
+            first, *others = ([name for name in names if name in needed] for names in choice)
+            missing.append(f"{_listed(first)} ({', '.join(f'or {_listed(names)}' for names in others)})")
         else:
-            missing += [name for name in taken[0] if name not in given]
+            missing += [name for name in taken[0] if name in needed and name not in given]
     if missing:
-        listed = missing[0] if len(missing) == 1 else f"{', '.join(missing[:-1])} and {missing[-1]}"
-        fail("parts", f"circuit {circuit.name} also needs {listed}; add "
-                      f"{'it' if len(missing) == 1 else 'them'} to the section [parts]")  # fmt: skip
+        them = "it" if len(missing) == 1 else "them"
+        fail("parts", f"circuit {circuit.name} also needs {_listed(missing)}; add {them} to [parts]")
+
+
+def _listed(names: Sequence[str]) -> str:
+    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"

@@ -1,0 +1,144 @@
+"""One explanation as a task that another process can do."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any
+
+from benchfit.errors import BenchfitError, CaptureError, UsageError
+
+if TYPE_CHECKING:
+    from concurrent.futures import Executor, Future
+
+    from benchfit.explain.result import Explanation
+    from benchfit.sheet import Sheet
+
+
+@dataclass(frozen=True)
+class Task:
+    """Captures to explain together (one, but for joint explanations), each with the files that belong to it.
+
+    ``layout`` holds keywords of :func:`benchfit.read`; ``plot`` and ``report`` are files to write.
+    """
+
+    captures: tuple[Sequence[str], ...]
+    sheet: Sheet | None = None
+    layout: Mapping[str, Any] = field(default_factory=dict)
+    plot: str | None = None
+    report: str | None = None
+
+    @property
+    def name(self) -> str:
+        """What to call it in a sentence."""
+        return self.captures[0][0]
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What came of a task: an explanation with its record, or an error with what stands in the record's place.
+
+    ``notes`` say how each file was understood; ``trace`` is where a fault of the program's own came from.
+    """
+
+    record: dict[str, Any]
+    explanation: Explanation | None = None
+    error: BenchfitError | None = None
+    notes: tuple[tuple[str, dict[str, str]], ...] = ()
+    trace: str = ""
+
+
+def work(task: Task) -> Outcome:
+    """Do a task. Nothing but an error of the operating system's own escapes it."""
+    try:
+        return _explained(task)
+    except BenchfitError as error:
+        return _failed(task, error)
+    except MemoryError:
+        says = f"{task.name}: too large for this machine's memory"
+        return _failed(task, CaptureError(says, path=task.name))
+    except Exception as error:
+        import traceback
+
+        from benchfit.commands.main import fault
+
+        says = f"{task.name}: {fault(error)}"
+        return _failed(task, CaptureError(says, path=task.name), traceback.format_exc())
+
+
+def _explained(task: Task) -> Outcome:
+    from benchfit import pipeline
+    from benchfit.capture import read
+    from benchfit.commands.streams import replacing
+
+    captures = [read(path, also=also, **task.layout) for path, *also in task.captures]
+    if len(captures) == 1:
+        found = pipeline.explain(captures[0], task.sheet)
+    else:
+        found = pipeline.explain(captures=captures, sheet=task.sheet)
+    if task.plot is not None:
+        with replacing(task.plot) as scratch:
+            found.plot(str(scratch))
+    if task.report is not None:
+        from benchfit.show.report import report
+
+        with replacing(task.report) as scratch:
+            report(found, str(scratch))
+    notes = tuple((capture.path, dict(capture.notes)) for capture in captures)
+    return Outcome(record=found.record(), explanation=found.explanation, notes=notes)
+
+
+def _failed(task: Task, error: BenchfitError, trace: str = "") -> Outcome:
+    from benchfit.show.record import failure
+
+    return Outcome(record=failure(task.name, error), error=error, trace=trace)
+
+
+def in_processes(jobs: int, tasks: Sequence[Task]) -> Iterator[Outcome]:
+    """The outcomes in the tasks' order, from so many processes."""
+    import multiprocessing
+    from concurrent.futures import ProcessPoolExecutor
+
+    # Started afresh everywhere, as Windows and macOS do: a forked one may inherit a lock that is held.
+    with ProcessPoolExecutor(jobs, mp_context=multiprocessing.get_context("spawn")) as executor:
+        yield from through(executor, tasks)
+
+
+def on_cluster(address: str, tasks: Sequence[Task]) -> Iterator[Outcome]:
+    """The outcomes in the tasks' order, from the workers of a dask scheduler.
+
+    Raises
+    ------
+    UsageError
+        Where the extra package is not installed, or nobody answers at the address.
+    """
+    try:
+        from distributed import Client
+    except ImportError:
+        says = "--cluster needs the package distributed; install it with pip install 'benchfit[cluster]'"
+        raise UsageError(says) from None
+    try:
+        client: Any = Client(address, timeout="10 s")  # type: ignore[no-untyped-call]
+    except (OSError, ValueError) as error:
+        raise UsageError(f"--cluster {address}: no dask scheduler answers there ({error})") from None
+    with client, client.get_executor() as executor:
+        yield from through(executor, tasks)
+
+
+def through(executor: Executor, tasks: Sequence[Task]) -> Iterator[Outcome]:
+    """The outcomes in the tasks' order, from any executor; a worker that dies fails its own task."""
+    futures = [executor.submit(work, task) for task in tasks]
+    try:
+        for task, future in zip(tasks, futures, strict=True):
+            yield _outcome(task, future)
+    finally:
+        for future in futures:
+            future.cancel()
+
+
+def _outcome(task: Task, future: Future[Outcome]) -> Outcome:
+    try:
+        return future.result()
+    except Exception as error:
+        says = f"{task.name}: its worker died ({type(error).__name__}); try it alone, or with --jobs 1"
+        return _failed(task, CaptureError(says, path=task.name))
