@@ -1,12 +1,13 @@
 """Constants as linear forms in independent errors, so that their full covariance follows at once.
 
-The errors are each phase's own (one per phase, from the noise of its samples) and, for each kind of phase, the
-shared (slope, curvature). Everything that a timing node tells is, to first order, a linear form in these.
+The errors are each phase's own (one per phase, from the noise of its samples), for each kind of phase the
+shared (slope, curvature), and whatever else a route adds (instants known only between two samples).
+Everything that a timing node tells is, to first order, a linear form in these.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,22 +19,27 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True, eq=False)
 class Form:
-    """A linear form: ``own`` (p,) on the phases' own errors, ``shared`` (2, 2) on (falling, rising) × (slope, κ)."""
+    """A linear form.
+
+    ``own`` (p,) on the phases' own errors, ``shared`` (2, 2) on (falling, rising) × (slope, curvature),
+    ``extra`` (2,) on the instants (s) of the upper and the lower turn as a whole.
+    """
 
     own: Array
     shared: Array
+    extra: Array = field(default_factory=lambda: np.zeros(2))
 
     def __add__(self, other: Form) -> Form:
-        return Form(self.own + other.own, self.shared + other.shared)
+        return Form(self.own + other.own, self.shared + other.shared, self.extra + other.extra)
 
     def __mul__(self, factor: float) -> Form:
-        return Form(self.own * factor, self.shared * factor)
+        return Form(self.own * factor, self.shared * factor, self.extra * factor)
 
 
 def phase_form(fitted: Fitted, phase: NDArray[np.int64], index: Array, weight: Array) -> Form:
     """Σ weight · δv(phase, index)."""
     own, shared = fitted.derivatives(phase, index)
-    total = np.bincount(phase, weights=weight * own, minlength=fitted.layout.size)
+    total = np.bincount(phase, weights=weight * own, minlength=fitted.layout.size).astype(float)
     by_kind = np.zeros((2, 2))
     for kind in (False, True):
         mine = fitted.layout.rising[phase] == kind
@@ -48,13 +54,21 @@ def curvature_form(fitted: Fitted, rising: bool) -> Form:
     return Form(np.zeros(fitted.layout.size), shared)
 
 
-def covariance(fitted: Fitted, forms: list[Form], variance: float) -> Array:
-    """Covariance of forms when a sample has ``variance`` (V²)."""
+def extra_form(fitted: Fitted, upper: float, lower: float) -> Form:
+    """Multiples of the errors of the upper and the lower turn's instant."""
+    return Form(np.zeros(fitted.layout.size), np.zeros((2, 2)), np.array([upper, lower]))
+
+
+def covariance(fitted: Fitted, forms: list[Form], variance: float, extra: Array | None = None) -> Array:
+    """Covariance of forms when a sample has ``variance`` (V²); ``extra`` (2,) the variances of the instants (s²)."""
     own = np.stack([f.own for f in forms])
     with np.errstate(divide="ignore"):
         spread = np.where(fitted.information > 0, 1.0 / fitted.information, 0.0)
-    result = (own * spread) @ own.T
+    result = variance * ((own * spread) @ own.T)
     for kind, fit in fitted.fits.items():
         shared = np.stack([f.shared[int(kind)] for f in forms])
-        result = result + shared @ fit.shared @ shared.T
-    return np.asarray(variance * result)
+        result = result + variance * (shared @ fit.shared @ shared.T)
+    if extra is not None:
+        instants = np.stack([f.extra for f in forms])
+        result = result + (instants * extra) @ instants.T
+    return np.asarray(result)

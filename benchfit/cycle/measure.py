@@ -10,9 +10,9 @@ from benchfit.capture.model import Capture
 from benchfit.cycle.constants import Assignment, CycleConstants
 from benchfit.cycle.levels import is_square
 from benchfit.cycle.output import observe_output
-from benchfit.cycle.timing import Observed, observe_timing
+from benchfit.cycle.observed import Observed
+from benchfit.cycle.timing import observe_timing
 from benchfit.cycle.trace import Trace, prepare
-from benchfit.cycle.turns import crossings, find_band
 from benchfit.errors import CaptureError, Remark
 
 
@@ -36,18 +36,8 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     timing = next((t for t in traces if t.assignment.shape != "square"), None)
     output = next((t for t in traces if t.assignment.shape == "square"), None)
     found_output = observe_output(output)[0] if output is not None else None
-    found_timing = _timing(timing) if timing is not None else None
+    found_timing = observe_timing(timing) if timing is not None else None
     return _join(capture, traces, found_timing, found_output)
-
-
-def _timing(trace: Trace) -> Observed | None:
-    band = find_band(trace)
-    if band is None:
-        return None
-    passed = crossings(trace.values, *band.limits)
-    if passed.size < 2:
-        return None
-    return observe_timing(trace, passed)
 
 
 def _join(

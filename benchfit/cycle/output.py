@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from benchfit.cycle.edges import Edges, durations, find_edges
 from benchfit.cycle.levels import States, state_levels
 from benchfit.cycle.period import fit_period
-from benchfit.cycle.timing import Observed
+from benchfit.cycle.observed import Observed
 from benchfit.cycle.trace import Trace
 
 Array = NDArray[np.float64]
