@@ -14,7 +14,7 @@ if TYPE_CHECKING:
 
 def add_arguments(parser: argparse.ArgumentParser) -> None:
     """``benchfit circuits [NAME]``."""
-    parser.add_argument("name", metavar="NAME", nargs="?", help="describe this one; without it all are listed")
+    parser.add_argument("name", metavar="NAME", nargs="?", help="describe this one; without it, list all")
     options.add_talk(parser)
 
 

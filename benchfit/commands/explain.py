@@ -33,7 +33,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         "--with", metavar="FILE", dest="also",
         help="one more file of the capture named before it (an instrument that writes a file per channel)",
     )  # fmt: skip
-    group.add_argument("--joint", action="store_true", help="fit the captures together: they are of one build")
+    group.add_argument("--joint", action="store_true", help="the captures are of one build: fit together")
     options.add_sheet(parser)
     options.add_layout(parser)
     options.add_results(parser)
@@ -80,7 +80,7 @@ def arrange(parser: argparse.ArgumentParser, words: Sequence[str]) -> list[str]:
 
 
 def run(args: argparse.Namespace) -> int:
-    """Explain every capture; the status of the first failure, else 0 (1: --check, and a verdict not passed)."""
+    """Explain every capture; the first failure's status, else 0 (1: --check and a verdict not passed)."""
     options.check_outputs(args)
     captures = _found(args.captures)
     sheet = options.sheet_of(args)
@@ -141,7 +141,7 @@ def _check(args: argparse.Namespace, captures: Sequence[Sequence[str]], sheet: S
     if args.joint and numbers and numbers[-1] > len(captures):
         raise UsageError(f"the build sheet has [capture.{numbers[-1]}], yet {len(captures)} are given")
     if numbers and not args.joint and len(captures) > 1:
-        raise UsageError(f"the build sheet's [capture.{numbers[0]}] is for captures taken together; add --joint")
+        raise UsageError(f"the build sheet's [capture.{numbers[0]}] counts only with --joint; add it")
     if args.jobs is not None and args.jobs < 1:
         raise UsageError(f"--jobs {args.jobs}: at least one process is needed")
     if sum(paths[0] == "-" for paths in captures) > 1:

@@ -68,7 +68,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 def fault(error: BaseException) -> str:
     """The sentence for an error that should not have happened."""
     what = f"{type(error).__name__}: {error}".strip(": ").replace("\n", " ")
-    return f"a fault in benchfit itself ({what}); please report it with the input that shows it (-v says where)"
+    return f"a fault in benchfit itself ({what}); please report it with the input that shows it (-v: where)"
 
 
 def _run(words: list[str]) -> int:

@@ -36,7 +36,7 @@ class Task:
 
 @dataclass(frozen=True)
 class Outcome:
-    """What came of a task: an explanation with its record, or an error with what stands in the record's place.
+    """What came of a task: an explanation with its record, or an error and what stands in its place.
 
     ``notes`` say how each file was understood; ``trace`` is where a fault of the program's own came from.
     """

@@ -214,6 +214,8 @@ class _Reader:
         factor = self.mark(coded[3])
         if factor is None or (coded[5] and coded[5] not in _UNITS[self.unit]):
             return None
+        if text.endswith(" F"):
+            return None  # as in "100n F", where it is the tolerance letter
         return _scaled(f"{coded[1]}{coded[2] or '0'}.{coded[4]}", factor)
 
     def mark(self, letter: str) -> float | None:
