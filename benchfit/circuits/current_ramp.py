@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from benchfit.circuits.lag import lag, parasitics, phase
-from benchfit.circuits.model import Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import over, under, yes
+from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -29,6 +30,13 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """A straight ramp and a short fall."""
+    single = seen.high_share is None
+    return (0.8 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
+            * under(seen.charge_bend, 0.12, 0.03))
+
+
 CIRCUIT = Circuit(
     name="current-ramp",
     title="constant-current ramp (current source into C, switch across C)",
@@ -42,6 +50,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the capacitor", True),),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("V_upper", "V_lower"),),
     equations=(
         "charge:    slope I_charge/C until V_upper",

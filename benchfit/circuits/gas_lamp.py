@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from benchfit.circuits.lag import lag, parasitics, phase
-from benchfit.circuits.model import Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import over, ratio, yes
+from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -26,6 +27,13 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """A short discharge, levels of a lamp: tens of volts, going out at half of the strike or more."""
+    single = seen.high_share is None
+    return (0.8 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
+            * over(seen.upper, 50.0, 4.0) * over(ratio(seen.lower, seen.upper), 0.45, 0.05))
+
+
 CIRCUIT = Circuit(
     name="gas-lamp",
     title="gas-lamp relaxation oscillator (R from the supply, C across the lamp)",
@@ -42,6 +50,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the lamp's terminal, where the capacitor sits", True),),
     cycle=_cycle,
+    likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_strike",
         "discharge: A = (supply/R + V_maintain/r_lamp)/(1/R + 1/r_lamp), τ = (R ∥ r_lamp)·C, until V_extinguish",

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from benchfit.circuits.lag import Lag, lag, parasitics
-from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Node, Part, Parts, Phase
+from benchfit.circuits.likeness import close, yes
+from benchfit.circuits.model import Features, Array, Circuit, Condition, Cycle, Node, Part, Parts, Phase
 
 
 def _phase(now: Lag, threshold: Array, rising: bool, output: str, **more: Array) -> Phase:
@@ -45,6 +46,13 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """The node jumps at every transition; the output goes from rail to rail with a duty near a half."""
+    unipolar = None if seen.low is None or seen.high is None else seen.low > -0.2 * seen.high
+    node = yes(seen.jumps) if seen.upper is not None else 0.5
+    return 0.4 * node * yes(unipolar) * close(seen.high_share, 0.5, 0.08)
+
+
 CIRCUIT = Circuit(
     name="gate-pair",
     title="two CMOS inverters (R from the first gate's output, C from the second's, to one junction)",
@@ -64,6 +72,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "output of the gate that drives C"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("R", "R_series"),),
     equations=(
         "the junction jumps to V_threshold ± supply and decays through R to 0 or the supply, until V_threshold",

@@ -135,6 +135,27 @@ class Cycle:
 
 
 @dataclass(frozen=True)
+class Features:
+    """What a waveform tells of its circuit, None where it does not: voltages (V), shares of the period, bends κ·t of
+    each phase (0: straight), asymptotes (V), time constants (s), and whether the node jumps or is held."""
+
+    upper: float | None = None
+    lower: float | None = None
+    charge_share: float | None = None
+    high_share: float | None = None
+    high: float | None = None
+    low: float | None = None
+    charge_bend: float | None = None
+    discharge_bend: float | None = None
+    charge_asymptote: float | None = None
+    discharge_asymptote: float | None = None
+    charge_tau: float | None = None
+    discharge_tau: float | None = None
+    jumps: bool = False
+    holds: bool = False
+
+
+@dataclass(frozen=True)
 class Node:
     """A place where a probe can be clipped.
 
@@ -177,6 +198,8 @@ class Circuit:
         Cautions that belong to this circuit.
     aliases : mapping
         Other names for nodes: {"output": "collector1"}.
+    likeness : callable
+        Features → how well this circuit could have made them, 0 to about 1, from the waveform alone.
     """
 
     name: str
@@ -191,6 +214,7 @@ class Circuit:
     example: Mapping[str, str] = field(default_factory=dict)
     hazards: tuple[str, ...] = ()
     aliases: Mapping[str, str] = field(default_factory=dict)
+    likeness: Callable[[Features], float] = lambda seen: 0.0
 
     def part(self, name: str) -> Part:
         """The part of that name; KeyError where the circuit has none."""

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase, slewing
-from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import close, over, ratio, yes
+from benchfit.circuits.model import Features, Array, Circuit, Condition, Cycle, Node, Part, Parts
 
 _NONE = np.float64(np.inf)
 
@@ -37,8 +38,7 @@ def _cycle(p: Parts) -> Cycle:
     rising = p["delay"] + slewing(swing, p["slew"], up.curvature)
     resistor = "R" if "R" in p else "R_charge"
     levels = {} if "R_pull" in p else {"high": high, "low": low}
-    if np.all(np.isfinite(p["slew"])):
-        levels["rise_time"] = levels["fall_time"] = 0.8 * swing / p["slew"]
+    levels["rise_time"] = levels["fall_time"] = 0.8 * swing / p["slew"]
     return Cycle(
         phases=(
             phase(up, upper, rising=True, before=down, delay=falling, output="high"),
@@ -56,6 +56,14 @@ def _cycle(p: Parts) -> Cycle:
         ),
         levels=levels,
     )
+
+
+def _likeness(seen: Features) -> float:
+    """Bipolar output, node between its levels, one time constant both ways, asymptotes at the output's levels."""
+    bipolar = None if seen.low is None or seen.high is None else seen.low < -0.3 * seen.high
+    about_zero = None if seen.lower is None or seen.upper is None else seen.lower < 0 < seen.upper
+    return (0.5 * yes(bipolar) * yes(about_zero) * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.1)
+            * over(seen.charge_bend, 0.3, 0.1) * over(seen.charge_share, 0.2, 0.05) * close(seen.high_share, 0.5, 0.15) * yes(not seen.jumps))
 
 
 CIRCUIT = Circuit(
@@ -82,6 +90,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the output"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("R_top", "R_bottom"), ("R_charge", "R_discharge"), ("R", "R_top"), ("R", "R_bottom")),
     alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),
     equations=(

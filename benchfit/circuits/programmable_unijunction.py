@@ -4,12 +4,20 @@ from __future__ import annotations
 
 from benchfit.circuits._firing import firing_cycle
 from benchfit.circuits.lag import parasitics
-from benchfit.circuits.model import Circuit, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import over, under, yes
+from benchfit.circuits.model import Features, Circuit, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
     ratio = p["RG1"] / (p["RG1"] + p["RG2"])
     return firing_cycle(p, p["supply"] * ratio + p["V_offset"], p["V_valley"])
+
+
+def _likeness(seen: Features) -> float:
+    """As a unijunction, with a valley below one volt as a rule."""
+    single = seen.high_share is None
+    return (0.4 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
+            * under(seen.upper, 30.0, 3.0) * under(seen.lower, 1.4, 0.2) * over(seen.lower, 0.2, 0.1) * over(seen.charge_bend, 0.3, 0.1))
 
 
 CIRCUIT = Circuit(
@@ -32,6 +40,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the anode, where the capacitor sits", True),),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("RG1", "RG2"),),
     equations=(
         "charge:    A = supply, τ = R·C, until V_peak = supply·RG1/(RG1 + RG2) + V_offset",

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase
-from benchfit.circuits.model import Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import close, over, ratio, yes
+from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -36,6 +37,17 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """Unipolar, node within the supply, one time constant both ways, duty near a half."""
+    unipolar = None if seen.low is None or seen.high is None else seen.low > -0.2 * seen.high
+    above = None if seen.lower is None else seen.lower > 0
+    third = None
+    if seen.lower and seen.upper and seen.high:
+        third = abs(seen.upper / seen.high - 2 / 3) + abs(seen.lower / seen.high - 1 / 3)
+    return (0.7 * yes(unipolar) * yes(above) * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.12)
+            * close(seen.high_share, 0.49, 0.08) * over(seen.charge_share, 0.2, 0.05) * over(third, 0.08, 0.04) * yes(not seen.jumps))
+
+
 CIRCUIT = Circuit(
     name="schmitt-inverter",
     title="Schmitt-inverter astable (R from output to input, C from input to ground)",
@@ -56,6 +68,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the gate's output"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("R_charge", "R_discharge"),),
     alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),
     equations=(

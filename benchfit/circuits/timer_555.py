@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase
-from benchfit.circuits.model import Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import close, over, ratio, under, yes
+from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -37,6 +38,15 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """The lower level half of the upper one, the charge slower than the discharge by (RA + RB)/RB, duty above a half."""
+    unipolar = None if seen.low is None or seen.high is None else seen.low > -0.2 * seen.high
+    halves = ratio(seen.lower, seen.upper)
+    return (0.8 * close(halves, 0.5, 0.07) * over(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.03) * yes(unipolar)
+            * over(seen.high_share, 0.5, 0.02) * under(seen.charge_share, 0.985, 0.004)
+            * close(seen.discharge_bend, 0.7, 0.2) * yes(not seen.jumps))
+
+
 CIRCUIT = Circuit(
     name="timer-555",
     title="555-type timer, astable (RA to the discharge pin, RB on to the capacitor)",
@@ -56,6 +66,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the output pin"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("RA", "RB"),),
     equations=(
         "charge:    A = supply, τ = (RA + RB)·C, until k_upper·supply (with a diode across RB: A = supply − V_diode, τ = RA·C)",

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from benchfit.circuits.lag import parasitics, slewing
-from benchfit.circuits.model import Circuit, Condition, Cycle, Node, Part, Parts, Phase
+from benchfit.circuits.likeness import close, under, yes
+from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts, Phase
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -18,8 +19,7 @@ def _cycle(p: Parts) -> Cycle:
     straight = 0.0 * scale
     late = p["delay"] + slewing(high - low, p["slew"], straight)
     levels = {"high": high, "low": low}
-    if np.all(np.isfinite(p["slew"])):
-        levels["rise_time"] = levels["fall_time"] = 0.8 * (high - low) / p["slew"]
+    levels["rise_time"] = levels["fall_time"] = 0.8 * (high - low) / p["slew"]
     return Cycle(
         phases=(
             Phase("capacitor", True, up, straight, upper, delay=late, output="low"),
@@ -37,6 +37,13 @@ def _cycle(p: Parts) -> Cycle:
         ),
         levels=levels,
     )
+
+
+def _likeness(seen: Features) -> float:
+    """Straight both ways, the output low while the node rises, levels about zero."""
+    straight = under(seen.charge_bend, 0.06, 0.02) * under(seen.discharge_bend, 0.06, 0.02)
+    about_zero = None if seen.lower is None or seen.upper is None else seen.lower < 0 < seen.upper
+    return 0.7 * straight * yes(about_zero) * close(seen.charge_share, 0.5, 0.15) * yes(not seen.jumps)
 
 
 CIRCUIT = Circuit(
@@ -57,6 +64,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the comparator's output"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("R_in", "R_feedback"), ("R", "R_in")),
     equations=(
         "slopes −(V − V_reference)/(R·C), V the comparator's level",

@@ -4,11 +4,19 @@ from __future__ import annotations
 
 from benchfit.circuits._firing import firing_cycle
 from benchfit.circuits.lag import parasitics
-from benchfit.circuits.model import Circuit, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import close, over, ratio, yes
+from benchfit.circuits.model import Features, Circuit, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
     return firing_cycle(p, p["V_breakover"], p["V_breakover"] - p["V_breakback"])
+
+
+def _likeness(seen: Features) -> float:
+    """A short discharge by a part of the peak, which lies between about 26 and 45 V."""
+    single = seen.high_share is None
+    return (0.8 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
+            * close(seen.upper, 33.0, 6.0) * over(ratio(seen.lower, seen.upper), 0.4, 0.08))
 
 
 CIRCUIT = Circuit(
@@ -29,6 +37,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the diode's terminal, where the capacitor sits", True),),
     cycle=_cycle,
+    likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_breakover",
         "discharge: A ≈ V_floor, τ ≈ r_discharge·C, until V_breakover − V_breakback",

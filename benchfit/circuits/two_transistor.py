@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Node, Part, Parts, Phase
+from benchfit.circuits.likeness import close, yes
+from benchfit.circuits.model import Features, Array, Circuit, Condition, Cycle, Node, Part, Parts, Phase
 from benchfit.circuits.lag import lag, parasitics, phase
 
 
@@ -67,6 +68,14 @@ def _cycle(p: Parts) -> Cycle:
     )
 
 
+def _likeness(seen: Features) -> float:
+    """A base driven far below zero and held near +0.7 V; or a unipolar output of any duty."""
+    unipolar = None if seen.low is None or seen.high is None else -0.1 * seen.high < seen.low < 0.3 * seen.high
+    top = close(seen.upper, 0.6, 0.25) if seen.upper is not None else 0.5
+    below = yes(seen.lower < -1.0) if seen.lower is not None else 0.5
+    return 0.4 * top * below * yes(unipolar) * close(seen.high_share, 0.5, 0.25)
+
+
 CIRCUIT = Circuit(
     name="two-transistor",
     title="two-transistor (collector-coupled) astable",
@@ -92,6 +101,7 @@ CIRCUIT = Circuit(
         Node("collector2", "square", "collector of transistor 2"),
     ),
     cycle=_cycle,
+    likeness=_likeness,
     swaps=(("R1", "R2"), ("C1", "C2"), ("R1", "RC1"), ("R2", "RC2")),
     aliases={"capacitor": "base1", "output": "collector1"},
     equations=(

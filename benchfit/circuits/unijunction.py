@@ -4,11 +4,19 @@ from __future__ import annotations
 
 from benchfit.circuits._firing import firing_cycle
 from benchfit.circuits.lag import parasitics
-from benchfit.circuits.model import Circuit, Cycle, Node, Part, Parts
+from benchfit.circuits.likeness import over, under, yes
+from benchfit.circuits.model import Features, Circuit, Cycle, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
     return firing_cycle(p, p["eta"] * p["supply"] + p["V_D"], p["V_valley"])
+
+
+def _likeness(seen: Features) -> float:
+    """A short discharge from some volts down to a valley of one to three."""
+    single = seen.high_share is None
+    return (0.7 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
+            * under(seen.upper, 30.0, 3.0) * under(seen.lower, 3.5, 0.5) * over(seen.lower, 0.4, 0.15) * over(seen.charge_bend, 0.5, 0.1))
 
 
 CIRCUIT = Circuit(
@@ -30,6 +38,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the emitter, where the capacitor sits", True),),
     cycle=_cycle,
+    likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_peak = eta·supply + V_D",
         "discharge: A ≈ V_floor, τ ≈ r_discharge·C, until V_valley",

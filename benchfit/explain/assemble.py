@@ -169,6 +169,16 @@ def assemble(sheet: Sheet, captures: Sequence[CycleConstants]) -> Model:
                  period if math.isfinite(period) else (1.0 if not first.oscillates else first.value("period")))
 
 
+def assemble_bare(sheet: Sheet) -> Model:
+    """The model of a build that nobody has captured: parts and the sheet's probes, no observations."""
+    build = sheet.build()
+    parts = parameters_of(build)
+    parameters = [*parts, _exact("timebase", 0.0)]
+    view = view_of(build.circuit, None, dict(sheet.probes), None, 1, parameters, build)
+    return Model(build.circuit, tuple(parameters), (view,), (), np.empty((0, 0)), 1.0,
+                 nominal_period(build.circuit, parts))
+
+
 def _one_share(wanted: list[str], constants: CycleConstants) -> list[str]:
     """Where the output's edges and the timing node's turns give one and the same share, the sharper one is taken."""
     if abs(constants.value("high_share") - constants.value("charge_share")) > 0.02:

@@ -152,7 +152,7 @@ def relax(model: Model, batch: Batch, steps: int = 5, white: Array | None = None
         if gain < 1e-3:
             break
     jacobian = _jacobian(model, batch, white, state, residual, observed, free, t, owns)
-    return _weigh(batch, jacobian, state, t, cost, residual, free, owns)
+    return _weigh(model, batch, jacobian, state, t, cost, residual, free, owns)
 
 
 def _cost(
@@ -200,7 +200,7 @@ def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Arra
 
 
 def _weigh(
-    batch: Batch, jacobian: Array, state: Array, t: Array, cost: Array, residual: Array, free: NDArray[np.int64],
+    model: Model, batch: Batch, jacobian: Array, state: Array, t: Array, cost: Array, residual: Array, free: NDArray[np.int64],
     owns: int,
 ) -> Relaxed:
     rows, n = state.shape
@@ -218,5 +218,6 @@ def _weigh(
         own_u = np.sqrt(np.abs(np.diagonal(inverse, axis1=1, axis2=2)[:, held:]))
     inner = np.linalg.inv(normal)
     covariance[:, free[:, None], free[None, :]] = inner * spread[:, :, None] * spread[:, None, :]
-    return Relaxed(state, t, cost, np.where(np.isfinite(cost), -0.5 * cost - 0.5 * logdet, -np.inf),
+    edges = model.unexplained_edges(state)
+    return Relaxed(state, t, cost, np.where(np.isfinite(cost), -0.5 * cost - 0.5 * logdet + edges, -np.inf),
                    np.sum(np.nan_to_num(residual, posinf=1e6, neginf=1e6) ** 2, axis=1), own_u, covariance)

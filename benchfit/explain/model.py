@@ -6,6 +6,7 @@ A state is a vector of coordinates, one a parameter: ln of a part, the part itse
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 
@@ -20,6 +21,7 @@ Array = NDArray[np.float64]
 
 TIMES = ("period", "rise_time", "fall_time")
 VOLTAGES = ("upper", "lower", "charge_start", "discharge_start", "charge_bow", "discharge_bow", "high", "low")
+EDGES = ("rise_time", "fall_time")
 DIFFERENCES = ("charge_bow", "discharge_bow")
 OUTPUT = ("high", "low")
 
@@ -185,6 +187,9 @@ class Model:
             x = seen[o.view].get("period" if o.name == "frequency" else o.name, np.nan)
             if o.kind == "counter":
                 out[..., j] = -np.log(x) if o.name == "frequency" else x
+            elif o.name in EDGES:
+                # An output that nothing slows has edges of its own making: they say nothing (see unexplained_edges).
+                out[..., j] = np.where(np.asarray(x) > 0, np.log(np.maximum(x * clock, 1e-300)), o.value)
             elif o.name in TIMES:
                 out[..., j] = np.log(x * clock)
             elif o.name in VOLTAGES:
@@ -196,6 +201,17 @@ class Model:
             else:
                 out[..., j] = x
         return out
+
+    def unexplained_edges(self, state: Array) -> Array:
+        """ln of the density with which edges of no stated cause have just these durations, against FLOOR_EDGE's bell.
+
+        A slew rate explains resolved edges; without one they may be anything over four decades. Shape (...).
+        """
+        seen = [o for o in self.observations if o.name in EDGES]
+        if not seen or "slew" not in self.index:
+            return np.zeros(state.shape[:-1])
+        chance = math.log(FLOOR_EDGE * math.sqrt(2 * math.pi) / (4 * math.log(10)))
+        return np.where(state[..., self.index["slew"]] > 0, 0.0, chance)
 
     def frequency_and_duty(self, state: Array, view: View) -> tuple[Array, Array]:
         """Frequency (Hz) and duty cycle of states (..., n) under ``view``."""

@@ -1,0 +1,1 @@
+"""Parts from constants, the miss budget, suspects, next readings and remedies."""

@@ -1,0 +1,150 @@
+"""The way through the house: a capture and a sheet in, what was found out. Commands and the burn-in use this face."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from benchfit.capture.model import Capture
+from benchfit.cycle.constants import Assignment, CycleConstants
+from benchfit.explain.result import CaptureFacts, Explanation, Quantity
+from benchfit.sheet.model import Sheet
+
+if TYPE_CHECKING:
+    import pandas as pd
+    from matplotlib.figure import Figure
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """What was found: the explanation, and the capture and cycle constants that it rests on.
+
+    ``print(found)`` is what the command line prints; :meth:`record` the result record; ``parts`` and ``suspects``
+    tables for a notebook.
+    """
+
+    explanation: Explanation
+    captures: tuple[Capture, ...]
+    constants: tuple[CycleConstants, ...]
+
+    def record(self, **more: Any) -> dict[str, Any]:
+        """The result record (schema 1): plain types in base SI units."""
+        from benchfit.show.record import record
+
+        return record(self.explanation, **more)
+
+    def text(self, width: int = 80, colour: bool = False) -> str:
+        """The report for people."""
+        from benchfit.show.text import render
+
+        return render(self.explanation, width=width, colour=colour)
+
+    def __str__(self) -> str:
+        return self.text()
+
+    @property
+    def parts(self) -> pd.DataFrame:
+        """One row a part, indexed by name: value, u, unit, nominal, low, high, deviation, within, known_from."""
+        import pandas as pd
+
+        rows = [
+            {"name": p.name, "value": p.value, "u": p.u, "unit": p.unit, "nominal": p.nominal,
+             "low": p.limits[0] if p.limits else None, "high": p.limits[1] if p.limits else None,
+             "deviation": p.deviation, "within": p.within, "known_from": p.known_from}
+            for p in self.explanation.parts
+        ]
+        columns = ["name", "value", "u", "unit", "nominal", "low", "high", "deviation", "within", "known_from"]
+        return pd.DataFrame(rows, columns=columns).set_index("name")
+
+    @property
+    def suspects(self) -> pd.DataFrame:
+        """One row a suspect, best first: causes (tuple), probability, change (dict), says."""
+        import pandas as pd
+
+        rows = [{"causes": s.causes, "probability": s.probability, "change": dict(s.change), "says": s.says}
+                for s in self.explanation.suspects]
+        return pd.DataFrame(rows, columns=["causes", "probability", "change", "says"])
+
+    def plot(self, path: str | None = None, axes: Any = None, kind: str = "capture") -> Figure:
+        """Draw the capture with its fit (or another ``kind``); into a file by its ending, or into given axes."""
+        from benchfit.show.plot import plot
+
+        return plot(self.explanation, self.constants[0], self.captures[0], path=path, axes=axes, kind=kind)
+
+
+def assign(capture: Capture, sheet: Sheet | None, number: int = 1) -> tuple[Assignment, ...]:
+    """What each channel was clipped to: from the sheet's [channels], else from names and waveforms.
+
+    Raises
+    ------
+    CaptureError
+        A channel that the sheet names is not in the capture.
+    """
+    from benchfit.assignment import assignments
+
+    return assignments(capture, sheet, number)
+
+
+def measure(capture: Capture, sheet: Sheet | None = None) -> Mapping[str, Quantity | None]:
+    """The measured quantities alone (fast): the record's ``measured`` section by name."""
+    from benchfit import cycle
+    from benchfit.explain.measured import measured
+    from benchfit.sheet.model import Scope
+
+    constants = cycle.measure(capture, assign(capture, sheet))
+    return measured(constants, sheet.scope if sheet is not None else Scope(), True)
+
+
+def explain(
+    capture: Capture | None = None, sheet: Sheet | None = None, *, captures: Sequence[Capture] = ()
+) -> Found:
+    """Read the cycle out of one capture (or several of one build, jointly) and explain it.
+
+    Raises
+    ------
+    CaptureError
+        A channel is missing or empty.
+    SheetError
+        The sheet cannot be used.
+    """
+    from benchfit import cycle
+    from benchfit.explain.explain import explain as explain_constants
+
+    every = tuple(captures) if captures else (() if capture is None else (capture,))
+    if not every:
+        raise ValueError("explain needs a capture, or captures=[…]")
+    assigned = [assign(c, sheet, number) for number, c in enumerate(every, 1)]
+    constants = tuple(cycle.measure(c, a) for c, a in zip(every, assigned, strict=True))
+    facts = [facts_of(c, a, k) for c, a, k in zip(every, assigned, constants, strict=True)]
+    explanation = explain_constants(constants, sheet, facts)
+    from dataclasses import replace
+
+    read = tuple(w for c in every for w in c.warnings)
+    explanation = replace(explanation, warnings=(*read, *explanation.warnings))
+    return Found(explanation, every, constants)
+
+
+def predict(sheet: Sheet) -> dict[str, Any]:
+    """What the build should do before power is applied: the prediction record (contract, section 5)."""
+    from benchfit.explain.predict import predict as predict_build
+
+    return predict_build(sheet)
+
+
+def facts_of(capture: Capture, assigned: Sequence[Assignment], constants: CycleConstants) -> CaptureFacts:
+    """What the record says of a capture."""
+    import numpy as np
+
+    nodes = {a.channel: a for a in assigned}
+    channels = []
+    for c in capture.channels:
+        finite = c.values[np.isfinite(c.values)]
+        scale = nodes[c.name].scale if c.name in nodes else 1.0
+        channels.append({
+            "name": c.name, "node": nodes[c.name].node if c.name in nodes else None,
+            "minimum": float(finite.min()) * scale if finite.size else None,
+            "maximum": float(finite.max()) * scale if finite.size else None,
+            "resolution": c.resolution * scale,
+        })
+    return CaptureFacts(capture.path, capture.samples, capture.interval, tuple(channels), constants.cycles)
