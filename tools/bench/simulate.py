@@ -85,7 +85,7 @@ def settle(rig: Rig, p: Values, most: int = 60) -> tuple[Run, NDArray[np.bool_]]
         moved = np.max(
             np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0
         )
-        alive[index[again.cycles < 1]] = False
+        alive[index[(again.cycles < 1) | (again.time <= 0)]] = False
         done.state[:, index] = again.state
         if np.all(moved[again.cycles >= 1] < SETTLED):
             break
