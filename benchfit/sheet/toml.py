@@ -108,7 +108,7 @@ def _section(path: tuple[str, ...], table: Mapping[str, Any]) -> list[str]:
 
 
 def _key(word: str) -> str:
-    return word if _BARE.fullmatch(word) else json.dumps(word)
+    return word if _BARE.fullmatch(word) else _literal(word)
 
 
 def _literal(value: Any) -> str:

@@ -49,10 +49,15 @@ def test_gum_rounding():
 
 @pytest.mark.parametrize(
     ("x", "u", "text"),
-    [(0.162, None, "16.2 %"), (0.162, 0.002, "16.20 ± 0.40 %"), (1.5, None, "150 %"),
-     (-0.00012, 1e-6, "-0.01200 ± 0.00020 %"),
-     (0.0, None, "0 %"), (math.nan, None, "unknown")],
-)  # fmt: skip
+    [
+        (0.162, None, "16.2 %"),
+        (0.162, 0.002, "16.20 ± 0.40 %"),
+        (1.5, None, "150 %"),
+        (-0.00012, 1e-6, "-0.01200 ± 0.00020 %"),
+        (0.0, None, "0 %"),
+        (math.nan, None, "unknown"),
+    ],
+)
 def test_percent(x, u, text):
     """Fractions in per cent."""
     assert percent(x, u) == text
