@@ -648,10 +648,10 @@ def waveform(
     begin, interval = 0.62 * period, cycles * period / samples
     t = begin + interval * np.arange(samples)
     k = np.clip(np.searchsorted(edges, t, side="right") - 1, 0, n_cycles - 1)
-    length = np.diff(edges)[k]
-    s = (t - edges[k]) / length * period
-    rising = s < times[0]
-    v = np.where(rising, a - (a - lower) * np.exp(-s / ta), b - (b - upper) * np.exp(-(s - times[0]) / tb))
+    charge = np.diff(edges)[k] - times[1]
+    s = t - edges[k]
+    rising = s < charge
+    v = np.where(rising, a - (a - lower) * np.exp(-s / ta), b - (b - upper) * np.exp(-(s - charge) / tb))
     sd = noise * (upper - lower)
     step = (upper - lower) / 200
     v = np.round((v + sd * rng.standard_normal(samples)) / step) * step
