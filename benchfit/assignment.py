@@ -31,13 +31,17 @@ def _named(capture: Capture, circuit: Circuit | None) -> tuple[Assignment, ...]:
     if circuit is None:
         return ()
     known = {n.name: n for n in circuit.nodes} | {alias: circuit.node(alias) for alias in circuit.aliases}
-    found = [Assignment(c.name, known[c.name.lower()].name, known[c.name.lower()].shape)
-             for c in capture.channels if c.name.lower() in known]
+    found = [
+        Assignment(c.name, known[c.name.lower()].name, known[c.name.lower()].shape)
+        for c in capture.channels
+        if c.name.lower() in known
+    ]
     return tuple(found)
 
 
 def _placed(a: Assignment, circuit: Circuit | None) -> Assignment:
-    """A guessed node as the circuit knows it: its own name and shape; a circuit without an output has none."""
+    """A guessed node as the circuit knows it: its own name and shape; a circuit without an output has
+    none."""
     if circuit is None:
         return a
     try:
@@ -82,5 +86,9 @@ def _find(capture: Capture, name: str) -> Channel:
         if c.name.strip().lower() == name.strip().lower():
             return c
     names = ", ".join(c.name for c in capture.channels)
-    raise CaptureError(f"{capture.path}: the sheet's [channels] name {name}, but the capture has {names}; "
-                       "correct the section or the name", path=capture.path, column=name)
+    raise CaptureError(
+        f"{capture.path}: the sheet's [channels] name {name}, but the capture has {names}; "
+        "correct the section or the name",
+        path=capture.path,
+        column=name,
+    )

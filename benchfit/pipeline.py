@@ -1,4 +1,5 @@
-"""The way through the house: a capture and a sheet in, what was found out. Commands and the burn-in use this face."""
+"""The way through the house: a capture and a sheet in, what was found out. Commands and the burn-in use this
+face."""
 
 from __future__ import annotations
 
@@ -20,7 +21,8 @@ if TYPE_CHECKING:
 class Found:
     """What was found: the explanation, and the capture and cycle constants that it rests on.
 
-    ``print(found)`` is what the command line prints; :meth:`record` the result record; ``parts`` and ``suspects``
+    ``print(found)`` is what the command line prints; :meth:`record` the result record; ``parts`` and
+    ``suspects``
     tables for a notebook.
     """
 
@@ -45,16 +47,37 @@ class Found:
 
     @property
     def parts(self) -> pd.DataFrame:
-        """One row a part, indexed by name: value, u, unit, nominal, low, high, deviation, within, known_from."""
+        """One row a part, indexed by name: value, u, unit, nominal, low, high, deviation, within,
+        known_from."""
         import pandas as pd
 
         rows = [
-            {"name": p.name, "value": p.value, "u": p.u, "unit": p.unit, "nominal": p.nominal,
-             "low": p.limits[0] if p.limits else None, "high": p.limits[1] if p.limits else None,
-             "deviation": p.deviation, "within": p.within, "known_from": p.known_from}
+            {
+                "name": p.name,
+                "value": p.value,
+                "u": p.u,
+                "unit": p.unit,
+                "nominal": p.nominal,
+                "low": p.limits[0] if p.limits else None,
+                "high": p.limits[1] if p.limits else None,
+                "deviation": p.deviation,
+                "within": p.within,
+                "known_from": p.known_from,
+            }
             for p in self.explanation.parts
         ]
-        columns = ["name", "value", "u", "unit", "nominal", "low", "high", "deviation", "within", "known_from"]
+        columns = [
+            "name",
+            "value",
+            "u",
+            "unit",
+            "nominal",
+            "low",
+            "high",
+            "deviation",
+            "within",
+            "known_from",
+        ]
         return pd.DataFrame(rows, columns=columns).set_index("name")
 
     @property
@@ -62,12 +85,15 @@ class Found:
         """One row a suspect, best first: causes (tuple), probability, change (dict), says."""
         import pandas as pd
 
-        rows = [{"causes": s.causes, "probability": s.probability, "change": dict(s.change), "says": s.says}
-                for s in self.explanation.suspects]
+        rows = [
+            {"causes": s.causes, "probability": s.probability, "change": dict(s.change), "says": s.says}
+            for s in self.explanation.suspects
+        ]
         return pd.DataFrame(rows, columns=["causes", "probability", "change", "says"])
 
     def plot(self, path: str | None = None, axes: Any = None, kind: str = "capture") -> Figure:
-        """Draw the capture with its fit (or another ``kind``); into a file by its ending, or into given axes."""
+        """Draw the capture with its fit (or another ``kind``); into a file by its ending, or into given
+        axes."""
         from benchfit.show.plot import plot
 
         return plot(self.explanation, self.constants[0], self.captures[0], path=path, axes=axes, kind=kind)
@@ -141,10 +167,13 @@ def facts_of(capture: Capture, assigned: Sequence[Assignment], constants: CycleC
     for c in capture.channels:
         finite = c.values[np.isfinite(c.values)]
         scale = nodes[c.name].scale if c.name in nodes else 1.0
-        channels.append({
-            "name": c.name, "node": nodes[c.name].node if c.name in nodes else None,
-            "minimum": float(finite.min()) * scale if finite.size else None,
-            "maximum": float(finite.max()) * scale if finite.size else None,
-            "resolution": c.resolution * scale,
-        })
+        channels.append(
+            {
+                "name": c.name,
+                "node": nodes[c.name].node if c.name in nodes else None,
+                "minimum": float(finite.min()) * scale if finite.size else None,
+                "maximum": float(finite.max()) * scale if finite.size else None,
+                "resolution": c.resolution * scale,
+            }
+        )
     return CaptureFacts(capture.path, capture.samples, capture.interval, tuple(channels), constants.cycles)

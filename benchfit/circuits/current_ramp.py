@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import over, under, yes
-from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -20,11 +20,20 @@ def _cycle(p: Parts) -> Cycle:
             phase(down, lower, rising=False, before=up),
         ),
         conditions=(
-            Condition("never-reaches", up.current - up.conductance * upper,
-                      "the ramp stops below the upper threshold: what leaks takes all the current", "I_charge",
-                      upper),
-            Condition("latched", lower - down.asymptote, "the switch cannot pull the capacitor below the lower threshold",
-                      "I_charge", down.asymptote),
+            Condition(
+                "never-reaches",
+                up.current - up.conductance * upper,
+                "the ramp stops below the upper threshold: what leaks takes all the current",
+                "I_charge",
+                upper,
+            ),
+            Condition(
+                "latched",
+                lower - down.asymptote,
+                "the switch cannot pull the capacitor below the lower threshold",
+                "I_charge",
+                down.asymptote,
+            ),
             Condition("stuck", upper - lower, "the two thresholds coincide", "V_upper", upper),
         ),
     )
@@ -33,8 +42,13 @@ def _cycle(p: Parts) -> Cycle:
 def _likeness(seen: Features) -> float:
     """A straight ramp and a short fall."""
     single = seen.high_share is None
-    return (0.8 * yes(single) * over(seen.charge_share, 0.93, 0.02) * yes(not seen.jumps)
-            * under(seen.charge_bend, 0.12, 0.03))
+    return (
+        0.8
+        * yes(single)
+        * over(seen.charge_share, 0.93, 0.02)
+        * yes(not seen.jumps)
+        * under(seen.charge_bend, 0.12, 0.03)
+    )
 
 
 CIRCUIT = Circuit(

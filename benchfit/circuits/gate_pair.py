@@ -6,11 +6,13 @@ import numpy as np
 
 from benchfit.circuits.lag import Lag, lag, parasitics
 from benchfit.circuits.likeness import close, yes
-from benchfit.circuits.model import Features, Array, Circuit, Condition, Cycle, Node, Part, Parts, Phase
+from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Features, Node, Part, Parts, Phase
 
 
 def _phase(now: Lag, threshold: Array, rising: bool, output: str, **more: Array) -> Phase:
-    return Phase("capacitor", rising, now.drive, now.curvature, threshold, output=output, slope=now.slope, **more)  # type: ignore[arg-type]
+    return Phase(
+        "capacitor", rising, now.drive, now.curvature, threshold, output=output, slope=now.slope, **more
+    )  # type: ignore[arg-type]
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -31,16 +33,30 @@ def _cycle(p: Parts) -> Cycle:
         )
     else:
         phases = (
-            _phase(falling, threshold, False, "high", delay=p["delay"], start=np.minimum(threshold + kick, over)),
-            _phase(rising, threshold, True, "low", delay=p["delay"], start=np.maximum(threshold - kick, under)),
+            _phase(
+                falling, threshold, False, "high", delay=p["delay"], start=np.minimum(threshold + kick, over)
+            ),
+            _phase(
+                rising, threshold, True, "low", delay=p["delay"], start=np.maximum(threshold - kick, under)
+            ),
         )
     return Cycle(
         phases=phases,
         conditions=(
-            Condition("never-reaches", threshold - falling.asymptote, "the junction stops falling above the gate's trip point",
-                      "R", falling.asymptote),
-            Condition("never-reaches", rising.asymptote - threshold, "the junction stops rising below the gate's trip point",
-                      "R", rising.asymptote),
+            Condition(
+                "never-reaches",
+                threshold - falling.asymptote,
+                "the junction stops falling above the gate's trip point",
+                "R",
+                falling.asymptote,
+            ),
+            Condition(
+                "never-reaches",
+                rising.asymptote - threshold,
+                "the junction stops rising below the gate's trip point",
+                "R",
+                rising.asymptote,
+            ),
         ),
         levels={"high": supply, "low": 0 * supply},
     )
@@ -60,11 +76,38 @@ CIRCUIT = Circuit(
         Part("supply", "V", "supply", tolerance="5 %", kind="supply"),
         Part("R", "Ω", "timing resistor"),
         Part("C", "F", "timing capacitor", tolerance="10 %", kind="capacitor"),
-        Part("R_series", "Ω", "from the junction to the first gate's input", "log", "± 5 %", lambda p: 10 * p["R"], "5 %",
-             "resistor", True),
-        Part("V_threshold", "V", "trip point of the first gate", "log", "± 10 %", lambda p: p["supply"] / 2, "10 %", "threshold"),
+        Part(
+            "R_series",
+            "Ω",
+            "from the junction to the first gate's input",
+            "log",
+            "± 5 %",
+            lambda p: 10 * p["R"],
+            "5 %",
+            "resistor",
+            True,
+        ),
+        Part(
+            "V_threshold",
+            "V",
+            "trip point of the first gate",
+            "log",
+            "± 10 %",
+            lambda p: p["supply"] / 2,
+            "10 %",
+            "threshold",
+        ),
         Part("V_clamp", "V", "drop of the input's clamp", "linear", "0.6 V ± 0.1 V", None, "15 %", "device"),
-        Part("R_gate", "Ω", "the gate's own output resistance", "linear", "250 Ω ± 100 %", None, "100 %", "device"),
+        Part(
+            "R_gate",
+            "Ω",
+            "the gate's own output resistance",
+            "linear",
+            "250 Ω ± 100 %",
+            None,
+            "100 %",
+            "device",
+        ),
         *parasitics("R"),
     ),
     nodes=(
@@ -75,8 +118,10 @@ CIRCUIT = Circuit(
     likeness=_likeness,
     swaps=(("R", "R_series"),),
     equations=(
-        "the junction jumps to V_threshold ± supply and decays through R to 0 or the supply, until V_threshold",
-        "T = R·C·{ln[(supply + V_threshold)/V_threshold] + ln[(2·supply − V_threshold)/(supply − V_threshold)]} without the clamp",
+        "the junction jumps to V_threshold ± supply and decays through R to 0 or the supply, until "
+        "V_threshold",
+        "T = R·C·{ln[(supply + V_threshold)/V_threshold] "
+        "+ ln[(2·supply − V_threshold)/(supply − V_threshold)]} without the clamp",
         "beyond supply + V_clamp or below −V_clamp the input's clamp conducts through R_series",
     ),
     drawing="""\

@@ -14,7 +14,8 @@ from benchfit.circuits.model import Array, Part, Parts, Phase
 
 @dataclass(frozen=True, eq=False)
 class Lag:
-    """Thevenin picture of a node: total conductance (S), total short-circuit current (A), capacitance (F), ESR (Ω)."""
+    """Thevenin picture of a node: total conductance (S), total short-circuit current (A), capacitance (F),
+    ESR (Ω)."""
 
     conductance: Array
     current: Array
@@ -78,8 +79,17 @@ def phase(
         gain = (1 + before.conductance * now.esr) / below
         jump = jump + now.esr * (now.current - before.current) / below
     return Phase(
-        node=node, rising=rising, drive=now.drive, curvature=now.curvature, threshold=threshold, delay=delay,
-        start=start, gain=gain, jump=jump, slope=now.slope, output=output,  # type: ignore[arg-type]
+        node=node,
+        rising=rising,
+        drive=now.drive,
+        curvature=now.curvature,
+        threshold=threshold,
+        delay=delay,
+        start=start,
+        gain=gain,
+        jump=jump,
+        slope=now.slope,
+        output=output,  # type: ignore[arg-type]
     )
 
 
@@ -106,7 +116,9 @@ def _scaled(names: tuple[str, ...], low: float, high: float):  # type: ignore[no
     return reach
 
 
-def parasitics(*resistor: str, leaks: bool = True, delay: bool = True, slew: bool = False) -> tuple[Part, ...]:
+def parasitics(
+    *resistor: str, leaks: bool = True, delay: bool = True, slew: bool = False
+) -> tuple[Part, ...]:
     """The parasitics that can act in a circuit, absent unless the sheet says otherwise.
 
     ``resistor`` names the part (the first that the build has) that sets the scale on which they matter.
@@ -117,6 +129,7 @@ def parasitics(*resistor: str, leaks: bool = True, delay: bool = True, slew: boo
         found.append(Part(name, unit, says, coordinate, "absent", None, "0 %", "parasitic", True, reach))  # type: ignore[arg-type]
 
     if leaks:
+
         def volts(p: Parts) -> float:
             return float(max(abs(v) for n, v in p.items() if n in _VOLTAGES and np.isfinite(v)))
 
@@ -128,14 +141,39 @@ def parasitics(*resistor: str, leaks: bool = True, delay: bool = True, slew: boo
             return 0.02 / volts(p), 0.9 / volts(p)
 
         add("R_leak", "Ω", "leak from the timing node to ground", "inverse", _scaled(resistor, 0.3, 300.0))
-        add("R_leak_supply", "Ω", "leak from the timing node to the supply", "inverse", _scaled(resistor, 0.3, 300.0))
-        add("I_leak", "A", "constant current out of the timing node: input bias, device leakage", "linear", current)
-        add("C_stray", "F", "stray capacitance of the timing node to ground", "linear", lambda p: (2e-12, 500e-12))
+        add(
+            "R_leak_supply",
+            "Ω",
+            "leak from the timing node to the supply",
+            "inverse",
+            _scaled(resistor, 0.3, 300.0),
+        )
+        add(
+            "I_leak",
+            "A",
+            "constant current out of the timing node: input bias, device leakage",
+            "linear",
+            current,
+        )
+        add(
+            "C_stray",
+            "F",
+            "stray capacitance of the timing node to ground",
+            "linear",
+            lambda p: (2e-12, 500e-12),
+        )
         add("ESR", "Ω", "series resistance in the capacitor's leg", "linear", _scaled(resistor, 0.002, 1.0))
         add("C_slope", "1/V", "relative change of the capacitance per volt", "linear", bend)
     if delay:
-        add("delay", "s", "dead time between crossing and switching", "linear", _scaled(("period",), 0.001, 0.3))
+        add(
+            "delay",
+            "s",
+            "dead time between crossing and switching",
+            "linear",
+            _scaled(("period",), 0.001, 0.3),
+        )
     if slew:
+
         def slope(p: Parts) -> tuple[float, float]:
             swing = abs(float(p["V_high"]) - float(p["V_low"]))
             return swing / (0.4 * float(p["period"])), swing / (0.002 * float(p["period"]))
@@ -145,5 +183,13 @@ def parasitics(*resistor: str, leaks: bool = True, delay: bool = True, slew: boo
 
 
 _VOLTAGES = ("supply", "V_high", "V_low", "V_upper")
-ABSENT = {"R_leak": np.inf, "R_leak_supply": np.inf, "I_leak": 0.0, "C_stray": 0.0, "ESR": 0.0, "C_slope": 0.0,
-          "delay": 0.0, "slew": np.inf}
+ABSENT = {
+    "R_leak": np.inf,
+    "R_leak_supply": np.inf,
+    "I_leak": 0.0,
+    "C_stray": 0.0,
+    "ESR": 0.0,
+    "C_slope": 0.0,
+    "delay": 0.0,
+    "slew": np.inf,
+}

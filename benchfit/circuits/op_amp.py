@@ -6,7 +6,7 @@ import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase, slewing
 from benchfit.circuits.likeness import close, over, ratio, yes
-from benchfit.circuits.model import Features, Array, Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Features, Node, Part, Parts
 
 _NONE = np.float64(np.inf)
 
@@ -33,7 +33,8 @@ def _cycle(p: Parts) -> Cycle:
     up = lag(p, (1 / (r_charge + pull), to))
     down = lag(p, (1 / r_discharge, from_))
     swing = high - low
-    # The drive of a phase is late by the slewing of the edge that begins it: the phase before runs on meanwhile.
+    # The drive of a phase is late by the slewing of the edge that begins it: the phase before runs on
+    # meanwhile.
     falling = p["delay"] + slewing(swing, p["slew"], down.curvature)
     rising = p["delay"] + slewing(swing, p["slew"], up.curvature)
     resistor = "R" if "R" in p else "R_charge"
@@ -45,25 +46,47 @@ def _cycle(p: Parts) -> Cycle:
             phase(down, lower, rising=False, before=up, delay=rising, output="low"),
         ),
         conditions=(
-            Condition("never-reaches", up.asymptote - upper,
-                      "the capacitor stops charging below the upper threshold; the output stays high",
-                      resistor, up.asymptote),
-            Condition("never-reaches", lower - down.asymptote,
-                      "the capacitor stops discharging above the lower threshold; the output stays low",
-                      resistor if "R" in p else "R_discharge", down.asymptote),
-            Condition("stuck", upper - lower, "there is no hysteresis: the output rests near the reference",
-                      "R_top", 0.5 * (upper + lower)),
+            Condition(
+                "never-reaches",
+                up.asymptote - upper,
+                "the capacitor stops charging below the upper threshold; the output stays high",
+                resistor,
+                up.asymptote,
+            ),
+            Condition(
+                "never-reaches",
+                lower - down.asymptote,
+                "the capacitor stops discharging above the lower threshold; the output stays low",
+                resistor if "R" in p else "R_discharge",
+                down.asymptote,
+            ),
+            Condition(
+                "stuck",
+                upper - lower,
+                "there is no hysteresis: the output rests near the reference",
+                "R_top",
+                0.5 * (upper + lower),
+            ),
         ),
         levels=levels,
     )
 
 
 def _likeness(seen: Features) -> float:
-    """Bipolar output, node between its levels, one time constant both ways, asymptotes at the output's levels."""
+    """Bipolar output, node between its levels, one time constant both ways, asymptotes at the output's
+    levels."""
     bipolar = None if seen.low is None or seen.high is None else seen.low < -0.3 * seen.high
     about_zero = None if seen.lower is None or seen.upper is None else seen.lower < 0 < seen.upper
-    return (0.5 * yes(bipolar) * yes(about_zero) * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.1)
-            * over(seen.charge_bend, 0.3, 0.1) * over(seen.charge_share, 0.2, 0.05) * close(seen.high_share, 0.5, 0.15) * yes(not seen.jumps))
+    return (
+        0.5
+        * yes(bipolar)
+        * yes(about_zero)
+        * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.1)
+        * over(seen.charge_bend, 0.3, 0.1)
+        * over(seen.charge_share, 0.2, 0.05)
+        * close(seen.high_share, 0.5, 0.15)
+        * yes(not seen.jumps)
+    )
 
 
 CIRCUIT = Circuit(
@@ -74,7 +97,16 @@ CIRCUIT = Circuit(
         Part("C", "F", "timing capacitor, − input to ground", tolerance="10 %", kind="capacitor"),
         Part("R_top", "Ω", "hysteresis divider, output to + input", tolerance="5 %"),
         Part("R_bottom", "Ω", "hysteresis divider, + input to the reference", tolerance="5 %"),
-        Part("V_reference", "V", "reference at the divider's foot", "linear", "0 V ± 0 V", None, "5 %", "supply"),
+        Part(
+            "V_reference",
+            "V",
+            "reference at the divider's foot",
+            "linear",
+            "0 V ± 0 V",
+            None,
+            "5 %",
+            "supply",
+        ),
         Part("V_high", "V", "output high level", "linear", None, None, "5 %", "level"),
         Part("V_low", "V", "output low level", "linear", None, None, "5 %", "level"),
         Part("R_bias", "Ω", "from the + input to the supply", optional=True),
@@ -82,7 +114,17 @@ CIRCUIT = Circuit(
         Part("R_pull", "Ω", "pull-up of an open-collector output; V_high is then the supply", optional=True),
         Part("R_charge", "Ω", "timing resistor of the charge, with steering diodes"),
         Part("R_discharge", "Ω", "timing resistor of the discharge, with steering diodes"),
-        Part("V_diode", "V", "drop of a steering diode", "linear", "0.6 V ± 0.1 V", None, "15 %", "device", True),
+        Part(
+            "V_diode",
+            "V",
+            "drop of a steering diode",
+            "linear",
+            "0.6 V ± 0.1 V",
+            None,
+            "15 %",
+            "device",
+            True,
+        ),
         *parasitics("R", "R_charge", slew=True),
     ),
     nodes=(
@@ -94,7 +136,8 @@ CIRCUIT = Circuit(
     swaps=(("R_top", "R_bottom"), ("R_charge", "R_discharge"), ("R", "R_top"), ("R", "R_bottom")),
     alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),
     equations=(
-        "charge:    A = V_high, τ = R·C, until E_up = (V_high/R_top + V_reference/R_bottom)/(1/R_top + 1/R_bottom)",
+        "charge:    A = V_high, τ = R·C, until E_up = (V_high/R_top + "
+        "V_reference/R_bottom)/(1/R_top + 1/R_bottom)",
         "discharge: A = V_low,  τ = R·C, until E_down, likewise with V_low",
         "T = R·C·{ln[(V_high − E_down)/(V_high − E_up)] + ln[(E_up − V_low)/(E_down − V_low)]}",
     ),
@@ -109,6 +152,12 @@ CIRCUIT = Circuit(
              R_bottom
              │
              V_reference""",
-    example={"R": "10k 1%", "C": "100n 5%", "R_top": "10k 1%", "R_bottom": "10k 1%",
-             "V_high": "13.5 V 5%", "V_low": "-13.5 V 5%"},
+    example={
+        "R": "10k 1%",
+        "C": "100n 5%",
+        "R_top": "10k 1%",
+        "R_bottom": "10k 1%",
+        "V_high": "13.5 V 5%",
+        "V_low": "-13.5 V 5%",
+    },
 )

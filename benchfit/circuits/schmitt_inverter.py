@@ -6,7 +6,7 @@ import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import close, over, ratio, yes
-from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts
+from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, Part, Parts
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -24,14 +24,27 @@ def _cycle(p: Parts) -> Cycle:
             phase(down, lower, rising=False, before=up, delay=p["delay"], output="low"),
         ),
         conditions=(
-            Condition("never-reaches", up.asymptote - upper,
-                      "the input stops rising below the upper threshold; the output stays high",
-                      "R" if "R" in p else "R_charge", up.asymptote),
-            Condition("never-reaches", lower - down.asymptote,
-                      "the input stops falling above the lower threshold; the output stays low",
-                      "R" if "R" in p else "R_discharge", down.asymptote),
-            Condition("stuck", upper - lower, "there is no hysteresis left between the thresholds",
-                      "V_upper", 0.5 * (upper + lower)),
+            Condition(
+                "never-reaches",
+                up.asymptote - upper,
+                "the input stops rising below the upper threshold; the output stays high",
+                "R" if "R" in p else "R_charge",
+                up.asymptote,
+            ),
+            Condition(
+                "never-reaches",
+                lower - down.asymptote,
+                "the input stops falling above the lower threshold; the output stays low",
+                "R" if "R" in p else "R_discharge",
+                down.asymptote,
+            ),
+            Condition(
+                "stuck",
+                upper - lower,
+                "there is no hysteresis left between the thresholds",
+                "V_upper",
+                0.5 * (upper + lower),
+            ),
         ),
         levels={"high": p["V_high"], "low": p["V_low"]},
     )
@@ -44,8 +57,16 @@ def _likeness(seen: Features) -> float:
     third = None
     if seen.lower and seen.upper and seen.high:
         third = abs(seen.upper / seen.high - 2 / 3) + abs(seen.lower / seen.high - 1 / 3)
-    return (0.7 * yes(unipolar) * yes(above) * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.12)
-            * close(seen.high_share, 0.49, 0.08) * over(seen.charge_share, 0.2, 0.05) * over(third, 0.08, 0.04) * yes(not seen.jumps))
+    return (
+        0.7
+        * yes(unipolar)
+        * yes(above)
+        * close(ratio(seen.charge_tau, seen.discharge_tau), 1.0, 0.12)
+        * close(seen.high_share, 0.49, 0.08)
+        * over(seen.charge_share, 0.2, 0.05)
+        * over(third, 0.08, 0.04)
+        * yes(not seen.jumps)
+    )
 
 
 CIRCUIT = Circuit(
@@ -60,7 +81,17 @@ CIRCUIT = Circuit(
         Part("V_low", "V", "output low level", "linear", "0 V ± 0.1 V", None, "5 %", "level"),
         Part("R_charge", "Ω", "timing resistor of the charge, with steering diodes"),
         Part("R_discharge", "Ω", "timing resistor of the discharge, with steering diodes"),
-        Part("V_diode", "V", "drop of a steering diode", "linear", "0.6 V ± 0.1 V", None, "15 %", "device", True),
+        Part(
+            "V_diode",
+            "V",
+            "drop of a steering diode",
+            "linear",
+            "0.6 V ± 0.1 V",
+            None,
+            "15 %",
+            "device",
+            True,
+        ),
         *parasitics("R", "R_charge"),
     ),
     nodes=(
@@ -82,5 +113,11 @@ CIRCUIT = Circuit(
   C ───┴───┤ hyst. ├o──┴── output
   │        └───────┘
  gnd""",
-    example={"R": "47k 1%", "C": "10n 5%", "V_upper": "2.9 V 20%", "V_lower": "1.9 V 30%", "V_high": "5 V 2%"},
+    example={
+        "R": "47k 1%",
+        "C": "10n 5%",
+        "V_upper": "2.9 V 20%",
+        "V_lower": "1.9 V 30%",
+        "V_high": "5 V 2%",
+    },
 )

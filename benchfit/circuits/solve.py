@@ -6,7 +6,7 @@ Everything is closed form and works on arrays: the last axis of a result runs ov
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -49,7 +49,8 @@ def time_to(phase: Phase, start: Array, end: Array) -> Array:
 
 
 def after(phase: Phase, start: Array, time: Array | float) -> Array:
-    """Voltage (V) that a phase reaches ``time`` (s) after it was at ``start`` (local τ at the start where C bends)."""
+    """Voltage (V) that a phase reaches ``time`` (s) after it was at ``start`` (local τ at the start where C
+    bends)."""
     stiff = 1 + phase.slope * start
     y = phase.curvature / stiff * time
     small = np.abs(y) < 1e-8
@@ -61,7 +62,8 @@ def after(phase: Phase, start: Array, time: Array | float) -> Array:
 class Settled:
     """The settled cycle, one array of shape (phases, …) each.
 
-    ``durations`` (s) include the dead times; ``starts`` and ``ends`` (V) are where each phase begins and is left.
+    ``durations`` (s) include the dead times; ``starts`` and ``ends`` (V) are where each phase begins and is
+    left.
     A phase that the node is already beyond has duration 0. NaN: that set of parts does not oscillate.
     """
 
@@ -76,7 +78,8 @@ class Settled:
 
 
 def settle(cycle: Cycle) -> Settled:
-    """Follow the phases round until they repeat: twice suffices, since each ends at a threshold of its own."""
+    """Follow the phases round until they repeat: twice suffices, since each ends at a threshold of its
+    own."""
     nodes = {phase.node for phase in cycle.phases}
     last = {node: [p for p in cycle.phases if p.node == node][-1] for node in nodes}
     at = {node: after(p, np.asarray(p.threshold, float), p.delay) for node, p in last.items()}
@@ -101,13 +104,15 @@ def settle(cycle: Cycle) -> Settled:
     return Settled(np.where(runs, stack[0], np.nan), stack[1], stack[2])
 
 
-# --- what one exponential says of a stretch made of several phases --------------------------------------------
+# --- what one exponential says of a stretch made of several phases
+# --------------------------------------------
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(10)
 
 
 def _bend(ratio: Array) -> Array:
-    """y of e^(−y·u), u in [−1, 1], from the ratio of its Legendre coefficients c_2/c_1 = −(5/3)·i_2(y)/i_1(y).
+    """y of e^(−y·u), u in [−1, 1], from the ratio of its Legendre coefficients c_2/c_1 =
+    −(5/3)·i_2(y)/i_1(y).
 
     i_n are modified spherical Bessel functions of the first kind. Newton from the small-y limit.
     """
@@ -123,23 +128,26 @@ def _bend(ratio: Array) -> Array:
     return y
 
 
-def _stretch(phases: Sequence[Phase], starts: Array, ends: Array, durations: Array) -> tuple[Array, Array, Array, Array]:
-    """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in a row.
+def _stretch(
+    phases: Sequence[Phase], starts: Array, ends: Array, durations: Array
+) -> tuple[Array, Array, Array, Array]:
+    """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in
+    a row.
 
-    The moments of v over time are integrals over v (dt = dv/v'), so no inversion is needed. The exponential
-    shares the zeroth, first and second Legendre coefficient with the waveform: its tangent space is theirs.
+    It shares the zeroth, first and second Legendre coefficient with the waveform: its tangent space is
+    theirs.
     """
     total = np.sum(durations, axis=0)
     c = [np.zeros_like(total) for _ in range(4)]
     before = np.zeros_like(total)
     for phase, start, end, duration in zip(phases, starts, ends, durations, strict=True):
-        half, middle = (end - start) / 2, (end + start) / 2
+        # The variable is the time s that a constant capacitance would take: dt = (1 + β·v) ds, smooth in s.
+        constant = replace(phase, slope=0.0)
+        length = np.where(duration > 0, time_to(constant, start, end), 0.0)
         for x, w in zip(_NODES, _WEIGHTS, strict=True):
-            v = middle + half * x
-            rate = phase.drive - phase.curvature * v
-            with np.errstate(invalid="ignore", divide="ignore"):
-                dt = np.where(duration > 0, w * half * (1 + phase.slope * v) / rate, 0.0)
-                t = before + np.where(duration > 0, time_to(phase, start, v), 0.0)
+            v = after(constant, start, length * (1 + x) / 2)
+            dt = w * length / 2 * (1 + phase.slope * v)
+            t = before + np.where(duration > 0, time_to(phase, start, v), 0.0)
             u = 2 * t / total - 1
             for n, p in enumerate((1.0, u, (3 * u * u - 1) / 2, (5 * u**3 - 3 * u) / 2)):
                 c[n] = c[n] + (2 * n + 1) * v * p * dt / total
@@ -174,7 +182,10 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
     period = settled.period
     found: dict[str, Array] = {"period": period}
     if any(p.output for p in cycle.phases):
-        high = sum((d for p, d in zip(cycle.phases, settled.durations, strict=True) if p.output == "high"), 0 * period)
+        high = sum(
+            (d for p, d in zip(cycle.phases, settled.durations, strict=True) if p.output == "high"),
+            0 * period,
+        )
         found["high_share"] = high / period
     found.update({name: level + 0 * period for name, level in cycle.levels.items()})
     if not node:
@@ -187,11 +198,12 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
         starts, ends, durations = settled.starts[index], settled.ends[index], settled.durations[index]
         total = np.sum(durations, axis=0)
         found[f"{word}_share"] = total / period
-        if len(index) == 1 and not np.any(np.asarray(phases[0].slope) != 0):
-            start, end, curvature = starts[0], ends[0], phases[0].curvature + 0 * period
-            bow = 0 * period
-        else:
-            start, end, curvature, bow = _stretch(phases, starts, ends, durations)
+        plain = starts[0], ends[0], phases[0].curvature + 0 * period, 0 * period
+        bent = np.asarray(phases[0].slope) != 0 if len(index) == 1 else np.True_
+        if np.any(bent):
+            fitted = _stretch(phases, starts, ends, durations)
+            plain = tuple(np.where(bent, f, p) for f, p in zip(fitted, plain, strict=True))  # type: ignore[assignment]
+        start, end, curvature, bow = plain
         found[f"{word}_start"], found[f"{word}_end"] = start, end
         found[f"{word}_curvature"], found[f"{word}_bow"] = curvature, bow
     return found

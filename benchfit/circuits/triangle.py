@@ -2,11 +2,9 @@
 
 from __future__ import annotations
 
-import numpy as np
-
 from benchfit.circuits.lag import parasitics, slewing
 from benchfit.circuits.likeness import close, under, yes
-from benchfit.circuits.model import Features, Circuit, Condition, Cycle, Node, Part, Parts, Phase
+from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, Part, Parts, Phase
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -26,14 +24,34 @@ def _cycle(p: Parts) -> Cycle:
             Phase("capacitor", False, down, straight, lower, delay=late, output="high"),
         ),
         conditions=(
-            Condition("stuck", reference - low, "the integrator cannot rise: the comparator's low level is not below the reference",
-                      "V_low", reference),
-            Condition("stuck", high - reference, "the integrator cannot fall: the comparator's high level is not above the reference",
-                      "V_high", reference),
-            Condition("never-reaches", high - upper + 0 * upper, "the integrator runs into its rail below the upper threshold",
-                      "R_in", high),
-            Condition("never-reaches", lower - low + 0 * lower, "the integrator runs into its rail above the lower threshold",
-                      "R_in", low),
+            Condition(
+                "stuck",
+                reference - low,
+                "the integrator cannot rise: the comparator's low level is not below the reference",
+                "V_low",
+                reference,
+            ),
+            Condition(
+                "stuck",
+                high - reference,
+                "the integrator cannot fall: the comparator's high level is not above the reference",
+                "V_high",
+                reference,
+            ),
+            Condition(
+                "never-reaches",
+                high - upper + 0 * upper,
+                "the integrator runs into its rail below the upper threshold",
+                "R_in",
+                high,
+            ),
+            Condition(
+                "never-reaches",
+                lower - low + 0 * lower,
+                "the integrator runs into its rail above the lower threshold",
+                "R_in",
+                low,
+            ),
         ),
         levels=levels,
     )
@@ -56,7 +74,9 @@ CIRCUIT = Circuit(
         Part("R_feedback", "Ω", "comparator's output to the same input"),
         Part("V_high", "V", "comparator's high level", "linear", None, None, "5 %", "level"),
         Part("V_low", "V", "comparator's low level", "linear", None, None, "5 %", "level"),
-        Part("V_reference", "V", "reference of both amplifiers", "linear", "0 V ± 0 V", None, "5 %", "supply"),
+        Part(
+            "V_reference", "V", "reference of both amplifiers", "linear", "0 V ± 0 V", None, "5 %", "supply"
+        ),
         *parasitics("R", leaks=False, slew=True),
     ),
     nodes=(
@@ -78,5 +98,12 @@ CIRCUIT = Circuit(
    │       └──┘  ┌──┤  │  │
    │             └─R_feedback
    └──────────────────────┘""",
-    example={"R": "12k 1%", "C": "100n 5%", "R_in": "120k 1%", "R_feedback": "1M 1%", "V_high": "10 V 5%", "V_low": "-10 V 5%"},
+    example={
+        "R": "12k 1%",
+        "C": "100n 5%",
+        "R_in": "120k 1%",
+        "R_feedback": "1M 1%",
+        "V_high": "10 V 5%",
+        "V_low": "-10 V 5%",
+    },
 )

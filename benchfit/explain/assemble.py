@@ -34,8 +34,15 @@ def _parameter(part: Part, build: Build) -> Parameter:
         return _follower(part, value)
     if part.coordinate == "log":
         mean, sd = value.prior_log()
-        return Parameter(part.name, "log", mean, sd, math.log(value.nominal),
-                         (math.log(value.low), math.log(value.high)), part)
+        return Parameter(
+            part.name,
+            "log",
+            mean,
+            sd,
+            math.log(value.nominal),
+            (math.log(value.low), math.log(value.high)),
+            part,
+        )
     if part.coordinate == "inverse":
         if math.isinf(value.nominal):
             return Parameter(part.name, "inverse", 0.0, 0.0, 0.0, (0.0, 0.0), part)
@@ -47,13 +54,22 @@ def _parameter(part: Part, build: Build) -> Parameter:
 
 
 def _follower(part: Part, value: Toleranced) -> Parameter:
-    """A default that follows other parts: its coordinate is the ratio to, or the difference from, its base."""
+    """A default that follows other parts: its coordinate is the ratio to, or the difference from, its
+    base."""
     if part.coordinate == "log":
         low, high = math.log(value.low / value.nominal), math.log(value.high / value.nominal)
     else:
         low, high = value.low - value.nominal, value.high - value.nominal
-    return Parameter(part.name, part.coordinate, 0.5 * (low + high), (high - low) / math.sqrt(12), 0.0, (low, high),
-                     part, part.base)
+    return Parameter(
+        part.name,
+        part.coordinate,
+        0.5 * (low + high),
+        (high - low) / math.sqrt(12),
+        0.0,
+        (low, high),
+        part,
+        part.base,
+    )
 
 
 def nominal_period(circuit: Circuit, parameters: Sequence[Parameter]) -> float:
@@ -71,7 +87,9 @@ def _exact(name: str, value: float) -> Parameter:
 def _known(name: str, value: Toleranced, coordinate: str = "linear") -> Parameter:
     if coordinate == "log":
         mean, sd = value.prior_log()
-        return Parameter(name, "log", mean, sd, math.log(value.nominal), (math.log(value.low), math.log(value.high)))
+        return Parameter(
+            name, "log", mean, sd, math.log(value.nominal), (math.log(value.low), math.log(value.high))
+        )
     mean, sd = value.prior_linear()
     return Parameter(name, "linear", mean, sd, value.nominal, (value.low, value.high))
 
@@ -86,8 +104,13 @@ def load_of(probe: Probe | None) -> tuple[float, float] | None:
 
 
 def view_of(
-    circuit: Circuit, timing: Node | None, probes: dict[str, Probe | None], change: CaptureChanges | None,
-    number: int, parameters: list[Parameter], build: Build,
+    circuit: Circuit,
+    timing: Node | None,
+    probes: dict[str, Probe | None],
+    change: CaptureChanges | None,
+    number: int,
+    parameters: list[Parameter],
+    build: Build,
 ) -> View:
     """The conditions of one capture; what was different is added to ``parameters``."""
     loads = {}
@@ -142,13 +165,22 @@ def assemble(sheet: Sheet, captures: Sequence[CycleConstants]) -> Model:
     parameters = list(parts)
     views, observations, blocks = [], [], []
     for number, constants in enumerate(captures, 1):
-        view = view_of(circuit, timing_node(circuit, constants), dict(sheet.probes), sheet.captures.get(number),
-                       number, parameters, build)
+        view = view_of(
+            circuit,
+            timing_node(circuit, constants),
+            dict(sheet.probes),
+            sheet.captures.get(number),
+            number,
+            parameters,
+            build,
+        )
         views.append(view)
     parameters.extend(_scope(sheet, captures))
     period = nominal_period(circuit, parts)
     first = captures[0]
-    swing = float(np.ptp([constants_span for span in first.spans.values() for constants_span in span] or [1.0]))
+    swing = float(
+        np.ptp([constants_span for span in first.spans.values() for constants_span in span] or [1.0])
+    )
     model = Model(circuit, tuple(parameters), tuple(views), (), np.empty((0, 0)), swing, period)
     for number, constants in enumerate(captures):
         if not constants.oscillates:
@@ -165,8 +197,15 @@ def assemble(sheet: Sheet, captures: Sequence[CycleConstants]) -> Model:
     extra, variances = _readings(sheet, build, model)
     observations.extend(extra)
     blocks.extend(np.array([[v]]) for v in variances)
-    return Model(circuit, tuple(parameters), tuple(views), tuple(observations), _diagonal(blocks), swing,
-                 period if math.isfinite(period) else (1.0 if not first.oscillates else first.value("period")))
+    return Model(
+        circuit,
+        tuple(parameters),
+        tuple(views),
+        tuple(observations),
+        _diagonal(blocks),
+        swing,
+        period if math.isfinite(period) else (1.0 if not first.oscillates else first.value("period")),
+    )
 
 
 def assemble_bare(sheet: Sheet) -> Model:
@@ -175,12 +214,20 @@ def assemble_bare(sheet: Sheet) -> Model:
     parts = parameters_of(build)
     parameters = [*parts, _exact("timebase", 0.0)]
     view = view_of(build.circuit, None, dict(sheet.probes), None, 1, parameters, build)
-    return Model(build.circuit, tuple(parameters), (view,), (), np.empty((0, 0)), 1.0,
-                 nominal_period(build.circuit, parts))
+    return Model(
+        build.circuit,
+        tuple(parameters),
+        (view,),
+        (),
+        np.empty((0, 0)),
+        1.0,
+        nominal_period(build.circuit, parts),
+    )
 
 
 def _one_share(wanted: list[str], constants: CycleConstants) -> list[str]:
-    """Where the output's edges and the timing node's turns give one and the same share, the sharper one is taken."""
+    """Where the output's edges and the timing node's turns give one and the same share, the sharper one is
+    taken."""
     if abs(constants.value("high_share") - constants.value("charge_share")) > 0.02:
         return wanted
     worse = "charge_share" if constants.u("high_share") <= constants.u("charge_share") else "high_share"
@@ -190,11 +237,23 @@ def _one_share(wanted: list[str], constants: CycleConstants) -> list[str]:
 def _scope(sheet: Sheet, captures: Sequence[CycleConstants]) -> list[Parameter]:
     """Gain and offset of each channel, and the timebase: type B, rectangles (JCGM 100, 4.3.7)."""
     root = math.sqrt(3.0)
-    found = [Parameter("timebase", "linear", 0.0, sheet.scope.timebase / root, 0.0,
-                       (-sheet.scope.timebase, sheet.scope.timebase))]
+    found = [
+        Parameter(
+            "timebase",
+            "linear",
+            0.0,
+            sheet.scope.timebase / root,
+            0.0,
+            (-sheet.scope.timebase, sheet.scope.timebase),
+        )
+    ]
     for kind in ("timing", "output"):
-        spans = [(span, c.coupling.get(node, "dc")) for c in captures for node, span in c.spans.items()
-                 if _kind(sheet, node) == kind]
+        spans = [
+            (span, c.coupling.get(node, "dc"))
+            for c in captures
+            for node, span in c.spans.items()
+            if _kind(sheet, node) == kind
+        ]
         if not spans:
             continue
         width = max(high - low for (low, high), _ in spans)
@@ -216,7 +275,8 @@ def _kind(sheet: Sheet, node: str) -> str:
 
 
 def _readings(sheet: Sheet, build: Build, model: Model) -> tuple[list[Observation], list[float]]:
-    """Readings as observations: of a part in its own coordinate, of frequency (ln) or duty as a counter has them."""
+    """Readings as observations: of a part in its own coordinate, of frequency (ln) or duty as a counter has
+    them."""
     found, variances = [], []
     names = {p.name: p for p in model.parameters}
     for name, value in sheet.readings.items():

@@ -1,7 +1,9 @@
 """Why it misses: the miss split into shares that add up to it.
 
-From the nominal parts to the effective ones on a straight line in the state, each coordinate's partial derivative
-of f/target is integrated along it (Aumann & Shapley 1974): the shares add up to the whole change, whatever its size, and
+From the nominal parts to the effective ones on a straight line in the state, each coordinate's partial
+derivative
+of f/target is integrated along it (Aumann & Shapley 1974): the shares add up to the whole change, whatever
+its size, and
 depend on no order. The probe goes the same way, from lifted to as given.
 """
 
@@ -54,7 +56,9 @@ def path_shares(model: Model, view: View, which: str, effective: Array) -> tuple
     load_up[:, -1] += h
     load_down[:, -1] -= h
     with np.errstate(all="ignore"):
-        slope = (_function(model, view, which, up, load_up) - _function(model, view, which, down, load_down)) / (2 * h)
+        slope = (
+            _function(model, view, which, up, load_up) - _function(model, view, which, down, load_down)
+        ) / (2 * h)
         ends = np.stack([start, effective])
         first = float(_function(model, view, which, ends[:1], 0.0)[0])
         last = float(_function(model, view, which, ends[1:], 1.0)[0])
@@ -62,7 +66,8 @@ def path_shares(model: Model, view: View, which: str, effective: Array) -> tuple
     out = np.zeros(len(model.parameters) + 1)
     out[parts] = shares[:-1]
     out[-1] = shares[-1]
-    # What quadrature and differences leave (parts in 1e8) goes to the shares in proportion, so that they add up.
+    # What quadrature and differences leave (parts in 1e8) goes to the shares in proportion, so that they add
+    # up.
     total, whole = float(np.sum(out)), last - first
     weight = float(np.sum(np.abs(out)))
     if weight > 0 and np.isfinite(total):
@@ -71,7 +76,8 @@ def path_shares(model: Model, view: View, which: str, effective: Array) -> tuple
 
 
 def miss_of(model: Model, averaged: Averaged, which: str, target: Toleranced, built: float | None) -> Miss:
-    """The miss budget of frequency or duty, averaged over the live hypotheses with the spread between them."""
+    """The miss budget of frequency or duty, averaged over the live hypotheses with the spread between
+    them."""
     goal = target.nominal
     limits = (target.low / goal - 1, target.high / goal - 1) if target.stated else None
     with np.errstate(all="ignore"):
@@ -94,14 +100,19 @@ def miss_of(model: Model, averaged: Averaged, which: str, target: Toleranced, bu
     mean = q @ table
     spread = np.sqrt(q @ ((table - mean) ** 2 + np.array(fitted) / goal**2))
     names = [p.name for p in model.parameters] + ["probe"]
-    found = [Share(n, float(x), float(u)) for n, x, u in zip(names, mean, spread, strict=True) if abs(x) > 0 or (n == "probe" and model.views[0].loads)]
+    found = [
+        Share(n, float(x), float(u))
+        for n, x, u in zip(names, mean, spread, strict=True)
+        if abs(x) > 0 or (n == "probe" and model.views[0].loads)
+    ]
     found.sort(key=lambda s: -abs(s.share))
     unexplained = miss - on_paper - sum(s.share for s in found)
     return Miss(goal, built, miss, on_paper, tuple(found), float(unexplained), limits)
 
 
 def _within(model: Model, covariance: Array, mean: Array, shares: Array) -> Array:
-    """Variance of each share within one hypothesis: the share per unit of its own coordinate, times that u."""
+    """Variance of each share within one hypothesis: the share per unit of its own coordinate, times that
+    u."""
     move = mean - model.nominal
     u = np.sqrt(np.maximum(np.diag(covariance), 0.0))
     with np.errstate(all="ignore"):

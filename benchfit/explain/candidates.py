@@ -12,6 +12,7 @@ from benchfit.explain.result import Candidate
 
 def features_of(constants: CycleConstants) -> Features:
     """What can be told from the waveform, on scales that no part's value changes."""
+
     def get(name: str) -> float | None:
         return constants.value(name) if name in constants else None
 
@@ -22,7 +23,10 @@ def features_of(constants: CycleConstants) -> Features:
     asymptotes: dict[str, float | None] = {"charge": None, "discharge": None}
     taus: dict[str, float | None] = {"charge": None, "discharge": None}
     if share is not None and upper is not None and lower is not None:
-        for word, part, start, end in (("charge", share, lower, upper), ("discharge", 1 - share, upper, lower)):
+        for word, part, start, end in (
+            ("charge", share, lower, upper),
+            ("discharge", 1 - share, upper, lower),
+        ):
             kappa = get(f"{word}_curvature")
             start = get(f"{word}_start") or start
             if kappa is None:
@@ -33,10 +37,18 @@ def features_of(constants: CycleConstants) -> Features:
                 asymptotes[word] = start + (end - start) / -math.expm1(-x)
                 taus[word] = 1 / kappa
     return Features(
-        upper=upper, lower=lower, charge_share=share, high_share=get("high_share"), high=get("high"), low=get("low"),
-        charge_bend=ratios["charge"], discharge_bend=ratios["discharge"],
-        charge_asymptote=asymptotes["charge"], discharge_asymptote=asymptotes["discharge"],
-        charge_tau=taus["charge"], discharge_tau=taus["discharge"],
+        upper=upper,
+        lower=lower,
+        charge_share=share,
+        high_share=get("high_share"),
+        high=get("high"),
+        low=get("low"),
+        charge_bend=ratios["charge"],
+        discharge_bend=ratios["discharge"],
+        charge_asymptote=asymptotes["charge"],
+        discharge_asymptote=asymptotes["discharge"],
+        charge_tau=taus["charge"],
+        discharge_tau=taus["discharge"],
         jumps="charge_start" in constants and "discharge_start" in constants,
         holds=any(n.startswith("base") for n in constants.spans),
     )

@@ -17,14 +17,16 @@ from benchfit.sheet.model import Sheet
 RMS, PEAK, DC, CHARGE = 30.0, 42.4, 60.0, 45e-6
 
 HAZARD = (
-    "discharge the capacitor through a resistor before touching and check that it stays discharged, work with one hand, use an "
-    "insulated probe rated for the voltage, and never clip an earthed probe to a mains-derived circuit without isolation; "
+    "discharge the capacitor through a resistor before touching and check that it stays discharged, "
+    "work with one hand, use an insulated probe rated for the voltage, and never clip an earthed probe to a "
+    "mains-derived circuit without isolation; "
     "follow local codes and leave mains-derived supplies to qualified persons"
 )
 
 
 def cautions(model: Model | None, sheet: Sheet, captures: Sequence[CycleConstants]) -> list[Remark]:
-    """The ``hazard`` warning where the sheet or a capture shows a voltage that may hurt, or a charge that may."""
+    """The ``hazard`` warning where the sheet or a capture shows a voltage that may hurt, or a charge that
+    may."""
     why = _voltage(sheet, captures) or (_stored(model) if model is not None else "")
     return [Remark("hazard", f"{why}: {HAZARD}")] if why else []
 
@@ -57,8 +59,11 @@ def _stored(model: Model) -> str:
     return ""
 
 
-def scope_checks(sheet: Sheet, captures: Sequence[CycleConstants]) -> tuple[list[CycleConstants], list[Remark]]:
-    """Volts that are ten times wrong are set right with a ``wrong-attenuation`` warning; a timing node whose mean lies
+def scope_checks(
+    sheet: Sheet, captures: Sequence[CycleConstants]
+) -> tuple[list[CycleConstants], list[Remark]]:
+    """Volts that are ten times wrong are set right with a ``wrong-attenuation`` warning; a timing node whose
+    mean lies
     where the circuit cannot put it is taken for a.c. coupled, with a warning."""
     from benchfit.explain.assemble import parameters_of, timing_node
 
@@ -68,23 +73,42 @@ def scope_checks(sheet: Sheet, captures: Sequence[CycleConstants]) -> tuple[list
     for constants in captures:
         node = timing_node(build.circuit, constants)
         view = View(node.name if node else "", node.shape if node else "timing", capacitor="C")
-        offered = {k: float(np.ravel(v)[0]) for k, v in model.constants_of(view, model.values(model.nominal)).items()}
+        offered = {
+            k: float(np.ravel(v)[0]) for k, v in model.constants_of(view, model.values(model.nominal)).items()
+        }
         factor, where = _attenuation(constants, offered)
         if factor != 1.0:
             constants = _scaled(constants, factor, where)
             word = "ten times too small" if factor > 1 else "ten times too large"
-            notes.append(Remark("wrong-attenuation", f"the {where} voltages are {word} for this circuit while their ratios are right: "
-                                "the probe's attenuation setting is taken to be wrong and set right here; check it on the scope"))
-        if node is not None and constants.oscillates and constants.coupling.get(node.name, "dc") == "dc" and _centred(constants, offered):
+            notes.append(
+                Remark(
+                    "wrong-attenuation",
+                    f"the {where} voltages are {word} for this circuit while their ratios are right: "
+                    "the probe's attenuation setting is taken to be wrong and set right here; check it on the "
+                    "scope",
+                )
+            )
+        if (
+            node is not None
+            and constants.oscillates
+            and constants.coupling.get(node.name, "dc") == "dc"
+            and _centred(constants, offered)
+        ):
             constants = replace(constants, coupling={**constants.coupling, node.name: "ac"})
-            notes.append(Remark("ac-coupled", f"the {node.name} node's mean lies at 0 V, where this circuit cannot put it: the scope was "
-                                "a.c. coupled; voltages are used as differences only; capture it again d.c. coupled"))
+            notes.append(
+                Remark(
+                    "ac-coupled",
+                    f"the {node.name} node's mean lies at 0 V, where this circuit cannot put it: the scope was "
+                    "a.c. coupled; voltages are used as differences only; capture it again d.c. coupled",
+                )
+            )
         checked.append(constants)
     return checked, notes
 
 
 def _attenuation(constants: CycleConstants, offered: dict[str, float]) -> tuple[float, str]:
-    """10, 0.1 or 1: the factor that brings the swings onto what the sheet expects, and the node it holds for."""
+    """10, 0.1 or 1: the factor that brings the swings onto what the sheet expects, and the node it holds
+    for."""
     pairs = {"output": ("high", "low"), "timing": ("upper", "lower")}
     for where, (top, bottom) in pairs.items():
         if top in constants and bottom in constants and math.isfinite(offered.get(top, math.nan)):
@@ -99,19 +123,40 @@ def _attenuation(constants: CycleConstants, offered: dict[str, float]) -> tuple[
 
 
 def _scaled(constants: CycleConstants, factor: float, where: str) -> CycleConstants:
-    names = ("high", "low") if where.startswith("output") else tuple(n for n in VOLTAGES if n not in ("high", "low"))
+    names = (
+        ("high", "low")
+        if where.startswith("output")
+        else tuple(n for n in VOLTAGES if n not in ("high", "low"))
+    )
     scale = np.array([factor if n in names else 1.0 for n in constants.names])
-    spans = {n: ((a * factor, b * factor) if (n == "output") == where.startswith("output") else (a, b))
-             for n, (a, b) in constants.spans.items()}
+    spans = {
+        n: ((a * factor, b * factor) if (n == "output") == where.startswith("output") else (a, b))
+        for n, (a, b) in constants.spans.items()
+    }
     pick = None if where.startswith("output") else factor
-    highest = constants.highest if pick is None or constants.highest is None else (constants.highest[0] * pick, constants.highest[1] * pick)
-    lowest = constants.lowest if pick is None or constants.lowest is None else (constants.lowest[0] * pick, constants.lowest[1] * pick)
-    return replace(constants, values=constants.values * scale, covariance=constants.covariance * np.outer(scale, scale),
-                   spans=spans, highest=highest, lowest=lowest)
+    highest = (
+        constants.highest
+        if pick is None or constants.highest is None
+        else (constants.highest[0] * pick, constants.highest[1] * pick)
+    )
+    lowest = (
+        constants.lowest
+        if pick is None or constants.lowest is None
+        else (constants.lowest[0] * pick, constants.lowest[1] * pick)
+    )
+    return replace(
+        constants,
+        values=constants.values * scale,
+        covariance=constants.covariance * np.outer(scale, scale),
+        spans=spans,
+        highest=highest,
+        lowest=lowest,
+    )
 
 
 def _centred(constants: CycleConstants, offered: dict[str, float]) -> bool:
-    """Whether the node's middle lies at 0 V although the circuit's own is far from it (more than half a swing)."""
+    """Whether the node's middle lies at 0 V although the circuit's own is far from it (more than half a
+    swing)."""
     if "upper" not in constants or "lower" not in constants:
         return False
     upper, lower = offered.get("upper", math.nan), offered.get("lower", math.nan)
@@ -120,4 +165,8 @@ def _centred(constants: CycleConstants, offered: dict[str, float]) -> bool:
     swing = constants.value("upper") - constants.value("lower")
     middle = 0.5 * (constants.value("upper") + constants.value("lower"))
     meant = 0.5 * (upper + lower)
-    return abs(middle) < 0.2 * swing and abs(meant) > 0.45 * (upper - lower) and abs(meant - middle) > 0.35 * swing
+    return (
+        abs(middle) < 0.2 * swing
+        and abs(meant) > 0.45 * (upper - lower)
+        and abs(meant - middle) > 0.35 * swing
+    )

@@ -48,16 +48,24 @@ def explain(
     quantities = measured(first, sheet.scope, same)
     warnings = [r for c in captures for r in c.remarks]
     base = Explanation(
-        captures=tuple(facts), oscillates=first.oscillates, measured=quantities,
-        circuit=None if sheet.circuit is None else sheet.circuit.name, title=sheet.title,
+        captures=tuple(facts),
+        oscillates=first.oscillates,
+        measured=quantities,
+        circuit=None if sheet.circuit is None else sheet.circuit.name,
+        title=sheet.title,
         record_notes=dict(sheet.record),
     )
     if sheet.circuit is None:
         found = candidates_of(first) if first.oscillates else ()
         misses = _bare_misses(sheet, quantities)
         verdict = worst([_judged(quantities, sheet, n) for n in ("frequency", "duty")])
-        return replace(base, candidates=found, miss=misses, verdict=verdict,
-                       warnings=tuple(_unique(warnings + cautions(None, sheet, captures))))
+        return replace(
+            base,
+            candidates=found,
+            miss=misses,
+            verdict=verdict,
+            warnings=tuple(_unique(warnings + cautions(None, sheet, captures))),
+        )
     checked, notes = scope_checks(sheet, captures)
     model = assemble(sheet, checked)
     warnings += notes
@@ -90,7 +98,9 @@ def _bare_misses(sheet: Sheet, quantities: Mapping[str, Quantity | None]) -> dic
     for name, target in (("frequency", sheet.target_frequency), ("duty", sheet.target_duty)):
         if target is not None:
             q = quantities.get(name)
-            limits = (target.low / target.nominal - 1, target.high / target.nominal - 1) if target.stated else None
+            limits = (
+                (target.low / target.nominal - 1, target.high / target.nominal - 1) if target.stated else None
+            )
             miss = None if q is None else q.value / target.nominal - 1
             found[name] = Miss(target.nominal, None if q is None else q.value, miss, None, limits=limits)
     return found or None
@@ -107,10 +117,17 @@ def _explain_cycle(
 ) -> Explanation:
     weighed = weigh(model)
     if not any(w.probability > 0 for w in weighed):
-        says = ("none of the causes known for this circuit, one or two at a time, makes this waveform from the build sheet's parts: "
-                "check the circuit, the sheet's values and which node was probed")
-        return replace(base, warnings=tuple(_unique([*warnings, Remark("poor-fit", says)])), settled=False,
-                       miss=_bare_misses(sheet, base.measured))
+        says = (
+            "none of the causes known for this circuit, one or two at a time, makes this waveform "
+            "from the build sheet's parts: "
+            "check the circuit, the sheet's values and which node was probed"
+        )
+        return replace(
+            base,
+            warnings=tuple(_unique([*warnings, Remark("poor-fit", says)])),
+            settled=False,
+            miss=_bare_misses(sheet, base.measured),
+        )
     weighed = [parts_room.refine(model, weighed[0]), *weighed[1:]]
     averaged = parts_room.average(weighed)
     built = {n: q for n in ("frequency", "duty") if (q := base.measured.get(n)) is not None}
@@ -118,12 +135,21 @@ def _explain_cycle(
     judged = bare if bare is not None else built
     misses = {
         name: miss_of(model, averaged, name, target, built[name].value if name in built else None)
-        for name, target in (("frequency", sheet.target_frequency), ("duty", sheet.target_duty)) if target is not None
+        for name, target in (("frequency", sheet.target_frequency), ("duty", sheet.target_duty))
+        if target is not None
     }
-    verdicts = [judge(judged[n], t) for n, t in (("frequency", sheet.target_frequency), ("duty", sheet.target_duty))
-                if t is not None and n in judged]
+    verdicts = [
+        judge(judged[n], t)
+        for n, t in (("frequency", sheet.target_frequency), ("duty", sheet.target_duty))
+        if t is not None and n in judged
+    ]
     readings = tuple(sheet.readings)
-    warnings = warnings + _probe_warning(built, bare) + _fit_warning(model, weighed) + _cancelling(model, weighed, misses)
+    warnings = (
+        warnings
+        + _probe_warning(built, bare)
+        + _fit_warning(model, weighed)
+        + _cancelling(model, weighed, misses)
+    )
     warnings += cautions(model, sheet, captures)
     return replace(
         base,
@@ -133,7 +159,9 @@ def _explain_cycle(
         suspects=suspects_of(model, weighed),
         settled=settled(weighed),
         ruled_out=ruled_out(model, weighed),
-        next_readings=() if settled(weighed) else next_readings(model, averaged, readings, tuple(captures[0].spans)),
+        next_readings=()
+        if settled(weighed)
+        else next_readings(model, averaged, readings, tuple(captures[0].spans)),
         remedies=remedies_of(model, averaged, sheet.target_frequency, sheet.target_duty),
         without_probe=bare,
         verdict=worst(verdicts),
@@ -173,7 +201,12 @@ def _probe_warning(built: Mapping[str, Quantity], bare: Mapping[str, Quantity] |
             from benchfit.quantity import percent, si
 
             shown = si(bare["frequency"].value, "Hz", bare["frequency"].u) if "frequency" in bare else ""
-            return [Remark("probe-loads", f"the probe moves the {name} by {percent(share)}; with the probe removed: {shown}")]
+            return [
+                Remark(
+                    "probe-loads",
+                    f"the probe moves the {name} by {percent(share)}; with the probe removed: {shown}",
+                )
+            ]
     return []
 
 
@@ -183,8 +216,13 @@ def _fit_warning(model: Model, weighed: Sequence[Weighed]) -> list[Remark]:
     live = [w for w in weighed if w.probability > 0.02]
     best = min(w.misfit for w in live)
     if chdtrc(max(len(model.observations), 1), best) < 1e-4:
-        return [Remark("poor-fit", "no single cause or pair of causes explains everything that was measured; "
-                       "what is said of the parts is the least bad account")]
+        return [
+            Remark(
+                "poor-fit",
+                "no single cause or pair of causes explains everything that was measured; "
+                "what is said of the parts is the least bad account",
+            )
+        ]
     return []
 
 
@@ -197,15 +235,21 @@ def _cancelling(model: Model, weighed: Sequence[Weighed], misses: Mapping[str, M
     shares = {s.cause: s.share for s in miss.shares}
     mine = [shares.get(c, 0.0) for c in first.causes]
     if len(mine) == 2 and mine[0] * mine[1] < 0 and abs(sum(mine)) < 0.3 * max(map(abs, mine)):
-        return [Remark("cancelling", f"{first.causes[0]} and {first.causes[1]} are both off and nearly cancel in the frequency; "
-                       "a change of either will show")]
+        return [
+            Remark(
+                "cancelling",
+                f"{first.causes[0]} and {first.causes[1]} are both off and nearly cancel in the frequency; "
+                "a change of either will show",
+            )
+        ]
     return []
 
 
 def _explain_rest(
     model: Model, constants: CycleConstants, sheet: Sheet, base: Explanation, warnings: list[Remark]
 ) -> Explanation:
-    """No oscillation is a finding too: which condition fails, by which cause, and the limits that would mend it."""
+    """No oscillation is a finding too: which condition fails, by which cause, and the limits that would mend
+    it."""
     weighed = weigh_rest(model, constants)
     alive = any(w.probability > 0 for w in weighed)
     warnings = warnings + cautions(model, sheet, [constants])
@@ -213,9 +257,18 @@ def _explain_rest(
     if misses:
         misses = {k: replace(m, on_paper=_paper(model, k, m.target)) for k, m in misses.items()}
     if not alive:
-        says = "the build does not oscillate, and no single cause known for this circuit parks it where it was seen"
-        return replace(base, settled=False, miss=misses, verdict=_failed(sheet), finding=says,
-                       warnings=tuple(_unique([*warnings, Remark("no-oscillation", says)])))
+        says = (
+            "the build does not oscillate, and no single cause known for this circuit parks it where it "
+            "was seen"
+        )
+        return replace(
+            base,
+            settled=False,
+            miss=misses,
+            verdict=_failed(sheet),
+            finding=says,
+            warnings=tuple(_unique([*warnings, Remark("no-oscillation", says)])),
+        )
     found = finding(model, weighed)
     says = found.says + (f"; {found.limits}" if found.limits else "")
     code = "latch-up" if found.code == "latched" else "no-oscillation"
@@ -226,9 +279,15 @@ def _explain_rest(
     return replace(
         base,
         parts=parts_room.parts_found(model, averaged, tuple(sheet.readings)),
-        miss=misses, suspects=suspects_of(model, weighed), settled=settled(weighed), finding=says,
-        next_readings=() if settled(weighed) else next_readings(model, averaged, tuple(sheet.readings), tuple(constants.spans)),
-        verdict=_failed(sheet), warnings=tuple(_unique(warnings)),
+        miss=misses,
+        suspects=suspects_of(model, weighed),
+        settled=settled(weighed),
+        finding=says,
+        next_readings=()
+        if settled(weighed)
+        else next_readings(model, averaged, tuple(sheet.readings), tuple(constants.spans)),
+        verdict=_failed(sheet),
+        warnings=tuple(_unique(warnings)),
         without_probe=_probe_stops(model, averaged),
     )
 

@@ -22,7 +22,8 @@ TWO = math.log(2.0)
 class Freed:
     """One parameter that a hypothesis frees over a range, in its gauge.
 
-    ``hole`` is the stretch within tolerance, which belongs to "nothing off". ``log_scale``: the range is measured
+    ``hole`` is the stretch within tolerance, which belongs to "nothing off". ``log_scale``: the range is
+    measured
     in ln of the value, so that the prior density is uniform in the gauge; else it is uniform in the value.
     """
 
@@ -34,9 +35,12 @@ class Freed:
     near: float = 0.0
 
     def density(self, t: Array) -> Array:
-        """Prior density at ``t``: half within ``near`` of the nominal, half over the whole range (1 per gauge unit)."""
+        """Prior density at ``t``: half within ``near`` of the nominal, half over the whole range (1 per gauge
+        unit)."""
         inside = (t >= self.low) & (t <= self.high)
-        gap = 0.0 if self.hole is None else max(0.0, min(self.high, self.hole[1]) - max(self.low, self.hole[0]))
+        gap = (
+            0.0 if self.hole is None else max(0.0, min(self.high, self.hole[1]) - max(self.low, self.hole[0]))
+        )
         wide = np.where(inside, 1 / max(self.high - self.low - gap, 1e-12), 0.0)
         if self.hole is not None:
             wide = np.where((t > self.hole[0]) & (t < self.hole[1]), 0.0, wide)
@@ -52,7 +56,8 @@ class Freed:
 class Hypothesis:
     """One way in which the build may be.
 
-    ``causes`` empty: nothing off. ``weight``: prior probability. ``shifts`` maps parameter index → new prior center.
+    ``causes`` empty: nothing off. ``weight``: prior probability. ``shifts`` maps parameter index → new prior
+    center.
     ``freed``: parameters of its own.
     """
 
@@ -66,7 +71,9 @@ def _range(p: Parameter, part: Part, model: Model) -> tuple[float, float, float]
     """Low, high of the coordinate and the near width, for a part that is off by its kind's usual range."""
     half = 0.5 * (p.limits[1] - p.limits[0])
     if p.coordinate == "log":
-        reach = {"resistor": DECADES, "capacitor": DECADES, "current": DECADES, "device": math.log(6.0)}.get(part.kind, TWO)
+        reach = {"resistor": DECADES, "capacitor": DECADES, "current": DECADES, "device": math.log(6.0)}.get(
+            part.kind, TWO
+        )
         if part.kind == "device":
             reach = max(reach, 2.5 * half)
         return p.nominal - reach, p.nominal + reach, TWO
@@ -155,8 +162,9 @@ def singles(model: Model) -> list[Hypothesis]:
     for first, second in swaps:
         i, j = model.index[first], model.index[second]
         p, q = model.parameters[i], model.parameters[j]
-        found.append(Hypothesis((first, second), odds.SINGLE * odds.SWAP / total,
-                                ((i, q.center), (j, p.center))))
+        found.append(
+            Hypothesis((first, second), odds.SINGLE * odds.SWAP / total, ((i, q.center), (j, p.center)))
+        )
     return found
 
 
@@ -168,4 +176,6 @@ def _worth_swapping(model: Model, first: str, second: str) -> bool:
     if p.follows is not None or q.follows is not None or p.spread == 0 or q.spread == 0:
         return False
     apart = abs(p.nominal - q.nominal)
-    return p.coordinate == q.coordinate and apart > 0.5 * (p.limits[1] - p.limits[0] + q.limits[1] - q.limits[0])
+    return p.coordinate == q.coordinate and apart > 0.5 * (
+        p.limits[1] - p.limits[0] + q.limits[1] - q.limits[0]
+    )

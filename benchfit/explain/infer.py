@@ -51,8 +51,16 @@ class Batch:
 
     def take(self, rows: NDArray[np.int64]) -> Batch:
         """The same hypotheses, some rows of them."""
-        return replace(self, center=self.center[rows], spread=self.spread[rows], own=self.own[rows],
-                       gauge=self.gauge[rows], t=self.t[rows], low=self.low[rows], high=self.high[rows])
+        return replace(
+            self,
+            center=self.center[rows],
+            spread=self.spread[rows],
+            own=self.own[rows],
+            gauge=self.gauge[rows],
+            t=self.t[rows],
+            low=self.low[rows],
+            high=self.high[rows],
+        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,7 +72,8 @@ class Relaxed:
     state : ndarray, shape (rows, n)
     t : ndarray, shape (rows, owns)
     cost : ndarray, shape (rows,)
-        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed; inf where the
+        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed; inf where
+        the
         state does not oscillate.
     log_weight : ndarray, shape (rows,)
         ln of ∫ likelihood × prior over the held parameters, up to one common constant.
@@ -166,18 +175,28 @@ def _cost(
 
 
 def _jacobian(
-    model: Model, batch: Batch, white: Array, state: Array, residual: Array, observed: Array,
-    free: NDArray[np.int64], t: Array, owns: int,
+    model: Model,
+    batch: Batch,
+    white: Array,
+    state: Array,
+    residual: Array,
+    observed: Array,
+    free: NDArray[np.int64],
+    t: Array,
+    owns: int,
 ) -> Array:
-    """d(prediction)/d(z, t), whitened: shape (rows, m, free + owns). Forward differences, one call for all."""
-    rows, n = state.shape
+    """d(prediction)/d(z, t), whitened: shape (rows, m, free + owns). Forward differences, one call for
+    all."""
+    rows = state.shape[0]
     shifted = np.repeat(state[:, None, :], free.size + owns, axis=1)
     column = np.arange(free.size)
     step = np.full((rows, free.size + owns), 1e-3)
     shifted[:, column, free] += 1e-3 * batch.spread[:, free]
     for k in range(owns):
         has = np.flatnonzero(batch.own[:, k] >= 0)
-        width = np.where(batch.gauge[has, k] == IDENTITY, _STEP * np.maximum(batch.high - batch.low, 1e-12)[has, k], _STEP)
+        width = np.where(
+            batch.gauge[has, k] == IDENTITY, _STEP * np.maximum(batch.high - batch.low, 1e-12)[has, k], _STEP
+        )
         moved = np.where(t[has, k] + width > batch.high[has, k], t[has, k] - width, t[has, k] + width)
         shifted[has, free.size + k, batch.own[has, k]] = _ungauge(moved, batch.gauge[has, k])
         step[has, free.size + k] = moved - t[has, k]
@@ -200,7 +219,14 @@ def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Arra
 
 
 def _weigh(
-    model: Model, batch: Batch, jacobian: Array, state: Array, t: Array, cost: Array, residual: Array, free: NDArray[np.int64],
+    model: Model,
+    batch: Batch,
+    jacobian: Array,
+    state: Array,
+    t: Array,
+    cost: Array,
+    residual: Array,
+    free: NDArray[np.int64],
     owns: int,
 ) -> Relaxed:
     rows, n = state.shape
@@ -219,5 +245,12 @@ def _weigh(
     inner = np.linalg.inv(normal)
     covariance[:, free[:, None], free[None, :]] = inner * spread[:, :, None] * spread[:, None, :]
     edges = model.unexplained_edges(state)
-    return Relaxed(state, t, cost, np.where(np.isfinite(cost), -0.5 * cost - 0.5 * logdet + edges, -np.inf),
-                   np.sum(np.nan_to_num(residual, posinf=1e6, neginf=1e6) ** 2, axis=1), own_u, covariance)
+    return Relaxed(
+        state,
+        t,
+        cost,
+        np.where(np.isfinite(cost), -0.5 * cost - 0.5 * logdet + edges, -np.inf),
+        np.sum(np.nan_to_num(residual, posinf=1e6, neginf=1e6) ** 2, axis=1),
+        own_u,
+        covariance,
+    )

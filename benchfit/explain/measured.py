@@ -13,14 +13,30 @@ from benchfit.explain.result import Quantity
 from benchfit.sheet.model import Scope
 
 NAMES = (
-    "frequency", "period", "duty", "jitter", "charge_time", "discharge_time", "upper", "lower", "charge_asymptote",
-    "charge_time_constant", "discharge_asymptote", "discharge_time_constant", "high", "low", "rise_time", "fall_time",
+    "frequency",
+    "period",
+    "duty",
+    "jitter",
+    "charge_time",
+    "discharge_time",
+    "upper",
+    "lower",
+    "charge_asymptote",
+    "charge_time_constant",
+    "discharge_asymptote",
+    "discharge_time_constant",
+    "high",
+    "low",
+    "rise_time",
+    "fall_time",
 )
 UNITS = {"frequency": "Hz", "duty": "1"}
 VOLTS = ("upper", "lower", "charge_asymptote", "discharge_asymptote", "high", "low")
 
 
-def _derived(constants: CycleConstants) -> Mapping[str, tuple[Callable[[Mapping[str, float]], float], tuple[str, ...]]]:
+def _derived(
+    constants: CycleConstants,
+) -> Mapping[str, tuple[Callable[[Mapping[str, float]], float], tuple[str, ...]]]:
     """Name → (function of the constants, the constants it needs)."""
     has_share = "charge_share" in constants
     duty = "high_share" if "high_share" in constants else "charge_share"
@@ -42,10 +58,13 @@ def _derived(constants: CycleConstants) -> Mapping[str, tuple[Callable[[Mapping[
         "charge_time_constant": (lambda x: 1 / x["charge_curvature"], ("charge_curvature",)),
         "discharge_time_constant": (lambda x: 1 / x["discharge_curvature"], ("discharge_curvature",)),
         "charge_asymptote": (
-            asymptote(c_start, "upper", "charge"), ("charge_share", "period", "charge_curvature", c_start, "upper")),
+            asymptote(c_start, "upper", "charge"),
+            ("charge_share", "period", "charge_curvature", c_start, "upper"),
+        ),
         "discharge_asymptote": (
             asymptote(d_start, "lower", "discharge"),
-            ("charge_share", "period", "discharge_curvature", d_start, "lower")),
+            ("charge_share", "period", "discharge_curvature", d_start, "lower"),
+        ),
     }
     if not has_share and "high_share" in constants:
         found["charge_time"] = (lambda x: x["high_share"] * x["period"], ("high_share", "period"))
@@ -56,8 +75,10 @@ def _derived(constants: CycleConstants) -> Mapping[str, tuple[Callable[[Mapping[
 def measured(constants: CycleConstants, scope: Scope, output_times: bool) -> dict[str, Quantity | None]:
     """Every quantity of the contract's ``measured`` section; None where the record does not give it.
 
-    ``u_noise`` is type A; ``u`` adds the timebase to times and each channel's gain and offset to voltages (type B,
-    rectangles: JCGM 100, 4.3.7). ``output_times``: the output's high and low times are those of charge and discharge.
+    ``u_noise`` is type A; ``u`` adds the timebase to times and each channel's gain and offset to voltages
+    (type B,
+    rectangles: JCGM 100, 4.3.7). ``output_times``: the output's high and low times are those of charge and
+    discharge.
     """
     found: dict[str, Quantity | None] = dict.fromkeys(NAMES)
     if not constants.oscillates:
@@ -97,7 +118,9 @@ def _straight(constants: CycleConstants, name: str) -> bool:
 
 
 def _propagate(
-    function: Callable[[Mapping[str, float]], float], needs: tuple[str, ...], point: Mapping[str, float],
+    function: Callable[[Mapping[str, float]], float],
+    needs: tuple[str, ...],
+    point: Mapping[str, float],
     constants: CycleConstants,
 ) -> tuple[float, float]:
     """Value and u of a function of the constants: first order, full covariance (JCGM 100, 5.2)."""
@@ -123,8 +146,14 @@ def _with_scope(name: str, value: float, noise: float, constants: CycleConstants
     if name == "duty":
         return Quantity(value, noise, "1", noise)
     if name in VOLTS:
-        node = next((n for n in constants.spans if (n == "output" or n.startswith("collector")) == (name in ("high", "low"))),
-                    next(iter(constants.spans), ""))
+        node = next(
+            (
+                n
+                for n in constants.spans
+                if (n == "output" or n.startswith("collector")) == (name in ("high", "low"))
+            ),
+            next(iter(constants.spans), ""),
+        )
         low, high = constants.spans.get(node, (0.0, 0.0))
         offset = scope.offset if scope.offset is not None else 0.02 * (high - low)
         u = math.sqrt(noise**2 + (scope.gain**2 * value**2 + offset**2) / 3)
@@ -137,11 +166,24 @@ def _single_ramp(
     constants: CycleConstants, scope: Scope, found: dict[str, Quantity | None]
 ) -> dict[str, Quantity | None]:
     """A single charge or discharge still gives its asymptote and time constant."""
-    if "ramp_asymptote" in constants and "ramp_curvature" in constants and not _straight(constants, "ramp_curvature"):
-        rising = "ramp_start" not in constants or constants.value("ramp_asymptote") > constants.value("ramp_start")
+    if (
+        "ramp_asymptote" in constants
+        and "ramp_curvature" in constants
+        and not _straight(constants, "ramp_curvature")
+    ):
+        rising = "ramp_start" not in constants or constants.value("ramp_asymptote") > constants.value(
+            "ramp_start"
+        )
         word = "charge" if rising else "discharge"
         kappa, u = constants.value("ramp_curvature"), constants.u("ramp_curvature")
-        found[f"{word}_time_constant"] = Quantity(1 / kappa, _clock(u / kappa**2, 1 / kappa, scope), "s", u / kappa**2)
+        found[f"{word}_time_constant"] = Quantity(
+            1 / kappa, _clock(u / kappa**2, 1 / kappa, scope), "s", u / kappa**2
+        )
         found[f"{word}_asymptote"] = _with_scope(
-            f"{word}_asymptote", constants.value("ramp_asymptote"), constants.u("ramp_asymptote"), constants, scope)
+            f"{word}_asymptote",
+            constants.value("ramp_asymptote"),
+            constants.u("ramp_asymptote"),
+            constants,
+            scope,
+        )
     return found

@@ -1,6 +1,7 @@
 """The forward model: from parts, probe and scope to the constants that the captures would give.
 
-A state is a vector of coordinates, one a parameter: ln of a part, the part itself where zero or a sign is possible,
+A state is a vector of coordinates, one a parameter: ln of a part, the part itself where zero or a sign is
+possible,
 1/x of a resistance that is absent at infinity; and the scope's nuisances. Many states are evaluated at once.
 """
 
@@ -25,8 +26,10 @@ EDGES = ("rise_time", "fall_time")
 DIFFERENCES = ("charge_bow", "discharge_bow")
 OUTPUT = ("high", "low")
 
-# What a closed form leaves out of a real circuit, as a share of the swing, of the period, of a phase's bend. It
-# bounds how hard a capture may argue, however quiet it is. Ours (judgement): a tenth of a scope's own accuracy.
+# What a closed form leaves out of a real circuit, as a share of the swing, of the period, of a phase's bend.
+# It
+# bounds how hard a capture may argue, however quiet it is. Ours (judgement): a tenth of a scope's own
+# accuracy.
 FLOOR_VOLTS = 0.0015
 FLOOR_PERIOD = 5e-4
 FLOOR_SHARE = 4e-4
@@ -39,8 +42,10 @@ FLOOR_EDGE = 0.05
 class Parameter:
     """One coordinate of the state with its Gaussian prior.
 
-    ``center`` and ``spread`` are the prior's mean and standard deviation in the coordinate, ``nominal`` and ``limits``
-    the sheet's. A part whose default follows others has the coordinate of its difference from (linear) or ratio to
+    ``center`` and ``spread`` are the prior's mean and standard deviation in the coordinate, ``nominal`` and
+    ``limits``
+    the sheet's. A part whose default follows others has the coordinate of its difference from (linear) or
+    ratio to
     (log) that base.
     """
 
@@ -80,8 +85,10 @@ class View:
 class Observation:
     """One number that was measured: ``name`` of the cycle's vocabulary in capture ``view``, or a reading.
 
-    ``kind``: "constant", "reading" (of the parameter ``name``) or "counter" (frequency or duty of the first capture).
-    ``value`` and its place in the covariance are in the transformed scale (ln for times; bend per phase for κ).
+    ``kind``: "constant", "reading" (of the parameter ``name``) or "counter" (frequency or duty of the first
+    capture).
+    ``value`` and its place in the covariance are in the transformed scale (ln for times; bend per phase for
+    κ).
     """
 
     view: int
@@ -188,7 +195,8 @@ class Model:
             if o.kind == "counter":
                 out[..., j] = -np.log(x) if o.name == "frequency" else x
             elif o.name in EDGES:
-                # An output that nothing slows has edges of its own making: they say nothing (see unexplained_edges).
+                # An output that nothing slows has edges of its own making: they say nothing (see
+                # unexplained_edges).
                 out[..., j] = np.where(np.asarray(x) > 0, np.log(np.maximum(x * clock, 1e-300)), o.value)
             elif o.name in TIMES:
                 out[..., j] = np.log(x * clock)
@@ -203,7 +211,8 @@ class Model:
         return out
 
     def unexplained_edges(self, state: Array) -> Array:
-        """ln of the density with which edges of no stated cause have just these durations, against FLOOR_EDGE's bell.
+        """ln of the density with which edges of no stated cause have just these durations, against
+        FLOOR_EDGE's bell.
 
         A slew rate explains resolved edges; without one they may be anything over four decades. Shape (...).
         """
@@ -219,15 +228,27 @@ class Model:
         duty = found.get("high_share", found.get("charge_share"))
         if duty is None:
             duty = self.constants_of(
-                View(self.circuit.nodes[0].name, "timing", view.loads, view.swaps, view.added_C, view.added_R,
-                     view.capacitor), self.values(state))["charge_share"]
+                View(
+                    self.circuit.nodes[0].name,
+                    "timing",
+                    view.loads,
+                    view.swaps,
+                    view.added_C,
+                    view.added_R,
+                    view.capacitor,
+                ),
+                self.values(state),
+            )["charge_share"]
         return 1 / found["period"], duty
 
 
-def observe(constants: CycleConstants, view: int, predicted: Sequence[str]) -> tuple[list[Observation], Array]:
+def observe(
+    constants: CycleConstants, view: int, predicted: Sequence[str]
+) -> tuple[list[Observation], Array]:
     """Observations of one capture with their covariance, floors included.
 
-    Only what both the record and the circuit speak of is taken. Times go in as logarithms, curvatures as bend over
+    Only what both the record and the circuit speak of is taken. Times go in as logarithms, curvatures as bend
+    over
     their phase (κ·t), so that every floor is a plain share.
     """
     names = [n for n in constants.names if n in predicted and np.isfinite(constants.value(n))]
@@ -265,7 +286,9 @@ def observe(constants: CycleConstants, view: int, predicted: Sequence[str]) -> t
 
 
 def _swing(constants: CycleConstants) -> float:
-    levels = [constants.value(n) for n in ("upper", "lower", "charge_start", "discharge_start") if n in constants]
+    levels = [
+        constants.value(n) for n in ("upper", "lower", "charge_start", "discharge_start") if n in constants
+    ]
     if len(levels) < 2:
         levels = [constants.value(n) for n in ("high", "low") if n in constants]
     return float(max(levels) - min(levels)) if len(levels) > 1 else 1.0

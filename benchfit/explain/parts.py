@@ -47,10 +47,12 @@ def average(weighed: Sequence[Weighed]) -> Averaged:
 
 
 def refine(model: Model, first: Weighed) -> Weighed:
-    """Least squares in lmfit from a hypothesis' best state, its freed parts without a prior: mode and covariance.
+    """Least squares in lmfit from a hypothesis' best state, its freed parts without a prior: mode and
+    covariance.
 
     Residuals are the observations whitened by their covariance, then every held parameter against its
-    tolerance in units of that. The freed part's posterior from the grid is kept where the two disagree (a one-sided
+    tolerance in units of that. The freed part's posterior from the grid is kept where the two disagree (a
+    one-sided
     parasitic has no Gaussian mode).
     """
     import lmfit
@@ -63,8 +65,14 @@ def refine(model: Model, first: Weighed) -> Weighed:
     moving = [i for i in range(spread.size) if spread[i] > 0 or i in own]
     if any(not np.isfinite(first.mode[i]) for i in moving):
         return first
-    scale = np.array([spread[i] if spread[i] > 0 else max(math.sqrt(first.covariance[i, i]), 1e-3 * abs(first.mode[i]), 1e-300)
-                      for i in moving])
+    scale = np.array(
+        [
+            spread[i]
+            if spread[i] > 0
+            else max(math.sqrt(first.covariance[i, i]), 1e-3 * abs(first.mode[i]), 1e-300)
+            for i in moving
+        ]
+    )
     center = model.center
     start = first.mode
     params = lmfit.Parameters()
@@ -134,10 +142,24 @@ def parts_found(model: Model, averaged: Averaged, readings: Sequence[str]) -> tu
             found.append(PartFound(p.name, None, None, p.part.unit, None, None, None, None, "capture"))
             continue
         deviation = None if parasitic or base == 0 or not math.isfinite(base) else value / base - 1
-        within = None if limits is None else limits[0] - 1e-12 * abs(limits[0]) <= value <= limits[1] + 1e-12 * abs(limits[1])
-        found.append(PartFound(
-            p.name, value, u, p.part.unit, None if parasitic or not math.isfinite(base) else base, limits, deviation, within,
-            _source(model, i, covariance, readings)))
+        within = (
+            None
+            if limits is None
+            else limits[0] - 1e-12 * abs(limits[0]) <= value <= limits[1] + 1e-12 * abs(limits[1])
+        )
+        found.append(
+            PartFound(
+                p.name,
+                value,
+                u,
+                p.part.unit,
+                None if parasitic or not math.isfinite(base) else base,
+                limits,
+                deviation,
+                within,
+                _source(model, i, covariance, readings),
+            )
+        )
     return tuple(found)
 
 
@@ -163,7 +185,8 @@ def _limits(model: Model, i: int) -> tuple[float, float] | None:
 
 
 def _source(model: Model, i: int, covariance: Array, readings: Sequence[str]) -> str:
-    """Which source carries most of the information (1/u²) on a part: the capture, its reading, or the sheet."""
+    """Which source carries most of the information (1/u²) on a part: the capture, its reading, or the
+    sheet."""
     p: Parameter = model.parameters[i]
     sheet = 0.0 if p.spread == 0 else 1 / p.spread**2
     total = 1 / covariance[i, i] if covariance[i, i] > 0 else math.inf
@@ -181,9 +204,11 @@ def _source(model: Model, i: int, covariance: Array, readings: Sequence[str]) ->
 
 
 def unseparated(model: Model, state: Array) -> tuple[tuple[str, ...], ...]:
-    """Parts that the captures fix only together, priors left out: columns of the whitened Jacobian that are collinear.
+    """Parts that the captures fix only together, priors left out: columns of the whitened Jacobian that are
+    collinear.
 
-    Unit columns; two of them are collinear where the smaller singular value is under 1e-2 of the larger, that is where
+    Unit columns; two of them are collinear where the smaller singular value is under 1e-2 of the larger, that
+    is where
     tan(angle/2) is. The scope's nuisances are projected out first: they belong to the instrument.
     """
     rows = [j for j, o in enumerate(model.observations) if o.kind != "reading"]
@@ -201,8 +226,11 @@ def unseparated(model: Model, state: Array) -> tuple[tuple[str, ...], ...]:
     nuisance = [i for i, p in enumerate(model.parameters) if p.part is None and spread[i] > 0]
     covariance = model.covariance[np.ix_(rows, rows)] + raw[:, nuisance] @ raw[:, nuisance].T
     columns = whitener(covariance) @ raw
-    wanted = [i for i, p in enumerate(model.parameters)
-              if p.part is not None and spread[i] > 0 and p.part.kind not in ("parasitic", "device")]
+    wanted = [
+        i
+        for i, p in enumerate(model.parameters)
+        if p.part is not None and spread[i] > 0 and p.part.kind not in ("parasitic", "device")
+    ]
     length = np.linalg.norm(columns, axis=0)
     wanted = [i for i in wanted if length[i] > 0.3]
     groups: list[set[int]] = []

@@ -1,4 +1,5 @@
-"""What a build should do before power is applied: closed form at the nominals, bands over the tolerances, advice."""
+"""What a build should do before power is applied: closed form at the nominals, bands over the tolerances,
+advice."""
 
 from __future__ import annotations
 
@@ -37,7 +38,12 @@ def predict(sheet: Sheet) -> dict[str, Any]:
     failing = [c for c in cycle.conditions if not float(np.ravel(c.margin)[0]) > 0]
     warnings = cautions(model, sheet, [])
     warnings += [Remark(code, says) for code, mask, says in cycle.remarks if bool(np.all(mask))]
-    record: dict[str, Any] = {"schema": 1, "circuit": model.circuit.name, "title": sheet.title, "oscillates": not failing}
+    record: dict[str, Any] = {
+        "schema": 1,
+        "circuit": model.circuit.name,
+        "title": sheet.title,
+        "oscillates": not failing,
+    }
     if failing:
         condition = failing[0]
         limits = _limits_words(model, nominal, condition.part)
@@ -77,7 +83,8 @@ def _predicted(model: Model, view: View, node: Node, states: Array) -> dict[str,
 
 
 def _bands(model: Model, view: View) -> tuple[dict[str, Any], dict[str, Any], dict[str, Any]]:
-    """Worst case over the tolerance limits, root-sum-square (± 2 u), Monte Carlo (JCGM 101: 95 % interval)."""
+    """Worst case over the tolerance limits, root-sum-square (± 2 u), Monte Carlo (JCGM 101: 95 %
+    interval)."""
     worst: dict[str, Any] = {}
     square: dict[str, Any] = {}
     carlo: dict[str, Any] = {}
@@ -94,9 +101,14 @@ def _bands(model: Model, view: View) -> tuple[dict[str, Any], dict[str, Any], di
             worst[name] = [float(x) if math.isfinite(x) else None for x in ends]
             sample = drawn[slot][np.isfinite(drawn[slot])]
             if sample.size:
-                worst[name] = [_reach(worst[name][0], float(sample.min()), min), _reach(worst[name][1], float(sample.max()), max)]
+                worst[name] = [
+                    _reach(worst[name][0], float(sample.min()), min),
+                    _reach(worst[name][1], float(sample.max()), max),
+                ]
                 carlo[name] = [float(x) for x in np.quantile(sample, (0.025, 0.975))]
-            points = model.frequency_and_duty(_spread_states(model, model.center, np.diag(model.spread**2)), view)[slot]
+            points = model.frequency_and_duty(
+                _spread_states(model, model.center, np.diag(model.spread**2)), view
+            )[slot]
             u = float(np.sqrt(np.sum(np.nan_to_num(points[1:] - points[0]) ** 2)))
             ends = [float(points[0]) - 2 * u, float(points[0]) + 2 * u]
             square[name] = ends if slot == 0 else [max(ends[0], 0.0), min(ends[1], 1.0)]
@@ -108,8 +120,11 @@ def _reach(a: float | None, b: float, pick: Any) -> float:
     return b if a is None else float(pick(a, b))
 
 
-def _corner(model: Model, view: View, slot: int, sign: int, wide: list[int], low: Array, high: Array) -> float:
-    """Extreme over the box of limits: walk to the corner that each parameter's own slope points to, until it stays."""
+def _corner(
+    model: Model, view: View, slot: int, sign: int, wide: list[int], low: Array, high: Array
+) -> float:
+    """Extreme over the box of limits: walk to the corner that each parameter's own slope points to, until it
+    stays."""
     state = model.nominal.copy()
     best = sign * float(model.frequency_and_duty(state[None, :], view)[slot][0])
     for _ in range(4):
@@ -137,8 +152,11 @@ def _miss(model: Model, view: View, sheet: Sheet) -> dict[str, Any] | None:
     for name, target, value in (("frequency", sheet.target_frequency, f), ("duty", sheet.target_duty, duty)):
         if target is None:
             continue
-        found[name] = {"target": target.nominal, "on_paper": float(value[0]) / target.nominal - 1,
-                       "shares": _variance_shares(model, view, 0 if name == "frequency" else 1)}
+        found[name] = {
+            "target": target.nominal,
+            "on_paper": float(value[0]) / target.nominal - 1,
+            "shares": _variance_shares(model, view, 0 if name == "frequency" else 1),
+        }
     if "frequency" not in found and not found:
         return {"frequency": {"target": None, "on_paper": None, "shares": _variance_shares(model, view, 0)}}
     return found
@@ -157,12 +175,16 @@ def _variance_shares(model: Model, view: View, slot: int) -> list[dict[str, Any]
     total = float(np.sum(parts))
     if total == 0:
         return []
-    found = [{"cause": model.parameters[i].name, "share": float(v / total)} for i, v in zip(wide, parts, strict=True)]
+    found = [
+        {"cause": model.parameters[i].name, "share": float(v / total)}
+        for i, v in zip(wide, parts, strict=True)
+    ]
     return sorted((s for s in found if s["share"] > 1e-6), key=lambda s: -s["share"])
 
 
 def _contributions(model: Model, view: View) -> list[dict[str, Any]]:
-    """What each tolerance moves the frequency by, from limit to limit, everything else nominal (fractions of f)."""
+    """What each tolerance moves the frequency by, from limit to limit, everything else nominal (fractions of
+    f)."""
     wide = [i for i, p in enumerate(model.parameters) if p.part is not None and p.limits[1] > p.limits[0]]
     state = np.tile(model.nominal, (2 * len(wide) + 1, 1))
     rows = np.arange(len(wide))
@@ -202,12 +224,23 @@ def _probe_note(model: Model, sheet: Sheet, state: Array) -> list[Remark]:
     if not view.loads:
         return []
     with np.errstate(all="ignore"):
-        on, off = (float(model.frequency_and_duty(state[None, :], v)[0][0]) for v in (view, view.without_probe()))
+        on, off = (
+            float(model.frequency_and_duty(state[None, :], v)[0][0]) for v in (view, view.without_probe())
+        )
     if not math.isfinite(on):
-        return [Remark("probe-loads", "with this probe on the timing node the build will not oscillate at all; probe the output instead, "
-                       "or use one of higher resistance")]
+        return [
+            Remark(
+                "probe-loads",
+                "with this probe on the timing node the build will not oscillate at all; probe the "
+                "output instead, or use one of higher resistance",
+            )
+        ]
     moved = on / off - 1
-    return [Remark("probe-loads", f"this probe will move the frequency by {percent(moved, signed=True)}")] if abs(moved) > 0.01 else []
+    return (
+        [Remark("probe-loads", f"this probe will move the frequency by {percent(moved, signed=True)}")]
+        if abs(moved) > 0.01
+        else []
+    )
 
 
 def _advice(model: Model, node: Node, predicted: dict[str, Any] | None) -> list[str]:
@@ -219,16 +252,32 @@ def _advice(model: Model, node: Node, predicted: dict[str, Any] | None) -> list[
     if predicted is not None:
         period = predicted["period"]["value"]
         scale = _per_division(period)
-        found.append(f"set {si(scale, 's')} per division: some {10 * scale / period:.0f} cycles on ten divisions")
+        found.append(
+            f"set {si(scale, 's')} per division: some {10 * scale / period:.0f} cycles on ten divisions"
+        )
         rise = min(predicted["charge_time"]["value"], predicted["discharge_time"]["value"])
         if rise < 0.02 * period:
-            found.append(f"the short phase lasts about {si(rise, 's')}: a second capture of it alone, ten points or more, "
-                         "tells a capacitor from a resistor")
+            found.append(
+                f"the short phase lasts about {si(rise, 's')}: a second capture of it alone, ten points or "
+                "more, tells a capacitor from a resistor"
+            )
     timing = [p for p in model.parameters if p.part is not None and p.part.kind in ("resistor", "capacitor")]
-    single = sum(p.part.kind == "resistor" and p.name.startswith("R") and len(p.name) == 1 for p in timing if p.part) == 1
-    found.append("thresholds, leaks and a wrong supply can be told from that capture"
-                 + ("; R and C only as a product: meter one of them, or capture again with a known capacitor across C" if single else
-                    "; which of the timing parts is off can be told where each has a phase of its own"))
+    single = (
+        sum(
+            p.part.kind == "resistor" and p.name.startswith("R") and len(p.name) == 1
+            for p in timing
+            if p.part
+        )
+        == 1
+    )
+    found.append(
+        "thresholds, leaks and a wrong supply can be told from that capture"
+        + (
+            "; R and C only as a product: meter one of them, or capture again with a known capacitor across C"
+            if single
+            else "; which of the timing parts is off can be told where each has a phase of its own"
+        )
+    )
     return found
 
 

@@ -1,6 +1,7 @@
 """What to read next: for each reading that a bench can give, how far it should raise the first probability.
 
-Under the present posterior each live hypothesis predicts the reading with a spread; readings are drawn from the mixture
+Under the present posterior each live hypothesis predicts the reading with a spread; readings are drawn from
+the mixture
 and the first probability that each would leave is averaged (preposterior analysis; Lindley 1956).
 """
 
@@ -17,7 +18,14 @@ from benchfit.explain.result import NextReading
 from benchfit.explain.verdict import _spread_states
 
 # Meters as they stand on a bench (common practice): limits as a fraction of the reading.
-METER = {"resistor": 0.005, "capacitor": 0.02, "supply": 0.003, "level": 0.01, "threshold": 0.02, "current": 0.01}
+METER = {
+    "resistor": 0.005,
+    "capacitor": 0.02,
+    "supply": 0.003,
+    "level": 0.01,
+    "threshold": 0.02,
+    "current": 0.01,
+}
 DRAWS = 60
 WORTH = 0.005
 
@@ -29,7 +37,9 @@ class _Offer:
     cost: float
 
 
-def next_readings(model: Model, averaged: Averaged, readings: Sequence[str], probed: Sequence[str]) -> tuple[NextReading, ...]:
+def next_readings(
+    model: Model, averaged: Averaged, readings: Sequence[str], probed: Sequence[str]
+) -> tuple[NextReading, ...]:
     """The readings worth taking, best first."""
     if len(averaged.live) < 2:
         return ()
@@ -47,24 +57,41 @@ def _offers(model: Model, averaged: Averaged, readings: Sequence[str], probed: S
     for i, p in enumerate(model.parameters):
         kind = p.part.kind if p.part else ""
         if kind in METER and p.name not in readings:
-            how = {"resistor": "resistance, one end lifted", "capacitor": "capacitance, out of circuit, at its working frequency",
-                   "supply": "d.c. voltage at the pin", "level": "level of the unloaded output", "threshold": "threshold, by itself",
-                   "current": "current, by a meter in its leg"}[kind]
+            how = {
+                "resistor": "resistance, one end lifted",
+                "capacitor": "capacitance, out of circuit, at its working frequency",
+                "supply": "d.c. voltage at the pin",
+                "level": "level of the unloaded output",
+                "threshold": "threshold, by itself",
+                "current": "current, by a meter in its leg",
+            }[kind]
             means = [np.array([w.mean[i]]) for w in averaged.live]
             scale = 1.0 if p.coordinate == "log" else max(abs(p.nominal), 1e-12)
             noise = (METER[kind] * scale / np.sqrt(3)) ** 2
-            yield (_Offer(f"{how}: {p.name}", p.name, {"threshold": 0.2, "capacitor": 0.02}.get(kind, 0.0)), means,
-                   [np.array([[w.covariance[i, i] + noise]]) for w in averaged.live])
+            yield (
+                _Offer(f"{how}: {p.name}", p.name, {"threshold": 0.2, "capacitor": 0.02}.get(kind, 0.0)),
+                means,
+                [np.array([[w.covariance[i, i] + noise]]) for w in averaged.live],
+            )
     view = model.views[0]
     node = next((n for n in model.circuit.nodes if n.shape != "square"), None)
     if node is None:
         return
     if not view.timing:
         seen = replace(view, timing=node.name, shape=node.shape, loads={})
-        yield from _capture_offer(model, averaged, seen, f"capture the {node.name} node (d.c. coupled, ×10 probe)", node.name, 0.0)
+        yield from _capture_offer(
+            model, averaged, seen, f"capture the {node.name} node (d.c. coupled, ×10 probe)", node.name, 0.0
+        )
     elif view.loads:
-        yield from _capture_offer(model, averaged, view.without_probe(),
-                                  "frequency with the probe lifted (output, counter or a ×100 probe)", view.timing, 0.0, True)
+        yield from _capture_offer(
+            model,
+            averaged,
+            view.without_probe(),
+            "frequency with the probe lifted (output, counter or a ×100 probe)",
+            view.timing,
+            0.0,
+            True,
+        )
     capacitor = view.capacitor
     nominal = float(model.values(model.nominal)[capacitor])
     added = _Added(model, replace(view, timing=view.timing or node.name), 0.5 * nominal)
@@ -88,12 +115,21 @@ def _vector(model: Model, view: View, states: Array, period_only: bool) -> Array
 
 
 def _noise(size: int) -> Array:
-    """Typical spread of what a second capture gives: 5e-4 in ln T, 0.1 % share, 1 % of the swing, 2 % bend."""
+    """Typical spread of what a second capture gives: 5e-4 in ln T, 0.1 % share, 1 % of the swing, 2 %
+    bend."""
     typical = [5e-4, 1e-3, 1e-3, 0.01, 0.01, 0.02, 0.02]
     return np.diag(np.square(typical[:size] if size == 1 else (typical + [0.02] * size)[:size]))
 
 
-def _capture_offer(model: Model, averaged: Averaged, view: View, words: str, node: str, cost: float, period_only: bool = False):  # type: ignore[no-untyped-def]
+def _capture_offer(
+    model: Model,
+    averaged: Averaged,
+    view: View,
+    words: str,
+    node: str,
+    cost: float,
+    period_only: bool = False,
+):  # type: ignore[no-untyped-def]
     means, covariances = [], []
     for w in averaged.live:
         with np.errstate(all="ignore"):
@@ -131,11 +167,20 @@ class _Added:
             covariances.append(moves.T @ moves + np.array([[5e-3**2]]))
         from benchfit.quantity import si
 
-        yield (_Offer(f"the same capture with a known capacitor of about {si(self.extra, 'F')} across {capacitor}", capacitor, 0.01),
-               means, covariances)
+        yield (
+            _Offer(
+                f"the same capture with a known capacitor of about {si(self.extra, 'F')} across {capacitor}",
+                capacitor,
+                0.01,
+            ),
+            means,
+            covariances,
+        )
 
 
-def _expected_rise(weights: Array, means: Sequence[Array], covariances: Sequence[Array], rng: np.random.Generator) -> float:
+def _expected_rise(
+    weights: Array, means: Sequence[Array], covariances: Sequence[Array], rng: np.random.Generator
+) -> float:
     """E[largest posterior probability after the reading] − the largest now."""
     factors = [np.linalg.cholesky(c + 1e-18 * np.eye(len(c))) for c in covariances]
     total = 0.0

@@ -1,4 +1,5 @@
-"""What to change: standard values (IEC 60063) that bring the build onto its target, and what it should then do."""
+"""What to change: standard values (IEC 60063) that bring the build onto its target, and what it should then
+do."""
 
 from __future__ import annotations
 
@@ -17,7 +18,9 @@ from benchfit.sheet.preferred import ladder, series_for
 KINDS = ("resistor", "capacitor")
 
 
-def _fitted(model: Model, averaged: Averaged, changes: Mapping[int, float]) -> tuple[Quantity, Quantity] | None:
+def _fitted(
+    model: Model, averaged: Averaged, changes: Mapping[int, float]
+) -> tuple[Quantity, Quantity] | None:
     """Frequency and duty, probe lifted, with some parts replaced by new ones of their nominal tolerance."""
     view = model.views[0].without_probe()
     rows: list[tuple[float, float, float, float, float]] = []
@@ -31,8 +34,15 @@ def _fitted(model: Model, averaged: Averaged, changes: Mapping[int, float]) -> t
             f, duty = model.frequency_and_duty(_spread_states(model, mean, covariance), view)
         if not np.isfinite(f[0]):
             return None
-        rows.append((q, float(f[0]), float(np.sum(np.nan_to_num(f[1:] - f[0]) ** 2)), float(duty[0]),
-                     float(np.sum(np.nan_to_num(duty[1:] - duty[0]) ** 2))))
+        rows.append(
+            (
+                q,
+                float(f[0]),
+                float(np.sum(np.nan_to_num(f[1:] - f[0]) ** 2)),
+                float(duty[0]),
+                float(np.sum(np.nan_to_num(duty[1:] - duty[0]) ** 2)),
+            )
+        )
     table = np.array(rows)
     q = table[:, 0] / table[:, 0].sum()
 
@@ -71,7 +81,8 @@ def _nearest(model: Model, i: int, wanted: float) -> tuple[float, str]:
 
 
 def _solve(model: Model, averaged: Averaged, i: int, goal: float, extra: Mapping[int, float]) -> float | None:
-    """ln of the part that brings the mean frequency onto the goal, by a fine scan and linear interpolation."""
+    """ln of the part that brings the mean frequency onto the goal, by a fine scan and linear
+    interpolation."""
     view = model.views[0].without_probe()
     grid = np.linspace(-2.5, 2.5, 201) + averaged.live[0].mean[i]
     mixed = np.zeros(grid.size)
@@ -100,7 +111,9 @@ def remedies_of(
     current = _fitted(model, averaged, {})
     if current is None:
         return ()
-    close = abs(current[0].value / frequency.nominal - 1) <= max(0.002, (current[0].u or 0.0) / frequency.nominal)
+    close = abs(current[0].value / frequency.nominal - 1) <= max(
+        0.002, (current[0].u or 0.0) / frequency.nominal
+    )
     duty_close = duty is None or abs(current[1].value - duty.nominal) <= max(0.005, current[1].u or 0.0)
     if close and duty_close:
         return ()
@@ -116,7 +129,15 @@ def remedies_of(
         predicted = _fitted(model, averaged, {i: math.log(after) + p.center - p.nominal})
         if predicted is None:
             continue
-        found.append(Remedy(p.name, float(values[p.name]), after, series, {"frequency": predicted[0], "duty": predicted[1]}))
+        found.append(
+            Remedy(
+                p.name,
+                float(values[p.name]),
+                after,
+                series,
+                {"frequency": predicted[0], "duty": predicted[1]},
+            )
+        )
     if duty is not None and len(order) > 1:
         found.extend(_pairs(model, averaged, order, frequency, duty, values))
 
@@ -132,11 +153,19 @@ def remedies_of(
 
 
 def _pairs(
-    model: Model, averaged: Averaged, order: Sequence[int], frequency: Toleranced, duty: Toleranced,
+    model: Model,
+    averaged: Averaged,
+    order: Sequence[int],
+    frequency: Toleranced,
+    duty: Toleranced,
     values: Mapping[str, Array],
 ) -> list[Remedy]:
     """Two resistors together, for frequency and duty at once: a scan of one, the other solved for."""
-    resistors = [i for i in order if model.parameters[i].part is not None and model.parameters[i].part.kind == "resistor"]  # type: ignore[union-attr]
+    resistors = [
+        i
+        for i in order
+        if model.parameters[i].part is not None and model.parameters[i].part.kind == "resistor"
+    ]  # type: ignore[union-attr]
     best: tuple[float, list[Remedy]] | None = None
     for i in resistors[:2]:
         for j in resistors[:2]:
@@ -154,9 +183,16 @@ def _pairs(
                 predicted = _fitted(model, averaged, {i: x, j: math.log(other) + q.center - q.nominal})
                 if predicted is None:
                     continue
-                away = abs(math.log(predicted[0].value / frequency.nominal)) + 2 * abs(predicted[1].value - duty.nominal)
+                away = abs(math.log(predicted[0].value / frequency.nominal)) + 2 * abs(
+                    predicted[1].value - duty.nominal
+                )
                 if best is None or away < best[0]:
                     predicts = {"frequency": predicted[0], "duty": predicted[1]}
-                    best = (away, [Remedy(p.name, float(values[p.name]), after, series_p, predicts),
-                                   Remedy(q.name, float(values[q.name]), other, series_q, predicts)])
+                    best = (
+                        away,
+                        [
+                            Remedy(p.name, float(values[p.name]), after, series_p, predicts),
+                            Remedy(q.name, float(values[q.name]), other, series_q, predicts),
+                        ],
+                    )
     return best[1] if best else []

@@ -1,6 +1,7 @@
 """A build that does not oscillate: which cause parks the node where it was seen, and what would make it run.
 
-Here a hypothesis predicts a resting voltage, not a cycle, and half of its prior may oscillate after all. So evidence is
+Here a hypothesis predicts a resting voltage, not a cycle, and half of its prior may oscillate after all. So
+evidence is
 an average over draws from the prior (simple Monte Carlo), with the freed part on a grid.
 """
 
@@ -26,7 +27,8 @@ GRID = 41
 
 @dataclass(frozen=True)
 class RestFinding:
-    """Which condition fails in the likeliest build (its sentence), and the range of R in which it would run."""
+    """Which condition fails in the likeliest build (its sentence), and the range of R in which it would
+    run."""
 
     code: str
     says: str
@@ -64,8 +66,10 @@ def weigh_rest(model: Model, constants: CycleConstants) -> list[Weighed]:
     p = np.exp(weights - logsumexp(weights))
     from dataclasses import replace
 
-    return sorted((replace(w, probability=float(q)) for w, q in zip(found, p, strict=True)),
-                  key=lambda w: (-w.probability, len(w.causes)))
+    return sorted(
+        (replace(w, probability=float(q)) for w, q in zip(found, p, strict=True)),
+        key=lambda w: (-w.probability, len(w.causes)),
+    )
 
 
 def _draws(model: Model, h: Hypothesis, noise: Array) -> tuple[Array, Array]:
@@ -93,8 +97,12 @@ def _seen(model: Model, constants: CycleConstants) -> dict[str, tuple[float, flo
     for name, kind in (("rest", "timing"), ("output_rest", "output")):
         if name in constants:
             v = constants.value(name)
-            u = math.sqrt(constants.u(name) ** 2 + (spreads.get(f"gain:{kind}", 0.0) * v) ** 2
-                          + spreads.get(f"offset:{kind}", 0.0) ** 2 + (0.005 * model.swing) ** 2)
+            u = math.sqrt(
+                constants.u(name) ** 2
+                + (spreads.get(f"gain:{kind}", 0.0) * v) ** 2
+                + spreads.get(f"offset:{kind}", 0.0) ** 2
+                + (0.005 * model.swing) ** 2
+            )
             found[name] = (v, u)
     for name in ("ramp_asymptote", "ramp_curvature"):
         if name in constants and constants.u(name) < 0.5 * abs(constants.value(name)):
@@ -140,7 +148,9 @@ def _likelihood(model: Model, states: Array, seen: dict[str, tuple[float, float]
         if "ramp_curvature" in seen:
             kappa = np.broadcast_to(cycle.phases[0].curvature, shape)
             v, u = seen["ramp_curvature"]
-            term = term + _gauss(np.log(np.maximum(kappa, 1e-300)), math.log(max(v, 1e-300)), max(u / max(v, 1e-300), 0.01))
+            term = term + _gauss(
+                np.log(np.maximum(kappa, 1e-300)), math.log(max(v, 1e-300)), max(u / max(v, 1e-300), 0.01)
+            )
         out = np.where(mask, term, out)
     return np.where(np.isfinite(out), out, -np.inf)
 
@@ -180,7 +190,8 @@ def limits_of(model: Model, state: Array, part: str) -> str:
 
 
 def running_range(model: Model, state: Array, part: str) -> tuple[float | None, float | None, str] | None:
-    """(lowest, highest, unit) of one part for which every condition holds; None ends are beyond four decades."""
+    """(lowest, highest, unit) of one part for which every condition holds; None ends are beyond four
+    decades."""
     if part not in model.index:
         return None
     i = model.index[part]

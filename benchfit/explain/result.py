@@ -10,7 +10,8 @@ from benchfit.errors import Remark
 
 @dataclass(frozen=True)
 class Quantity:
-    """A value with its standard uncertainty (k = 1) and unit; ``u_noise`` is the record's own share (type A)."""
+    """A value with its standard uncertainty (k = 1) and unit; ``u_noise`` is the record's own share (type
+    A)."""
 
     value: float
     u: float | None
@@ -120,8 +121,10 @@ class CaptureFacts:
 class Explanation:
     """The whole answer for one capture (or one joint set): section 5 of the contract, as data.
 
-    ``measured`` maps the contract's names to quantities (None where unknown). ``model`` holds the fitted circuit's
-    curve of one cycle for drawing: {node: (times from the cycle's start, volts)}; ``nominal_model`` is that of the
+    ``measured`` maps the contract's names to quantities (None where unknown). ``model`` holds the fitted
+    circuit's
+    curve of one cycle for drawing: {node: (times from the cycle's start, volts)}; ``nominal_model`` is that
+    of the
     sheet's nominal parts.
     """
 

@@ -1,4 +1,5 @@
-"""Suspects as a bench hears them: probabilities that share between look-alikes, what is settled, what is ruled out."""
+"""Suspects as a bench hears them: probabilities that share between look-alikes, what is settled, what is
+ruled out."""
 
 from __future__ import annotations
 
@@ -61,7 +62,10 @@ def _listed(words: Sequence[str]) -> str:
 def _swapped(model: Model, w: Weighed) -> bool:
     values, nominal = model.values(w.mode), model.values(model.nominal)
     a, b = w.causes
-    return bool(abs(math.log(float(values[a]) / float(nominal[b]))) < 0.3 and abs(math.log(float(values[b]) / float(nominal[a]))) < 0.3)
+    return bool(
+        abs(math.log(float(values[a]) / float(nominal[b]))) < 0.3
+        and abs(math.log(float(values[b]) / float(nominal[a]))) < 0.3
+    )
 
 
 def _one(model: Model, name: str, w: Weighed) -> str:
@@ -81,13 +85,18 @@ def _one(model: Model, name: str, w: Weighed) -> str:
         if abs(math.log(max(value / nominal, 1e-9) / factor)) < 0.15:
             return f"{name} ({part.says}) is {words}, a wrong decade: {si(value, part.unit, u)}"
     direction = "above" if value > nominal else "below"
-    return f"{name} ({part.says}) is {percent(abs(change))} {direction} its nominal: {si(value, part.unit, u)}"
+    return (
+        f"{name} ({part.says}) is {percent(abs(change))} {direction} its nominal: {si(value, part.unit, u)}"
+    )
 
 
 def lookalikes(w: Weighed, weighed: Sequence[Weighed]) -> list[Weighed]:
     """Hypotheses of as few causes that the data do not tell from this one."""
-    return [o for o in weighed
-            if o is not w and len(o.causes) <= len(w.causes) and o.log_evidence > w.log_evidence - ALIKE]
+    return [
+        o
+        for o in weighed
+        if o is not w and len(o.causes) <= len(w.causes) and o.log_evidence > w.log_evidence - ALIKE
+    ]
 
 
 def settled(weighed: Sequence[Weighed]) -> bool:
@@ -100,7 +109,14 @@ def settled(weighed: Sequence[Weighed]) -> bool:
         return False
     if not first.causes:
         return True
-    group = [first, *(o for o in weighed[1:] if o.log_evidence > first.log_evidence - math.log(1e4) and len(o.causes) <= len(first.causes))]
+    group = [
+        first,
+        *(
+            o
+            for o in weighed[1:]
+            if o.log_evidence > first.log_evidence - math.log(1e4) and len(o.causes) <= len(first.causes)
+        ),
+    ]
     logs = np.array([o.log_evidence for o in group])
     return bool(1 / np.sum(np.exp(logs - logs[0])) >= SURE)
 
@@ -114,7 +130,9 @@ def suspects_of(model: Model, weighed: Sequence[Weighed]) -> tuple[Suspect, ...]
         alike = [o for o in lookalikes(w, shown) if o.causes] if w.causes else []
         change = {name: change_of(model, name, w.mean) for name in w.causes}
         change = {k: v for k, v in change.items() if math.isfinite(v)}
-        found.append(Suspect(w.causes, change, w.probability / total if total else 1.0, _says(model, w, alike)))
+        found.append(
+            Suspect(w.causes, change, w.probability / total if total else 1.0, _says(model, w, alike))
+        )
     return tuple(found)
 
 
@@ -131,13 +149,22 @@ def ruled_out(model: Model, weighed: Sequence[Weighed]) -> tuple[RuledOut, ...]:
 
 
 _WORDS = {
-    "period": "the period", "charge_share": "the share of the charge in the cycle", "high_share": "the duty cycle",
-    "upper": "the upper turning voltage", "lower": "the lower turning voltage",
-    "charge_curvature": "the bend of the charge", "discharge_curvature": "the bend of the discharge",
-    "charge_start": "the start of the charge", "discharge_start": "the start of the discharge",
-    "charge_bow": "the shape of the charge", "discharge_bow": "the shape of the discharge",
-    "high": "the output's high level", "low": "the output's low level",
-    "rise_time": "the output's rise time", "fall_time": "the output's fall time", "frequency": "the counter's frequency",
+    "period": "the period",
+    "charge_share": "the share of the charge in the cycle",
+    "high_share": "the duty cycle",
+    "upper": "the upper turning voltage",
+    "lower": "the lower turning voltage",
+    "charge_curvature": "the bend of the charge",
+    "discharge_curvature": "the bend of the discharge",
+    "charge_start": "the start of the charge",
+    "discharge_start": "the start of the discharge",
+    "charge_bow": "the shape of the charge",
+    "discharge_bow": "the shape of the discharge",
+    "high": "the output's high level",
+    "low": "the output's low level",
+    "rise_time": "the output's rise time",
+    "fall_time": "the output's fall time",
+    "frequency": "the counter's frequency",
 }
 
 
@@ -147,17 +174,21 @@ def _against(model: Model, w: Weighed) -> str:
         return "with it the circuit would not oscillate"
     with np.errstate(all="ignore"):
         away = (model.observed - model.predict(w.mode)) / np.sqrt(np.diag(model.covariance))
-    pull = np.where(model.spread > 0, (w.mode - model.center) / np.where(model.spread > 0, model.spread, 1.0), 0.0)
+    pull = np.where(
+        model.spread > 0, (w.mode - model.center) / np.where(model.spread > 0, model.spread, 1.0), 0.0
+    )
     pull[[model.index[c] for c in w.causes]] = 0.0
     j, i = int(np.argmax(np.abs(np.nan_to_num(away)))), int(np.argmax(np.abs(pull)))
     name = w.causes[0]
     if abs(away[j]) >= abs(pull[i]) and abs(away[j]) > 2:
         o = model.observations[j]
         what = _WORDS.get(o.name, f"the reading of {o.name}")
-        return f"with {name} alone, {what} would be {abs(away[j]):.0f} u {'lower' if away[j] > 0 else 'higher'} than it is"
+        side = "lower" if away[j] > 0 else "higher"
+        return f"with {name} alone, {what} would be {abs(away[j]):.0f} u {side} than it is"
     if abs(pull[i]) > 2:
         p = model.parameters[i]
         who = {"gain": "the scope's gain", "offset": "the scope's offset", "timebase": "the timebase"}.get(
-            p.name.split(":")[0], p.name)
+            p.name.split(":")[0], p.name
+        )
         return f"with {name} alone, {who} would have to be {abs(pull[i]):.1f} u off its own tolerance"
     return ""

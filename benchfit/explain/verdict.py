@@ -13,7 +13,9 @@ from benchfit.explain.result import Quantity
 from benchfit.quantity import Toleranced
 
 
-def without_probe(model: Model, averaged: Averaged, built: Mapping[str, Quantity]) -> Mapping[str, Quantity] | None:
+def without_probe(
+    model: Model, averaged: Averaged, built: Mapping[str, Quantity]
+) -> Mapping[str, Quantity] | None:
     """Frequency and duty with the probe lifted: as measured, times what the model says that lifting it does.
 
     The ratio's spread within and between the live hypotheses goes into u.
@@ -63,7 +65,7 @@ def _spread_states(model: Model, mean: np.ndarray, covariance: np.ndarray) -> np
 
 
 def judge(value: Quantity, target: Toleranced) -> str | None:
-    """"pass" only if the whole interval value ± U lies within the limits, "fail" only if it lies outside."""
+    """ "pass" only if the whole interval value ± U lies within the limits, "fail" only if it lies outside."""
     if not target.stated:
         return None
     spread = 2 * (value.u or 0.0)

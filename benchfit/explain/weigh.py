@@ -1,4 +1,5 @@
-"""Weigh every hypothesis against the data: evidence of single causes on grids, of pairs by Laplace's method."""
+"""Weigh every hypothesis against the data: evidence of single causes on grids, of pairs by Laplace's
+method."""
 
 from __future__ import annotations
 
@@ -101,8 +102,15 @@ def _explains(model: Model, found: Sequence[Weighed]) -> bool:
 def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
     done = relax(model, _batch(model, hypotheses, 0), 6, white)
     return [
-        Weighed(h.causes, h.weight, float(done.log_weight[r]), done.state[r], done.covariance[r], done.state[r],
-                float(done.cost[r]))
+        Weighed(
+            h.causes,
+            h.weight,
+            float(done.log_weight[r]),
+            done.state[r],
+            done.covariance[r],
+            done.state[r],
+            float(done.cost[r]),
+        )
         for r, h in enumerate(hypotheses)
     ]
 
@@ -166,7 +174,9 @@ def _averaged(
 ) -> Weighed:
     total = float(logsumexp(logs)) if logs.size and np.any(np.isfinite(logs)) else -np.inf
     if not np.isfinite(total):
-        return Weighed(h.causes, h.weight, -np.inf, best.state[row], best.covariance[row], best.state[row], np.inf)
+        return Weighed(
+            h.causes, h.weight, -np.inf, best.state[row], best.covariance[row], best.state[row], np.inf
+        )
     p = np.exp(logs - total)
     live = p > 1e-9
     p, rows = p[live], mine[live]
@@ -175,7 +185,9 @@ def _averaged(
     away = np.nan_to_num(states) - mean
     covariance = np.tensordot(p, done.covariance[rows], 1) + (away * p[:, None]).T @ away
     top = rows[np.argmax(p)]
-    return Weighed(h.causes, h.weight, total, mean, covariance, done.state[top], float(np.min(done.cost[rows])))
+    return Weighed(
+        h.causes, h.weight, total, mean, covariance, done.state[top], float(np.min(done.cost[rows]))
+    )
 
 
 def _search(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> Relaxed:
@@ -224,9 +236,13 @@ def _weigh_pairs(model: Model, found: Sequence[Weighed], white: Array) -> list[W
         return []
     batch = replace(_batch(model, hypotheses, 2), t=np.array(begins))
     rough = relax(model, batch, 3, white)
-    keep = np.array([
-        mine[np.argmin(rough.cost[mine])] for g in sorted(set(groups)) for mine in [np.flatnonzero(np.array(groups) == g)]
-    ])
+    keep = np.array(
+        [
+            mine[np.argmin(rough.cost[mine])]
+            for g in sorted(set(groups))
+            for mine in [np.flatnonzero(np.array(groups) == g)]
+        ]
+    )
     fine = relax(model, replace(batch.take(keep), t=rough.t[keep]), 8, white)
     return [_pair(hypotheses[row], fine, r) for r, row in enumerate(keep)]
 
@@ -254,7 +270,9 @@ def _pair(h: Hypothesis, fine: Relaxed, r: int) -> Weighed:
     if density <= 0 or not np.isfinite(fine.cost[r]):
         return Weighed(h.causes, h.weight, -np.inf, fine.state[r], fine.covariance[r], fine.state[r], np.inf)
     evidence = float(fine.log_weight[r] + np.log(density * volume))
-    return Weighed(h.causes, h.weight, evidence, fine.state[r], fine.covariance[r], fine.state[r], float(fine.cost[r]))
+    return Weighed(
+        h.causes, h.weight, evidence, fine.state[r], fine.covariance[r], fine.state[r], float(fine.cost[r])
+    )
 
 
 def _merge(found: Sequence[Weighed]) -> list[Weighed]:
@@ -277,7 +295,11 @@ def _merge(found: Sequence[Weighed]) -> list[Weighed]:
         for q, v in zip(p, variants, strict=True):
             if q > 0:
                 covariance += q * (v.covariance + np.outer(v.mean - mean, v.mean - mean))
-        merged.append(Weighed(best.causes, prior, total - float(np.log(prior)), mean, covariance, best.mode, best.misfit))
+        merged.append(
+            Weighed(
+                best.causes, prior, total - float(np.log(prior)), mean, covariance, best.mode, best.misfit
+            )
+        )
     logs = np.array([w.log_evidence + np.log(w.prior) for w in merged])
     if not np.any(np.isfinite(logs)):
         return merged
