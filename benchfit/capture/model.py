@@ -36,7 +36,9 @@ class Channel:
 
     def __post_init__(self) -> None:
         if self.values.ndim != 1:
-            raise CaptureError(f"channel {self.name}: values must be one-dimensional, got shape {self.values.shape}")
+            raise CaptureError(
+                f"channel {self.name}: values must be one-dimensional, got shape {self.values.shape}"
+            )
 
 
 @dataclass(frozen=True, eq=False)

@@ -1,21 +1,28 @@
-"""A file with samples in it -> a Capture (first, plain version: one table, one header)."""
+"""A file, or the files of one shot, -> a Capture."""
 
 from __future__ import annotations
 
-import io
-import re
 from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
+from typing import IO
 
 import numpy as np
+from numpy.typing import NDArray
 
+from benchfit.capture.families import Claim, Family, tell
 from benchfit.capture.model import Capture, Channel
-from benchfit.errors import CaptureError, Remark
+from benchfit.capture.page import Page, look
+from benchfit.capture.plan import Column, Plan, make_plan
+from benchfit.capture.resolution import resolution
+from benchfit.capture.shot import merged
+from benchfit.capture.source import Source
+from benchfit.capture.table import Table, read_table
+from benchfit.capture.time_axis import Axis, make_axis
+from benchfit.errors import Remark
 
-_NUMBER = re.compile(r"[+-]?(\d+([.,]\d*)?|[.,]\d+)([eE][+-]?\d+)?")
-_UNIT = re.compile(r"^(?P<name>.*?)\s*(?:\bin\s+|[\[(])(?P<unit>[^\[\]()]+?)[\])]?$")
-_SCALES = {"s": 1.0, "sec": 1.0, "second": 1.0, "ms": 1e-3, "us": 1e-6, "ns": 1e-9, "v": 1.0, "volt": 1.0, "mv": 1e-3,
-           "ampere": 1.0, "a": 1.0}
+# Above this share of rows that do not fit, a file is not damaged but misunderstood.
+_MOST_LEFT_OUT = 0.1
 
 
 def read(
@@ -26,73 +33,196 @@ def read(
     interval: float | None = None,
     frame: int | None = None,
     limit: int | None = None,
-    stdin: io.BufferedIOBase | None = None,
+    stdin: IO[bytes] | None = None,
 ) -> Capture:
-    """The capture in ``path``. Raises CaptureError."""
-    import pandas
+    """The capture in ``path`` ("-" for standard input), whatever instrument wrote it.
 
-    where = str(path)
-    try:
-        text = Path(path).read_bytes().decode("utf-8-sig", errors="strict")
-    except UnicodeDecodeError:
-        text = Path(path).read_bytes().decode("latin-1")
-    except OSError as fault:
-        raise CaptureError(f"{where}: cannot be opened ({fault.strerror}).", path=where) from None
-    lines = text.splitlines()
-    probe = [line for line in lines if line.strip()][-20:]
-    if not probe:
-        raise CaptureError(f"{where}: the file is empty.", path=where)
-    sep = next((s for s in (";", "\t", ",") if all(s in line for line in probe)), ",")
-    decimal = "," if sep != "," and any("," in line for line in probe) else "."
+    Parameters
+    ----------
+    path : file name
+        Text with a table of numbers in it, plain or compressed (gzip, bzip2, xz, zstd).
+    also : file names
+        Further files of the same shot, one or more channels each, on the same time axis.
+    columns : mapping, optional
+        {"time": 0, "CH1": 1}: which columns to read, by number from 0 or by their title, and what to call
+        them. A unit may follow the name: "time[ms]", "CH1[mV]". "increment" in place of "time" is a column
+        that holds the time since the row before.
+    interval : float, optional
+        Time between samples [s]; wins over everything in the file.
+    frame : int, optional
+        Which frame to read where time starts anew within the file, from 1.
+    limit : int, optional
+        Most bytes of text, and of memory for the values, that are taken; default 2 GiB.
+    stdin : binary file, optional
+        What "-" stands for.
 
-    def cells(line: str) -> list[str]:
-        return [cell.strip() for cell in line.split(sep)]
-
-    def numeric(line: str) -> bool:
-        row = [c for c in cells(line) if c]
-        return bool(row) and all(_NUMBER.fullmatch(c) for c in row)
-
-    first = next((k for k, line in enumerate(lines) if numeric(line)), None)
-    if first is None:
-        raise CaptureError(f"{where}: no row of numbers was found.", path=where)
-    table = pandas.read_csv(io.StringIO("\n".join(lines[first:])), header=None, sep=sep, decimal=decimal, dtype=float)
-    table = table.dropna(axis=1, how="all")
-    head = [cells(line.lstrip("# ")) for line in lines[:first] if line.strip()]
-    marks: list[Remark] = []
-    names, units = _header(head, table.shape[1])
-    if len(head) == 2 and [c.lower() for c in head[0][2:4]] == ["start", "increment"]:
-        start, interval = float(head[1][2]), interval or float(head[1][3])
-        time_column = None
-    elif interval is not None:
-        start, time_column = 0.0, None
-    else:
-        t = table.iloc[:, 0].to_numpy(dtype=float) * _SCALES.get(units[0].lower(), 1.0)
-        time_column = 0
-        stamps = np.unique(t)
-        if np.any(np.diff(t) < 0) or stamps.size < 2:
-            raise CaptureError(f"{where}: no time column; give the time between samples with --interval.", path=where)
-        start, interval = float(stamps[0]), float((stamps[-1] - stamps[0]) / (stamps.size - 1))
-        if 2 * stamps.size == t.size:
-            table = (table.iloc[::2].reset_index(drop=True) + table.iloc[1::2].reset_index(drop=True)) / 2
-            marks.append(Remark("envelope", "every stamp stands twice: read as minimum and maximum of an interval."))
-    channels = []
-    for k in range(table.shape[1]):
-        if k != time_column:
-            values = table.iloc[:, k].to_numpy(dtype=float) * _SCALES.get(units[k].lower(), 1.0)
-            steps = np.diff(np.unique(values))
-            channels.append(Channel(names[k] or f"CH{len(channels) + 1}", units[k] or "V", values,
-                                    float(steps[steps > 1e-9].min()) if np.any(steps > 1e-9) else 0.0))
-    return Capture(where, float(interval), start, tuple(channels), tuple(marks), {"delimiter": sep, "decimal": decimal})
+    Raises
+    ------
+    CaptureError
+        In one sentence: what the file seems to be, or what it does not tell and which option does.
+    """
+    first = _read_one(path, columns, interval, frame, limit, stdin)
+    others = [_read_one(other, columns, interval, frame, limit, stdin) for other in also]
+    return merged(first, others) if others else first
 
 
-def _header(head: list[list[str]], count: int) -> tuple[list[str], list[str]]:
-    names, units = [""] * count, [""] * count
-    for row in head[-2:]:
-        for k, cell in enumerate(row[:count]):
-            if cell.lower().strip("()[]") in _SCALES:
-                units[k] = {"volt": "V", "second": "s", "ampere": "A"}.get(cell.lower(), cell.strip("()[]"))
-            elif found := _UNIT.match(cell):
-                names[k], units[k] = found["name"], found["unit"]
-            else:
-                names[k] = cell
-    return names, units
+def _read_one(
+    path: str | Path,
+    columns: Mapping[str, int | str] | None,
+    interval: float | None,
+    frame: int | None,
+    limit: int | None,
+    stdin: IO[bytes] | None,
+) -> Capture:
+    with Source(path, limit, stdin) as source:
+        page = look(source.head.lines, source.head.whole)
+        family, claim, found = tell(page)
+        if claim.layout is None:
+            raise source.refusal(claim.refusal)
+        plan = make_plan(page, claim.layout, columns, source.refusal)
+        wanted = [*([] if plan.time is None else [plan.time]), *(channel.index for channel in plan.channels)]
+        wide = 60 if found.beside.pairs else 1
+        table = read_table(source, page, wanted, plan.time, wide)
+        _check_fit(source, table, page)
+        axis = make_axis(table, plan, interval, frame, source.refusal)
+        channels = tuple(_channel(table, axis, column) for column in plan.channels)
+        remarks = plan.remarks + axis.remarks + _damage(source, table, claim) + _empty(channels)
+        notes = _notes(source, page, _Understood(family, claim, plan, axis, channels))
+        return Capture(source.path, axis.interval, axis.start, channels, remarks, notes)
+
+
+def _check_fit(source: Source, table: Table, page: Page) -> None:
+    """Refuse a file of which too much does not fit the table that was seen in it."""
+    if not table.rows:
+        raise source.refusal("has no complete row of numbers; save the capture again")
+    if table.left_out > max(3, _MOST_LEFT_OUT * (table.rows + table.left_out)):
+        comma = (
+            " (decimal commas without quotes in a comma-separated file?)"
+            if page.dialect and page.dialect.delimiter == ","
+            else ""
+        )
+        raise source.refusal(f"{table.left_out} of {table.rows + table.left_out} rows do not have the cells that the others have{comma}, first "
+                             f"{table.example}; export it anew")  # fmt: skip
+    if table.unread > max(3, _MOST_LEFT_OUT * table.rows):
+        raise source.refusal(
+            f"{table.unread} cells among {table.rows} rows are no numbers, first {table.example}; export it anew"
+        )
+
+
+def _channel(table: Table, axis: Axis, column: Column) -> Channel:
+    values = table.columns[column.index]
+    recorded = axis.values(values) if not axis.is_envelope else values
+    step = abs(column.scale) * resolution(recorded)
+    values = axis.values(values)
+    if column.scale != 1.0:
+        values = values * column.scale
+    mask = table.overloaded.get(column.index)
+    return Channel(column.name, column.unit, values, step, axis.mask(mask) if mask is not None else None)
+
+
+def _damage(source: Source, table: Table, claim: Claim) -> tuple[Remark, ...]:
+    remarks = []
+    if table.left_out:
+        remarks.append(
+            Remark(
+                "damaged",
+                f"{table.left_out} rows that are no rows of the table were left out, first {table.example}.",
+            )
+        )
+    if table.unread:
+        remarks.append(
+            Remark(
+                "damaged",
+                f"{table.unread} cells that are no numbers were left without a value, first {table.example}.",
+            )
+        )
+    if table.cut:
+        remarks.append(Remark("damaged", "The last row is cut off in the middle and was left out."))
+    inner = [text for row, text in table.breaks if 0 < row < table.rows]
+    if inner:
+        remarks.append(
+            Remark(
+                "damaged",
+                f'{len(inner)} lines of text between the rows were passed over, first "{inner[0][:40]}".',
+            )
+        )
+    if source.fault:
+        remarks.append(
+            Remark(
+                "damaged",
+                f"The compressed file is damaged ({source.fault}); it was read as far as it could be unpacked.",
+            )
+        )
+    assert claim.layout is not None
+    announced = claim.layout.settings.count
+    if announced is not None and table.rows < 0.98 * announced and not remarks:
+        remarks.append(
+            Remark(
+                "cut-short",
+                f"The file announces {announced} samples and holds {table.rows} rows; it may be cut.",
+            )
+        )
+    return tuple(remarks)
+
+
+def _empty(channels: Sequence[Channel]) -> tuple[Remark, ...]:
+    remarks = []
+    for channel in channels:
+        over = int(np.count_nonzero(channel.overloaded)) if channel.overloaded is not None else 0
+        empty = int(np.count_nonzero(np.isnan(channel.values))) - over
+        if over:
+            remarks.append(
+                Remark(
+                    "clipped", f"{channel.name}: {over} samples are marked as out of range by the instrument."
+                )
+            )
+        if empty > 0:
+            remarks.append(Remark("empty-cells", f"{channel.name}: {empty} samples have no value."))
+    return tuple(remarks)
+
+
+@dataclass(frozen=True)
+class _Understood:
+    family: Family
+    claim: Claim
+    plan: Plan
+    axis: Axis
+    channels: tuple[Channel, ...]
+
+
+def _notes(source: Source, page: Page, what: _Understood) -> dict[str, str]:
+    """How the file was understood, in the order in which ``describe`` says it."""
+    assert page.dialect is not None
+    plan, axis = what.plan, what.axis
+    mark = " with byte order mark" if source.has_bom else ""
+    packed = f", compressed with {source.compression}" if source.compression else ""
+    decimal = "decimal point" if page.decimal == "." else "decimal comma"
+    single = len(page.numeric) == 1
+    time = (
+        []
+        if plan.time is None
+        else [f"time from column {plan.time + 1} ({plan.time_name}{_in(plan.time_unit)})"]
+    )
+    read = [f"{c.name} from column {c.index + 1}" for c in plan.channels]
+    notes = {
+        "encoding": f"{source.encoding.upper()}{mark}, line ends {source.line_end}{packed}",
+        "layout": f"{what.family.name}: {'; '.join(what.claim.reasons)}; table from line {page.first + 1} on",
+        "delimiter": f"{'one column' if single else page.dialect.says}, {decimal}",
+        "columns": ", ".join(time + read)
+        + (f"; not read: {', '.join(plan.dropped)}" if plan.dropped else ""),
+        "units": ", ".join(f"{c.name} in {c.unit or 'codes'}" for c in what.channels),
+        "samples": f"{what.channels[0].values.size}",
+        "interval": f"{axis.interval:.9g} s from {axis.origin}",
+        "start": f"{axis.start:.9g} s",
+        "resolution": ", ".join(
+            f"{c.name} {c.resolution:.4g}{' ' + c.unit if c.unit else ''}" for c in what.channels
+        ),
+    }
+    return notes
+
+
+def _in(unit: str) -> str:
+    return f" in {unit}" if unit else ""
+
+
+Floats = NDArray[np.float64]

@@ -1,0 +1,161 @@
+"""Delimiter and decimal mark of a table, decided together on the lines that look like data."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from benchfit.capture.cells import NUMBER, TEXT, kind
+
+_BRACKETED = re.compile(r"\s*[(\[{][^()\[\]{}]*\d[^()\[\]{}]*[)\]}][,;]?\s*")
+_BLANKS = re.compile(r"[ \t]+")
+_BRACKETS = b"()[]{}"
+# More columns than this is no capture, and a garbled line can have any number of separators.
+MOST_COLUMNS = 256
+
+
+@dataclass(frozen=True)
+class Dialect:
+    """How the cells of a row are written.
+
+    ``delimiter`` is one character (a blank stands for any run of blanks and tabs), ``decimal`` the decimal
+    mark; ``quoted`` where cells stand in double quotes, ``bracketed`` where rows stand in brackets.
+    """
+
+    delimiter: str
+    decimal: str
+    quoted: bool = False
+    bracketed: bool = False
+
+    def cells(self, line: str) -> tuple[str, ...]:
+        """Cells of a line without blanks and quotes around them."""
+        if self.bracketed:
+            line = (
+                line.translate(_NO_BRACKETS)
+                .strip()
+                .rstrip(",;" if self.delimiter not in ",;" else self.delimiter)
+            )
+        if self.quoted:
+            line = _requoted(line, self.delimiter)
+        if self.delimiter == " ":
+            stripped = line.strip()
+            return (
+                tuple(cell.strip('"') for cell in _BLANKS.split(stripped)[:MOST_COLUMNS]) if stripped else ()
+            )
+        separator = ";" if self._comma_in_quotes else self.delimiter
+        return tuple(cell.strip().strip('"').strip() for cell in line.split(separator)[:MOST_COLUMNS])
+
+    def plain(self, text: bytes) -> bytes:
+        """A block of the file as the C engine of pandas reads it, with ``engine_delimiter``."""
+        if self.bracketed:
+            text = re.sub(rb"\)[,;]?[ \t]*\(|\][,;]?[ \t]*\[", b"\n", text).translate(None, _BRACKETS)
+        if b'"' in text:
+            text = (
+                _requoted(text.decode("latin-1"), self.delimiter).encode("latin-1")
+                if self.quoted
+                else text.replace(b'"', b"")
+            )
+        return text
+
+    @property
+    def _comma_in_quotes(self) -> bool:
+        return self.quoted and self.delimiter == self.decimal == ","
+
+    @property
+    def engine_delimiter(self) -> str:
+        """The ``sep`` with which the C engine of pandas splits what ``plain`` returns."""
+        if self.delimiter == " ":
+            return r"\s+"
+        return ";" if self._comma_in_quotes else self.delimiter
+
+    @property
+    def says(self) -> str:
+        """Name of the delimiter in words."""
+        name = {",": "comma", ";": "semicolon", "\t": "tab", " ": "blanks", "|": "bar", ":": "colon"}[
+            self.delimiter
+        ]
+        extras = [", cells in quotes"] * self.quoted + [", rows in brackets"] * self.bracketed
+        return name + "".join(extras)
+
+
+_NO_BRACKETS = str.maketrans("", "", _BRACKETS.decode())
+
+
+def _requoted(text: str, delimiter: str) -> str:
+    """``text`` without quotes; commas that separate quoted cells become semicolons, those inside stay."""
+    if delimiter == ",":
+        text = text.replace('","', '";"').replace(',"', ';"').replace('",', '";')
+    return text.replace('"', "")
+
+
+@dataclass(frozen=True)
+class _Vote:
+    rows: int
+    purity: float
+    columns: int
+
+    @property
+    def weight(self) -> float:
+        return self.rows * self.purity**2 * (1.0 if self.columns > 1 else 0.5)
+
+
+def decide(lines: Sequence[str]) -> Dialect | None:
+    """The dialect under which most of ``lines`` are rows of numbers; None where under none any line is.
+
+    Each candidate is judged by the rows with numbers in them and by how much else stands in these rows:
+    a decimal comma taken for a separator leaves pieces that are no numbers.
+    """
+    quoted = sum('"' in line for line in lines) > len(lines) // 2
+    bracketed = sum(_BRACKETED.match(line) is not None for line in lines) > len(lines) // 2
+    # First come, first served among equals.
+    pairs = [
+        ("\t", "."),
+        (";", "."),
+        (",", "."),
+        ("\t", ","),
+        (";", ","),
+        (" ", "."),
+        (" ", ","),
+        ("|", "."),
+        ("|", ","),
+    ]
+    if quoted:
+        pairs.append((",", ","))
+    best, most = None, 0.0
+    for delimiter, decimal in pairs:
+        if delimiter not in " ," and not any(delimiter in line for line in lines):
+            continue
+        candidate = Dialect(delimiter, decimal, quoted, bracketed)
+        vote = _vote(candidate, lines)
+        if vote.weight > most * 1.0001:
+            best, most = candidate, vote.weight
+    if best == Dialect(",", ".", quoted, bracketed) and _fraction_split(best, lines):
+        return Dialect(" ", ",", quoted, bracketed)
+    return best
+
+
+def _vote(dialect: Dialect, lines: Sequence[str]) -> _Vote:
+    rows = numbers = others = columns = 0
+    for line in lines:
+        kinds = [kind(cell, dialect.decimal) for cell in dialect.cells(line)]
+        found = kinds.count(NUMBER)
+        if found:
+            rows += 1
+            numbers += found
+            others += kinds.count(TEXT)
+            columns = max(columns, found)
+    return _Vote(rows, numbers / (numbers + others) if numbers else 0.0, columns)
+
+
+def _fraction_split(dialect: Dialect, lines: Sequence[str]) -> bool:
+    """Whether two columns of whole numbers are one column with a decimal comma: "1,05" and "-0,98".
+
+    A fraction shows itself by zeros in front and by its even length, which whole numbers do not have.
+    """
+    pairs = [cells for cells in map(dialect.cells, lines) if len(cells) == 2]
+    if len(pairs) < max(8, 0.9 * len(lines)):
+        return False
+    if not all(kind(a, ".") == NUMBER and b.isdigit() and a.lstrip("+-").isdigit() for a, b in pairs):
+        return False
+    return any(len(b) > 1 and b[0] == "0" for _, b in pairs) and len({len(b) for _, b in pairs}) <= 2

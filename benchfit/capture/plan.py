@@ -1,0 +1,375 @@
+"""Which column is what: time, channels, and columns that are neither."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from benchfit.capture.cells import Precision, number, precision
+from benchfit.capture.families import Layout
+from benchfit.capture.header import Title, title
+from benchfit.capture.page import Page
+from benchfit.errors import CaptureError, Remark
+
+Floats = NDArray[np.float64]
+_COMPANION = re.compile(
+    r"(?P<of>.*?)[\s_-]*(peak[\s_-]*detect|envelope|min(imum)?|max(imum)?)", re.IGNORECASE
+)
+_LOGARITHM = re.compile(r"(ln|log|log10|lg)\b.*|ln[\s_(]?\w+\)?", re.IGNORECASE)
+# Seconds since 1970 in this century: a clock beside the data, not a voltage.
+_EPOCH = (9e8, 5e9)
+
+
+@dataclass(frozen=True)
+class Column:
+    """A channel to be read: its column, ``name``, base ``unit`` and the factor to it."""
+
+    index: int
+    name: str
+    unit: str
+    scale: float = 1.0
+    is_named: bool = True
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What to read from a table and how time is to be had.
+
+    ``time`` is the column of stamps or of increments (None: there is none), ``time_scale`` its factor to
+    seconds, ``precision`` how it is printed (before scaling). ``interval`` and ``start`` (s) are those that
+    the file states elsewhere, ``stated`` where.
+    """
+
+    channels: tuple[Column, ...]
+    time: int | None = None
+    time_name: str = ""
+    time_scale: float = 1.0
+    time_unit: str = ""
+    precision: Precision = Precision()
+    is_increment: bool = False
+    interval: float | None = None
+    start: float | None = None
+    stated: str = ""
+    dropped: tuple[str, ...] = ()
+    remarks: tuple[Remark, ...] = ()
+    why_no_time: str = ""
+
+
+class _Columns:
+    """Titles and the values in the head, by column."""
+
+    def __init__(self, page: Page, titles: Sequence[Title]) -> None:
+        self._page = page
+        self._titles = titles
+        self._values: dict[int, Floats] = {}
+
+    def title(self, column: int) -> Title:
+        return self._titles[column] if column < len(self._titles) else Title()
+
+    def values(self, column: int) -> Floats:
+        if column not in self._values:
+            self._values[column] = np.array(
+                [number(cell, self._page.decimal) for cell in self._page.column(column)]
+            )
+        return self._values[column]
+
+    def finite(self, column: int) -> Floats:
+        values = self.values(column)
+        return values[np.isfinite(values)]
+
+    def precision(self, column: int) -> Precision:
+        return precision(self._page.column(column), self._page.decimal)
+
+    def quantum(self, column: int) -> float:
+        values = self.finite(column)
+        return self.precision(column).quantum(float(np.max(np.abs(values))) if values.size else 0.0)
+
+    def is_whole(self, column: int) -> bool:
+        values = self.finite(column)
+        return bool(values.size) and bool(np.all(values == np.round(values)))
+
+    def is_count(self, column: int) -> bool:
+        """Whether the column counts rows: whole numbers, one more in every row."""
+        values = self.finite(column)
+        return self.is_whole(column) and values.size > 2 and bool(np.all(np.diff(values) == 1))
+
+    def is_even(self, column: int) -> bool:
+        """Whether the values grow by equal steps, within what the printed digits leave open."""
+        values = self.finite(column)
+        if values.size < 3 or values[-1] <= values[0]:
+            return False
+        steps = np.diff(values)
+        mean = (values[-1] - values[0]) / (values.size - 1)
+        line = values[0] + mean * np.arange(values.size)
+        return bool(
+            np.all(steps >= 0)
+            and np.max(np.abs(values - line)) <= max(1.01 * self.quantum(column), 1e-3 * mean)
+        )
+
+
+def make_plan(
+    page: Page,
+    layout: Layout,
+    columns: Mapping[str, int | str] | None,
+    refusal: Callable[[str], CaptureError],
+) -> Plan:
+    """The plan for a table; ``columns`` is the user's own, {name: number from 0 or title}. Raises CaptureError."""
+    table = _Columns(page, layout.titles)
+    if columns:
+        return _wanted(page, layout, table, columns, refusal)
+    time, why = _time_column(page, layout, table)
+    plan = Plan((), interval=layout.interval, start=layout.start, stated=layout.stated)
+    if time is not None:
+        plan = _with_time(plan, table, time, layout, why)
+    elif why:
+        plan = replace(plan, why_no_time=why)
+    return _with_channels(plan, page, table, time)
+
+
+# -- time ----------------------------------------------------------------------------------------------------
+
+
+def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | None, str]:
+    """The column of time stamps and why it is taken for that, or None and what speaks against the likeliest."""
+    numeric = page.numeric
+    titled = [(k, table.title(k)) for k in numeric]
+    for test, why in (
+        (lambda t: t.unit is not None and t.unit.is_time and not t.is_increment, "its unit"),
+        (lambda t: t.is_time and not t.is_increment, "its name"),
+        (lambda t: t.is_increment, "its name"),
+    ):
+        for column, named in titled:
+            if test(named):
+                return column, why
+    if layout.stated.startswith("the cell"):
+        return None, ""
+    first = next((k for k in numeric if not table.title(k).is_index or not table.is_count(k)), None)
+    if first is None or len(numeric) < 2:
+        return None, "" if len(numeric) > 1 else "it has one column of numbers only"
+    if layout.time_is_first:
+        return first, "its place"
+    if table.is_even(first) and first != numeric[-1]:
+        step = float(np.diff(table.finite(first)[[0, -1]])[0]) / (table.finite(first).size - 1)
+        if layout.interval is not None and abs(step / layout.interval - 1) < 0.01:
+            return first, f"its steps, which are those of {layout.stated}"
+        if not table.is_whole(first):
+            return first, "its even steps"
+        what = (
+            "row numbers" if table.is_count(first) else f"whole numbers in steps of {step:g} without a unit"
+        )
+        return None, f"its first column holds {what}"
+    return None, ""
+
+
+def _with_time(plan: Plan, table: _Columns, time: int, layout: Layout, why: str) -> Plan:
+    named = table.title(time)
+    measure = named.unit
+    remarks = list(plan.remarks)
+    name = named.name or f"column {time + 1}"
+    if measure is None and layout.horizontal:
+        measure = title(f"[{layout.horizontal}]").unit
+    if measure is None or not measure.is_time:
+        whole = table.is_whole(time) and not why.startswith("its steps")
+        if whole:
+            what = "row numbers" if table.is_count(time) else "whole numbers without a unit"
+            return replace(
+                plan, why_no_time=f'"{name}" holds {what}' if named.name else f"{name} holds {what}"
+            )
+        remarks.append(
+            Remark(
+                "layout-guessed", f"{name} is taken for time in seconds, by {why}; the file gives no unit."
+            )
+        )
+    scale = measure.scale if measure is not None and measure.is_time else 1.0
+    return replace(
+        plan, time=time, time_name=name, time_scale=scale, time_unit=measure.text if measure else "", remarks=tuple(remarks),
+        precision=table.precision(time), is_increment=named.is_increment,
+    )  # fmt: skip
+
+
+# -- channels ------------------------------------------------------------------------------------------------
+
+
+def _with_channels(plan: Plan, page: Page, table: _Columns, time: int | None) -> Plan:
+    left = [k for k in page.numeric if k != time]
+    dropped: list[str] = []
+    for column in list(left):
+        reason = _no_channel(column, left, table)
+        if reason and len(left) > 1:
+            left.remove(column)
+            dropped.append(f"{_called(table, column)} ({reason})")
+    channels: list[Column] = []
+    for column in left:
+        channels.append(_channel(column, table.title(column), len(channels), table))
+    remarks = list(plan.remarks)
+    companions = [text for text in dropped if "numbers the rows" not in text]
+    if companions:
+        remarks.append(Remark("derived-column", f"Not read as channels: {', '.join(companions)}."))
+    assumed = [c.name for c in channels if table.title(c.index).unit is None and c.unit == "V"]
+    if assumed:
+        remarks.append(
+            Remark("layout-guessed", f"The file gives no unit for {', '.join(assumed)}; volts are assumed.")
+        )
+    bare = [c.name for c in channels if table.title(c.index).unit is None and not c.unit]
+    if bare:
+        remarks.append(
+            Remark(
+                "layout-guessed", f"{', '.join(bare)}: whole numbers without a unit, taken for bare codes."
+            )
+        )
+    return replace(plan, channels=_distinct(channels), dropped=tuple(dropped), remarks=tuple(remarks))
+
+
+def _channel(column: int, named: Title, place: int, table: _Columns) -> Column:
+    name = named.name or f"CH{place + 1}"
+    if named.unit is not None:
+        return Column(column, name, named.unit.base, named.unit.scale, bool(named.name))
+    values = table.finite(column)
+    spread = float(np.ptp(values)) if values.size else 0.0
+    codes = table.is_whole(column) and (spread >= 32 or (spread == 1 and bool(np.min(values) == 0)))
+    return Column(column, name, "" if codes else "V", is_named=bool(named.name))
+
+
+def _distinct(channels: Sequence[Column]) -> tuple[Column, ...]:
+    """Channels with no name twice."""
+    names: list[str] = []
+    result = []
+    for channel in channels:
+        name, count = channel.name, 1
+        while name in names:
+            count += 1
+            name = f"{channel.name} ({count})"
+        names.append(name)
+        result.append(replace(channel, name=name))
+    return tuple(result)
+
+
+def _called(table: _Columns, column: int) -> str:
+    return table.title(column).name or f"column {column + 1}"
+
+
+def _no_channel(column: int, others: Sequence[int], table: _Columns) -> str:
+    """Why a column is no channel of its own; "" where it is one."""
+    named = table.title(column)
+    values = table.finite(column)
+    if named.is_index and table.is_whole(column) and _is_steady(values):
+        return "it numbers the rows"
+    if named.unit is not None and named.unit.is_time:
+        return "a second time axis"
+    if found := _COMPANION.fullmatch(named.name):
+        if any(table.title(k).name == found["of"].strip() for k in others if k != column):
+            return f"a companion of {found['of'].strip()}"
+    if table.is_whole(column) and values.size > 2 and named.unit is None:
+        if _EPOCH[0] < float(np.min(values)) and float(np.max(values)) < _EPOCH[1]:
+            return "a clock"
+        if _is_steady(values) and (table.is_count(column) or abs(values[1] - values[0]) > 1):
+            return "a counter"
+    for other in others:
+        if other != column and (reason := _derived(column, other, table)):
+            return f"{reason} {_called(table, other)}"
+    return ""
+
+
+def _is_steady(values: Floats) -> bool:
+    steps = np.diff(values)
+    return values.size > 2 and bool(steps[0] != 0) and bool(np.all(steps == steps[0]))
+
+
+def _derived(column: int, other: int, table: _Columns) -> str:
+    """Whether a column follows from another: raw codes of the same channel, or its logarithm."""
+    x, y = table.values(column), table.values(other)
+    both = np.isfinite(x) & np.isfinite(y)
+    x, y = x[both], y[both]
+    if x.size < 8 or np.ptp(x) == 0 or np.ptp(y) == 0:
+        return ""
+    if table.is_whole(column) and not table.is_whole(other) and table.title(column).unit is None:
+        slope = np.ptp(y) / np.ptp(x) * np.sign(np.dot(x - x.mean(), y - y.mean()))
+        misfit = np.max(np.abs(y - y.mean() - slope * (x - x.mean())))
+        if misfit <= max(1.01 * table.quantum(other), 1e-6 * np.ptp(y)):
+            return "raw codes of"
+    positive = y > 0
+    if _LOGARITHM.fullmatch(table.title(column).name) or table.title(column).unit is None:
+        if positive.sum() >= 8 and np.ptp(x[positive]) > 0:
+            for factor, name in ((1.0, "ln"), (np.log(10.0), "lg")):
+                if (
+                    np.max(np.abs(factor * x[positive] - np.log(y[positive])))
+                    < max(1e-4, 2 * table.quantum(column)) * factor
+                ):
+                    return f"{name} of"
+    return ""
+
+
+# -- the user's own columns ----------------------------------------------------------------------------------
+
+
+def _wanted(
+    page: Page,
+    layout: Layout,
+    table: _Columns,
+    columns: Mapping[str, int | str],
+    refusal: Callable[[str], CaptureError],
+) -> Plan:
+    plan = Plan((), interval=layout.interval, start=layout.start, stated=layout.stated)
+    channels: list[Column] = []
+    time = None
+    for key, where in columns.items():
+        column = _number_of(page, layout, key, where, refusal)
+        asked = title(key)
+        if asked.is_time or asked.is_increment:
+            time = column
+            known = replace(asked, unit=asked.unit or table.title(column).unit)
+            plan = replace(
+                plan, time=column, time_name=table.title(column).name or f"column {column + 1}",
+                time_scale=known.unit.scale if known.unit and known.unit.is_time else 1.0, is_increment=asked.is_increment,
+                time_unit=known.unit.text if known.unit else "",
+            )  # fmt: skip
+            plan = replace(plan, precision=table.precision(column))
+            if known.unit is None and table.is_whole(column):
+                plan = replace(
+                    plan,
+                    time=None,
+                    why_no_time=f'"{key}" has whole numbers without a unit (say "{key}[ms]" or the like)',
+                )
+            elif known.unit is None:
+                plan = replace(
+                    plan,
+                    remarks=(
+                        Remark("layout-guessed", "The file gives no unit for time; seconds are assumed."),
+                    ),
+                )
+            continue
+        named = replace(asked, unit=asked.unit or table.title(column).unit, name=asked.name or key)
+        channels.append(_channel(column, named, len(channels), table))
+    if not channels:
+        raise refusal("--columns names no channel; add one, as in --columns time=0,CH1=1")
+    if time is None:
+        found, why = _time_column(page, layout, table)
+        if found is not None and found not in {c.index for c in channels}:
+            plan = _with_time(plan, table, found, layout, why)
+        else:
+            plan = replace(plan, why_no_time=why if found is None else "")
+    return replace(plan, channels=_distinct(channels))
+
+
+def _number_of(
+    page: Page, layout: Layout, key: str, where: int | str, refusal: Callable[[str], CaptureError]
+) -> int:
+    titles = {named.text: k for k, named in enumerate(layout.titles) if named.text}
+    names = {named.name: k for k, named in enumerate(layout.titles) if named.name}
+    text = str(where).strip()
+    column = (
+        int(text)
+        if re.fullmatch(r"\d+", text) and text not in names
+        else names.get(text, titles.get(text, -1))
+    )
+    if isinstance(where, int):
+        column = where
+    if column in page.numeric:
+        return column
+    has = ", ".join(f"{k} ({layout.titles[k].text})" if k < len(layout.titles) and layout.titles[k].text else str(k)
+                    for k in page.numeric)  # fmt: skip
+    raise refusal(f"--columns {key}={where}: there is no such column of numbers; the columns are {has}")

@@ -1,0 +1,141 @@
+"""Settings that stand above or beside a table: the sample interval, the first stamp, names, units."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+
+from benchfit.capture.cells import is_number, kind
+from benchfit.capture.units import interval_of, quantity, rate_of, unit
+
+_INTERVAL_KEYS = re.compile(
+    r"(sampl\w*|horizontal|time|record|acquisition)?[ _.-]*(interval|increment|resolution|step|period|spacing)"
+    r"|(sampl\w*)[ _.-]*(interval|period|time|step|spacing)|x[ _.-]*(incr?\w*|interval|step|inc)|incr?|increment|interval"
+    r"|[dδ∆][ _.-]?[tx]|delta[ _.-]?[tx]|time[ _.-]*(delta|per[ _.-]*(sample|point))|(seconds|s)[ _./-]*(per[ _.-]*)?(sample|point)"
+    r"|h(orizontal)?[ _.-]*res(olution)?|abtastintervall|zeitintervall",
+    re.IGNORECASE,
+)
+_RATE_KEYS = re.compile(
+    r"(sampl\w*|acquisition|acq\w*|daq|adc|data)?[ _.-]*(rate|freq(uency)?)|fs|f_s|sps|samples?[ _./-]*(per[ _.-]*)?s(ec(ond)?)?"
+    r"|abtastrate|abtastfrequenz",
+    re.IGNORECASE,
+)
+_START_KEYS = re.compile(
+    r"x[ _.-]*(zero|origin|start|offset)|(start|first)[ _.-]*(time|stamp)|time[ _.-]*(zero|origin|start|of first sample)|t0|start",
+    re.IGNORECASE,
+)
+_COUNT_KEYS = re.compile(
+    r"record[ _.-]*length|(number|no|num)[ _.-]*(of)?[ _.-]*(samples|points|rows)|samples|points|memory[ _.-]*length|nr?_?pt?s?|data[ _.-]*points",
+    re.IGNORECASE,
+)
+_PAIR = re.compile(r"\s*(?P<key>[^:=\t,;]*[^\W\d][^:=\t,;]*?)\s*[:=]\s*(?P<value>\S.*?)?\s*$")
+
+
+@dataclass(frozen=True)
+class Settings:
+    """What was written above or beside a table.
+
+    ``pairs`` are (key, its further cells) in the order met. Intervals are in s, None where not given.
+    """
+
+    pairs: tuple[tuple[str, tuple[str, ...]], ...]
+    interval: float | None
+    interval_key: str
+    start: float | None
+    count: int | None
+
+    def cells(self, *keys: str) -> tuple[str, ...]:
+        """Further cells of the first of ``keys`` that is there; empty where none is."""
+        for key, cells in self.pairs:
+            if _bare(key) in keys:
+                return cells
+        return ()
+
+    def first(self, *keys: str) -> str:
+        """First filled cell of the first of ``keys`` that is there; "" where none is."""
+        return next((cell for cell in self.cells(*keys) if cell), "")
+
+
+def from_lines(lines: Iterable[str], rows: Iterable[Sequence[str]]) -> Settings:
+    """Settings from lines above a table: "Key,Value,…", "Key: value" and "Key = value", comments too."""
+    pairs: list[tuple[str, tuple[str, ...]]] = []
+    for line, row in zip(lines, rows, strict=True):
+        filled = [cell for cell in row if cell]
+        if found := _PAIR.match(line.strip().strip(",;")):
+            if not _is_clock(line):
+                pairs.append((found["key"], (found["value"] or "",)))
+                continue
+        if len(filled) > 1 and row[0] and not is_number(row[0], "."):
+            pairs.append((row[0], tuple(row[1:])))
+    return _settled(pairs)
+
+
+def from_cells(rows: Iterable[Sequence[str]], columns: Sequence[int], decimal: str) -> Settings:
+    """Settings from the cells beside a table: a word, its value in the next of ``columns``."""
+    pairs = []
+    for row in rows:
+        cells = [row[column] if column < len(row) else "" for column in columns]
+        place = next((k for k, cell in enumerate(cells) if cell), None)
+        if place is not None and kind(cells[place], decimal) != "n":
+            pairs.append((cells[place], tuple(cells[place + 1 :])))
+    return _settled(pairs)
+
+
+NOTHING = Settings((), None, "", None, None)
+
+
+def _settled(pairs: Sequence[tuple[str, tuple[str, ...]]]) -> Settings:
+    interval, interval_key = _interval(pairs)
+    start = count = None
+    for key, cells in pairs:
+        value = next((cell for cell in cells if cell), "")
+        name = _key(key)
+        if start is None and _START_KEYS.fullmatch(name):
+            start = interval_of(value, _key_unit(key))
+        if (
+            count is None
+            and _COUNT_KEYS.fullmatch(name)
+            and (found := quantity(value))
+            and 0 < found[0] < 1e12
+        ):
+            count = round(found[0])
+    return Settings(tuple(pairs), interval, interval_key, start, count)
+
+
+def _interval(pairs: Sequence[tuple[str, tuple[str, ...]]]) -> tuple[float | None, str]:
+    for key, cells in pairs:
+        value = next((cell for cell in cells if cell), "")
+        if _INTERVAL_KEYS.fullmatch(_key(key)):
+            interval = interval_of(value, _key_unit(key))
+            if interval is not None and 0 < interval < 1e9:
+                return interval, key.strip()
+    for key, cells in pairs:
+        value = next((cell for cell in cells if cell), "")
+        if _RATE_KEYS.fullmatch(_key(key)):
+            rate = rate_of(value + _key_unit(key))
+            if rate is not None and 1e-9 < rate < 1e15:
+                return 1 / rate, key.strip()
+    return None, ""
+
+
+def _bare(key: str) -> str:
+    return _key(key).casefold().replace("_", " ").replace("-", " ").strip()
+
+
+def _key(key: str) -> str:
+    return re.sub(r"[\[(].*[\])]", "", key).strip(" :=#\"'")
+
+
+def _key_unit(key: str) -> str:
+    found = re.search(r"[\[(]([^\])]*)[\])]", key)
+    return found[1] if found and (unit(found[1]) or rate_of("1" + found[1])) else ""
+
+
+_CLOCK = re.compile(r"\d{1,2}:\d{2}(:\d{2})?")
+
+
+def _is_clock(line: str) -> bool:
+    """Whether the first colon of a line is one of a time of day rather than that after a key."""
+    found = _CLOCK.search(line)
+    return found is not None and found.start() <= line.find(":") and "=" not in line[: found.start()]
