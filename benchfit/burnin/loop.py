@@ -218,7 +218,8 @@ class Burnin:
         except BenchfitError as fault:
             return failure(arrival.path, fault.status, fault.says)
         except Exception as fault:  # a run of days must not end by one capture; its record says what happened
-            says = f"{arrival.path}: could not be explained ({type(fault).__name__}: {fault}); please report this."
+            how = f"{type(fault).__name__}: {fault}"
+            says = f"{arrival.path}: could not be explained ({how}); please report this."
             return failure(arrival.path, 3, says)
 
     def _alarms(self, unit: _Unit, found: Mapping[str, Scalar]) -> Iterator[Raised | Cleared]:
@@ -285,4 +286,3 @@ class Burnin:
 def failure(path: str, status: int, says: str) -> dict[str, Any]:
     """The record of an acquisition that failed (contract, section 4)."""
     return {"schema": 1, "capture": {"path": path}, "error": {"status": status, "says": says}}
-

@@ -56,7 +56,7 @@ class Source(Protocol):
         """Make ready. Raises a BenchfitError where the first contact fails."""
 
     def arrivals(self) -> Iterator[Arrival]:
-        """What there is now: an instrument's next capture; every new complete file of a folder, oldest first."""
+        """What there is now: an instrument's next capture; a folder's new complete files, oldest first."""
 
     def close(self) -> None:
         """Let it go."""
