@@ -144,13 +144,12 @@ def _stretch(
         # The variable is the time s that a constant capacitance would take: dt = (1 + β·v) ds, smooth in s.
         constant = replace(phase, slope=0.0)
         length = np.where(duration > 0, time_to(constant, start, end), 0.0)
-        for x, w in zip(_NODES, _WEIGHTS, strict=True):
-            v = after(constant, start, length * (1 + x) / 2)
-            dt = w * length / 2 * (1 + phase.slope * v)
-            t = before + np.where(duration > 0, time_to(phase, start, v), 0.0)
-            u = 2 * t / total - 1
-            for n, p in enumerate((1.0, u, (3 * u * u - 1) / 2, (5 * u**3 - 3 * u) / 2)):
-                c[n] = c[n] + (2 * n + 1) * v * p * dt / total
+        along = _NODES.reshape(-1, *[1] * total.ndim)
+        v = after(constant, start, length * (1 + along) / 2)
+        dt = _WEIGHTS.reshape(along.shape) * length / 2 * (1 + phase.slope * v) / total
+        u = 2 * (before + np.where(duration > 0, time_to(phase, start, v), 0.0)) / total - 1
+        for n, p in enumerate((1.0, u, (3 * u * u - 1) / 2, (5 * u**3 - 3 * u) / 2)):
+            c[n] = c[n] + (2 * n + 1) * np.sum(v * p * dt, axis=0)
         before = before + duration
     y = _bend(c[2] / c[1])
     tiny = np.abs(y) < 1e-4
@@ -171,6 +170,21 @@ def _i3(y: Array) -> Array:
     i_1 = (np.cosh(y) - np.sinh(y) / y) / y
     i_2 = np.sinh(y) / y - 3 * i_1 / y
     return i_1 - 5 * i_2 / y
+
+
+def _only(phase: Phase, rows: NDArray[np.bool_]) -> Phase:
+    """The phase of some rows of its sets of parts."""
+
+    def pick(x: Array | float) -> Array:
+        return np.broadcast_to(np.asarray(x, float), rows.shape)[rows]
+
+    return replace(
+        phase,
+        drive=pick(phase.drive),
+        curvature=pick(phase.curvature),
+        slope=pick(phase.slope),
+        threshold=pick(phase.threshold),
+    )
 
 
 def constants(cycle: Cycle, node: str) -> dict[str, Array]:
@@ -198,12 +212,19 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
         starts, ends, durations = settled.starts[index], settled.ends[index], settled.durations[index]
         total = np.sum(durations, axis=0)
         found[f"{word}_share"] = total / period
-        plain = starts[0], ends[0], phases[0].curvature + 0 * period, 0 * period
-        bent = np.asarray(phases[0].slope) != 0 if len(index) == 1 else np.True_
+        shape = [starts[0], ends[0], phases[0].curvature + 0 * period, 0 * period]
+        bent = np.broadcast_to(
+            np.asarray(phases[0].slope) != 0 if len(index) == 1 else np.True_, period.shape
+        )
         if np.any(bent):
-            fitted = _stretch(phases, starts, ends, durations)
-            plain = tuple(np.where(bent, f, p) for f, p in zip(fitted, plain, strict=True))  # type: ignore[assignment]
-        start, end, curvature, bow = plain
+            # Only where one exponential is not the whole truth: this is the costly way.
+            fitted = _stretch(
+                [_only(p, bent) for p in phases], starts[:, bent], ends[:, bent], durations[:, bent]
+            )
+            shape = [np.array(x, float) for x in shape]
+            for x, f in zip(shape, fitted, strict=True):
+                x[bent] = f
+        start, end, curvature, bow = shape
         found[f"{word}_start"], found[f"{word}_end"] = start, end
         found[f"{word}_curvature"], found[f"{word}_bow"] = curvature, bow
     return found

@@ -96,7 +96,7 @@ def weigh(model: Model) -> list[Weighed]:
 def _explains(model: Model, found: Sequence[Weighed]) -> bool:
     """Whether one of the live hypotheses fits the record as well as its noise and floors allow."""
     best = min((w.misfit for w in found[:4] if w.probability > 0.02), default=np.inf)
-    return bool(chdtrc(max(len(model.observations), 1), best) > 1e-3)
+    return bool(chdtrc(max(len(model.observations), 1), best) > 0.2)
 
 
 def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
