@@ -16,6 +16,8 @@ if TYPE_CHECKING:
     import pandas as pd
     from matplotlib.figure import Figure
 
+    from benchfit.explain.expected import Expected
+
 
 @dataclass(frozen=True, eq=False)
 class Found:
@@ -156,6 +158,19 @@ def predict(sheet: Sheet) -> dict[str, Any]:
     from benchfit.explain.predict import predict as predict_build
 
     return predict_build(sheet)
+
+
+def expected(sheet: Sheet, nodes: Sequence[str]) -> Expected:
+    """What would be measured of a build with given parts, where ``nodes`` are probed.
+
+    Raises
+    ------
+    SheetError
+        Where the sheet names no circuit or misses a part.
+    """
+    from benchfit.explain.expected import expected as expected_of
+
+    return expected_of(sheet, nodes)
 
 
 def facts_of(capture: Capture, assigned: Sequence[Assignment], constants: CycleConstants) -> CaptureFacts:
