@@ -169,7 +169,7 @@ def constants(fitted: Fitted, variance: float) -> Observed | None:
     cov[0, 0] = max(cov[0, 0], period.u**2)
     cov = cov + _scatter(fitted, corner, cov, names)
     turns = fitted_time(fitted, corner)
-    return Observed(tuple(names), np.array(values), cov, turns, None, float(np.sqrt(variance)), phases=())
+    return Observed(tuple(names), np.array(values), cov, turns, period.jitter, float(np.sqrt(variance)), phases=())
 
 
 def fitted_time(fitted: Fitted, corner: Corners) -> Array:
@@ -194,9 +194,8 @@ def _period(fitted: Fitted, corner: Corners, variance: float) -> tuple[PeriodFit
     number = (good + int(layout.rising[0])) // 2
     own, _ = fitted.derivatives(good, instants[good] / fitted.interval)
     spread = variance * own**2 / fitted.information[good] / rate[good] ** 2
-    rough = (instants[good[-1]] - instants[good[0]]) / max(good.size - 1, 1) * 2.0
-    fit = fit_period(instants[good], number, layout.rising[good].astype(int), spread, rough)
-    return fit, phase_form(fitted, good, instants[good] / fitted.interval, -fit.weights / rate[good])
+    period = fit_period(instants[good], number, layout.rising[good].astype(int), spread)
+    return period, phase_form(fitted, good, instants[good] / fitted.interval, -period.weights / rate[good])
 
 
 def _share(fitted: Fitted, corner: Corners) -> tuple[float, Form]:

@@ -22,9 +22,8 @@ def observe_output(trace: Trace) -> tuple[Observed | None, States, Edges]:
         return None, states, edges
     names, values, variances = ["period", "high_share"], [0.0, 0.0], [0.0, 0.0]
     dt = trace.interval
-    rough = (edges.index[-1] - edges.index[0]) / (edges.size - 1) * 2.0 * dt
     number = (np.arange(edges.size) + int(edges.rising[0])) // 2
-    fit = fit_period(edges.index * dt, number, edges.rising.astype(int), edges.variance * dt**2, rough)
+    fit = fit_period(edges.index * dt, number, edges.rising.astype(int), edges.variance * dt**2)
     share, share_variance = _share(edges, dt, fit.period)
     values[:], variances[:] = [fit.period, share], [fit.u**2, share_variance]
     for name, level in (("high", states.high), ("low", states.low)):
@@ -38,8 +37,7 @@ def observe_output(trace: Trace) -> tuple[Observed | None, States, Edges]:
             values.append(found[0])
             variances.append(found[1] ** 2)
     turns = trace.time(edges.index[edges.rising])
-    jitter = (float(np.sqrt(fit.walk + 2 * fit.white)), 0.0)
-    return Observed(tuple(names), np.array(values), np.diag(variances), turns, jitter, trace.noise), states, edges
+    return Observed(tuple(names), np.array(values), np.diag(variances), turns, fit.jitter, trace.noise), states, edges
 
 
 def _share(edges: Edges, dt: float, period: float) -> tuple[float, float]:

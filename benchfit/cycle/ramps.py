@@ -84,9 +84,8 @@ def observe_ramps(fitted: Fitted, gaps: Gaps, fast: bool, noise: float) -> Obser
     start = _threshold(fitted, gaps, joints, joints + 1, variance)
     instants, rates, spread = _shifts(fitted, joints, end.mean, start.mean, variance)
     number = np.arange(instants.size)
-    rough = (instants[-1] - instants[0]) / (instants.size - 1)
     phase = np.concatenate([joints[:1], joints + 1])
-    period = fit_period(instants, number, np.zeros_like(number), spread, rough)
+    period = fit_period(instants, number, np.zeros_like(number), spread)
     period_form = phase_form(fitted, phase, instants / fitted.interval, -period.weights / rates)
     model = fit.model
     r_end, r_start = (float(model.rate(np.array(x.mean))) for x in (end, start))
@@ -111,8 +110,7 @@ def observe_ramps(fitted: Fitted, gaps: Gaps, fast: bool, noise: float) -> Obser
     cov[0, 0] = max(period.u**2, cov[0, 0])
     values = np.array([period.period, share, end.mean, start.mean, model.curvature])
     turns = gaps.last[joints] * fitted.interval
-    jitter = (float(np.sqrt(period.walk + 2 * period.white)), 0.0)
-    return Observed(tuple(names), values, cov, turns, jitter, noise)
+    return Observed(tuple(names), values, cov, turns, period.jitter, noise)
 
 
 def _bounds(fitted: Fitted, gaps: Gaps, joints: Index, phase: Index) -> tuple[Array, Array]:
