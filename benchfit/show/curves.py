@@ -171,7 +171,7 @@ def means(x: Array, y: Array, columns: int = 300) -> tuple[Array, Array] | None:
     return x[:whole].reshape(columns, size).mean(axis=1), y[:whole].reshape(columns, size).mean(axis=1)
 
 
-def folded(trace: Trace, starts: Array, period: float, most: int = 6000) -> tuple[Array, Array]:
+def folded(trace: Trace, starts: Array, period: float, most: int = 1600) -> tuple[Array, Array]:
     """(time since the cycle's start, volts) of samples from whole cycles, thinned to about ``most``."""
     if starts.size < 2:
         return np.empty(0), np.empty(0)

@@ -50,11 +50,16 @@ def paint(text: str, style: Style, colour: bool) -> str:
     return f"\x1b[{_CODES[style]}m{text}\x1b[0m" if colour and style in _CODES and text else text
 
 
-def wrapped(text: str, width: int, first: str = "", rest: str | None = None) -> list[str]:
-    """Lines of at most ``width`` cells; a number stays with its unit."""
+def glued(text: str) -> str:
+    """The text with no-break spaces between a number, its sign, its U and its unit."""
     kept = re.sub(rf"(?<=\d) (?={_UNITS}(?![\w/]))", _KEEP, text)
     kept = re.sub(r"(?<=[<>×±+−-]) (?=\d)", _KEEP, kept)
-    kept = kept.replace(" ±", f"{_KEEP}±")
+    return kept.replace(" ±", f"{_KEEP}±")
+
+
+def wrapped(text: str, width: int, first: str = "", rest: str | None = None) -> list[str]:
+    """Lines of at most ``width`` cells; a number stays with its unit."""
+    kept = glued(text)
     indent = " " * len(first) if rest is None else rest
     lines = textwrap.wrap(
         kept, max(width, len(indent) + 12), initial_indent=first, subsequent_indent=indent,

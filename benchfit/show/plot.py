@@ -156,7 +156,8 @@ def _own(
     FigureCanvasAgg(figure)
     axes: Any
     if kind == "capture":
-        ratios = [4.0, 1.3, 1.3] if others else [4.0, 1.3]
+        fitted = constants is not None and bool(constants.phases)
+        ratios = [4.0, *([1.3] if others else []), *([1.3] if fitted else [])]
         axes = figure.subplots(len(ratios), 1, sharex=True, height_ratios=ratios)
     elif kind == "slopes":
         axes = figure.subplots(1, 2)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from benchfit.explain.result import Explanation, PartFound, Quantity
-from benchfit.quantity import si
 from benchfit.show import words
 from benchfit.show.design import render_circuit, render_prediction
 from benchfit.show.layout import Column, Page, Style, bar, clean, paint, shortened
@@ -180,10 +179,8 @@ def _remedies(page: Page, explanation: Explanation) -> None:
     if not explanation.remedies:
         return
     page.section("What would bring it onto its target")
-    units = {p.name: p.unit for p in explanation.parts}
-    for remedy in explanation.remedies:
-        unit = units.get(remedy.part, "")
-        then = [words.amount(k, q) for k, q in remedy.predicts.items()]
-        text = f"{remedy.part} {si(remedy.before, unit)} → {si(remedy.after, unit)}"
-        series = f" ({remedy.series})" if remedy.series else ""
-        page.prose(f"{text}{series}: {', duty cycle '.join(t for t in then if t)}", "  ")
+    unit = {p.name: p.unit for p in explanation.parts}
+    for way in words.ways(explanation.remedies):
+        what = " with ".join(words.exchange(r, unit.get(r.part, "")) for r in way)
+        then = [words.amount(name, way[0].predicts.get(name)) for name in ("frequency", "duty")]
+        page.prose(f"{what}: {', duty cycle '.join(t for t in then if t)}", "  ", rest=" " * 4)

@@ -103,10 +103,11 @@ def draw_capture(axes: Sequence[Any], s: Scene) -> None:
     main.set_ylabel(f"{plain(trace.node or trace.name)} ({v_unit})")
     _mark_levels(main, s, volts)
     legend_above(main)
-    if len(axes) > 2 and s.others:
-        _draw_others(axes[1], s.others, begin, end, factor)
-    if len(axes) > 1:
-        _draw_residuals(axes[-1], s, begin, end, factor)
+    below = list(axes[1:])
+    if s.others and (len(below) > 1 or (below and not s.phases)):
+        _draw_others(below.pop(0), s.others, begin, end, factor)
+    if below:
+        _draw_residuals(below[-1], s, begin, end, factor)
     axes[-1].set_xlabel(f"time ({unit})")
 
 
@@ -148,7 +149,9 @@ def _draw_residuals(ax: Any, s: Scene, begin: float, end: float, factor: float) 
     rest = v - curves.fitted(s.phases, t)
     known = np.abs(rest[np.isfinite(rest)])
     if known.size == 0:
-        nothing(ax, "no phase could be fitted")
+        style = {"ha": "center", "va": "center", "color": LIGHT["soft"]}
+        ax.text(0.5, 0.5, "no phase could be fitted", transform=ax.transAxes, **style)
+        ax.set_yticks([])
         return
     noise = s.constants.noise.get(s.timing.node, 0.0) if s.constants is not None else 0.0
     reach = 1.25 * max(4.0 * noise, float(np.percentile(known, 99.0)))
@@ -237,7 +240,7 @@ def draw_cycle(axes: Sequence[Any], s: Scene) -> None:
     longest = max(period, s.target or 0.0, *ends)
     factor, unit = scale(longest, "s")
     volts, v_unit = scale(float(np.max(np.abs(v))) if v.size else 1.0, "V")
-    dots = {"color": LIGHT["data"], "ms": 2.0, "rasterized": t.size > 2000}
+    dots = {"color": LIGHT["data"], "ms": 2.0}
     ax.plot(t * factor, v * volts, ".", label=f"{starts.size - 1} cycles, captured", **dots)
     if build:
         x, y = build

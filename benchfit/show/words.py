@@ -6,7 +6,7 @@ import math
 import re
 from collections.abc import Mapping, Sequence
 
-from benchfit.explain.result import Explanation, Miss, NextReading, Quantity, Suspect
+from benchfit.explain.result import Explanation, Miss, NextReading, Quantity, Remedy, Suspect
 from benchfit.quantity import percent, si
 
 LABELS = {
@@ -242,6 +242,24 @@ def _likely_circuits(explanation: Explanation) -> str:
     return (
         f"Without a build sheet no part can be judged; the waveform could be that of {listed(named, 'or')}."
     )
+
+
+def ways(remedies: Sequence[Remedy]) -> list[list[Remedy]]:
+    """The remedies, those that go together (and so predict the same) as one way."""
+    found: list[list[Remedy]] = []
+    for remedy in remedies:
+        last = found[-1][-1] if found else None
+        if last is not None and last.part != remedy.part and dict(last.predicts) == dict(remedy.predicts):
+            found[-1].append(remedy)
+        else:
+            found.append([remedy])
+    return found
+
+
+def exchange(remedy: Remedy, unit: str) -> str:
+    """ "R 10.4 kΩ → 8.2 kΩ (E24)"."""
+    series = f" ({remedy.series})" if remedy.series else ""
+    return f"{remedy.part} {si(remedy.before, unit)} → {si(remedy.after, unit)}{series}"
 
 
 def budget_rows(miss: Miss | None, most: int = 8) -> list[tuple[str, float, float | None]]:
