@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 from benchfit.capture.cells import NUMBER, TEXT, kind
 
 _BRACKETED = re.compile(r"\s*[(\[{][^()\[\]{}]*\d[^()\[\]{}]*[)\]}][,;]?\s*")
+_WHOLE = re.compile(r"[+-]?\d+")
+_FRACTION = re.compile(r"\d+([eE][+-]?\d+)?")
 _BLANKS = re.compile(r"[ \t]+")
 _BRACKETS = b"()[]{}"
 # More columns than this is no capture, and a garbled line can have any number of separators.
@@ -122,16 +125,20 @@ def decide(lines: Sequence[str]) -> Dialect | None:
     ]
     if quoted:
         pairs.append((",", ","))
-    best, most = None, 0.0
+    votes = {}
     for delimiter, decimal in pairs:
-        if delimiter not in " ," and not any(delimiter in line for line in lines):
-            continue
-        candidate = Dialect(delimiter, decimal, quoted, bracketed)
-        vote = _vote(candidate, lines)
-        if vote.weight > most * 1.0001:
-            best, most = candidate, vote.weight
-    if best == Dialect(",", ".", quoted, bracketed) and _fraction_split(best, lines):
-        return Dialect(" ", ",", quoted, bracketed)
+        if delimiter in " ," or any(delimiter in line for line in lines):
+            candidate = Dialect(delimiter, decimal, quoted, bracketed)
+            votes[candidate] = _vote(candidate, lines)
+    points = Dialect(",", ".", quoted, bracketed)
+    if _comma_is_decimal(votes, lines) or _fraction_split(points, lines):
+        del votes[points]
+    best = max(votes, key=lambda candidate: votes[candidate].weight)
+    if votes[best].weight == 0:
+        return None
+    if votes[best].columns == 1 and best.delimiter == " " and not any(" " in line.strip() for line in lines[-8:]):
+        # One column needs no separator; that of the lines above it may be looked for.
+        return Dialect("," if best.decimal == "." else ";", best.decimal, quoted, bracketed)
     return best
 
 
@@ -148,14 +155,34 @@ def _vote(dialect: Dialect, lines: Sequence[str]) -> _Vote:
     return _Vote(rows, numbers / (numbers + others) if numbers else 0.0, columns)
 
 
+def _comma_is_decimal(votes: Mapping[Dialect, _Vote], lines: Sequence[str]) -> bool:
+    """Whether almost every line has a semicolon or a tab that leaves nothing but numbers with decimal commas.
+
+    The comma would then win by the number of its columns, which are halves of numbers.
+    """
+    return any(
+        vote.purity > 0.9
+        for dialect, vote in votes.items()
+        if dialect.decimal == "," and dialect.delimiter in "\t;|" and vote.rows > 0.8 * len(lines)
+        if sum(dialect.delimiter in line for line in lines) > 0.9 * len(lines)
+    )
+
+
 def _fraction_split(dialect: Dialect, lines: Sequence[str]) -> bool:
     """Whether two columns of whole numbers are one column with a decimal comma: "1,05" and "-0,98".
 
-    A fraction shows itself by zeros in front and by its even length, which whole numbers do not have.
+    A fraction shows itself by an exponent, by zeros in front with an even length, or by many digits behind
+    whole numbers of few digits that go up and down.
     """
-    pairs = [cells for cells in map(dialect.cells, lines) if len(cells) == 2]
-    if len(pairs) < max(8, 0.9 * len(lines)):
+    pairs = [cells for cells in map(dialect.cells, lines) if len(cells) == 2 and _WHOLE.fullmatch(cells[0])]
+    pairs = [cells for cells in pairs if _FRACTION.fullmatch(cells[1])]
+    if len(pairs) < max(8, 0.8 * len(lines)):
         return False
-    if not all(kind(a, ".") == NUMBER and b.isdigit() and a.lstrip("+-").isdigit() for a, b in pairs):
-        return False
-    return any(len(b) > 1 and b[0] == "0" for _, b in pairs) and len({len(b) for _, b in pairs}) <= 2
+    fractions = [b for _, b in pairs]
+    if any("e" in b.lower() for b in fractions):
+        return True
+    if any(len(b) > 1 and b[0] == "0" for b in fractions) and len({len(b) for b in fractions}) <= 2:
+        return True
+    wholes = [int(a) for a, _ in pairs]
+    wander = any(b < a for a, b in pairwise(wholes)) and any(b > a for a, b in pairwise(wholes))
+    return wander and all(len(a.lstrip("+-")) <= 2 for a, _ in pairs) and sorted(map(len, fractions))[len(pairs) // 2] >= 4

@@ -87,6 +87,11 @@ def title(text: str) -> Title:
     return Title(text, None, text)
 
 
+def _named(cell: str) -> Title:
+    """Title of a cell in a row of names, where a lone letter is a name: a spreadsheet's column, not ampere."""
+    return Title(cell, None, cell) if cell in ("A", "C", "F", "W") else title(cell)
+
+
 def _odd(text: str) -> Unit | None:
     """A unit that is not known but stands in brackets as a unit does; longer texts there are remarks."""
     if not text or len(text) > 8 or " " in text or is_number(text, "."):
@@ -123,7 +128,7 @@ def find(page: Page) -> Header:
         return _with_units_row(page, above, lowest, count)
     if not _is_names_row(page, above, lowest):
         return Header((Title(),) * count)
-    titles = _aligned([title(cell) for cell in lowest], page, count)
+    titles = _aligned([_named(cell) for cell in lowest], page, count)
     return Header(
         titles, (last,), has_names=any(t.name for t in titles), has_units_inside=any(t.unit for t in titles),
         in_comment=is_comment(page.lines[last]), plain=(lowest,),

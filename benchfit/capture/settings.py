@@ -61,6 +61,7 @@ def from_lines(lines: Iterable[str], rows: Iterable[Sequence[str]]) -> Settings:
     """Settings from lines above a table: "Key,Value,…", "Key: value" and "Key = value", comments too."""
     pairs: list[tuple[str, tuple[str, ...]]] = []
     for line, row in zip(lines, rows, strict=True):
+        row = _setting_cells(line, row)
         filled = [cell for cell in row if cell]
         if found := _PAIR.match(line.strip().strip(",;")):
             if not _is_clock(line):
@@ -69,6 +70,18 @@ def from_lines(lines: Iterable[str], rows: Iterable[Sequence[str]]) -> Settings:
         if len(filled) > 1 and row[0] and not is_number(row[0], "."):
             pairs.append((row[0], tuple(row[1:])))
     return _settled(pairs)
+
+
+def _setting_cells(line: str, row: Sequence[str]) -> Sequence[str]:
+    """Cells of a line of settings, which may have separators where the table has none."""
+    if len(row) > 1 and row[0] and not any(mark in row[0] for mark in "\t;,"):
+        rest = "".join(row[1:])
+        if not any(mark in line for mark in "\t;,") or not any(mark in rest for mark in "\t;,"):
+            return row
+    for mark in "\t;,":
+        if mark in line:
+            return [cell.strip().strip('"').strip() for cell in line.split(mark)]
+    return row
 
 
 def from_cells(rows: Iterable[Sequence[str]], columns: Sequence[int], decimal: str) -> Settings:
