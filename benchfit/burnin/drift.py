@@ -1,13 +1,13 @@
 """Does a quantity drift, and by which law: none, linear, logarithmic, settling exponential, or a step.
 
-Block means y with times t are taken for a constant plus at most one law's shape, x(t) times an amplitude, plus
-white noise σ²/count and a random walk of variance q·σ²·t/T, both unknown. Whatever can be is integrated out in
-closed form (σ, constant, amplitude with unit information: Schwarz's criterion), the rest on a grid (the walk's
-strength q; a law's time constant, age or moment), so that a law is rewarded only for what it explains beyond a
-wandering constant, and pays for its freedom.
+Block means y with times t are taken for a constant plus at most one law's shape, x(t) times an amplitude,
+plus white noise σ²/count and a random walk of variance q·σ²·t/T, both unknown. Whatever can be is integrated
+out in closed form (σ, constant, amplitude with unit information: Schwarz's criterion), the rest on a grid
+(the walk's strength q; a law's time constant, age or moment), so that a law is rewarded only for what it
+explains beyond a wandering constant, and pays for its freedom.
 
-Sources: Schwarz, Ann. Statist. 6 (1978) 461; Kass & Raftery, J. Am. Stat. Assoc. 90 (1995) 773; generalised least
-squares with a local-level covariance: Harvey, Forecasting, Structural Time Series Models (1989).
+Sources: Schwarz, Ann. Statist. 6 (1978) 461; Kass & Raftery, J. Am. Stat. Assoc. 90 (1995) 773; generalised
+least squares with a local-level covariance: Harvey, Forecasting, Structural Time Series Models (1989).
 """
 
 from __future__ import annotations
@@ -37,7 +37,8 @@ _SIDE = 3
 class Shape:
     """A law's shape x(t), t in s from the start of a run of ``span`` s.
 
-    ``parameter`` is the settling's time constant, the ageing's age at the start, or the moment of the step (s).
+    ``parameter`` is the settling's time constant, the ageing's age at the start, or the moment of the step
+    (s).
     """
 
     law: Law
@@ -75,9 +76,9 @@ class Shape:
 class Basis:
     """Everything that depends on the blocks' times and counts alone, shared by the quantities of a run.
 
-    ``rotated`` turns block means into independent coordinates whose variance is 1 + q·``power`` under every q;
-    ``columns`` (c, n) are the shapes in them, ``one`` (n,) the constant; ``share`` (c,) each shape's part of its
-    law's prior.
+    ``rotated`` turns block means into independent coordinates whose variance is 1 + q·``power`` under every
+    q; ``columns`` (c, n) are the shapes in them, ``one`` (n,) the constant; ``share`` (c,) each shape's part
+    of its law's prior.
     """
 
     blocks: Blocks
@@ -101,8 +102,9 @@ class Basis:
 class Fitted:
     """Posterior of one quantity over shapes and walks.
 
-    ``weight`` (c, walks) sums to 1 over all shapes and walks of all laws but none, times their laws' probability;
-    ``amplitude``, ``variance`` (c, walks) are the shapes' amplitudes; ``null`` (walks,) the weights under none.
+    ``weight`` (c, walks) sums to 1 over all shapes and walks of all laws but none, times their laws'
+    probability; ``amplitude``, ``variance`` (c, walks) are the shapes' amplitudes; ``null`` (walks,) the
+    weights under none.
     """
 
     probability: dict[Law, float]

@@ -12,92 +12,15 @@ import sqlite3
 import time
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from benchfit.burnin import packing, schema
 from benchfit.burnin.alarms import Cleared, Raised
 from benchfit.burnin.clock import now
+from benchfit.burnin.contents import Entry, Identity, Resumed, Wanted
 from benchfit.burnin.lock import WriterLock, me
-from benchfit.capture.model import Capture
 from benchfit.errors import LogError, SheetError
-
-
-@dataclass(frozen=True)
-class Identity:
-    """What the run is about. ``sheet`` is the build sheet as text without comments, "" without one."""
-
-    title: str
-    circuit: str | None
-    sheet: str
-    sheet_hash: str
-    program: str
-
-
-@dataclass(frozen=True)
-class Wanted:
-    """How long this session is to go on: ``count`` records, ``time`` (s); None: no end. ``every`` in s."""
-
-    every: float | None = None
-    count: int | None = None
-    time: float | None = None
-
-
-@dataclass(frozen=True)
-class Taken:
-    """A file that a record was made from: its name, size and time of change (ns)."""
-
-    name: str
-    size: int
-    changed: int
-
-
-@dataclass(frozen=True, eq=False)
-class Entry:
-    """One record to be appended.
-
-    Attributes
-    ----------
-    unit : str
-    acquired : float
-        Unix time (s).
-    record : mapping
-        The result record, or {…, "error": {"status", "says"}}.
-    steady : float or None
-        The steady clock at the acquisition; None where the time is a file's own.
-    taken : Taken or None
-    capture : Capture or None
-        The raw capture where it is to be kept.
-    alarms : tuple of Raised or Cleared
-    gap : (began, why) or None
-        Where nothing was recorded just before: since when (Unix time).
-    """
-
-    unit: str
-    acquired: float
-    record: Mapping[str, Any]
-    steady: float | None = None
-    taken: Taken | None = None
-    capture: Capture | None = None
-    alarms: tuple[Raised | Cleared, ...] = ()
-    gap: tuple[float, str] | None = None
-
-
-@dataclass(frozen=True)
-class Resumed:
-    """What the log held when it was opened.
-
-    ``seq`` and ``acquired`` of the last record (0 and None in a new log); ``in_order``: the last session was
-    closed; ``count`` and ``time`` (s): what of the wanted end was done by the interrupted sessions that this
-    one carries on.
-    """
-
-    seq: int = 0
-    acquired: float | None = None
-    in_order: bool = True
-    count: int = 0
-    time: float = 0.0
 
 
 class LogWriter:

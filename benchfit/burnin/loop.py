@@ -10,7 +10,8 @@ from typing import Any, Literal
 
 from benchfit.burnin.alarms import Cleared, Limit, Raised, Watch
 from benchfit.burnin.clock import Reading, now, spoken, steady, stepped
-from benchfit.burnin.log import Entry, LogWriter
+from benchfit.burnin.contents import Entry
+from benchfit.burnin.log import LogWriter
 from benchfit.burnin.packing import Scalar, scalars
 from benchfit.burnin.reader import line
 from benchfit.burnin.schedule import Cadence, next_slot

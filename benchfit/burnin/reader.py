@@ -10,7 +10,6 @@ import time
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -19,109 +18,11 @@ from numpy.typing import NDArray
 
 from benchfit.burnin import packing, schema
 from benchfit.burnin.clock import iso
+from benchfit.burnin.contents import Alarm, Event, Gap, Run, Series, Session
 from benchfit.capture.model import Capture
 from benchfit.errors import LogError
 
 _CHUNK = 16384
-
-
-@dataclass(frozen=True)
-class Run:
-    """What the run is about, and its extent. ``started``, ``ended``: first and last record (Unix time)."""
-
-    title: str
-    circuit: str | None
-    sheet: str
-    program: str
-    created: float
-    started: float | None
-    ended: float | None
-    records: int
-    notes: tuple[str, ...]
-    is_closed: bool
-
-
-@dataclass(frozen=True)
-class Session:
-    """One process that wrote: when (Unix time), who, how it ended (None: killed, or writing still)."""
-
-    number: int
-    started: float
-    steady: float
-    ended: float | None
-    how: str | None
-    holder: str
-    program: str
-    every: float | None
-    first_seq: int
-
-
-@dataclass(frozen=True)
-class Gap:
-    """Nothing was recorded between two moments (Unix time); ``unit`` is None where it concerns all."""
-
-    unit: str
-    after_seq: int
-    began: float
-    ended: float
-    why: str
-
-
-@dataclass(frozen=True)
-class Alarm:
-    """An alarm as it was raised; ``cleared`` is the record that ended it."""
-
-    seq: int
-    acquired: float
-    unit: str
-    quantity: str
-    value: float
-    low: float
-    high: float
-    text: str
-    cleared: int | None
-
-
-@dataclass(frozen=True)
-class Event:
-    """Something that happened to the run: "clock-step" (``size`` in s), "sheet-changed", …"""
-
-    at: float
-    after_seq: int
-    code: str
-    size: float | None
-    says: str
-
-
-@dataclass(frozen=True, eq=False)
-class Series:
-    """One unit's records as arrays of n records each.
-
-    ``values`` has shape (quantities, n), NaN where a record does not have the quantity; ``u`` and ``noise``
-    are the quantities' mean standard uncertainty and record noise, NaN where never known. ``status`` is 0
-    for a good record.
-    """
-
-    unit: str
-    names: tuple[str, ...]
-    units: tuple[str, ...]
-    kinds: tuple[str, ...]
-    seq: NDArray[np.int64]
-    session: NDArray[np.int64]
-    acquired: NDArray[np.float64]
-    steady: NDArray[np.float64]
-    status: NDArray[np.int64]
-    values: NDArray[np.float64]
-    u: NDArray[np.float64]
-    noise: NDArray[np.float64]
-
-    def row(self, name: str) -> NDArray[np.float64]:
-        """The values of one quantity; KeyError where no record has it."""
-        try:
-            row: NDArray[np.float64] = self.values[self.names.index(name)]
-        except ValueError:
-            raise KeyError(name) from None
-        return row
 
 
 class LogReader:

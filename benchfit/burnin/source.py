@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Protocol
 
 from benchfit.burnin.clock import now
-from benchfit.burnin.log import Taken
+from benchfit.burnin.contents import Taken
 from benchfit.burnin.schedule import Backoff
 from benchfit.capture.model import Capture
 from benchfit.errors import BenchfitError, InstrumentError, UsageError

@@ -10,10 +10,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+
+from benchfit.burnin.result import Deviation
 
 Array = NDArray[np.float64]
 
@@ -21,35 +22,6 @@ CONFIDENCE = math.erf(1 / math.sqrt(2))
 """One standard deviation's worth: 68.3 %."""
 _WIDE = 512
 """Averaging factors from which sums over frequency noise take their limit for infinite ones."""
-
-
-@dataclass(frozen=True)
-class Deviation:
-    """Allan deviation at one averaging time.
-
-    Attributes
-    ----------
-    averaging_time : float
-        s.
-    adev : float
-        Of the fractional frequency.
-    u : float
-        Standard uncertainty, adev/√(2·edf).
-    low, high : float
-        68.3 % confidence interval (chi-squared with ``edf`` degrees of freedom).
-    edf : float
-    noise : int
-        Exponent α of the spectrum S_y(f) ∝ f^α that the interval was worked out for: 2, 1 (phase noise),
-        0 white, −1 flicker, −2 random walk of frequency.
-    """
-
-    averaging_time: float
-    adev: float
-    u: float
-    low: float
-    high: float
-    edf: float
-    noise: int
 
 
 def squares(y: Array, m: int, *, overlapping: bool = True) -> tuple[float, int]:
