@@ -98,7 +98,7 @@ class Found:
         axes."""
         from benchfit.show.plot import plot
 
-        return plot(self.explanation, self.constants[0], self.captures[0], path=path, axes=axes, kind=kind)
+        return plot(self.explanation, self.constants[0], self.captures[0], path=path, axes=axes, kind=kind)  # type: ignore[arg-type]
 
 
 def assign(capture: Capture, sheet: Sheet | None, number: int = 1) -> tuple[Assignment, ...]:

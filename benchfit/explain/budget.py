@@ -28,7 +28,7 @@ def _loaded(view: View, share: Array | float) -> View:
 
 
 def _function(model: Model, view: View, which: str, states: Array, load: Array | float) -> Array:
-    f, duty = model.frequency_and_duty(states, _loaded(view, load))  # type: ignore[arg-type]
+    f, duty = model.frequency_and_duty(states, _loaded(view, load))
     return f if which == "frequency" else duty
 
 

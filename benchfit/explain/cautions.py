@@ -84,8 +84,8 @@ def scope_checks(
                 Remark(
                     "wrong-attenuation",
                     f"the {where} voltages are {word} for this circuit while their ratios are right: "
-                    "the probe's attenuation setting is taken to be wrong and set right here; check it on the "
-                    "scope",
+                    "the probe's attenuation setting is taken to be wrong and set right here; check it on "
+                    "the scope",
                 )
             )
         if (
@@ -98,8 +98,8 @@ def scope_checks(
             notes.append(
                 Remark(
                     "ac-coupled",
-                    f"the {node.name} node's mean lies at 0 V, where this circuit cannot put it: the scope was "
-                    "a.c. coupled; voltages are used as differences only; capture it again d.c. coupled",
+                    f"the {node.name} node's mean lies at 0 V, where this circuit cannot put it: the scope "
+                    "was a.c. coupled; voltages are used as differences only; capture it again d.c. coupled",
                 )
             )
         checked.append(constants)

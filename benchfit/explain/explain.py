@@ -19,6 +19,7 @@ from benchfit.explain.cautions import cautions, scope_checks
 from benchfit.explain.measured import measured
 from benchfit.explain.model import Model
 from benchfit.explain.readings import next_readings
+from benchfit.explain.refine import refine
 from benchfit.explain.remedies import remedies_of
 from benchfit.explain.rest import finding, limits_of, weigh_rest
 from benchfit.explain.result import CaptureFacts, Explanation, Miss, Quantity
@@ -128,7 +129,7 @@ def _explain_cycle(
             settled=False,
             miss=_bare_misses(sheet, base.measured),
         )
-    weighed = [parts_room.refine(model, weighed[0]), *weighed[1:]]
+    weighed = [refine(model, weighed[0]), *weighed[1:]]
     averaged = parts_room.average(weighed)
     built = {n: q for n in ("frequency", "duty") if (q := base.measured.get(n)) is not None}
     bare = without_probe(model, averaged, built)
@@ -159,9 +160,7 @@ def _explain_cycle(
         suspects=suspects_of(model, weighed),
         settled=settled(weighed),
         ruled_out=ruled_out(model, weighed),
-        next_readings=()
-        if settled(weighed)
-        else next_readings(model, averaged, readings, tuple(captures[0].spans)),
+        next_readings=() if settled(weighed) else next_readings(model, averaged, readings),
         remedies=remedies_of(model, averaged, sheet.target_frequency, sheet.target_duty),
         without_probe=bare,
         verdict=worst(verdicts),
@@ -283,9 +282,7 @@ def _explain_rest(
         suspects=suspects_of(model, weighed),
         settled=settled(weighed),
         finding=says,
-        next_readings=()
-        if settled(weighed)
-        else next_readings(model, averaged, tuple(sheet.readings), tuple(constants.spans)),
+        next_readings=() if settled(weighed) else next_readings(model, averaged, tuple(sheet.readings)),
         verdict=_failed(sheet),
         warnings=tuple(_unique(warnings)),
         without_probe=_probe_stops(model, averaged),

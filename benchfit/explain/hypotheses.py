@@ -74,8 +74,7 @@ def _range(p: Parameter, part: Part, model: Model) -> tuple[float, float, float]
         reach = {"resistor": DECADES, "capacitor": DECADES, "current": DECADES, "device": math.log(6.0)}.get(
             part.kind, TWO
         )
-        if part.kind == "device":
-            reach = max(reach, 2.5 * half)
+        reach = max(reach, 2.5 * half)
         return p.nominal - reach, p.nominal + reach, TWO
     if p.follows is not None or part.kind == "device":
         return p.nominal - 6 * half, p.nominal + 6 * half, 3 * half
@@ -90,7 +89,7 @@ def _parasitic(index: int, part: Part, scales: Mapping[str, float]) -> list[Free
     """Grids of a parasitic, on a log scale of its magnitude; both signs for a bend of the capacitance."""
     assert part.reach is not None
     try:
-        low, high = part.reach({k: np.float64(v) for k, v in scales.items()})
+        low, high = part.reach({k: np.asarray(v) for k, v in scales.items()})
     except (KeyError, StopIteration, ValueError):
         return []
     bounds = sorted((math.log(low), math.log(high)))

@@ -203,7 +203,8 @@ def _jacobian(
     with np.errstate(all="ignore"):
         moved_to = (observed - model.predict(shifted)) @ white.T
         slope = -(moved_to - residual[:, None, :]) / step[..., None]
-    return np.nan_to_num(np.swapaxes(slope, 1, 2), posinf=0.0, neginf=0.0)
+    found: Array = np.nan_to_num(np.swapaxes(slope, 1, 2), posinf=0.0, neginf=0.0)
+    return found
 
 
 def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Array, Array]:
@@ -216,6 +217,20 @@ def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Arra
     gradient = (transposed @ np.nan_to_num(residual, posinf=0.0, neginf=0.0)[..., None])[..., 0]
     gradient[:, :held] -= z
     return normal, gradient
+
+
+def _beyond(batch: Batch, state: Array, free: NDArray[np.int64]) -> Array:
+    """ln of what a held parameter loses where it lies beyond its limits: a tolerance is a pair of limits.
+
+    The prior that carries the fit is a Gaussian of the rectangle's mean and standard deviation, whose limits
+    lie at
+    √3; a state that needs a part well beyond them is hardly "within tolerance", though limits are not walls.
+    """
+    spread = batch.spread[:, free]
+    z = np.where(spread > 0, (state - batch.center)[:, free] / np.where(spread > 0, spread, 1.0), 0.0)
+    over = np.maximum(np.abs(z) - np.sqrt(3.0), 0.0) / 0.5
+    lost: Array = -0.5 * np.sum(np.minimum(over, 20.0) ** 2, axis=1)
+    return lost
 
 
 def _weigh(
@@ -244,7 +259,7 @@ def _weigh(
         own_u = np.sqrt(np.abs(np.diagonal(inverse, axis1=1, axis2=2)[:, held:]))
     inner = np.linalg.inv(normal)
     covariance[:, free[:, None], free[None, :]] = inner * spread[:, :, None] * spread[:, None, :]
-    edges = model.unexplained_edges(state)
+    edges = model.unexplained_edges(state) + _beyond(batch, state, free)
     return Relaxed(
         state,
         t,

@@ -70,7 +70,7 @@ class View:
 
     timing: str
     shape: str
-    loads: Mapping[str, tuple[float, float]] = field(default_factory=dict)
+    loads: Mapping[str, tuple[Array | float, Array | float]] = field(default_factory=dict)
     swaps: Mapping[str, str] = field(default_factory=dict)
     added_C: str = ""
     added_R: str = ""
@@ -162,8 +162,8 @@ class Model:
         parts = {name: values[replacement] for name, replacement in view.swaps.items()}
         parts = {**values, **parts}
         for node, (conductance, capacitance) in view.loads.items():
-            parts[f"G_probe:{node}"] = np.float64(conductance)
-            parts[f"C_probe:{node}"] = np.float64(capacitance)
+            parts[f"G_probe:{node}"] = np.asarray(conductance, float)
+            parts[f"C_probe:{node}"] = np.asarray(capacitance, float)
         if view.added_C:
             parts[view.capacitor] = parts[view.capacitor] + values[view.added_C]
         if view.added_R and "R_leak" in parts:

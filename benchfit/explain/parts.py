@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from benchfit.explain.infer import _STEP, whitener
+from benchfit.explain.infer import whitener
 from benchfit.explain.model import Array, Model, Parameter
 from benchfit.explain.result import PartFound
 from benchfit.explain.weigh import Weighed
@@ -26,7 +26,8 @@ class Averaged:
     @property
     def mean(self) -> Array:
         """Mean state, shape (n,)."""
-        return np.einsum("k,kn->n", self.weights, np.array([w.mean for w in self.live]))
+        mean: Array = self.weights @ np.array([w.mean for w in self.live])
+        return mean
 
     @property
     def covariance(self) -> Array:
@@ -44,80 +45,6 @@ def average(weighed: Sequence[Weighed]) -> Averaged:
     live = [w for w in weighed if w.probability >= LIVE and np.all(np.isfinite(w.mean))] or list(weighed[:1])
     p = np.array([max(w.probability, 1e-12) for w in live])
     return Averaged(p / p.sum(), tuple(live))
-
-
-def refine(model: Model, first: Weighed) -> Weighed:
-    """Least squares in lmfit from a hypothesis' best state, its freed parts without a prior: mode and
-    covariance.
-
-    Residuals are the observations whitened by their covariance, then every held parameter against its
-    tolerance in units of that. The freed part's posterior from the grid is kept where the two disagree (a
-    one-sided
-    parasitic has no Gaussian mode).
-    """
-    import lmfit
-
-    white = whitener(model.covariance)
-    spread = model.spread.copy()
-    own = [model.index[c] for c in first.causes]
-    for i in own:
-        spread[i] = 0.0
-    moving = [i for i in range(spread.size) if spread[i] > 0 or i in own]
-    if any(not np.isfinite(first.mode[i]) for i in moving):
-        return first
-    scale = np.array(
-        [
-            spread[i]
-            if spread[i] > 0
-            else max(math.sqrt(first.covariance[i, i]), 1e-3 * abs(first.mode[i]), 1e-300)
-            for i in moving
-        ]
-    )
-    center = model.center
-    start = first.mode
-    params = lmfit.Parameters()
-    for k in range(len(moving)):
-        params.add(f"p{k}", value=0.0)
-
-    def state(values: Array) -> Array:
-        out = start.copy()
-        out[moving] += scale * values
-        return out
-
-    def residual(p: object) -> Array:
-        x = state(np.array([p[f"p{k}"].value for k in range(len(moving))]))  # type: ignore[index]
-        with np.errstate(all="ignore"):
-            data = white @ (model.observed - model.predict(x))
-        held = [(x[i] - center[i]) / spread[i] for i in moving if spread[i] > 0]
-        return np.nan_to_num(np.concatenate([data, held]), nan=1e6, posinf=1e6, neginf=-1e6)
-
-    def slope(p: object) -> Array:
-        x = state(np.array([p[f"p{k}"].value for k in range(len(moving))]))  # type: ignore[index]
-        shifted = np.tile(x, (len(moving), 1))
-        shifted[np.arange(len(moving)), moving] += _STEP * scale
-        with np.errstate(all="ignore"):
-            data = ((model.predict(x) - model.predict(shifted)) / _STEP) @ white.T
-        prior = np.zeros((len(moving), sum(spread[i] > 0 for i in moving)))
-        column = 0
-        for k, i in enumerate(moving):
-            if spread[i] > 0:
-                prior[k, column] = scale[k] / spread[i]
-                column += 1
-        return np.nan_to_num(np.concatenate([data, prior], axis=1))
-
-    fit = lmfit.minimize(residual, params, Dfun=slope, col_deriv=1, scale_covar=False, max_nfev=60)
-    if not fit.success or getattr(fit, "covar", None) is None:
-        return first
-    mode = state(np.array([fit.params[f"p{k}"].value for k in range(len(moving))]))
-    covariance = np.zeros_like(first.covariance)
-    covariance[np.ix_(moving, moving)] = fit.covar * np.outer(scale, scale)
-    u_grid = np.sqrt(np.diag(first.covariance))
-    agrees = np.all(np.abs(mode - first.mean)[moving] <= 0.5 * u_grid[moving] + 1e-12)
-    if not agrees:
-        return first
-    from dataclasses import replace
-
-    return replace(first, mean=mode, mode=mode, covariance=np.maximum(covariance, 0) * 0 + covariance)
 
 
 def parts_found(model: Model, averaged: Averaged, readings: Sequence[str]) -> tuple[PartFound, ...]:

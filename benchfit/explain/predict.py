@@ -14,7 +14,7 @@ from benchfit.explain.assemble import assemble_bare
 from benchfit.explain.cautions import cautions
 from benchfit.explain.model import Array, Model, View
 from benchfit.explain.rest import running_range
-from benchfit.explain.verdict import _spread_states
+from benchfit.explain.spread import principal_points
 from benchfit.quantity import percent, si
 from benchfit.sheet.model import Sheet
 
@@ -51,7 +51,7 @@ def predict(sheet: Sheet) -> dict[str, Any]:
         warnings.insert(0, Remark("latch-up" if condition.code == "latched" else "no-oscillation", says))
         record |= {"predicted": None, "band": None, "miss": None}
     else:
-        states = _spread_states(model, nominal, np.diag(model.spread**2))
+        states = principal_points(nominal, np.diag(model.spread**2))
         record["predicted"] = _predicted(model, view, node, states)
         record["band"], record["root_sum_square"], record["monte_carlo"] = _bands(model, view)
         record["miss"] = _miss(model, view, sheet)
@@ -106,9 +106,9 @@ def _bands(model: Model, view: View) -> tuple[dict[str, Any], dict[str, Any], di
                     _reach(worst[name][1], float(sample.max()), max),
                 ]
                 carlo[name] = [float(x) for x in np.quantile(sample, (0.025, 0.975))]
-            points = model.frequency_and_duty(
-                _spread_states(model, model.center, np.diag(model.spread**2)), view
-            )[slot]
+            points = model.frequency_and_duty(principal_points(model.center, np.diag(model.spread**2)), view)[
+                slot
+            ]
             u = float(np.sqrt(np.sum(np.nan_to_num(points[1:] - points[0]) ** 2)))
             ends = [float(points[0]) - 2 * u, float(points[0]) + 2 * u]
             square[name] = ends if slot == 0 else [max(ends[0], 0.0), min(ends[1], 1.0)]
@@ -175,11 +175,9 @@ def _variance_shares(model: Model, view: View, slot: int) -> list[dict[str, Any]
     total = float(np.sum(parts))
     if total == 0:
         return []
-    found = [
-        {"cause": model.parameters[i].name, "share": float(v / total)}
-        for i, v in zip(wide, parts, strict=True)
-    ]
-    return sorted((s for s in found if s["share"] > 1e-6), key=lambda s: -s["share"])
+    order = np.argsort(-parts)
+    shares = [(model.parameters[wide[k]].name, float(parts[k] / total)) for k in order]
+    return [{"cause": name, "share": share} for name, share in shares if share > 1e-6]
 
 
 def _contributions(model: Model, view: View) -> list[dict[str, Any]]:

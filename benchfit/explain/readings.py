@@ -7,7 +7,7 @@ and the first probability that each would leave is averaged (preposterior analys
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -15,7 +15,7 @@ import numpy as np
 from benchfit.explain.model import Array, Model, View
 from benchfit.explain.parts import Averaged
 from benchfit.explain.result import NextReading
-from benchfit.explain.verdict import _spread_states
+from benchfit.explain.spread import principal_points
 
 # Meters as they stand on a bench (common practice): limits as a fraction of the reading.
 METER = {
@@ -37,15 +37,13 @@ class _Offer:
     cost: float
 
 
-def next_readings(
-    model: Model, averaged: Averaged, readings: Sequence[str], probed: Sequence[str]
-) -> tuple[NextReading, ...]:
+def next_readings(model: Model, averaged: Averaged, readings: Sequence[str]) -> tuple[NextReading, ...]:
     """The readings worth taking, best first."""
     if len(averaged.live) < 2:
         return ()
     rng = np.random.default_rng(20)
     found = []
-    for offer, means, covariances in _offers(model, averaged, readings, probed):
+    for offer, means, covariances in _offers(model, averaged, readings):
         rise = _expected_rise(averaged.weights, means, covariances, rng)
         if rise >= WORTH:
             found.append((rise - offer.cost, NextReading(offer.reading, offer.about, float(rise))))
@@ -53,7 +51,10 @@ def next_readings(
     return tuple(f for _, f in found[:5])
 
 
-def _offers(model: Model, averaged: Averaged, readings: Sequence[str], probed: Sequence[str]):  # type: ignore[no-untyped-def]
+Predicted = tuple["_Offer", list[Array], list[Array]]
+
+
+def _offers(model: Model, averaged: Averaged, readings: Sequence[str]) -> Iterator[Predicted]:
     for i, p in enumerate(model.parameters):
         kind = p.part.kind if p.part else ""
         if kind in METER and p.name not in readings:
@@ -79,18 +80,12 @@ def _offers(model: Model, averaged: Averaged, readings: Sequence[str], probed: S
         return
     if not view.timing:
         seen = replace(view, timing=node.name, shape=node.shape, loads={})
-        yield from _capture_offer(
-            model, averaged, seen, f"capture the {node.name} node (d.c. coupled, ×10 probe)", node.name, 0.0
-        )
+        offer = _Offer(f"capture the {node.name} node (d.c. coupled, ×10 probe)", node.name, 0.0)
+        yield from _capture_offer(model, averaged, seen, offer)
     elif view.loads:
+        words = "frequency with the probe lifted (at the output, or by a ×100 probe)"
         yield from _capture_offer(
-            model,
-            averaged,
-            view.without_probe(),
-            "frequency with the probe lifted (output, counter or a ×100 probe)",
-            view.timing,
-            0.0,
-            True,
+            model, averaged, view.without_probe(), _Offer(words, view.timing, 0.0), True
         )
     capacitor = view.capacitor
     nominal = float(model.values(model.nominal)[capacitor])
@@ -122,24 +117,18 @@ def _noise(size: int) -> Array:
 
 
 def _capture_offer(
-    model: Model,
-    averaged: Averaged,
-    view: View,
-    words: str,
-    node: str,
-    cost: float,
-    period_only: bool = False,
-):  # type: ignore[no-untyped-def]
+    model: Model, averaged: Averaged, view: View, offer: _Offer, period_only: bool = False
+) -> Iterator[Predicted]:
     means, covariances = [], []
     for w in averaged.live:
         with np.errstate(all="ignore"):
-            points = _vector(model, view, _spread_states(model, w.mean, w.covariance), period_only)
+            points = _vector(model, view, principal_points(w.mean, w.covariance), period_only)
         if not np.all(np.isfinite(points[0])):
             return
         moves = np.nan_to_num(points[1:] - points[0])
         means.append(points[0])
         covariances.append(moves.T @ moves + _noise(points.shape[1]))
-    yield _Offer(words, node, cost), means, covariances
+    yield offer, means, covariances
 
 
 @dataclass(frozen=True)
@@ -150,10 +139,10 @@ class _Added:
     view: View
     extra: float
 
-    def offers(self, averaged: Averaged, capacitor: str):  # type: ignore[no-untyped-def]
+    def offers(self, averaged: Averaged, capacitor: str) -> Iterator[Predicted]:
         means, covariances = [], []
         for w in averaged.live:
-            states = _spread_states(self.model, w.mean, w.covariance)
+            states = principal_points(w.mean, w.covariance)
             with np.errstate(all="ignore"):
                 values = self.model.values(states)
                 bare = self.model.constants_of(self.view, values)["period"]

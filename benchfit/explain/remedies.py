@@ -11,7 +11,7 @@ import numpy as np
 from benchfit.explain.model import Array, Model
 from benchfit.explain.parts import Averaged
 from benchfit.explain.result import Quantity, Remedy
-from benchfit.explain.verdict import _spread_states
+from benchfit.explain.spread import principal_points
 from benchfit.quantity import Toleranced
 from benchfit.sheet.preferred import ladder, series_for
 
@@ -31,7 +31,7 @@ def _fitted(
             mean[i] = x
             covariance[i, i] = model.parameters[i].spread ** 2
         with np.errstate(all="ignore"):
-            f, duty = model.frequency_and_duty(_spread_states(model, mean, covariance), view)
+            f, duty = model.frequency_and_duty(principal_points(mean, covariance), view)
         if not np.isfinite(f[0]):
             return None
         rows.append(
@@ -161,11 +161,7 @@ def _pairs(
     values: Mapping[str, Array],
 ) -> list[Remedy]:
     """Two resistors together, for frequency and duty at once: a scan of one, the other solved for."""
-    resistors = [
-        i
-        for i in order
-        if model.parameters[i].part is not None and model.parameters[i].part.kind == "resistor"
-    ]  # type: ignore[union-attr]
+    resistors = [i for i in order if (part := model.parameters[i].part) and part.kind == "resistor"]
     best: tuple[float, list[Remedy]] | None = None
     for i in resistors[:2]:
         for j in resistors[:2]:

@@ -10,6 +10,7 @@ import numpy as np
 from benchfit.explain.model import Model
 from benchfit.explain.parts import Averaged
 from benchfit.explain.result import Quantity
+from benchfit.explain.spread import principal_points
 from benchfit.quantity import Toleranced
 
 
@@ -30,7 +31,7 @@ def without_probe(
             continue
         means, variances, weights = [], [], []
         for q, w in zip(averaged.weights, averaged.live, strict=True):
-            states = _spread_states(model, w.mean, w.covariance)
+            states = principal_points(w.mean, w.covariance)
             with np.errstate(all="ignore"):
                 on = model.frequency_and_duty(states, view)[slot]
                 off = model.frequency_and_duty(states, bare)[slot]
@@ -54,14 +55,6 @@ def without_probe(
             value, u = b.value + mean, math.hypot(b.u or 0.0, spread)
         found[name] = Quantity(value, u, b.unit)
     return found
-
-
-def _spread_states(model: Model, mean: np.ndarray, covariance: np.ndarray) -> np.ndarray:  # type: ignore[type-arg]
-    """The mean, then the mean moved along each principal axis by its standard deviation."""
-    values, vectors = np.linalg.eigh(0.5 * (covariance + covariance.T))
-    axes = vectors * np.sqrt(np.maximum(values, 0.0))
-    axes = axes[:, values > 0]
-    return np.vstack([mean, mean + axes.T])
 
 
 def judge(value: Quantity, target: Toleranced) -> str | None:

@@ -77,7 +77,8 @@ def _starts(way: Freed) -> Array:
         return even
     middle = 0.5 * (way.hole[0] + way.hole[1])
     near = middle + np.array([-0.3, 0.3]) * (way.near or 1.0)
-    return np.clip(np.concatenate([even, near]), way.low, way.high)
+    found: Array = np.clip(np.concatenate([even, near]), way.low, way.high)
+    return found
 
 
 def weigh(model: Model) -> list[Weighed]:
@@ -120,7 +121,9 @@ def _weigh_free(model: Model, hypotheses: Sequence[Hypothesis], white: Array) ->
         return []
     best = _search(model, hypotheses, white)
     # A grid about the best value, cut where the tolerance begins: evidence is an integral, not a height.
-    repeated, points, weights = [], [], []
+    repeated: list[int] = []
+    points: list[float] = []
+    weights: list[float] = []
     for r, h in enumerate(hypotheses):
         way = h.freed[0]
         width = best.own_u[r, 0]
@@ -166,7 +169,8 @@ def _piece_grid(low: float, high: float, best: float, width: float) -> Array:
         # The tail beyond the edge: it falls off with the distance from the best value.
         tail = width * width / max(abs(best - center), width)
         grid = np.concatenate([grid, center + tail * _Q])
-    return np.clip(grid, low, high)
+    kept: Array = np.clip(grid, low, high)
+    return kept
 
 
 def _averaged(
