@@ -24,12 +24,11 @@ def run(args: argparse.Namespace) -> int:
 
     if args.name is None:
         width = max(len(name) for name in circuits.names())
-        for name in circuits.names():
-            print(f"{name:<{width}}  {circuits.get(name).title}")
+        streams.emit("\n".join(f"{name:<{width}}  {circuits.get(name).title}" for name in circuits.names()))
         return 0
     from benchfit.show.design import render_circuit
 
-    print(render_circuit(named(args.name), width=streams.width(), colour=streams.colour()))
+    streams.emit(render_circuit(named(args.name), width=streams.width(), colour=streams.colour()))
     return 0
 
 

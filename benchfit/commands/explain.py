@@ -14,6 +14,7 @@ from benchfit.errors import UsageError
 
 if TYPE_CHECKING:
     from benchfit.commands.work import Outcome, Task
+    from benchfit.explain.result import Explanation
     from benchfit.sheet import Sheet
 
 # Between a capture and the files that belong to it, on the way through argparse.
@@ -90,9 +91,9 @@ def run(args: argparse.Namespace) -> int:
     task = Task(captures=tuple(captures), sheet=sheet, layout=options.layout_of(args),
                 plot=args.plot, report=args.report)  # fmt: skip
     tasks = [task] if args.joint else [
-        replace(task, captures=(paths,), plot=_each(args.plot, paths, captures),
-                report=_each(args.report, paths, captures))
-        for paths in captures
+        replace(task, captures=(paths,), plot=_each(args.plot, number, captures),
+                report=_each(args.report, number, captures))
+        for number, paths in enumerate(captures)
     ]  # fmt: skip
     return _Results(args).take(_outcomes(args, tasks))
 
@@ -148,15 +149,14 @@ def _check(args: argparse.Namespace, captures: Sequence[Sequence[str]], sheet: S
         raise UsageError("standard input (-) can be read once only")
 
 
-def _each(path: str | None, paths: Sequence[str], captures: Sequence[Sequence[str]]) -> str | None:
+def _each(path: str | None, number: int, captures: Sequence[Sequence[str]]) -> str | None:
     """The name of one capture's own file: with several captures, the capture's name goes into it."""
     if path is None or len(captures) == 1:
         return path
     name = Path(path)
-    stems = [Path(other[0]).stem for other in captures]
-    stem = Path(paths[0]).stem
-    number = f"-{captures.index(list(paths)) + 1}" if stems.count(stem) > 1 else ""
-    return str(name.with_name(f"{name.stem}-{stem}{number}{name.suffix}"))
+    stems = [Path(paths[0]).stem for paths in captures]
+    tail = f"-{number + 1}" if stems.count(stems[number]) > 1 else ""
+    return str(name.with_name(f"{name.stem}-{stems[number]}{tail}{name.suffix}"))
 
 
 def _outcomes(args: argparse.Namespace, tasks: Sequence[Task]) -> Iterator[Outcome]:
@@ -179,31 +179,35 @@ class _Results:
     def __init__(self, args: argparse.Namespace) -> None:
         self.args = args
         self.is_text = "-" not in (args.json, args.csv)
+        files = (args.json, args.csv, args.plot, args.report)
+        self.has_files = any(path not in (None, "-") for path in files) or args.csv == "-"
         self.records: list[dict[str, Any]] = []
         self.status = 0
 
     def take(self, outcomes: Iterable[Outcome]) -> int:
         is_checked_bad = False
+        is_read = True
         for number, outcome in enumerate(outcomes):
+            self.records.append(outcome.record)
+            is_checked_bad |= outcome.record.get("verdict") in ("fail", "conditional")
             if outcome.error is not None:
                 self.status = self.status or outcome.error.status
                 streams.say(outcome.error.says)
-            elif self.is_text:
-                self.show(outcome, is_first=number == 0)
             self.talk(outcome)
-            is_checked_bad |= outcome.record.get("verdict") in ("fail", "conditional")
-            self.records.append(outcome.record)
             if self.args.json == "-":
-                print(_line(outcome.record), flush=True)
+                is_read = is_read and streams.emit(_line(outcome.record))
+            elif outcome.explanation is not None and self.is_text:
+                is_read = is_read and self.show(outcome.explanation, is_first=number == 0)
+            if not is_read and not self.has_files:
+                break  # whoever read standard output has seen enough, and nothing else is wanted
         self.write()
         return self.status or int(is_checked_bad and self.args.check)
 
-    def show(self, outcome: Outcome, *, is_first: bool) -> None:
+    def show(self, explanation: Explanation, *, is_first: bool) -> bool:
         from benchfit.show.text import render
 
-        assert outcome.explanation is not None
-        text = render(outcome.explanation, width=streams.width(), colour=streams.colour())
-        print(text if is_first else f"\n{text}", flush=True)
+        text = render(explanation, width=streams.width(), colour=streams.colour())
+        return streams.emit(text if is_first else f"\n{text}")
 
     def talk(self, outcome: Outcome) -> None:
         if self.args.verbose and not self.args.quiet:
@@ -221,7 +225,7 @@ class _Results:
 
             table = as_csv(self.records)
             if self.args.csv == "-":
-                print(table, end="", flush=True)
+                streams.emit(table.removesuffix("\n"))
             else:
                 streams.write(self.args.csv, table)
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import argparse
 import importlib
-import os
 import sys
 from collections.abc import Sequence
 
@@ -50,10 +49,6 @@ def main(argv: Sequence[str] | None = None) -> int:
     except KeyboardInterrupt:
         streams.say("interrupted")
         return 130
-    except BrokenPipeError:
-        # Whoever read our output has enough; what is still buffered must not raise again at exit.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return 0
     except SystemExit as end:
         return end.code if isinstance(end.code, int) else 0
     except Exception as error:

@@ -28,13 +28,13 @@ def run(args: argparse.Namespace) -> int:
 
     prediction = pipeline.predict(sheet)
     if args.json is not None:
-        line = f"{dumps(prediction.record())}\n"
+        line = f"{dumps(prediction)}\n"
         if args.json != "-":
             streams.write(args.json, line)
         else:
-            print(line, end="", flush=True)
+            streams.emit(line.removesuffix("\n"))
             return 0
     from benchfit.show.design import render_prediction
 
-    print(render_prediction(prediction.record(), width=streams.width(), colour=streams.colour()))
+    streams.emit(render_prediction(prediction, width=streams.width(), colour=streams.colour()))
     return 0

@@ -5,10 +5,11 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING
 
-from benchfit.commands import options
+from benchfit.commands import options, streams
 
 if TYPE_CHECKING:
     from benchfit.circuits.model import Circuit, Part
+    from benchfit.sheet import Sheet
 
 _REST = """
 [readings]                   # what a meter says of this very build; the tolerance is the meter's
@@ -18,8 +19,7 @@ _REST = """
 [channels]                   # which channel was clipped to which node
 {channels}
 
-# [probe.{node}]             # what the probe there does to the circuit
-# resistance = "10M"
+{probe}# resistance = "10M"
 # capacitance = "12p"
 
 # [scope]                    # limits of the instrument's own errors; these are assumed without the section
@@ -42,12 +42,14 @@ def run(args: argparse.Namespace) -> int:
     """Print the sheet."""
     from benchfit.commands.circuits import named
 
-    print(starter(named(args.circuit)), end="")
+    streams.emit(starter(named(args.circuit)).removesuffix("\n"))
     return 0
 
 
 def starter(circuit: Circuit) -> str:
     """The text of a starter sheet: the circuit's example build, every other part as a comment."""
+    from benchfit.sheet import Sheet
+
     given = [part for part in circuit.parts if part.name in circuit.example]
     others = [part for part in circuit.parts if part.name not in circuit.example and part.nominal != "absent"]
     head = f"""\
@@ -59,41 +61,54 @@ circuit = "{circuit.name}"
 
 """
     parts = "[parts]                      # nominals and tolerances\n"
-    parts += "".join(_line(f'{part.name} = "{circuit.example[part.name]}"', part.says) for part in given)
+    for part in given:
+        parts += _line(f'{part.name} = "{circuit.example[part.name]}"', part.says)
+    sheet = Sheet.parse(f"{head}{parts}")
     if others:
-        parts += "# what may be given as well:\n"
-        parts += "".join(_line(f"# {part.name} = {_default(part)}", part.says) for part in others)
-    frequency, duty = _expected(f"{head}{parts}")
+        parts += "# what may be given as well (the values are those taken without it):\n"
+        for part in others:
+            parts += _line(f"# {part.name} = {_default(part, sheet)}", _says(part, sheet))
+    frequency, duty = _expected(sheet)
     target = f"""\
 [target]                     # what it should do; a tolerance here is the acceptance limit
-frequency = "{frequency} 5%"{" " * max(1, 13 - len(frequency))}# or period = "…"; what the values below give
-# duty = "{duty}"
+{_line(f'frequency = "{frequency} 5%"', 'or period; this is what the values below give')}# duty = "{duty}"
 
 """
-    nodes = [node.name for node in circuit.nodes]
+    part, nodes = given[0], [node.name for node in circuit.nodes]
     rest = _REST.format(
-        part=given[0].name, text=circuit.example[given[0].name], frequency=frequency, node=nodes[0],
-        channels="\n".join(f'{"" if n == 0 else "# "}{node} = "CH{n + 1}"' for n, node in enumerate(nodes)),
-    )  # fmt: skip
+        part=part.name,
+        text=circuit.example[part.name],
+        frequency=frequency,
+        channels="\n".join(f'# {node} = "CH{n}"' for n, node in enumerate(nodes, 1)),
+        probe=_line(f"# [probe.{nodes[0]}]", "what the probe there does to the circuit"),
+    )
     return f"{head}{target}{parts}{rest}"
 
 
 def _line(text: str, says: str) -> str:
-    return f"{text:<29}# {says}\n"
+    return f"{text:<28} # {says}\n"
 
 
-def _default(part: Part) -> str:
-    if part.nominal is None or part.base is not None:
-        return '"…"'
-    return f'"{part.nominal}"'
+def _default(part: Part, sheet: Sheet) -> str:
+    """What is taken for a part that the sheet leaves out, as the sheet would say it."""
+    from benchfit.quantity import si
+
+    if part.base is not None:
+        nominal = sheet.build().parts[part.name].nominal
+        return f'"{si(nominal, part.unit)} {part.nominal}"'
+    return '"…"' if part.nominal is None else f'"{part.nominal}"'
 
 
-def _expected(text: str) -> tuple[str, str]:
+def _says(part: Part, sheet: Sheet) -> str:
+    is_other = part.name in sheet.build().absent and not part.optional
+    return f"{part.says} (instead)" if is_other else part.says
+
+
+def _expected(sheet: Sheet) -> tuple[str, str]:
     """Frequency and duty cycle of the example build, as its nominals give them."""
     from benchfit import pipeline
-    from benchfit.quantity import percent, si
-    from benchfit.sheet import Sheet
+    from benchfit.quantity import si
 
-    predicted = pipeline.predict(Sheet.parse(text)).record()["predicted"]
+    predicted = pipeline.predict(sheet)["predicted"]
     frequency = si(float(f"{predicted['frequency']['value']:.3g}"), "Hz")
-    return frequency, percent(predicted["duty"]["value"])
+    return frequency, f"{100 * predicted['duty']['value']:.4g} %"

@@ -36,6 +36,17 @@ def colour() -> bool:
     return sys.stdout.isatty() and not os.environ.get("NO_COLOR") and os.environ.get("TERM") != "dumb"
 
 
+def emit(text: str) -> bool:
+    """Results on standard output, at once; False where nobody reads there any more."""
+    try:
+        print(text, flush=True)
+    except BrokenPipeError:
+        # What is still buffered must not raise again, now or at exit.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return False
+    return True
+
+
 def say(text: str) -> None:
     """One line of talk, on standard error."""
     print(f"benchfit: {text}", file=sys.stderr, flush=True)

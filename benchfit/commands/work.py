@@ -83,7 +83,7 @@ def _explained(task: Task) -> Outcome:
         from benchfit.show.report import report
 
         with replacing(task.report) as scratch:
-            report(found, str(scratch))
+            report(found.explanation, found.constants[0], found.captures[0], scratch)
     notes = tuple((capture.path, dict(capture.notes)) for capture in captures)
     return Outcome(record=found.record(), explanation=found.explanation, notes=notes)
 
