@@ -60,10 +60,11 @@ CIRCUIT = Circuit(
         Part("V_upper", "V", "where the switch closes", tolerance="5 %", kind="threshold"),
         Part("V_lower", "V", "where it opens again", tolerance="10 %", kind="threshold"),
         Part("r_discharge", "Ω", "the closed switch", "log", "50 Ω ± 60 %", None, "60 %", "device"),
-        *parasitics("R_ramp"),
+        *parasitics(scale=lambda p: float(p["V_upper"] / p["I_charge"]), supply=False),
     ),
     nodes=(Node("capacitor", "timing", "the capacitor", True),),
     cycle=_cycle,
+    families=(("V_upper", "V_lower"),),
     likeness=_likeness,
     swaps=(("V_upper", "V_lower"),),
     equations=(

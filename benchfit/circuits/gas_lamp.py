@@ -76,6 +76,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the lamp's terminal, where the capacitor sits", True),),
     cycle=_cycle,
+    families=(("V_strike", "V_extinguish"),),
     likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_strike",

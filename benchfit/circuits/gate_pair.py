@@ -2,43 +2,53 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
-from benchfit.circuits.lag import Lag, lag, parasitics
+from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import close, yes
 from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Features, Node, Part, Parts, Phase
+from benchfit.circuits.solve import after
 
 
-def _phase(now: Lag, threshold: Array, rising: bool, output: str, **more: Array) -> Phase:
-    return Phase(
-        "capacitor", rising, now.drive, now.curvature, threshold, output=output, slope=now.slope, **more
-    )  # type: ignore[arg-type]
+def _kick(p: Parts, foot: Array) -> Array:
+    """How far the junction jumps with the output, which leaves ``foot`` (V): capacitance to ground divides it
+    by C/(C + C_stray + C_probe)."""
+    capacitance = p["C"] * (1 + p["C_slope"] * (p["V_threshold"] - foot))
+    aside = p["C_stray"] + p.get("C_probe:capacitor", np.float64(0.0))
+    return p["supply"] * capacitance / (capacitance + aside)
 
 
 def _cycle(p: Parts) -> Cycle:
-    supply, threshold = p["supply"], p["V_threshold"]
+    supply, threshold, delay = p["supply"], p["V_threshold"], p["delay"]
+    ground = 0.0 * supply
     feed = 1 / (p["R"] + p["R_gate"])
-    falling, rising = lag(p, (feed, np.float64(0.0))), lag(p, (feed, supply))
+    # The first gate's output drives R, the second one's, its opposite, the other plate of C.
+    falling, rising = lag(p, (feed, ground), foot=supply), lag(p, (feed, supply))
     over, under = supply + p["V_clamp"], -p["V_clamp"]
-    kick = supply * p["C"] / falling.capacitance
+    up, down = _kick(p, ground), -_kick(p, supply)
+    phases: tuple[Phase, ...]
     if "R_series" in p:
         clamp = 1 / p["R_series"]
-        held_down = lag(p, (feed, np.float64(0.0)), (clamp, over))
+        held_down = lag(p, (feed, ground), (clamp, over), foot=supply)
         held_up = lag(p, (feed, supply), (clamp, under))
         phases = (
-            _phase(held_down, over, False, "high", jump=kick),
-            _phase(falling, threshold, False, "high", delay=p["delay"]),
-            _phase(held_up, under, True, "low", jump=-kick),
-            _phase(rising, threshold, True, "low", delay=p["delay"]),
+            phase(held_down, over, rising=False, before=rising, jump=up, output="high"),
+            phase(falling, threshold, rising=False, before=held_down, delay=delay, output="high"),
+            phase(held_up, under, rising=True, before=falling, jump=down, output="low"),
+            phase(rising, threshold, rising=True, before=held_up, delay=delay, output="low"),
         )
     else:
+        free = (
+            phase(falling, threshold, rising=False, before=rising, jump=up, delay=delay, output="high"),
+            phase(rising, threshold, rising=True, before=falling, jump=down, delay=delay, output="low"),
+        )
+        top = np.minimum(free[0].gain * after(free[1], threshold, delay) + free[0].jump, over)
+        bottom = np.maximum(free[1].gain * after(free[0], threshold, delay) + free[1].jump, under)
         phases = (
-            _phase(
-                falling, threshold, False, "high", delay=p["delay"], start=np.minimum(threshold + kick, over)
-            ),
-            _phase(
-                rising, threshold, True, "low", delay=p["delay"], start=np.maximum(threshold - kick, under)
-            ),
+            replace(free[0], start=top, gain=1.0, jump=0.0),
+            replace(free[1], start=bottom, gain=1.0, jump=0.0),
         )
     return Cycle(
         phases=phases,

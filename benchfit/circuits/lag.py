@@ -5,17 +5,33 @@ Shared by the circuits' files. Every function works on arrays of one broadcast s
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 
-from benchfit.circuits.model import Array, Part, Parts, Phase
+from benchfit.circuits.model import Array, Output, Part, Parts, Phase
 
 
 @dataclass(frozen=True, eq=False)
 class Lag:
-    """Thevenin picture of a node: total conductance (S), total short-circuit current (A), capacitance (F),
-    ESR (Ω)."""
+    """Thevenin picture of a node.
+
+    Attributes
+    ----------
+    conductance : Array
+        Total conductance (S).
+    current : Array
+        Total short-circuit current (A).
+    capacitance : Array
+        Total capacitance with the node at 0 V (F).
+    esr : Array
+        The leg's share of the node's current times its series resistance: what the node is off the plates by,
+        per ampere (Ω).
+    slope : Array
+        Relative change of the whole capacitance per volt of the node (1/V).
+    """
 
     conductance: Array
     current: Array
@@ -30,7 +46,7 @@ class Lag:
 
     @property
     def curvature(self) -> Array:
-        """κ = 1/τ (1/s), τ = (1/G + ESR)·C."""
+        """κ = 1/τ (1/s), τ = (1/G + ESR)·C where nothing but the capacitor sits on the node."""
         return self.conductance / ((1 + self.conductance * self.esr) * self.capacitance)
 
     @property
@@ -39,21 +55,33 @@ class Lag:
         return self.current / ((1 + self.conductance * self.esr) * self.capacitance)
 
 
-def lag(p: Parts, *sources: tuple[Array, Array], node: str = "capacitor", capacitor: str = "C") -> Lag:
+def lag(
+    p: Parts,
+    *sources: tuple[Array, Array],
+    node: str = "capacitor",
+    capacitor: str = "C",
+    foot: Array | float = 0.0,
+) -> Lag:
     """The lag of a node fed by ``sources`` (conductance S, voltage V), with every parasitic that can load it.
 
     R_leak to ground, R_leak_supply to the supply, I_leak out of the node, C_stray and the probe to ground
-    add to what the circuit itself connects (Thevenin; Millman's theorem).
+    add to what the circuit itself connects (Thevenin; Millman's theorem). ``foot`` is the voltage of the
+    capacitor's other plate: C_slope goes by the voltage across it, C·(1 + C_slope·(v − foot)).
+
+    Stray and probe capacitance sit beside the leg with the ESR: once they have settled (ESR·C_stray, short
+    against τ) the leg takes C/(C + C_stray + C_probe) of the node's current, and so much of ESR counts.
     """
     supply = p.get("supply", p.get("V_high", np.float64(0.0)))
-    to_supply = 1 / p["R_leak_supply"]
+    to_supply = 1 / p.get("R_leak_supply", np.float64(np.inf))
     conductance = 1 / p["R_leak"] + to_supply + p.get(f"G_probe:{node}", np.float64(0.0))
     current = to_supply * supply - p["I_leak"]
     for g, volts in sources:
         conductance = conductance + g
         current = current + g * volts
-    capacitance = p[capacitor] + p["C_stray"] + p.get(f"C_probe:{node}", np.float64(0.0))
-    return Lag(conductance, current, capacitance, p["ESR"], p["C_slope"])
+    leg = p[capacitor] * (1 - p["C_slope"] * foot)
+    capacitance = leg + p["C_stray"] + p.get(f"C_probe:{node}", np.float64(0.0))
+    slope = p["C_slope"] * p[capacitor] / capacitance
+    return Lag(conductance, current, capacitance, p["ESR"] * leg / capacitance, slope)
 
 
 def phase(
@@ -66,18 +94,18 @@ def phase(
     delay: Array | float = 0.0,
     start: Array | None = None,
     jump: Array | float = 0.0,
-    output: str = "",
+    output: Output = "",
 ) -> Phase:
     """A phase in which ``now`` drives the node; ``before`` drove it until then.
 
     With a series resistance in the capacitor's leg the node steps as the current changes: the capacitor's own
-    voltage v_C = v·(1 + ESR·G) − ESR·I is what stays.
+    voltage v_C = v·(1 + ESR·G) − ESR·I is what stays, but for a ``jump`` (V) of its other plate.
     """
     gain: Array | float = 1.0
     if before is not None:
         below = 1 + now.conductance * now.esr
         gain = (1 + before.conductance * now.esr) / below
-        jump = jump + now.esr * (now.current - before.current) / below
+        jump = (jump + now.esr * (now.current - before.current)) / below
     return Phase(
         node=node,
         rising=rising,
@@ -89,7 +117,7 @@ def phase(
         gain=gain,
         jump=jump,
         slope=now.slope,
-        output=output,  # type: ignore[arg-type]
+        output=output,
     )
 
 
@@ -108,70 +136,63 @@ def slewing(swing: Array, slew: Array, curvature: Array) -> Array:
     return np.where(small, duration * (0.5 + y / 24), exact)
 
 
-def _scaled(names: tuple[str, ...], low: float, high: float):  # type: ignore[no-untyped-def]
-    def reach(p: Parts) -> tuple[float, float]:
-        scale = float(next(p[name] for name in names if name in p))
-        return low * scale, high * scale
+Reach = Callable[[Parts], tuple[float, float]]
 
-    return reach
+
+def _scaled(scale: Callable[[Parts], float], low: float, high: float) -> Reach:
+    return lambda p: (low * scale(p), high * scale(p))
+
+
+def _first(names: tuple[str, ...]) -> Callable[[Parts], float]:
+    return lambda p: float(next(p[name] for name in names if name in p))
+
+
+def _volts(p: Parts) -> float:
+    return float(max(abs(v) for n, v in p.items() if n in _VOLTAGES and np.isfinite(v)))
 
 
 def parasitics(
-    *resistor: str, leaks: bool = True, delay: bool = True, slew: bool = False
+    *resistor: str,
+    scale: Callable[[Parts], float] | None = None,
+    leaks: bool = True,
+    supply: bool = True,
+    delay: bool = True,
+    slew: bool = False,
 ) -> tuple[Part, ...]:
     """The parasitics that can act in a circuit, absent unless the sheet says otherwise.
 
-    ``resistor`` names the part (the first that the build has) that sets the scale on which they matter.
+    ``resistor`` names the part (the first that the build has) that sets the scale on which they matter;
+    ``scale`` gives it (Ω) where no part does. ``supply``: there is one to leak to.
     """
     found: list[Part] = []
 
-    def add(name: str, unit: str, says: str, coordinate: str, reach) -> None:  # type: ignore[no-untyped-def]
-        found.append(Part(name, unit, says, coordinate, "absent", None, "0 %", "parasitic", True, reach))  # type: ignore[arg-type]
+    def add(
+        name: str, unit: str, says: str, coordinate: Literal["log", "linear", "inverse"], reach: Reach
+    ) -> None:
+        found.append(Part(name, unit, says, coordinate, "absent", None, "0 %", "parasitic", True, reach))
 
     if leaks:
-
-        def volts(p: Parts) -> float:
-            return float(max(abs(v) for n, v in p.items() if n in _VOLTAGES and np.isfinite(v)))
+        ohms = scale if scale is not None else _first(resistor)
 
         def current(p: Parts) -> tuple[float, float]:
-            least, most = _scaled(resistor, 1.0, 1.0)(p)
-            return 0.003 * volts(p) / least, 0.7 * volts(p) / most
+            return 0.003 * _volts(p) / ohms(p), 0.7 * _volts(p) / ohms(p)
 
         def bend(p: Parts) -> tuple[float, float]:
-            return 0.02 / volts(p), 0.9 / volts(p)
+            return 0.02 / _volts(p), 0.9 / _volts(p)
 
-        add("R_leak", "Ω", "leak from the timing node to ground", "inverse", _scaled(resistor, 0.3, 300.0))
-        add(
-            "R_leak_supply",
-            "Ω",
-            "leak from the timing node to the supply",
-            "inverse",
-            _scaled(resistor, 0.3, 300.0),
-        )
-        add(
-            "I_leak",
-            "A",
-            "constant current out of the timing node: input bias, device leakage",
-            "linear",
-            current,
-        )
-        add(
-            "C_stray",
-            "F",
-            "stray capacitance of the timing node to ground",
-            "linear",
-            lambda p: (2e-12, 500e-12),
-        )
-        add("ESR", "Ω", "series resistance in the capacitor's leg", "linear", _scaled(resistor, 0.002, 1.0))
+        add("R_leak", "Ω", "leak from the timing node to ground", "inverse", _scaled(ohms, 0.3, 300.0))
+        if supply:
+            says = "leak from the timing node to the supply"
+            add("R_leak_supply", "Ω", says, "inverse", _scaled(ohms, 0.3, 300.0))
+        says = "constant current out of the timing node: input bias, device leakage"
+        add("I_leak", "A", says, "linear", current)
+        says = "stray capacitance of the timing node to ground"
+        add("C_stray", "F", says, "linear", lambda p: (2e-12, 500e-12))
+        add("ESR", "Ω", "series resistance in the capacitor's leg", "linear", _scaled(ohms, 0.002, 1.0))
         add("C_slope", "1/V", "relative change of the capacitance per volt", "linear", bend)
     if delay:
-        add(
-            "delay",
-            "s",
-            "dead time between crossing and switching",
-            "linear",
-            _scaled(("period",), 0.001, 0.3),
-        )
+        period = _scaled(_first(("period",)), 0.001, 0.3)
+        add("delay", "s", "dead time between crossing and switching", "linear", period)
     if slew:
 
         def slope(p: Parts) -> tuple[float, float]:
@@ -183,13 +204,3 @@ def parasitics(
 
 
 _VOLTAGES = ("supply", "V_high", "V_low", "V_upper")
-ABSENT = {
-    "R_leak": np.inf,
-    "R_leak_supply": np.inf,
-    "I_leak": 0.0,
-    "C_stray": 0.0,
-    "ESR": 0.0,
-    "C_slope": 0.0,
-    "delay": 0.0,
-    "slew": np.inf,
-}

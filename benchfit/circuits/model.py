@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
 Parts = Mapping[str, Array]
+Output = Literal["high", "low", ""]
 
 
 @dataclass(frozen=True)
@@ -102,7 +103,7 @@ class Phase:
     gain: Array | float = 1.0
     jump: Array | float = 0.0
     slope: Array | float = 0.0
-    output: Literal["high", "low", ""] = ""
+    output: Output = ""
 
 
 @dataclass(frozen=True, eq=False)
@@ -196,6 +197,8 @@ class Circuit:
         each node that a probe can load (left out where there is none).
     swaps : tuple of pairs
         Parts that are easily exchanged for each other when a board is stuffed.
+    families : tuple of pairs
+        Parts that one cause moves together: both thresholds of a chip of another make.
     equations : tuple of str
         For ``benchfit circuits NAME``.
     drawing : str
@@ -218,6 +221,7 @@ class Circuit:
     nodes: tuple[Node, ...]
     cycle: Callable[[Parts], Cycle]
     swaps: tuple[tuple[str, str], ...] = ()
+    families: tuple[tuple[str, str], ...] = ()
     equations: tuple[str, ...] = ()
     drawing: str = ""
     alternatives: tuple[tuple[tuple[str, ...], ...], ...] = ()

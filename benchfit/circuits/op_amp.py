@@ -11,27 +11,43 @@ from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Features, 
 _NONE = np.float64(np.inf)
 
 
-def _threshold(p: Parts, output: Array, r_top: Array) -> Array:
-    """Voltage at the + input while the output is at ``output`` (Millman's theorem over three arms)."""
+def _divider(p: Parts) -> tuple[Array, Array]:
+    """(a, b): the + input is at a + b·output (V; Millman's theorem over three arms)."""
     bias = 1 / p.get("R_bias", _NONE)
-    top, bottom = 1 / r_top, 1 / p["R_bottom"]
-    current = output * top + p["V_reference"] * bottom + p.get("supply", np.float64(0.0)) * bias
-    return current / (top + bottom + bias)
+    top, bottom = 1 / p["R_top"], 1 / p["R_bottom"]
+    total = top + bottom + bias
+    return (p["V_reference"] * bottom + p.get("supply", np.float64(0.0)) * bias) / total, top / total
+
+
+def _high(p: Parts, r: Array, drop: Array) -> tuple[tuple[Array, Array], Array]:
+    """What drives the timing node while the output is high (conductance S, voltage V), and the upper
+    threshold.
+
+    An open-collector output is at α + γ·v, for its pull-up feeds the timing resistor and the divider at once
+    (Kirchhoff at the output's node); the node meets the + input where v = a + b·(α + γ·v).
+    """
+    a, b = _divider(p)
+    if "R_pull" not in p:
+        return (1 / r, p["V_high"] - drop), a + b * p["V_high"]
+    pull, timing, top = 1 / p["R_pull"], 1 / r, 1 / p["R_top"]
+    whole = pull + timing + top * (1 - b)
+    alpha = (p["V_high"] * pull + drop * timing + a * top) / whole
+    gamma = timing / whole
+    return (timing * (1 - gamma), (alpha - drop) / (1 - gamma)), (a + b * alpha) / (1 - b * gamma)
 
 
 def _cycle(p: Parts) -> Cycle:
     high, low = p["V_high"], p["V_low"]
-    pull = p.get("R_pull", np.float64(0.0))
     if "R" in p:
         r_charge = r_discharge = p["R"]
-        to, from_ = high, low
+        drop = 0.0 * p["R"]
     else:
-        r_charge, r_discharge = p["R_charge"], p["R_discharge"]
-        to, from_ = high - p["V_diode"], low + p["V_diode"]
-    upper = _threshold(p, high, p["R_top"] + pull)
-    lower = _threshold(p, low, p["R_top"])
-    up = lag(p, (1 / (r_charge + pull), to))
-    down = lag(p, (1 / r_discharge, from_))
+        r_charge, r_discharge, drop = p["R_charge"], p["R_discharge"], p["V_diode"]
+    drive, upper = _high(p, r_charge, drop)
+    a, b = _divider(p)
+    lower = a + b * low
+    up = lag(p, drive)
+    down = lag(p, (1 / r_discharge, low + drop))
     swing = high - low
     # The drive of a phase is late by the slewing of the edge that begins it: the phase before runs on
     # meanwhile.
@@ -132,6 +148,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the output"),
     ),
     cycle=_cycle,
+    families=(("V_high", "V_low"),),
     likeness=_likeness,
     swaps=(("R_top", "R_bottom"), ("R_charge", "R_discharge"), ("R", "R_top"), ("R", "R_bottom")),
     alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),

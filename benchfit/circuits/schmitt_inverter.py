@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import numpy as np
-
 from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import close, over, ratio, yes
 from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, Part, Parts
@@ -12,7 +10,7 @@ from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, P
 def _cycle(p: Parts) -> Cycle:
     if "R" in p:
         r_charge = r_discharge = p["R"]
-        drop = np.float64(0.0)
+        drop = 0.0 * p["R"]
     else:
         r_charge, r_discharge, drop = p["R_charge"], p["R_discharge"], p["V_diode"]
     up = lag(p, (1 / r_charge, p["V_high"] - drop))
@@ -99,6 +97,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the gate's output"),
     ),
     cycle=_cycle,
+    families=(("V_upper", "V_lower"), ("V_high", "V_low")),
     likeness=_likeness,
     swaps=(("R_charge", "R_discharge"),),
     alternatives=((("R",), ("R_charge", "R_discharge", "V_diode")),),

@@ -51,10 +51,10 @@ def time_to(phase: Phase, start: Array, end: Array) -> Array:
 def after(phase: Phase, start: Array, time: Array | float) -> Array:
     """Voltage (V) that a phase reaches ``time`` (s) after it was at ``start`` (local τ at the start where C
     bends)."""
-    stiff = 1 + phase.slope * start
+    stiff: Array = 1 + phase.slope * start
     y = phase.curvature / stiff * time
     small = np.abs(y) < 1e-8
-    shape = np.where(small, 1 - y / 2, -np.expm1(-y) / np.where(small, 1.0, y))
+    shape: Array = np.where(small, 1 - y / 2, -np.expm1(-y) / np.where(small, 1.0, y))
     return start + (phase.drive - phase.curvature * start) / stiff * time * shape
 
 

@@ -119,6 +119,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the output pin"),
     ),
     cycle=_cycle,
+    families=(("k_upper", "k_lower"),),
     likeness=_likeness,
     swaps=(("RA", "RB"),),
     equations=(

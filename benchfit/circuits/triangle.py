@@ -84,6 +84,7 @@ CIRCUIT = Circuit(
         Node("output", "square", "the comparator's output"),
     ),
     cycle=_cycle,
+    families=(("V_high", "V_low"),),
     likeness=_likeness,
     swaps=(("R_in", "R_feedback"), ("R", "R_in")),
     equations=(

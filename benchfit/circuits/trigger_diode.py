@@ -51,6 +51,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the diode's terminal, where the capacitor sits", True),),
     cycle=_cycle,
+    families=(("V_breakover", "V_breakback"),),
     likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_breakover",

@@ -3,71 +3,114 @@ capacitor."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 
 from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import close, yes
-from benchfit.circuits.model import Array, Circuit, Condition, Cycle, Features, Node, Part, Parts, Phase
+from benchfit.circuits.model import (
+    Array,
+    Circuit,
+    Condition,
+    Cycle,
+    Features,
+    Node,
+    Output,
+    Part,
+    Parts,
+    Phase,
+)
+from benchfit.circuits.solve import after, time_to
 
 
-def _kick(p: Parts, time: Array, load: str, capacitor: str) -> Array:
-    """How far the collector falls when its transistor turns on, after it had ``time`` (s) to recover."""
+@dataclass(frozen=True, eq=False)
+class _Half:
+    """The phase in which a base is off; how long it lasts (s), and the voltage on the capacitor's plates, as
+    seen from the base, when its transistor turns on (V)."""
+
+    phase: Phase
+    margin: Array
+    time: Array
+    plates: Array
+
+
+def _recovered(p: Parts, half: _Half, load: str, capacitor: str) -> Array:
+    """How far the collector has recovered by the end of its half-cycle, and so falls when it turns on (V).
+
+    Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there
+    from where that base began to conduct: by so much the collector is up at once.
+    """
     full = p["supply"] - p["V_CE"]
     if load not in p:
-        return full + 0 * time
-    return full * -np.expm1(-time / (p[load] * p[capacitor]))
+        return full + 0 * half.time
+    left = full - np.maximum(p["V_BE"] - half.plates, 0.0)
+    return full - left * np.exp(-half.time / ((p[load] + p["ESR"]) * p[capacitor]))
 
 
-def _half(
-    p: Parts, kick: Array, base: str, resistor: str, capacitor: str, output: str
-) -> tuple[Phase, Array]:
-    """The phase in which ``base`` is off, and its margin (V): the base starts below V_BE by the kick.
+def _half(p: Parts, kick: Array, base: str, resistor: str, capacitor: str, output: Output) -> _Half:
+    """The half-cycle in which ``base`` is off: it starts below V_BE by the kick of the other collector.
 
-    Capacitance from the base to ground divides the kick by C/(C + C_stray + C_probe).
+    Capacitance from the base to ground divides the kick by C/(C + C_stray + C_probe); a series resistance of
+    the capacitor drops what the base resistor drives through it.
     """
-    now = lag(p, (1 / p[resistor], p["supply"]), node=base, capacitor=capacitor)
-    start = p["V_BE"] - kick * p[capacitor] / now.capacitance
-    start = np.maximum(start, -p["V_breakdown"])
-    return (
-        phase(now, p["V_on"], rising=True, node=base, start=start, delay=p["delay"], output=output),
-        now.asymptote - p["V_on"],
-    )
+    now = lag(p, (1 / p[resistor], p["supply"]), node=base, capacitor=capacitor, foot=p["V_CE"])
+    aside = p["C_stray"] + p.get(f"C_probe:{base}", np.float64(0.0))
+    bent = p[capacitor] * (1 + p["C_slope"] * (p["V_BE"] - p["V_CE"] - kick))
+    plates = np.maximum(p["V_BE"] - kick * bent / (bent + aside), -p["V_breakdown"])
+    below = 1 + now.conductance * now.esr
+    start = (plates + now.esr * now.current) / below
+    one = phase(now, p["V_on"], rising=True, node=base, start=start, delay=p["delay"], output=output)
+    time = np.where(start < p["V_on"], time_to(one, start, p["V_on"]), 0.0) + p["delay"]
+    end = after(one, np.maximum(p["V_on"], start), p["delay"])
+    return _Half(one, now.asymptote - p["V_on"], time, end * below - now.esr * now.current)
 
 
-def _time(one: Phase) -> Array:
-    asymptote = one.drive / one.curvature
-    start = np.asarray(one.start)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        return np.log((asymptote - start) / (asymptote - one.threshold)) / one.curvature + one.delay
+def _round(p: Parts, kick: Array) -> tuple[_Half, _Half]:
+    """Both half-cycles, the first one begun by ``kick`` (V) at base 1."""
+    first = _half(p, kick, "base1", "R1", "C1", "high")
+    return first, _half(p, _recovered(p, first, "RC1", "C2"), "base2", "R2", "C2", "low")
+
+
+def _settled_kick(p: Parts, full: Array) -> Array:
+    """The kick at base 1 that a whole cycle reproduces: each depends on how long the other collector had.
+
+    A fixed point in one number, found by Aitken's extrapolation (Steffensen's method).
+    """
+    kick = full + 0.0 * p["V_BE"]
+    if "RC1" not in p and "RC2" not in p:
+        return kick
+    for _ in range(2):
+        once = _recovered(p, _round(p, kick)[1], "RC2", "C1")
+        twice = _recovered(p, _round(p, once)[1], "RC2", "C1")
+        bend = twice - 2 * once + kick
+        moves = np.abs(bend) > 1e-9 * full
+        jump = np.where(moves, (once - kick) ** 2 / np.where(moves, bend, 1.0), 0.0)
+        kick = np.where(moves, np.clip(kick - jump, 0.0, full), twice)
+    return kick
 
 
 def _cycle(p: Parts) -> Cycle:
     full = p["supply"] - p["V_CE"]
-    kick_1 = kick_2 = full
-    # Each half's kick depends on how long the other collector had to recover: a contraction, settled in a few
-    # turns.
-    for _ in range(6 if "RC1" in p or "RC2" in p else 1):
-        one, margin_1 = _half(p, kick_1, "base1", "R1", "C1", "high")
-        two, margin_2 = _half(p, kick_2, "base2", "R2", "C2", "low")
-        kick_1 = _kick(p, _time(two), "RC2", "C1")
-        kick_2 = _kick(p, _time(one), "RC1", "C2")
-    one, margin_1 = _half(p, kick_1, "base1", "R1", "C1", "high")
-    two, margin_2 = _half(p, kick_2, "base2", "R2", "C2", "low")
-    broke = p["V_BE"] - np.minimum(kick_1, kick_2) < -p["V_breakdown"]
+    kick_1 = _settled_kick(p, full)
+    first, second = _round(p, kick_1)
+    kick_2 = _recovered(p, first, "RC1", "C2")
+    one, two = first.phase, second.phase
+    broke = p["V_BE"] - np.maximum(kick_1, kick_2) < -p["V_breakdown"]
     short = (kick_1 < 0.97 * full) | (kick_2 < 0.97 * full)
     return Cycle(
         phases=(one, two),
         conditions=(
             Condition(
                 "stuck",
-                margin_1,
+                first.margin,
                 "base 1 never rises to where its transistor conducts",
                 "R1",
                 one.drive / one.curvature,
             ),
             Condition(
                 "stuck",
-                margin_2,
+                second.margin,
                 "base 2 never rises to where its transistor conducts",
                 "R2",
                 two.drive / two.curvature,

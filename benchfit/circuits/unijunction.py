@@ -64,6 +64,7 @@ CIRCUIT = Circuit(
     ),
     nodes=(Node("capacitor", "timing", "the emitter, where the capacitor sits", True),),
     cycle=_cycle,
+    families=(("eta", "V_valley"),),
     likeness=_likeness,
     equations=(
         "charge:    A = supply, τ = R·C, until V_peak = eta·supply + V_D",

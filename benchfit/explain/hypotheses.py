@@ -58,13 +58,14 @@ class Hypothesis:
 
     ``causes`` empty: nothing off. ``weight``: prior probability. ``shifts`` maps parameter index → new prior
     center.
-    ``freed``: parameters of its own.
+    ``freed``: parameters of its own. ``order``: how many independent causes it takes (a swap is one).
     """
 
     causes: tuple[str, ...]
     weight: float
     shifts: tuple[tuple[int, float], ...] = ()
     freed: tuple[Freed, ...] = ()
+    order: int = 1
 
 
 def _range(p: Parameter, part: Part, model: Model) -> tuple[float, float, float]:
@@ -150,8 +151,9 @@ def singles(model: Model) -> list[Hypothesis]:
     freed = freed_of(model)
     swaps = [s for s in model.circuit.swaps if _worth_swapping(model, *s)]
     weights = {name: odds.weight(name, model.parameters[model.index[name]].part.kind) for name in freed}  # type: ignore[union-attr]
-    total = sum(weights.values()) + odds.SWAP * len(swaps)
-    found = [Hypothesis((), odds.HEALTHY)]
+    families = [f for f in model.circuit.families if f[0] in freed and f[1] in freed]
+    total = sum(weights.values()) + odds.SWAP * len(swaps) + odds.FAMILY * len(families)
+    found = [Hypothesis((), odds.HEALTHY, order=0)]
     for name, ways in freed.items():
         weight = odds.SINGLE * weights[name] / total
         slips = _slips(model, name, weight)
@@ -164,6 +166,9 @@ def singles(model: Model) -> list[Hypothesis]:
         found.append(
             Hypothesis((first, second), odds.SINGLE * odds.SWAP / total, ((i, q.center), (j, p.center)))
         )
+    for first, second in families:
+        both = (freed[first][0], freed[second][0])
+        found.append(Hypothesis((first, second), odds.SINGLE * odds.FAMILY / total, (), both))
     return found
 
 

@@ -40,6 +40,10 @@ BY_NAME = {
 
 SWAP = 1.0  # two stars: wiring slips dominate beginners' reports
 
+# One cause moves two: a chip of another make, an aged lamp (three stars for thresholds); the rails of an
+# output.
+FAMILY = 1.5
+
 # How a resistor, a capacitor or a current is off, if it is: shares of its weight.
 SLIP_DECADE = 0.25  # a wrong decade, up or down
 SLIP_NEIGHBOUR = 0.15  # the value beside it in the drawer

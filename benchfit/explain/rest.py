@@ -41,7 +41,7 @@ def weigh_rest(model: Model, constants: CycleConstants) -> list[Weighed]:
     rng = np.random.default_rng(7)
     noise = rng.standard_normal((DRAWS, len(model.parameters)))
     groups: dict[tuple[str, ...], list[tuple[float, Array, Array]]] = {}
-    for h in singles(model):
+    for h in (one for one in singles(model) if len(one.freed) < 2):
         states, logs = _draws(model, h, noise)
         logs = logs + _likelihood(model, states, seen)
         groups.setdefault(h.causes, []).append((h.weight, states, logs))
@@ -53,13 +53,17 @@ def weigh_rest(model: Model, constants: CycleConstants) -> list[Weighed]:
         total = float(logsumexp(logs)) if np.any(np.isfinite(logs)) else -np.inf
         if not np.isfinite(total):
             zero = np.zeros((len(model.parameters),) * 2)
-            found.append(Weighed(causes, prior, -np.inf, model.center, zero, model.center, np.inf))
+            found.append(
+                Weighed(causes, prior, -np.inf, model.center, zero, model.center, np.inf, 1 if causes else 0)
+            )
             continue
         p = np.exp(logs - total)
         mean = p @ states
         away = states - mean
         covariance = (away * p[:, None]).T @ away
-        found.append(Weighed(causes, prior, total, mean, covariance, states[np.argmax(p)], 0.0))
+        found.append(
+            Weighed(causes, prior, total, mean, covariance, states[np.argmax(p)], 0.0, 1 if causes else 0)
+        )
     weights = np.array([w.log_evidence + math.log(w.prior) for w in found])
     if not np.any(np.isfinite(weights)):
         return found

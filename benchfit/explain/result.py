@@ -122,10 +122,8 @@ class Explanation:
     """The whole answer for one capture (or one joint set): section 5 of the contract, as data.
 
     ``measured`` maps the contract's names to quantities (None where unknown). ``model`` holds the fitted
-    circuit's
-    curve of one cycle for drawing: {node: (times from the cycle's start, volts)}; ``nominal_model`` is that
-    of the
-    sheet's nominal parts.
+    circuit's curve of one cycle for drawing, {node: (times from the cycle's start, volts)}, and under
+    "nominal:NODE" that of the sheet's nominal parts.
     """
 
     captures: tuple[CaptureFacts, ...]
@@ -148,4 +146,3 @@ class Explanation:
     record_notes: Mapping[str, str] = field(default_factory=dict)
     finding: str = ""
     model: Mapping[str, tuple[tuple[float, ...], tuple[float, ...]]] = field(default_factory=dict)
-    nominal_model: Mapping[str, tuple[tuple[float, ...], tuple[float, ...]]] = field(default_factory=dict)

@@ -93,9 +93,7 @@ def _one(model: Model, name: str, w: Weighed) -> str:
 def lookalikes(w: Weighed, weighed: Sequence[Weighed]) -> list[Weighed]:
     """Hypotheses of as few causes that the data do not tell from this one."""
     return [
-        o
-        for o in weighed
-        if o is not w and len(o.causes) <= len(w.causes) and o.log_evidence > w.log_evidence - ALIKE
+        o for o in weighed if o is not w and o.order <= w.order and o.log_evidence > w.log_evidence - ALIKE
     ]
 
 
@@ -114,7 +112,7 @@ def settled(weighed: Sequence[Weighed]) -> bool:
         *(
             o
             for o in weighed[1:]
-            if o.log_evidence > first.log_evidence - math.log(1e4) and len(o.causes) <= len(first.causes)
+            if o.log_evidence > first.log_evidence - math.log(1e4) and o.order <= first.order
         ),
     ]
     logs = np.array([o.log_evidence for o in group])

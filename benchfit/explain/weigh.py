@@ -37,6 +37,8 @@ class Weighed:
         Best state.
     misfit : float
         Squared whitened residuals and pulls of the priors at the best state.
+    order : int
+        How many independent causes it takes.
     probability : float
         Posterior probability.
     """
@@ -48,6 +50,7 @@ class Weighed:
     covariance: Array
     mode: Array
     misfit: float
+    order: int = 1
     probability: float = 0.0
 
 
@@ -86,8 +89,10 @@ def weigh(model: Model) -> list[Weighed]:
     white = whitener(model.covariance)
     hypotheses = singles(model)
     fixed = [h for h in hypotheses if not h.freed]
-    free = [h for h in hypotheses if h.freed]
+    free = [h for h in hypotheses if len(h.freed) == 1]
+    families = [h for h in hypotheses if len(h.freed) == 2]
     found = _weigh_fixed(model, fixed, white) + _weigh_free(model, free, white)
+    found += _weigh_families(model, families, white)
     merged = _merge(found)
     if not _explains(model, merged):
         merged = _merge(found + _weigh_pairs(model, merged, white))
@@ -111,6 +116,7 @@ def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -
             done.covariance[r],
             done.state[r],
             float(done.cost[r]),
+            h.order,
         )
         for r, h in enumerate(hypotheses)
     ]
@@ -179,7 +185,14 @@ def _averaged(
     total = float(logsumexp(logs)) if logs.size and np.any(np.isfinite(logs)) else -np.inf
     if not np.isfinite(total):
         return Weighed(
-            h.causes, h.weight, -np.inf, best.state[row], best.covariance[row], best.state[row], np.inf
+            h.causes,
+            h.weight,
+            -np.inf,
+            best.state[row],
+            best.covariance[row],
+            best.state[row],
+            np.inf,
+            h.order,
         )
     p = np.exp(logs - total)
     live = p > 1e-9
@@ -190,7 +203,7 @@ def _averaged(
     covariance = np.tensordot(p, done.covariance[rows], 1) + (away * p[:, None]).T @ away
     top = rows[np.argmax(p)]
     return Weighed(
-        h.causes, h.weight, total, mean, covariance, done.state[top], float(np.min(done.cost[rows]))
+        h.causes, h.weight, total, mean, covariance, done.state[top], float(np.min(done.cost[rows])), h.order
     )
 
 
@@ -213,42 +226,56 @@ def _weigh_pairs(model: Model, found: Sequence[Weighed], white: Array) -> list[W
     """Two causes at once: the best single ones with every other that the data can tell from it."""
     freed = freed_of(model)
     names = list(freed)
-    leaders = [w.causes[0] for w in found if len(w.causes) == 1 and np.isfinite(w.log_evidence)][:6]
-    weights = {n: odds.weight(n, model.parameters[model.index[n]].part.kind) for n in names}  # type: ignore[union-attr]
+    alone = {w.causes[0]: w for w in found if len(w.causes) == 1 and np.isfinite(w.log_evidence)}
+    weights = {n: odds.weight(n, model.circuit.part(n).kind) for n in names}
     total = sum(weights[a] * weights[b] for i, a in enumerate(names) for b in names[i + 1 :])
+    known = {frozenset(f) for f in model.circuit.families}
     hypotheses: list[Hypothesis] = []
-    begins: list[tuple[float, float]] = []
-    groups: list[int] = []
-    modes = {w.causes[0]: w.mode for w in found if len(w.causes) == 1}
-    done: set[frozenset[str]] = set()
-    for first in leaders:
+    begins: list[list[tuple[float, float]]] = []
+    for first in list(alone)[:6]:
         for second in names:
-            if first == second or frozenset((first, second)) in done:
+            pair = frozenset((first, second))
+            if first == second or pair in known:
                 continue
-            done.add(frozenset((first, second)))
+            known.add(pair)
             prior = odds.PAIR * weights[first] * weights[second] / total
             for a in freed[first]:
+                at = _gauged(a, float(alone[first].mode[a.index]))
                 for b in freed[second]:
-                    group = len(done)
-                    at = _gauged(a, float(modes[first][a.index]))
-                    for begin in np.linspace(b.low, b.high, 7):
-                        for other in (at, 0.5 * (a.low + a.high)):
-                            hypotheses.append(Hypothesis((first, second), prior, (), (a, b)))
-                            begins.append((other, float(begin)))
-                            groups.append(group)
+                    hypotheses.append(Hypothesis((first, second), prior, (), (a, b), 2))
+                    along = np.linspace(b.low, b.high, 7)
+                    begins.append([(x, float(y)) for y in along for x in (at, 0.5 * (a.low + a.high))])
+    return _weigh_double(model, hypotheses, begins, white)
+
+
+def _weigh_families(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
+    """Two parts that one cause moves together."""
+    begins = []
+    for h in hypotheses:
+        a, b = h.freed
+        along = [np.linspace(w.low, w.high, 5) for w in (a, b)]
+        begins.append([(float(x), float(y)) for x in along[0] for y in along[1]])
+    return _weigh_double(model, hypotheses, begins, white)
+
+
+def _weigh_double(
+    model: Model,
+    hypotheses: Sequence[Hypothesis],
+    begins: Sequence[Sequence[tuple[float, float]]],
+    white: Array,
+) -> list[Weighed]:
+    """Hypotheses that free two parts: the best of many starts, weighed by Laplace's method."""
     if not hypotheses:
         return []
-    batch = replace(_batch(model, hypotheses, 2), t=np.array(begins))
+    rows = np.repeat(np.arange(len(hypotheses)), [len(b) for b in begins])
+    starts = np.array([pair for b in begins for pair in b])
+    batch = replace(_batch(model, hypotheses, 2).take(rows), t=starts)
     rough = relax(model, batch, 3, white)
     keep = np.array(
-        [
-            mine[np.argmin(rough.cost[mine])]
-            for g in sorted(set(groups))
-            for mine in [np.flatnonzero(np.array(groups) == g)]
-        ]
+        [(mine := np.flatnonzero(rows == g))[np.argmin(rough.cost[mine])] for g in range(len(hypotheses))]
     )
     fine = relax(model, replace(batch.take(keep), t=rough.t[keep]), 8, white)
-    return [_pair(hypotheses[row], fine, r) for r, row in enumerate(keep)]
+    return [_pair(h, fine, r) for r, h in enumerate(hypotheses)]
 
 
 def _gauged(way: Freed, x: float) -> float:
@@ -272,10 +299,19 @@ def _pair(h: Hypothesis, fine: Relaxed, r: int) -> Weighed:
         u = fine.own_u[r, k]
         volume *= min(np.sqrt(2 * np.pi) * u, width) if np.isfinite(u) else width
     if density <= 0 or not np.isfinite(fine.cost[r]):
-        return Weighed(h.causes, h.weight, -np.inf, fine.state[r], fine.covariance[r], fine.state[r], np.inf)
+        return Weighed(
+            h.causes, h.weight, -np.inf, fine.state[r], fine.covariance[r], fine.state[r], np.inf, h.order
+        )
     evidence = float(fine.log_weight[r] + np.log(density * volume))
     return Weighed(
-        h.causes, h.weight, evidence, fine.state[r], fine.covariance[r], fine.state[r], float(fine.cost[r])
+        h.causes,
+        h.weight,
+        evidence,
+        fine.state[r],
+        fine.covariance[r],
+        fine.state[r],
+        float(fine.cost[r]),
+        h.order,
     )
 
 
@@ -301,7 +337,14 @@ def _merge(found: Sequence[Weighed]) -> list[Weighed]:
                 covariance += q * (v.covariance + np.outer(v.mean - mean, v.mean - mean))
         merged.append(
             Weighed(
-                best.causes, prior, total - float(np.log(prior)), mean, covariance, best.mode, best.misfit
+                best.causes,
+                prior,
+                total - float(np.log(prior)),
+                mean,
+                covariance,
+                best.mode,
+                best.misfit,
+                best.order,
             )
         )
     logs = np.array([w.log_evidence + np.log(w.prior) for w in merged])
