@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 import difflib
-import re
 import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Final, Literal, NoReturn
 
-from benchfit.errors import SheetError
+from benchfit.errors import QuantityError, SheetError
 from benchfit.instrument.block import ENCODINGS
+from benchfit.quantity import parse
 
 FIELDS: Final = (
     "points", "x_increment", "x_origin", "x_reference", "y_increment", "y_origin", "y_reference",
@@ -108,8 +108,6 @@ _TOP: Final = ("name", "write_termination", "read_termination", "timeout", "setu
 _SETUP: Final = ("once", "each", "wait", "identify", "errors")
 _READ: Final = ("before", "preamble", "fields", "queries", "data", "encoding", "byte_order", "y_origin_unit")
 _SERIAL: Final = ("baud_rate", "data_bits", "parity", "stop_bits")
-_DURATION: Final = re.compile(r"\s*(\d+(?:\.\d*)?|\.\d+)\s*(us|µs|μs|ms|s|min)?\s*")
-_SECONDS: Final = {None: 1.0, "us": 1e-6, "µs": 1e-6, "μs": 1e-6, "ms": 1e-3, "s": 1.0, "min": 60.0}
 
 
 class _Reader:
@@ -184,14 +182,14 @@ class _Reader:
         return dict(table)
 
     def _timeout(self, document: Mapping[str, object]) -> float:
-        value = document.get("timeout", 5.0)
-        match = _DURATION.fullmatch(value) if isinstance(value, str) else None
-        if match:
-            value = float(match[1]) * _SECONDS[match[2]]
-        if isinstance(value, bool) or not isinstance(value, int | float) or not 0 < value < float("inf"):
-            found = document["timeout"]
-            self._refuse("timeout", f'is {found!r}; give a time above 0 such as "5 s" or "500 ms"')
-        return float(value)
+        value = document.get("timeout", "5 s")
+        try:
+            seconds = parse(value, "s").nominal
+        except QuantityError:
+            seconds = 0.0
+        if not 0 < seconds < float("inf"):
+            self._refuse("timeout", f'is {value!r}; give a time above 0 such as "5 s" or "500 ms"')
+        return seconds
 
     def _line_end(self, document: Mapping[str, object], key: str) -> str:
         value = self._text(document, key, "", "\n")

@@ -91,6 +91,15 @@ def no_library(library: str, error: Exception) -> InstrumentError:
     return InstrumentError(says, resource=library, command="", kind="no-library")
 
 
+def bad_name(resource: str) -> InstrumentError:
+    """Not a VISA resource string."""
+    says = (
+        "not a VISA resource string; one looks like TCPIP::192.0.2.7::5025::SOCKET, TCPIP::192.0.2.7::INSTR,"
+        " USB0::0x1234::0x5678::SERIAL::INSTR or ASRL3::INSTR"
+    )
+    return fault("resource-name", resource, "", says)
+
+
 def cannot_open(resource: str, error: Exception) -> InstrumentError:
     """What a failed open means; backends raise VISA errors, ValueError, OSError, bare Exception for it."""
     text = _first_line(error)
@@ -99,12 +108,8 @@ def cannot_open(resource: str, error: Exception) -> InstrumentError:
         name = f" ({package[1]})" if package else ""
         says = f"this interface needs a driver that is not installed{name}: pip install 'benchfit[wires]'"
         return fault("no-driver", resource, "", says)
-    if "INV_RSRC_NAME" in text or "RSRC_NAME" in text:
-        says = (
-            "not a VISA resource string; one looks like TCPIP::192.0.2.7::5025::SOCKET,"
-            " TCPIP::192.0.2.7::INSTR, USB0::0x1234::0x5678::SERIAL::INSTR or ASRL3::INSTR"
-        )
-        return fault("resource-name", resource, "", says)
+    if "RSRC_NAME" in text:
+        return bad_name(resource)
     if isinstance(error, ConnectionRefusedError):
         return translate(error, resource, "")
     if isinstance(error, AttributeError | KeyError | NotImplementedError):

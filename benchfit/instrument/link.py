@@ -15,11 +15,12 @@ from benchfit.instrument.wire import Wire
 TEXT_LIMIT: Final = 1 << 16
 LIST_LIMIT: Final = 1 << 28
 # pyvisa-py looks at its own clock only while nothing arrives: an answer that trickles in would hold a long
-# read for ever. Short reads, each with a short time-out, leave the clock to us.
+# read for ever. Small reads, each with a short time-out, leave the clock to us; they grow while data flow.
 PART: Final = 4096
-FIRST_PART: Final = 64
-FIRST_SLICE: Final = 0.05
-NEXT_SLICE: Final = 0.004
+LARGEST_PART: Final = 1 << 16
+FIRST_PART: Final = 128
+FIRST_SLICE: Final = 0.02
+NEXT_SLICE: Final = 0.002
 QUIET: Final = 0.15
 
 traffic = logging.getLogger("benchfit.instrument.traffic")
@@ -66,6 +67,7 @@ class Link:
         self.read_termination = read_termination
         self._wire = Wire(resource, library, timeout, read_termination[-1:], serial or {})
         self.is_socket = self._wire.is_socket
+        self._held = b""
 
     def close(self) -> None:
         """Close the connection; harmless when it is closed already or the peer is gone."""
@@ -78,9 +80,20 @@ class Link:
         self.close()
 
     def write(self, command: str) -> None:
-        """Send one command. Raises InstrumentError."""
+        """Send one command; on a socket it goes out together with the next question. Raises InstrumentError.
+
+        Two small segments in a row would cost a delayed acknowledgement (40 ms and more) each time, and
+        pyvisa-py cannot switch the socket's waiting off.
+        """
         traffic.debug("%s <- %s", self.resource, command)
-        self._wire.write((command + self.write_termination).encode("ascii"), command)
+        self._held += (command + self.write_termination).encode("ascii")
+        if not self.is_socket:
+            self._send_held(command)
+
+    def _send_held(self, command: str) -> None:
+        held, self._held = self._held, b""
+        if held:
+            self._wire.write(held, command)
 
     def query(self, command: str, *, timeout: float | None = None, limit: int = TEXT_LIMIT) -> str:
         """The text that answers ``command``, without its line end.
@@ -89,6 +102,7 @@ class Link:
         connection, or bytes that are no text.
         """
         self.write(command)
+        self._send_held(command)
         raw = self._line(command, timeout or self.timeout, limit)
         try:
             text = raw.decode("ascii").strip("\r\n \t\0")
@@ -105,6 +119,7 @@ class Link:
         Raises InstrumentError: kinds "timeout", "short-block", "wrong-length", "unreadable", "disconnected".
         """
         self.write(command)
+        self._send_held(command)
         try:
             if self._wire.is_stream:
                 data = self._from_stream(command, expected_bytes, text)
@@ -116,15 +131,22 @@ class Link:
         traffic.debug("%s -> %d bytes of data", self.resource, len(data))
         return data
 
-    def drain(self, wait: float) -> bytes:
-        """Whatever arrives until nothing has come for ``wait`` (s), at most 64 KiB; for trying line ends."""
+    def ask_raw(self, command: str, wait: float) -> bytes:
+        """Whatever answers ``command`` until nothing more comes, at most 64 KiB; for trying line ends.
+
+        ``wait`` (s) is how long the first byte may take. Raises InstrumentError: the connection is gone.
+        """
+        self.write(command)
+        self._send_held(command)
         found = bytearray()
-        quiet_since = time.monotonic()
-        while time.monotonic() - quiet_since < wait and len(found) < TEXT_LIMIT:
-            data, _ = self._wire.some(PART, min(wait, QUIET), stop=False, command="")
+        begun = heard = time.monotonic()
+        while len(found) < TEXT_LIMIT and time.monotonic() - heard < (QUIET if found else wait):
+            data, _ = self._wire.some(PART, self._slice(wait, bool(found)), stop=False, command=command)
             if data:
                 found += data
-                quiet_since, wait = time.monotonic(), min(wait, QUIET)
+                heard = time.monotonic()
+            if heard - begun > self.timeout + wait:
+                break
         return bytes(found)
 
     # -- lines ----------------------------------------------------------------------------------------------
@@ -133,26 +155,23 @@ class Link:
         """Bytes up to the line end (``stop``) or to the message's end."""
         deadline = time.monotonic() + timeout
         found = bytearray()
+        heard = 0.0
         stop = stop and self._wire.is_stream and bool(self.read_termination)
         while True:
-            left = deadline - time.monotonic()
-            if left <= 0:
+            now = time.monotonic()
+            if now >= deadline:
                 raise faults.timed_out(self, command, timeout, bytes(found))
-            size = PART if found else FIRST_PART
-            data, ended = self._wire.some(size, self._slice(left, bool(found)), stop=stop, command=command)
-            found += data
+            size, wait = PART if found else FIRST_PART, self._slice(deadline - now, bool(found))
+            data, ended = self._wire.some(size, wait, stop=stop, command=command)
             if ended:
-                return bytes(found)
-            if self.is_socket and not stop and found and not data and self._is_quiet(command, found):
+                return bytes(found + data)
+            if data:
+                found += data
+                heard = time.monotonic()
+            elif found and not stop and self.is_socket and time.monotonic() - heard > QUIET:
                 return bytes(found)
             if len(found) > limit:
                 self._refuse("unreadable", command, f"answered more than {limit:,} bytes without a line end")
-
-    def _is_quiet(self, command: str, found: bytearray) -> bool:
-        """True when nothing follows for a while; what does follow is added to ``found``."""
-        data, _ = self._wire.some(PART, QUIET, stop=False, command=command)
-        found += data
-        return not data
 
     def _slice(self, left: float, begun: bool) -> float:
         """How long one read may wait (s): a little on a socket, else all the time that is left."""
@@ -161,9 +180,7 @@ class Link:
     # -- blocks ---------------------------------------------------------------------------------------------
 
     def _from_stream(self, command: str, expected: int | None, text: bool) -> bytes:
-        start = self._exactly(1, command)
-        while start.isspace() and len(start) < 8:
-            start = self._exactly(1, command)
+        start = self._exactly(1 if text else 2, command).lstrip()
         if text and start != b"#":
             return start + self._line(command, self.timeout, LIST_LIMIT)
         while missing := missing_header_bytes(start):
@@ -171,9 +188,10 @@ class Link:
         count = self._count(parse_header(start), expected, command)
         if count is None:
             return self._until_quiet(command)
-        data = self._exactly(count, command, of=count)
-        self._expect_line_end(command, count)
-        return data
+        # The line end comes off the wire with the data, or it would answer the next question.
+        found = self._exactly(count + len(self.read_termination), command, of=count)
+        self._expect_line_end(found[count:], command, count)
+        return found[:count]
 
     def _count(self, header: Header, expected: int | None, command: str) -> int | None:
         """How many bytes follow: from the header, else from the preamble; None where neither says."""
@@ -187,6 +205,7 @@ class Link:
     def _exactly(self, count: int, command: str, of: int = 0) -> bytes:
         """``count`` bytes, whatever values they have: a data byte may look like a line end."""
         found = bytearray()
+        part, due = PART, PART
         deadline = time.monotonic() + self.timeout
         while len(found) < count:
             left = deadline - time.monotonic()
@@ -194,25 +213,28 @@ class Link:
                 if of:
                     raise faults.short_block(self, command, len(found), of)
                 raise faults.timed_out(self, command, self.timeout, bytes(found))
-            size = min(PART, count - len(found))
+            size = min(part, count - len(found))
             try:
-                data, _ = self._wire.some(size, self._slice(left, bool(found)), stop=False, command=command)
+                data, _ = self._wire.some(
+                    size, self._slice(left, begun=bool(found or of)), stop=False, command=command
+                )
             except InstrumentError as error:
                 if of and error.facts.get("kind") == "disconnected":
                     raise faults.broken_off(self, command, len(found), of) from error
                 raise
-            before = len(found) // PART
             found += data
-            if len(found) // PART > before:
-                deadline = time.monotonic() + self.timeout
+            part = min(2 * part, LARGEST_PART) if len(data) == size else PART
+            if len(found) >= due:
+                due, deadline = len(found) + PART, time.monotonic() + self.timeout
         return bytes(found)
 
-    def _expect_line_end(self, command: str, count: int) -> None:
-        """Take the line end off the wire, or it would answer the next question."""
-        if not self.read_termination:
+    def _expect_line_end(self, rest: bytes, command: str, count: int) -> None:
+        """``rest`` came after the block's data: as long as a line end, which it or what follows must be."""
+        if rest == self.read_termination.encode():
             return
-        rest = self._line(command, self.timeout, TEXT_LIMIT)
-        if rest.strip(b"\r\n \0"):
+        if rest.strip(b"\r\n ") == b"" and not rest.endswith(self.read_termination[-1:].encode()):
+            rest += self._line(command, self.timeout, TEXT_LIMIT)
+        if rest.strip(b"\r\n "):
             says = f"sent {excerpt(rest)} after a block of {count:,} bytes where its line end was expected"
             self._refuse("wrong-length", command, says)
 
@@ -220,13 +242,16 @@ class Link:
         """An indefinite block on a stream: it has no other end than a line end that nothing follows."""
         found = bytearray()
         end = self.read_termination.encode()
-        deadline = time.monotonic() + self.timeout
+        due, heard = PART, time.monotonic()
+        deadline = heard + self.timeout
         while time.monotonic() < deadline:
-            data, _ = self._wire.some(PART, QUIET if found else FIRST_SLICE, stop=False, command=command)
+            data, _ = self._wire.some(PART, NEXT_SLICE, stop=False, command=command)
             if data:
                 found += data
-                deadline = time.monotonic() + self.timeout
-            elif found and found.endswith(end):
+                heard = time.monotonic()
+                if len(found) >= due:
+                    due, deadline = len(found) + PART, heard + self.timeout
+            elif found.endswith(end) and found and time.monotonic() - heard > QUIET:
                 return bytes(found.removesuffix(end))
             if len(found) > LIST_LIMIT:
                 self._refuse("unreadable", command, f"sent more than {LIST_LIMIT:,} bytes without an end")
@@ -246,7 +271,7 @@ class Link:
             return data.removesuffix(b"\n").removesuffix(b"\r")
         if len(data) < count:
             raise BlockError("short-block", f"announced {count:,} bytes and sent {len(data):,}")
-        if data[count:].strip(b"\r\n \0"):
+        if data[count:].strip(b"\r\n "):
             raise BlockError("wrong-length", f"announced {count:,} bytes and sent {len(data):,}")
         return data[:count]
 

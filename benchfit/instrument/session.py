@@ -21,7 +21,8 @@ from benchfit.instrument.waveform import read_channel, to_capture
 
 PAUSES: Final = (0.0, 0.5, 1.0, 2.0, 4.0, 8.0, 15.0, 30.0)
 QUEUE_LIMIT: Final = 32
-_QUEUE_ENTRY: Final = re.compile(r"\s*([+-]?\d+)\s*(?:,\s*(.*))?", re.DOTALL)
+# SCPI-1999 volume 2, SYSTem:ERRor: a number, a comma, a text; some instruments say "0" alone for no error.
+_QUEUE_ENTRY: Final = re.compile(r"([+-]?\d+)\s*,.*|[+-]?0+", re.DOTALL)
 
 
 @dataclass(frozen=True, eq=False)
@@ -297,7 +298,7 @@ class Session:
             if entry is None:
                 says = f"answered {excerpt(answer.encode())} where an entry of the error queue was expected"
                 raise faults.fault("unreadable", self.resource, query, says)
-            if int(entry[1]) == 0:
+            if int(entry[1] or 0) == 0:
                 break
             held.append(answer.strip())
         return held

@@ -14,7 +14,8 @@ from benchfit.instrument.faults import line_end_name
 from benchfit.instrument.link import Link
 from benchfit.instrument.session import Session
 
-USUAL_LINE_ENDS: Final = ("\n", "\r\n", "\r")
+# CR before CR+LF: an instrument that listens for CR answers to both.
+USUAL_LINE_ENDS: Final = ("\n", "\r", "\r\n")
 
 
 @dataclass(frozen=True, eq=False)
@@ -79,8 +80,7 @@ def _try_line_ends(resource: str, dialect: Dialect, library: str) -> Iterator[St
                 read_termination="",
                 serial=dialect.serial,
             ) as link:
-                link.write(question)
-                answer = link.drain(min(dialect.timeout, 2.0))
+                answer = link.ask_raw(question, min(dialect.timeout, 2.0))
         except InstrumentError as error:
             yield Step(doing, False, error.says, error)
             continue

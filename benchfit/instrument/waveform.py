@@ -119,35 +119,44 @@ def to_capture(
 def _channel(
     numbers: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, float], name: str
 ) -> Channel:
+    overloaded = None
+    if numbers.dtype.itemsize == 1:
+        # A converter of eight bits has few levels: each is converted once.
+        low = -128 if numbers.dtype.kind == "i" else 0
+        index = numbers.view(np.uint8) ^ np.uint8(-low)
+        seen = np.zeros(256, dtype=np.bool_)
+        seen[index] = True
+        levels = np.arange(low, low + 256, dtype=np.float64)
+        volts, step = _volts(levels, dialect, fields)[index], _smallest_difference(levels[seen], 0.0)
+    elif numbers.dtype.kind in "iu":
+        raw = numbers.astype(np.float64)
+        volts, step = (
+            _volts(raw, dialect, fields),
+            _smallest_difference(np.unique(numbers).astype(np.float64), 0.0),
+        )
+    else:
+        raw, overloaded = mark_overloads(numbers.astype(np.float64))
+        volts = _volts(raw, dialect, fields)
+        finite = raw[np.isfinite(raw)]
+        # Two floats that stand for one converter level differ by their own rounding alone.
+        eps = np.finfo(np.float32 if numbers.dtype.itemsize == 4 else np.float64).eps
+        rounding = 4.0 * float(eps) * float(np.max(np.abs(finite), initial=0.0))
+        step = _smallest_difference(np.unique(finite), rounding)
+    return Channel(name, "V", volts, step * abs(fields.get("y_increment", 1.0)), overloaded)
+
+
+def _volts(raw: NDArray[np.float64], dialect: Dialect, fields: Mapping[str, float]) -> NDArray[np.float64]:
     step = fields.get("y_increment", 1.0)
     reference, origin = fields.get("y_reference", 0.0), fields.get("y_origin", 0.0)
-    raw = numbers.astype(np.float64)
-    overloaded = None
-    if not dialect.encoding.startswith(("int", "uint")):
-        raw, overloaded = mark_overloads(raw)
     if dialect.y_origin_unit == "step":
-        volts = (raw - reference - origin) * step
-    else:
-        volts = (raw - reference) * step + origin
-    return Channel(name, "V", volts, abs(step) * _smallest_step(numbers), overloaded)
+        return (raw - reference - origin) * step
+    return (raw - reference) * step + origin
 
 
-def _smallest_step(numbers: NDArray[np.generic]) -> float:
-    """The smallest step between different raw values; 0 where there is only one value."""
-    if numbers.dtype.kind in "iu":
-        if numbers.dtype.itemsize <= 2:
-            low = int(numbers.min())
-            levels = np.flatnonzero(np.bincount(numbers.astype(np.int64) - low))
-        else:
-            levels = np.unique(numbers)
-        return float(np.diff(levels).min()) if levels.size > 1 else 0.0
-    finite = numbers[np.isfinite(numbers)].astype(np.float64)
-    levels = np.unique(finite)
+def _smallest_difference(levels: NDArray[np.float64], least: float) -> float:
+    """The smallest difference above ``least`` between sorted levels; 0 where there is none."""
     steps = np.diff(levels)
-    # Two floats that stand for one digitiser level differ by their own rounding alone.
-    eps = np.finfo(np.float32 if numbers.dtype.itemsize == 4 else np.float64).eps
-    precision = float(eps) * 4.0 * float(np.max(np.abs(finite), initial=0.0))
-    steps = steps[steps > precision]
+    steps = steps[steps > least]
     return float(steps.min()) if steps.size else 0.0
 
 

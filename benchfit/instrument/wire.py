@@ -71,6 +71,7 @@ class Wire:
         self._timeout_now = -1.0
         self._stops_now: bool | None = None
         manager = _manager(library)
+        _check_address(resource)
         try:
             # An unset open time-out means "give up at once" to some backends and "for ever" to others.
             visa = manager.open_resource(resource, open_timeout=max(1, int(1000 * min(timeout, 10.0))))
@@ -174,6 +175,20 @@ class Wire:
             return bool(select.select([inner], [], [], 0)[0]) and inner.recv(1, socket.MSG_PEEK) == b""
         except (OSError, ValueError):
             return True
+
+
+def _check_address(resource: str) -> None:
+    """Refuse a port or host that cannot be right: pyvisa-py fails on them with its socket left open."""
+    address = re.fullmatch(r"TCPIP\d*::(.+)::([^:]*)::SOCKET", resource.strip(), re.IGNORECASE)
+    if address is None:
+        return
+    host, port = address[1], address[2]
+    if not port.isdecimal() or not 0 < int(port) < 65536:
+        raise faults.bad_name(resource)
+    try:
+        socket.getaddrinfo(host, int(port), socket.AF_INET, socket.SOCK_STREAM)
+    except (OSError, UnicodeError) as error:
+        raise faults.cannot_open(resource, error) from error
 
 
 def _serial_value(name: str, value: object) -> object:
