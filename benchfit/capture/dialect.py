@@ -52,7 +52,7 @@ class Dialect:
     def plain(self, text: bytes) -> bytes:
         """A block of the file as the C engine of pandas reads it, with ``engine_delimiter``."""
         if self.bracketed:
-            text = re.sub(rb"\)[,;]?[ \t]*\(|\][,;]?[ \t]*\[", b"\n", text).translate(None, _BRACKETS)
+            text = text.translate(None, _BRACKETS)
         if b'"' in text:
             text = (
                 _requoted(text.decode("latin-1"), self.delimiter).encode("latin-1")
@@ -181,7 +181,7 @@ def _fraction_split(dialect: Dialect, lines: Sequence[str]) -> bool:
     fractions = [b for _, b in pairs]
     if any("e" in b.lower() for b in fractions):
         return True
-    if any(len(b) > 1 and b[0] == "0" for b in fractions) and len({len(b) for b in fractions}) <= 2:
+    if any(len(b) > 1 and b[0] == "0" for b in fractions) and len({len(b) for b in fractions}) == 1:
         return True
     wholes = [int(a) for a, _ in pairs]
     wander = any(b < a for a, b in pairwise(wholes)) and any(b > a for a, b in pairwise(wholes))

@@ -33,6 +33,9 @@ _WITH_BRACKETS = re.compile(r"(?P<name>[^\[(]*)[\[(](?P<unit>.*)[\])]?\s*")
 _WITH_IN = re.compile(r"(?:(?P<name>.*?)\s+)?in\s+(?P<unit>\S+)", re.IGNORECASE)
 _WITH_SLASH = re.compile(r"(?P<name>[^/]*\S)\s*[/,]\s*(?P<unit>\S+)")
 _WITH_UNDERSCORE = re.compile(r"(?P<name>.*\S)[_ ](?P<unit>\S+)")
+# A simulator's node and branch: V(out), I(R1).
+_NODE = re.compile(r"(?P<base>[VvIi])\((?P<node>[^()]+)\)")
+_CHANNEL_AND_UNIT = re.compile(r"(?P<name>CH\d+)(?P<unit>[mu]?[VA])")
 
 
 @dataclass(frozen=True)
@@ -47,6 +50,11 @@ class Title:
     def is_time(self) -> bool:
         """Whether it names a time axis, by its unit or by its name."""
         return (self.unit is not None and self.unit.is_time) or _TIME.fullmatch(self.name) is not None
+
+    @property
+    def is_axis_letter(self) -> bool:
+        """Whether it is a bare "X", which names the time in some exports and a number of the row in others."""
+        return self.unit is None and self.name.casefold() == "x"
 
     @property
     def is_index(self) -> bool:
@@ -71,7 +79,13 @@ def title(text: str) -> Title:
     """Name and unit from a header cell: "CH1 in V", "Time (ms)", "[s]", "U/V", "Volt"."""
     text = "".join(c for c in text if c.isprintable() and c != "\ufeff").strip().strip('"').strip()
     if alone := unit(text):
-        return Title("", alone, text)
+        return Title("" if alone.base else text, alone, text)
+    if found := _NODE.fullmatch(text):
+        base, inside = ("V" if found["base"] in "vV" else "A"), unit(f"({found['node']})")
+        if inside is None or inside.base != base:
+            return Title(text, unit(base), text)
+    if found := _CHANNEL_AND_UNIT.fullmatch(text):
+        return Title(found["name"], unit(found["unit"]), text)
     if found := _WITH_BRACKETS.fullmatch(text):
         inside = re.split(r"[\])]", found["unit"])[0].strip()
         name = found["name"].strip(" _:-")
@@ -214,7 +228,7 @@ def _is_names_row(page: Page, above: Sequence[int], cells: Sequence[str]) -> boo
         return False
     if len(above) == 1:
         return True
-    if marks and (titles[0].is_time or titles[0].is_index or not cells[0] or len(filled) >= columns):
+    if marks and (titles[0].is_time or titles[0].is_index or not cells[0] or marks >= columns):
         return not _is_setting(cells, page.decimal) or titles[0].is_time
     before = _cells(page.lines[above[-2]], page.dialect, columns) if page.dialect else ()
     return not _is_setting(cells, page.decimal) and len(before) != len(cells)

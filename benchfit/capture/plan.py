@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from benchfit.capture.cells import Precision, number, precision
-from benchfit.capture.families import Layout
+from benchfit.capture.evidence import Layout
 from benchfit.capture.header import Title, title
 from benchfit.capture.page import Page
 from benchfit.errors import CaptureError, Remark
@@ -20,6 +20,7 @@ _COMPANION = re.compile(
     r"(?P<of>.*?)[\s_-]*(peak[\s_-]*detect|envelope|min(imum)?|max(imum)?)", re.IGNORECASE
 )
 _LOGARITHM = re.compile(r"(ln|log|log10|lg)\b.*|ln[\s_(]?\w+\)?", re.IGNORECASE)
+_NUMBERS_THE_ROWS = "it numbers the rows"
 # Seconds since 1970 in this century: a clock beside the data, not a voltage.
 _EPOCH = (9e8, 5e9)
 
@@ -32,7 +33,7 @@ class Column:
     name: str
     unit: str
     scale: float = 1.0
-    is_named: bool = True
+    unit_is_assumed: bool = False
 
 
 @dataclass(frozen=True)
@@ -97,6 +98,11 @@ class _Columns:
         values = self.finite(column)
         return self.is_whole(column) and values.size > 2 and bool(np.all(np.diff(values) == 1))
 
+    def is_rising(self, column: int) -> bool:
+        """Whether hardly a value is less than the one before."""
+        values = self.finite(column)
+        return values.size > 2 and bool(values[-1] > values[0]) and bool(np.mean(np.diff(values) >= 0) > 0.9)
+
     def is_even(self, column: int) -> bool:
         """Whether the values grow by equal steps, within what the printed digits leave open."""
         values = self.finite(column)
@@ -135,6 +141,8 @@ def make_plan(
 
 def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | None, str]:
     """The column of time stamps and why it is taken for that, or None and what speaks against the likeliest."""
+    if layout.has_no_stamps:
+        return None, ""
     numeric = page.numeric
     titled = [(k, table.title(k)) for k in numeric]
     for test, why in (
@@ -145,14 +153,14 @@ def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | Non
         for column, named in titled:
             if test(named):
                 return column, why
-    if layout.stated.startswith("the cell"):
-        return None, ""
-    first = next((k for k in numeric if not table.title(k).is_index or not table.is_count(k)), None)
-    if first is None or len(numeric) < 2:
-        return None, "" if len(numeric) > 1 else "it has one column of numbers only"
-    if layout.time_is_first:
+    if len(numeric) < 2:
+        return None, "it has one column of numbers only"
+    first = numeric[0]
+    if table.is_count(first) and len(numeric) > 2 and table.is_even(numeric[1]) and not table.is_whole(numeric[1]):
+        first = numeric[1]
+    if layout.time_is_first and table.is_rising(first):
         return first, "its place"
-    if table.is_even(first) and first != numeric[-1]:
+    if table.is_even(first):
         step = float(np.diff(table.finite(first)[[0, -1]])[0]) / (table.finite(first).size - 1)
         if layout.interval is not None and abs(step / layout.interval - 1) < 0.01:
             return first, f"its steps, which are those of {layout.stated}"
@@ -198,7 +206,7 @@ def _with_channels(plan: Plan, page: Page, table: _Columns, time: int | None) ->
     left = [k for k in page.numeric if k != time]
     dropped: list[str] = []
     for column in list(left):
-        reason = _no_channel(column, left, table)
+        reason = _no_channel(column, left, table, time)
         if reason and len(left) > 1:
             left.remove(column)
             dropped.append(f"{_called(table, column)} ({reason})")
@@ -206,32 +214,33 @@ def _with_channels(plan: Plan, page: Page, table: _Columns, time: int | None) ->
     for column in left:
         channels.append(_channel(column, table.title(column), len(channels), table))
     remarks = list(plan.remarks)
-    companions = [text for text in dropped if "numbers the rows" not in text]
+    companions = [text for text in dropped if _NUMBERS_THE_ROWS not in text]
     if companions:
         remarks.append(Remark("derived-column", f"Not read as channels: {', '.join(companions)}."))
-    assumed = [c.name for c in channels if table.title(c.index).unit is None and c.unit == "V"]
-    if assumed:
-        remarks.append(
-            Remark("layout-guessed", f"The file gives no unit for {', '.join(assumed)}; volts are assumed.")
-        )
-    bare = [c.name for c in channels if table.title(c.index).unit is None and not c.unit]
-    if bare:
-        remarks.append(
-            Remark(
-                "layout-guessed", f"{', '.join(bare)}: whole numbers without a unit, taken for bare codes."
-            )
-        )
-    return replace(plan, channels=_distinct(channels), dropped=tuple(dropped), remarks=tuple(remarks))
+    return _settled(replace(plan, dropped=tuple(dropped), remarks=tuple(remarks)), channels)
+
+
+def _settled(plan: Plan, channels: Sequence[Column]) -> Plan:
+    """The plan with its channels, and a remark on the units that no title gave."""
+    distinct = _distinct(channels)
+    remarks = list(plan.remarks)
+    if assumed := [c.name for c in distinct if c.unit_is_assumed and c.unit]:
+        says = f"The file gives no unit for {', '.join(assumed)}; volts are assumed."
+        remarks.append(Remark("layout-guessed", says))
+    if bare := [c.name for c in distinct if c.unit_is_assumed and not c.unit]:
+        says = f"{', '.join(bare)}: whole numbers without a unit, taken for bare codes."
+        remarks.append(Remark("layout-guessed", says))
+    return replace(plan, channels=distinct, remarks=tuple(remarks))
 
 
 def _channel(column: int, named: Title, place: int, table: _Columns) -> Column:
     name = named.name or f"CH{place + 1}"
     if named.unit is not None:
-        return Column(column, name, named.unit.base, named.unit.scale, bool(named.name))
+        return Column(column, name, named.unit.base, named.unit.scale)
     values = table.finite(column)
     spread = float(np.ptp(values)) if values.size else 0.0
     codes = table.is_whole(column) and (spread >= 32 or (spread == 1 and bool(np.min(values) == 0)))
-    return Column(column, name, "" if codes else "V", is_named=bool(named.name))
+    return Column(column, name, "" if codes else "V", unit_is_assumed=True)
 
 
 def _distinct(channels: Sequence[Column]) -> tuple[Column, ...]:
@@ -252,18 +261,20 @@ def _called(table: _Columns, column: int) -> str:
     return table.title(column).name or f"column {column + 1}"
 
 
-def _no_channel(column: int, others: Sequence[int], table: _Columns) -> str:
+def _no_channel(column: int, others: Sequence[int], table: _Columns, time: int | None) -> str:
     """Why a column is no channel of its own; "" where it is one."""
     named = table.title(column)
     values = table.finite(column)
-    if named.is_index and table.is_whole(column) and _is_steady(values):
-        return "it numbers the rows"
+    if time is not None and np.array_equal(table.values(column), table.values(time), equal_nan=True):
+        return "the time axis once more"
+    if (named.is_index or named.is_axis_letter) and table.is_whole(column) and _is_steady(values):
+        return _NUMBERS_THE_ROWS
     if named.unit is not None and named.unit.is_time:
         return "a second time axis"
     if found := _COMPANION.fullmatch(named.name):
         if any(table.title(k).name == found["of"].strip() for k in others if k != column):
             return f"a companion of {found['of'].strip()}"
-    if table.is_whole(column) and values.size > 2 and named.unit is None:
+    if table.is_whole(column) and values.size > 2 and _is_bare(named):
         if _EPOCH[0] < float(np.min(values)) and float(np.max(values)) < _EPOCH[1]:
             return "a clock"
         if _is_steady(values) and (table.is_count(column) or abs(values[1] - values[0]) > 1):
@@ -272,6 +283,11 @@ def _no_channel(column: int, others: Sequence[int], table: _Columns) -> str:
         if other != column and (reason := _derived(column, other, table)):
             return f"{reason} {_called(table, other)}"
     return ""
+
+
+def _is_bare(named: Title) -> bool:
+    """Whether a column has no unit, or that of bare codes."""
+    return named.unit is None or not named.unit.base
 
 
 def _is_steady(values: Floats) -> bool:
@@ -286,7 +302,7 @@ def _derived(column: int, other: int, table: _Columns) -> str:
     x, y = x[both], y[both]
     if x.size < 8 or np.ptp(x) == 0 or np.ptp(y) == 0:
         return ""
-    if table.is_whole(column) and not table.is_whole(other) and table.title(column).unit is None:
+    if table.is_whole(column) and not table.is_whole(other) and _is_bare(table.title(column)):
         slope = np.ptp(y) / np.ptp(x) * np.sign(np.dot(x - x.mean(), y - y.mean()))
         misfit = np.max(np.abs(y - y.mean() - slope * (x - x.mean())))
         if misfit <= max(1.01 * table.quantum(other), 1e-6 * np.ptp(y)):
@@ -319,6 +335,8 @@ def _wanted(
     for key, where in columns.items():
         column = _number_of(page, layout, key, where, refusal)
         asked = title(key)
+        if not asked.name and not asked.is_time:
+            asked = Title(key, None, key)
         if asked.is_time or asked.is_increment:
             time = column
             known = replace(asked, unit=asked.unit or table.title(column).unit)
@@ -352,7 +370,7 @@ def _wanted(
             plan = _with_time(plan, table, found, layout, why)
         else:
             plan = replace(plan, why_no_time=why if found is None else "")
-    return replace(plan, channels=_distinct(channels))
+    return _settled(plan, channels)
 
 
 def _number_of(

@@ -10,7 +10,8 @@ from typing import IO
 import numpy as np
 from numpy.typing import NDArray
 
-from benchfit.capture.families import Claim, Family, tell
+from benchfit.capture.evidence import MOST_BESIDE, Claim, Family
+from benchfit.capture.layouts import tell
 from benchfit.capture.model import Capture, Channel
 from benchfit.capture.page import Page, look
 from benchfit.capture.plan import Column, Plan, make_plan
@@ -81,7 +82,7 @@ def _read_one(
             raise source.refusal(claim.refusal)
         plan = make_plan(page, claim.layout, columns, source.refusal)
         wanted = [*([] if plan.time is None else [plan.time]), *(channel.index for channel in plan.channels)]
-        wide = 60 if found.beside.pairs else 1
+        wide = MOST_BESIDE if found.beside.pairs else 1
         table = read_table(source, page, wanted, plan.time, wide)
         _check_fit(source, table, page)
         axis = make_axis(table, plan, interval, frame, source.refusal)

@@ -7,7 +7,7 @@ import re
 import numpy as np
 
 from benchfit.capture.cells import TEXT, kind, number
-from benchfit.capture.families import Claim, Evidence, Family
+from benchfit.capture.evidence import Claim, Evidence, Family
 from benchfit.capture.page import is_comment
 
 _SPECTRUM_WORDS = re.compile(

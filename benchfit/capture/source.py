@@ -33,6 +33,7 @@ _BOMS = (
     (codecs.BOM_UTF16_LE, "utf-16-le"), (codecs.BOM_UTF16_BE, "utf-16-be"),
 )  # fmt: skip
 _LINE_END = re.compile(rb"\r\n|\n|\r")
+_TUPLE_END = re.compile(rb"(?<=[\d.])[)\]],[ \t]*[(\[](?=[\d.+-])")
 _ALLOWED_CONTROLS = b"\t\n\r\f\x1a"
 _CONTROLS = bytes(code for code in range(32) if code not in _ALLOWED_CONTROLS)
 
@@ -73,6 +74,8 @@ class Source:
             text = self._as_utf8(first[mark:])
             self._check_control(text)
             self.line_end = _line_end(text)
+            # A script that prints a list of tuples ends no line until the list ends.
+            self._is_list = len(_TUPLE_END.findall(text[:4096])) > 3 * text[:4096].count(b"\n")
             self._start = self._up_to_a_line(self._with_lf(text))
             self.head = self._make_head()
         except BaseException:
@@ -103,7 +106,7 @@ class Source:
     @property
     def is_plain(self) -> bool:
         """Whether the bytes on disk are the text itself, so that another reader can be given the path."""
-        plain = not self.compression and self.encoding in ("utf-8", "ascii") and self.line_end != "CR"
+        plain = not self.compression and not self._is_list and self.encoding in ("utf-8", "ascii") and self.line_end != "CR"
         return self.path != "-" and self.size is not None and plain
 
     def refusal(self, says: str, **facts: object) -> CaptureError:
@@ -183,7 +186,8 @@ class Source:
         return b""
 
     def _with_lf(self, text: bytes) -> bytes:
-        return text.replace(b"\r", b"\n") if self.line_end == "CR" else text
+        text = text.replace(b"\r", b"\n") if self.line_end == "CR" else text
+        return _TUPLE_END.sub(b"\n", text).translate(None, b"[]()") if self._is_list else text
 
     def _as_utf8(self, raw: bytes) -> bytes:
         return raw if self._decoder is None else self._decoder.decode(raw).encode("utf-8", "replace")

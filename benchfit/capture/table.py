@@ -254,8 +254,6 @@ def _quick(work: _Work, block: bytes) -> list[Floats] | None:
 def _careful(work: _Work, block: bytes, unended: bool = False, before: bytes = b"") -> None:
     """Add the lines of a block one by one, with every departure noted."""
     text = block.decode("latin-1" if work.encoding == "latin-1" else "utf-8", "replace")
-    if work.dialect.bracketed:
-        text = re.sub(r"\)[,;]?[ \t]*\(|\][,;]?[ \t]*\[", "\n", text)
     rows: list[list[float]] = []
     lines = _LINE_ENDS.split(text)
     for offset, line in enumerate(lines):

@@ -19,16 +19,14 @@ _SYMBOLS = {
     "Ω": "Ω",
     "Ohm": "Ω",
     "ohm": "Ω",
-    "F": "F",
     "VA": "VA",
-    "C": "C",
 }
 _WORDS = {
     "V": "volt volts vdc vac vrms vpp volte volti voltios вольт в 伏",
     "A": "amp amps ampere amperes ampère ampères amper amperios adc ампер",
     "s": "s sec secs second seconds sekunde sekunden sekund sek seconde secondes secondo secondi segundo segundos "
     "sekunda sekundy szekundum с сек секунда секунды 秒",
-    "W": "watt watts", "Hz": "hertz", "Ω": "ohm ohms", "F": "farad farads", "°C": "celsius degc °c", "K": "kelvin",
+    "W": "watt watts", "Hz": "hertz", "Ω": "ohm ohms", "°C": "celsius degc °c", "K": "kelvin",
     "°": "deg degree degrees °", "dB": "db", "dBV": "dbv dbvrms", "dBm": "dbm", "%": "percent %",
     "": "code codes count counts cnt lsb raw digit digits adu none n/a bit bits logic u",
 }  # fmt: skip
@@ -112,8 +110,8 @@ _QUANTITY = re.compile(
 
 
 def quantity(text: str) -> tuple[float, str] | None:
-    """The number that begins ``text`` and what follows it: "500.0kSa/s" -> (500.0, "kSa/s")."""
-    found = _QUANTITY.fullmatch(text.strip().strip('"'))
+    """The number that begins ``text`` and what follows it: "500.0kSa/s" and "Analog:500.0kSa/s" too."""
+    found = _QUANTITY.fullmatch(text.rpartition(":")[2].strip().strip('"'))
     if not found:
         return None
     return float(found["value"].replace(",", ".")), (found["unit"] or "").strip()
