@@ -11,6 +11,7 @@ from benchfit.cycle.constants import Assignment, CycleConstants
 from benchfit.cycle.levels import is_square
 from benchfit.cycle.output import observe_output
 from benchfit.cycle.observed import Observed
+from benchfit.cycle.rest import observe_output_rest, observe_rest
 from benchfit.cycle.timing import observe_timing
 from benchfit.cycle.trace import Trace, prepare
 from benchfit.errors import CaptureError, Remark
@@ -37,13 +38,16 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     output = next((t for t in traces if t.assignment.shape == "square"), None)
     found_output = observe_output(output)[0] if output is not None else None
     found_timing = observe_timing(timing) if timing is not None else None
-    return _join(capture, traces, found_timing, found_output)
+    if found_output is None and found_timing is None:
+        at_rest = [observe_rest(timing)] if timing is not None else []
+        at_rest += [observe_output_rest(output)] if output is not None else []
+        return _join(capture, traces, at_rest)
+    return _join(capture, traces, [p for p in (found_timing, found_output) if p is not None])
 
 
 def _join(
-    capture: Capture, traces: list[Trace], timing: Observed | None, output: Observed | None
+    capture: Capture, traces: list[Trace], parts: list[Observed]
 ) -> CycleConstants:
-    parts = [p for p in (timing, output) if p is not None]
     names: list[str] = []
     values: list[float] = []
     blocks = []
@@ -58,11 +62,14 @@ def _join(
         covariance[at : at + len(block), at : at + len(block)] = block
         at += len(block)
     cycles = capture.samples * capture.interval / values[names.index("period")] if "period" in names else 0.0
-    remarks = ()
-    if parts and cycles < 3:
+    oscillates = "period" in names
+    remarks: tuple[Remark, ...] = ()
+    if not oscillates:
+        remarks = (Remark("no-oscillation", _rest_says(names, values)),)
+    elif cycles < 3:
         remarks = (Remark("few-cycles", f"only {cycles:.2g} cycles in the record; take a longer capture"),)
     return CycleConstants(
-        oscillates=bool(parts),
+        oscillates=oscillates,
         names=tuple(names),
         values=np.array(values),
         covariance=covariance,
@@ -72,12 +79,26 @@ def _join(
         spans={t.node: t.span for t in traces},
         resolutions={t.node: t.resolution for t in traces},
         coupling={t.node: t.assignment.coupling for t in traces},
-        turns=parts[0].turns if parts else np.empty(0),
+        turns=capture.start + parts[0].turns,
         phases=parts[0].phases if parts else (),
         remarks=remarks,
         samples=capture.samples,
         interval=capture.interval,
     )
+
+
+def _rest_says(names: list[str], values: list[float]) -> str:
+    known = dict(zip(names, values, strict=True))
+    says = "the record shows no oscillation"
+    if "ramp_start" in known:
+        says += f"; the node starts once from {known['ramp_start']:.4g} V"
+        if "ramp_asymptote" in known:
+            says += f" and heads for {known['ramp_asymptote']:.4g} V"
+    if "rest" in known:
+        says += f"; the node rests at {known['rest']:.4g} V"
+    if "output_rest" in known:
+        says += f"; the output stays at {known['output_rest']:.4g} V"
+    return says
 
 
 def guess(capture: Capture) -> tuple[Assignment, ...]:

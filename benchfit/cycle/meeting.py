@@ -11,6 +11,8 @@ from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
 from benchfit.cycle.phases import Fitted, Layout, fit_phases, guarded, layout_from, meet
+from benchfit.cycle.scatter import correlation, mean_scatter, student
+from benchfit.cycle.short import own_samples
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Crossings, Turns, block_means, find_turns
 
@@ -65,14 +67,18 @@ def fit_corners(trace: Trace, turns: Turns) -> Fitted | None:
     inner = guarded(layout, _guard(layout), _guard(layout))
     fitted = fit_phases(trace, inner)
     index = turns.index
-    for _ in range(3):
+    for _ in range(4):
         if len(fitted.fits) < 2:
             return None
         met = meet(fitted, index)
+        moved = np.abs(np.where(np.isnan(met), 0.0, met - index))
         index = np.where(np.isnan(met), index, met)
+        if fitted.layout is not inner and np.mean(moved) < 0.1 * np.sqrt(np.mean(layout.length)) * 0.1:
+            break
         layout = layout_from(index, turns.top, layout.first[0], layout.stop[-1])
         layout = _extend_ends(fitted, layout, trace, index, turns.top)
-        fitted = fit_phases(trace, layout)
+        layout = own_samples(fitted, layout, trace, trace.noise)
+        fitted = fit_phases(trace, layout, begin=fitted)
     return fitted if len(fitted.fits) == 2 else None
 
 
@@ -165,19 +171,78 @@ def constants(fitted: Fitted, variance: float) -> Observed | None:
         add(name, float(weight @ corner.voltage), corner_forms(fitted, corner, 0.0 * weight, weight))
     for name, rising in (("charge_curvature", True), ("discharge_curvature", False)):
         add(name, fitted.model(rising).curvature, curvature_form(fitted, rising))
+    variance *= student(sum(f.freedom for f in fitted.fits.values())) ** 2
     cov = covariance(fitted, forms, variance)
-    cov[0, 0] = max(cov[0, 0], period.u**2)
-    cov = cov + _scatter(fitted, corner, cov, names)
-    turns = fitted_time(fitted, corner)
-    return Observed(tuple(names), np.array(values), cov, turns, period.jitter, float(np.sqrt(variance)), phases=())
+    cov = cov + _scatter(fitted, corner, cov, share, variance, period.u)
+    return Observed(
+        tuple(names),
+        np.array(values),
+        cov,
+        corner.index[~corner.top] * fitted.interval,
+        period.jitter,
+        float(np.sqrt(noise_variance(fitted))),
+    )
 
 
-def fitted_time(fitted: Fitted, corner: Corners) -> Array:
-    return corner.index[~corner.top] * fitted.interval
+def _scatter(fitted: Fitted, corner: Corners, cov: Array, share: float, variance: float, u_period: float) -> Array:
+    """What jitter of the cycles adds to the covariance of (period, charge_share, upper, lower)."""
+    result = np.zeros_like(cov)
+    cycles = Cycles.of(fitted, corner, share)
+    extra = np.zeros(4)
+    extra[0] = max(u_period**2 - cov[0, 0], 0.0)
+    if cycles is not None:
+        noise = cycles.noise(fitted, variance)
+        for i in (1, 2, 3):
+            extra[i] = mean_scatter(cycles.samples[:, i], float(noise[i, i]))
+        extra[1] /= float(cycles.samples[:, 0].mean()) ** 2
+        rho = correlation(cycles.samples, noise)
+    else:
+        rho = np.eye(4)
+    size = np.sqrt(extra)
+    result[:4, :4] = rho * np.outer(size, size)
+    return result
 
 
-def _scatter(fitted: Fitted, corner: Corners, cov: Array, names: list[str]) -> Array:
-    return np.zeros_like(cov)
+@dataclass(frozen=True, eq=False)
+class Cycles:
+    """Single cycles from lower to lower turn: period, (1 − share)·rise − share·fall, upper, lower (s, s, V, V)."""
+
+    first: NDArray[np.int64]
+    samples: Array
+    corner: Corners
+    share: float
+
+    @staticmethod
+    def of(fitted: Fitted, corner: Corners, share: float) -> Cycles | None:
+        """The whole cycles among the corners, None where there are fewer than two."""
+        steps = np.diff(corner.before)
+        first = np.flatnonzero((steps[:-1] == 1) & (steps[1:] == 1) & ~corner.top[:-2])
+        if first.size < 2:
+            return None
+        t = corner.index * fitted.interval
+        rise, fall = t[first + 1] - t[first], t[first + 2] - t[first + 1]
+        samples = np.stack(
+            [rise + fall, (1 - share) * rise - share * fall, corner.voltage[first + 1], corner.voltage[first]], axis=1
+        )
+        return Cycles(first, samples, corner, share)
+
+    def noise(self, fitted: Fitted, variance: float) -> Array:
+        """Covariance of a single cycle's quantities from the record's noise alone, of a typical cycle."""
+        middle = self.first[self.first.size // 2]
+        index, before = self.corner.index[middle : middle + 3], self.corner.before[middle : middle + 3]
+        _, r0 = fitted.values_at(before, index)
+        _, r1 = fitted.values_at(before + 1, index)
+        own0, own1 = fitted.derivatives(before, index)[0], fitted.derivatives(before + 1, index)[0]
+        # Each turn's time and voltage by the own errors of the phase before and of the phase after it.
+        time, volt = np.zeros((3, 4)), np.zeros((3, 4))
+        for j in range(3):
+            gap = r0[j] - r1[j]
+            time[j, j], time[j, j + 1] = -own0[j] / gap, own1[j] / gap
+            volt[j, j], volt[j, j + 1] = -r1[j] * own0[j] / gap, r0[j] * own1[j] / gap
+        rise, fall = time[1] - time[0], time[2] - time[1]
+        form = np.stack([rise + fall, (1 - self.share) * rise - self.share * fall, volt[1], volt[0]])
+        phases = np.arange(before[0], before[0] + 4)
+        return np.asarray((form * (variance / fitted.information[phases])) @ form.T)
 
 
 def _period(fitted: Fitted, corner: Corners, variance: float) -> tuple[PeriodFit, Form]:

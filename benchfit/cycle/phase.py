@@ -128,19 +128,22 @@ def _bend(x: Array) -> Array:
     return np.where(small, series, (y * e - 1.0 + e) / y**2)
 
 
-def basis(t: Array, spread: Array, curvature: float) -> tuple[Array, Array, Array]:
+def basis(t: Array, spread: Array, curvature: float, bent: bool = True) -> tuple[Array, Array, Array]:
     """Means of e^(−κt), φ(t) and ∂φ/∂κ over bins of mean time t and variance ``spread`` (s²) of time within.
+
+    Without ``bent`` the third is left at 0.
 
     The bin means come from the central moments up to the fourth; what is left out is below 1e-9 of the
     swing while a bin is shorter than a fifth of the time constant.
     """
     decay = np.exp(-curvature * t)
     ramp = phi(t, curvature)
-    bend = t**2 * _bend(curvature * t)
+    bend = t * t * _bend(curvature * t) if bent else np.zeros_like(t)
     if np.any(spread):
         k2 = curvature**2 * spread
         lift = spread * (0.5 + _KURTOSIS * k2 / 24.0)  # (R − 1)/κ² with R the bin mean over the mid value
-        bend = bend - lift * decay * (1.0 - curvature * t) - decay * _KURTOSIS * k2 * spread / 12.0
+        if bent:
+            bend = bend - lift * decay * (1.0 - curvature * t) - decay * _KURTOSIS * k2 * spread / 12.0
         ramp = ramp - curvature * lift * decay
         decay = decay * (1.0 + curvature**2 * lift)
     return decay, ramp, bend
@@ -177,6 +180,27 @@ def fit_exponentials(
     return problem.solve(begin)
 
 
+def fit_levels(
+    model: PhaseModel, t: Array, v: Array, cycle: Index, weight: Array, spread: Array
+) -> tuple[Array, Array, Array, Array]:
+    """Levels of many cycles with the shared part held.
+
+    Returns
+    -------
+    levels, information, coupling, residual : ndarray
+        The first three as in ExponentialFit, the residual of every bin (V).
+    """
+    count = int(cycle[-1]) + 1
+    decay, ramp, bend = basis(t, spread, model.curvature)
+    wd = weight * decay
+    see = np.bincount(cycle, wd * decay, count)
+    y = v - model.reference - model.slope * ramp
+    own = np.bincount(cycle, wd * y, count) / see
+    bent = model.slope * bend - own[cycle] * t * decay
+    coupling = np.stack([-np.bincount(cycle, wd * c, count) / see for c in (ramp, bent)], axis=1)
+    return model.reference + own, see, coupling, y - own[cycle] * decay
+
+
 class _Problem:
     """The fit in units of its own span, in which κ is of order one."""
 
@@ -199,9 +223,9 @@ class _Problem:
     def group(self, x: Array) -> Array:
         return np.bincount(self.cycle, weights=x, minlength=self.count)
 
-    def linear(self, k: float) -> tuple[float, Array, Array, tuple[Array, Array, Array]]:
+    def linear(self, k: float, bent: bool = True) -> tuple[float, Array, Array, tuple[Array, Array, Array]]:
         """Slope, levels, residuals and basis at curvature k."""
-        decay, ramp, bend = basis(self.t, self.spread, k)
+        decay, ramp, bend = basis(self.t, self.spread, k, bent)
         if self.fixed is not None:
             y = self.v - self.fixed * decay
             slope = float(np.sum(self.w * ramp * y) / np.sum(self.w * ramp * ramp))
@@ -216,7 +240,7 @@ class _Problem:
         return slope, levels, residual, (decay, ramp, bend)
 
     def rss(self, k: float) -> float:
-        return float(np.sum(self.w * self.linear(k)[2] ** 2))
+        return float(np.sum(self.w * self.linear(k, False)[2] ** 2))
 
     def scan(self) -> float:
         trial = (-4.0, -1.5, -0.5, 0.0, 0.5, 1.0, 2.0, 4.0, 8.0, 16.0)

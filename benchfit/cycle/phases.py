@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from benchfit.cycle.fold import bins_per_phase, gather
+from benchfit.cycle.fold import PART, POINTS, Bins, bins_per_phase, fold_phases, gather
 from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_exponentials
 from benchfit.cycle.trace import Trace
 
@@ -86,8 +86,15 @@ class Fitted:
         return own, shared
 
 
-def fit_phases(trace: Trace, layout: Layout, kinds: tuple[bool, ...] = (True, False)) -> Fitted:
-    """Fit the phases of each kind: shared asymptote and κ, one level per phase."""
+def fit_phases(
+    trace: Trace, layout: Layout, kinds: tuple[bool, ...] = (True, False), begin: Fitted | None = None
+) -> Fitted:
+    """Fit the phases of each kind: shared asymptote and κ, one level per phase.
+
+    Up to some hundred thousand bins all phases are fitted at once. Of more, an evenly spread part gives a first
+    model; then all are folded onto it, each by its own level, and the fold gives the shared part. An earlier fit
+    says where to ``begin``.
+    """
     size = layout.size
     middle = (layout.first + layout.stop - 1) / 2.0
     level, information = np.full(size, np.nan), np.zeros(size)
@@ -97,15 +104,43 @@ def fit_phases(trace: Trace, layout: Layout, kinds: tuple[bool, ...] = (True, Fa
         mine = np.flatnonzero((layout.rising == kind) & (layout.length >= 2))
         if mine.size == 0:
             continue
-        bins = gather(trace, layout.first[mine], layout.stop[mine], middle[mine], bins_per_phase(mine.size))
-        seen, cycle = np.unique(bins.cycle, return_inverse=True)
-        if bins.t.size < seen.size + 3:
+        model = begin.fits[kind].model if begin is not None and kind in begin.fits else None
+        found = _fit_kind(trace, layout.first[mine], layout.stop[mine], middle[mine], model)
+        if found is None:
             continue
+        fit, seen = found
         mine = mine[seen]
-        fit = fit_exponentials(bins.t, bins.v, cycle, bins.n, bins.spread)
         fits[kind] = fit
-        level[mine], information[mine], coupling[mine], sound[mine] = fit.levels, fit.information, fit.coupling, True
+        level[mine], information[mine], coupling[mine] = fit.levels, fit.information, fit.coupling
+        sound[mine] = True
     return Fitted(layout, trace.interval, middle, level, information, coupling, sound, fits)
+
+
+def _fit_kind(
+    trace: Trace, first: Index, stop: Index, middle: Array, model: PhaseModel | None
+) -> tuple[ExponentialFit, Index] | None:
+    """Fit of one kind's phases and which of them held usable samples."""
+    size = first.size
+    bins = bins_per_phase(size)
+    points = np.minimum(stop - first, bins)
+    if int(points.sum()) <= POINTS:
+        return _fit_at_once(gather(trace, first, stop, middle, bins), model)
+    if model is None:
+        few = max(16, int(PART * size / points.sum()))
+        part = np.unique(np.linspace(0, size - 1, min(few, size)).astype(int))
+        begun = _fit_at_once(gather(trace, first[part], stop[part], middle[part], bins), None)
+        if begun is None:
+            return None
+        model = begun[0].model
+    return fold_phases(trace, first, stop, middle, bins, model)
+
+
+def _fit_at_once(bins: Bins, model: PhaseModel | None) -> tuple[ExponentialFit, Index] | None:
+    seen, cycle = np.unique(bins.cycle, return_inverse=True)
+    if bins.t.size < seen.size + 3:
+        return None
+    begin = None if model is None else model.curvature
+    return fit_exponentials(bins.t, bins.v, cycle, bins.n, bins.spread, curvature=begin), seen
 
 
 def meet(fitted: Fitted, guess: Array) -> Array:
@@ -118,8 +153,10 @@ def meet(fitted: Fitted, guess: Array) -> Array:
         v0, r0 = fitted.values_at(before, x)
         v1, r1 = fitted.values_at(after, x)
         with np.errstate(invalid="ignore", divide="ignore"):
-            step = (v1 - v0) / (r0 - r1) / fitted.interval
-        x = x + np.clip(step, -reach, reach)
+            step = np.clip((v1 - v0) / (r0 - r1) / fitted.interval, -reach, reach)
+        x = x + step
+        if not np.any(np.abs(step) > 1e-7):
+            break
     far = np.abs(x - guess) > 2.0 * reach
     return np.where(far | ~(r0 * r1 < 0), np.nan, x)
 
