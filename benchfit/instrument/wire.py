@@ -115,7 +115,12 @@ class Wire:
     @staticmethod
     def _close_quietly(visa: MessageBasedResource) -> None:
         with contextlib.suppress(Exception):
+            library, session = visa.visalib, visa.session
             visa.close()
+            # The library keeps what it knew of each session for ever; a peer that drops the connection
+            # every minute would fill the memory.
+            for books in ("sessions", "_ignore_warning_in_session", "_last_status_in_session"):
+                getattr(library, books, {}).pop(session, None)
 
     def close(self) -> None:
         """Close the resource; harmless when it is closed already or the peer is gone."""

@@ -72,10 +72,10 @@ def check_fault_run(done: list[Acquisition], scope: LoopbackScope, session: Sess
     assert set(kinds) <= set(KINDS)
     # Every fault is named, by a name that fits one that was committed; no fault is named that was not.
     possible = Counter(name for _, kind in committed for name in NAMES[kind])
+    # While it refuses, each new attempt fails too.
+    again = 8 * sum(1 for _, kind in committed if kind == "refusing")
     for kind, times in kinds.items():
-        extra = (
-            sum(1 for _, done_kind in committed if done_kind == "refusing") * 8 if kind == "refused" else 0
-        )
+        extra = again if kind in ("refused", "disconnected") else 0
         assert times <= possible[kind] + extra, (kind, kinds, Counter(kind for _, kind in committed))
     must_fail = sum(1 for _, kind in committed if "" not in NAMES[kind])
     assert must_fail <= len(failed)
