@@ -88,7 +88,7 @@ def _limits(ax: Any, miss: Miss, factor: float) -> None:
     """The acceptance limits as a band."""
     if miss.limits is None:
         return
-    low, high = (x * factor for x in miss.limits)
+    low, high = (miss.target * (1 + x) * factor for x in miss.limits)
     left, right = ax.get_xlim()
     ax.axvspan(low, high, color=LIGHT["band"], lw=0, zorder=0)
     ax.set_xlim(left, right)

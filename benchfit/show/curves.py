@@ -80,13 +80,43 @@ def rate(fit: PhaseFit, v: Array) -> Array:
     return np.asarray(fit.curvature * (end - v))
 
 
+def phases_of(constants: CycleConstants, node: str) -> list[PhaseFit]:
+    """The fitted phases of a node; where only their constants are kept, a charge and a discharge of those."""
+    if constants.phases:
+        return [f for f in constants.phases if f.node == node]
+    timing = next((n for n in constants.noise if n != "output"), "")
+    needed = ("period", "charge_share", "upper", "lower")
+    if node != timing or not constants.oscillates or not all(n in constants for n in needed):
+        return []
+    from benchfit.cycle.constants import PhaseFit
+
+    period, share, upper, lower = (constants.value(n) for n in needed)
+
+    def known(name: str, other: float) -> float:
+        return constants.value(name) if name in constants else other
+
+    return [
+        PhaseFit(
+            node, True, known("charge_start", lower), upper, known("charge_curvature", 0.0), share * period
+        ),
+        PhaseFit(
+            node,
+            False,
+            known("discharge_start", upper),
+            lower,
+            known("discharge_curvature", 0.0),
+            (1 - share) * period,
+        ),
+    ]
+
+
 def place(constants: CycleConstants, trace: Trace) -> list[Placed]:
     """The fitted phases of a node in every cycle of the record, the cut ones at its ends included.
 
     A cycle that lasts longer or shorter than the mean has its longest phase stretched: a late firing goes on
     along the same exponential. Which phase stands first is what fits the samples better.
     """
-    fits = [f for f in constants.phases if f.node == trace.node and f.duration > 0]
+    fits = [f for f in phases_of(constants, trace.node) if f.duration > 0]
     turns = np.asarray(constants.turns, dtype=float)
     if not fits or turns.size == 0:
         return []
@@ -136,7 +166,7 @@ def polylines(
     gap = np.array([np.nan])
     for p in placed:
         low, high = max(p.begin, begin), min(p.end, end)
-        if p.fit.rising is rising and high > low:
+        if p.fit.rising == rising and high > low:
             t = np.linspace(low, high, points)
             times += [t, gap]
             volts += [phase_value(p.fit, t - p.begin), gap]
@@ -183,6 +213,18 @@ def folded(trace: Trace, starts: Array, period: float, most: int = 1600) -> tupl
     return since[keep], v[keep]
 
 
+def aligned(t: Array, v: Array, period: float, x: Array, y: Array, steps: int = 240) -> Array:
+    """Times within the cycle (s) of folded samples, shifted to where they lie best on a circuit's curve.
+
+    A record's cycles may be counted from another turn than the circuit's first phase begins at.
+    """
+    few = slice(0, None, max(1, t.size // 800))
+    shifts = np.linspace(0.0, period, steps, endpoint=False)
+    at = (t[few] + shifts[:, None]) % period * (x[-1] / period)
+    away = np.minimum(np.abs(np.interp(at, x, y) - v[few]), 0.25 * np.ptp(y)).mean(axis=1)
+    return np.asarray((t + shifts[int(np.argmin(away))]) % period)
+
+
 def slopes(placed: list[Placed], trace: Trace, rising: bool, bins: int = 16) -> tuple[Array, Array, Array]:
     """(v, dv/dt, its standard error) in equal stretches of a phase, all cycles together.
 
@@ -190,7 +232,7 @@ def slopes(placed: list[Placed], trace: Trace, rising: bool, bins: int = 16) -> 
     level differs does not tilt it.
     """
     sums = np.zeros((bins, 6))
-    same = [p for p in placed if p.fit.rising is rising]
+    same = [p for p in placed if p.fit.rising == rising]
     for p in same[:: max(1, len(same) // 100)]:
         guard = 0.04 * (p.end - p.begin)
         first, stop = np.searchsorted(trace.time, [p.begin + guard, p.end - guard])

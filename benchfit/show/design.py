@@ -8,21 +8,27 @@ from typing import TYPE_CHECKING, Any
 
 from benchfit.quantity import si
 from benchfit.show import words
-from benchfit.show.layout import Column, Page, Style, bar
+from benchfit.show.layout import Column, Page, bar
 
 if TYPE_CHECKING:
     from benchfit.circuits.model import Circuit, Part
 
 
 def render_prediction(prediction: Mapping[str, Any], *, width: int = 80, colour: bool = False) -> str:
-    """The printed form of a prediction record: what the build should do, how far its tolerances let it stray,
-    which of them matter, how to capture it, and what to beware of."""
+    """The printed form of a prediction record.
+
+    What the build should do, how far its tolerances let it stray and which of them matter, within which
+    limits it runs, how to capture it, and what to beware of.
+    """
     page = Page(max(width, 60), colour)
-    page.prose(str(prediction.get("circuit") or ""), style="bold")
+    heading = ", ".join(str(x) for x in (prediction.get("title"), prediction.get("circuit")) if x)
+    page.prose(heading, style="bold")
     page.lines.append("")
     page.prose(_should(prediction), style="bold")
     _predicted(page, prediction)
+    _bands(page, prediction)
     _tolerances(page, prediction)
+    _margins(page, prediction)
     _advice(page, prediction.get("capture_advice"))
     page.remarks((w["code"], w["says"]) for w in prediction.get("warnings") or ())
     return "\n".join(page.lines)
@@ -96,33 +102,73 @@ def _value(name: str, q: Mapping[str, Any] | None) -> str:
 
 def _predicted(page: Page, prediction: Mapping[str, Any]) -> None:
     predicted = prediction.get("predicted") or {}
-    bands = prediction.get("band") or {}
-    rows = [["", "nominal parts", "lowest", "highest"]]
-    for name, q in predicted.items():
-        if not (text := _value(name, q)):
-            continue
-        band: Sequence[float | None] = bands.get(name) or (None, None)
-        low, high = (words.plain_amount(name, x, str(q.get("unit", ""))) for x in band)
-        rows.append([words.label(name), text, low, high])
-    if len(rows) > 1:
-        page.section("Predicted", "lowest, highest: worst case over the tolerance limits")
-        page.table(rows, [Column(), Column(True), Column(True, 1), Column(True, 1)], ["dim"])
+    rows = [[words.label(name), text] for name, q in predicted.items() if (text := _value(name, q))]
+    if rows:
+        page.section("Predicted", "of the nominal parts")
+        page.table(rows, [Column(), Column(True)], [])
+
+
+def _bands(page: Page, prediction: Mapping[str, Any]) -> None:
+    """How far frequency and duty may stray: three answers, from the gloomiest on."""
+    kinds = [
+        ("worst case", "band"),
+        ("root sum of squares, ± 2 u", "root_sum_square"),
+        ("95 % of builds", "monte_carlo"),
+    ]
+    rows = []
+    for text, key in kinds:
+        ranges = [_range(name, (prediction.get(key) or {}).get(name)) for name in ("frequency", "duty")]
+        if any(ranges):
+            rows.append([text, *ranges])
+    if rows:
+        page.section("Spread over the tolerances")
+        page.table(
+            [["", "frequency", "duty cycle"], *rows], [Column(), Column(True), Column(True, 1)], ["dim"]
+        )
+    running = (prediction.get("monte_carlo") or {}).get("oscillates")
+    if running is not None and running < 0.9995:
+        page.prose(f"{words.chance(1 - running)} of such builds would not oscillate.", "  ", "bad")
+
+
+def _range(name: str, band: Sequence[float | None] | None) -> str:
+    if not band or band[0] is None or band[1] is None:
+        return ""
+    low, high = (words.plain_amount(name, x, words.units(name)) for x in band)
+    return f"{low} to {high}"
 
 
 def _tolerances(page: Page, prediction: Mapping[str, Any]) -> None:
+    """What each tolerance does to the frequency, the worst first."""
     shares = ((prediction.get("miss") or {}).get("frequency") or {}).get("shares") or []
-    known = sorted((s for s in shares if s.get("share")), key=lambda s: -s["share"])
-    shown = [s for s in known if s["share"] >= 0.005][:8]
+    moves = {c["part"]: c for c in prediction.get("contributions") or ()}
+    known = {s["cause"]: float(s["share"]) for s in shares if s.get("share")}
+    shown = sorted((n for n, x in known.items() if x >= 0.005), key=lambda n: -known[n])[:8]
     if not shown:
         return
-    page.section("Which tolerance spreads the frequency", "share of the variance")
-    styles: list[Style] = ["plain" for _ in shown]
-    half = 24
-    rows = [
-        [s["cause"], words.chance(s["share"]), bar(s["share"], shown[0]["share"], half)[half + 1 :]]
-        for s in shown
-    ]
-    page.table(rows, [Column(), Column(True), Column(rank=1)], styles)
+    page.section("What each tolerance does to the frequency", "share of the variance")
+    largest, half = known[shown[0]], 16
+    rows = [["", "share", "at its low limit", "at its high limit", ""]]
+    for name in shown:
+        move = moves.get(name, {})
+        ends = [words.change(move.get(key)) for key in ("at_low", "at_high")]
+        rows.append([name, words.chance(known[name]), *ends, bar(known[name], largest, half)[half + 1 :]])
+    columns = [Column(), Column(True), Column(True, 2), Column(True, 2), Column(rank=3)]
+    page.table(rows, columns, ["dim"])
+
+
+def _margins(page: Page, prediction: Mapping[str, Any]) -> None:
+    rows = []
+    for m in prediction.get("margins") or ():
+        ends = [
+            f"{side} {si(float(m[side]), m['unit'])}"
+            for side in ("above", "below")
+            if m.get(side) is not None
+        ]
+        rows.append(f"{m['part']} {' and '.join(ends)}")
+    if rows:
+        page.section("It runs while")
+        for text in rows:
+            page.prose(text, "  ")
 
 
 def _advice(page: Page, advice: Any) -> None:
@@ -135,7 +181,7 @@ def _advice(page: Page, advice: Any) -> None:
     items = advice.items() if isinstance(advice, Mapping) else (("", x) for x in advice)
     for name, value in items:
         if text := _advised(name, value):
-            page.entry(str(name).replace("_", " "), text) if name else page.prose(text, "  ")
+            page.entry(str(name).replace("_", " "), text) if name else page.prose(text, "  - ")
 
 
 def _advised(name: str, value: Any) -> str:

@@ -148,23 +148,17 @@ def _own(
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
 
-    from benchfit.show import words
+    from benchfit.show import waveforms, words
 
-    others = capture is not None and len(explanation.captures[0].channels) > 1 and len(capture.channels) > 1
-    rows = _rows(explanation, kind)
-    figure = Figure(figsize=(8.0, rows), layout="constrained")
+    figure = Figure(figsize=(8.0, _rows(explanation, kind)), layout="constrained")
     FigureCanvasAgg(figure)
     axes: Any
-    if kind == "capture":
-        fitted = constants is not None and bool(constants.phases)
-        ratios = [4.0, *([1.3] if others else []), *([1.3] if fitted else [])]
-        axes = figure.subplots(len(ratios), 1, sharex=True, height_ratios=ratios)
-    elif kind == "slopes":
-        axes = figure.subplots(1, 2)
+    if kind == "capture" and capture is not None:
+        heights = waveforms.panels(waveforms.scene(explanation, constants, capture))
+        axes = figure.subplots(len(heights), 1, sharex=True, height_ratios=heights)
     else:
-        axes = figure.subplots()
-    flat = _listed(axes)
-    _draw(flat, explanation, constants, capture, kind)
+        axes = figure.subplots(1, 2 if kind == "slopes" else 1)
+    _draw(_listed(axes), explanation, constants, capture, kind)
     if heading:
         from benchfit.show.palette import LIGHT, plain
 

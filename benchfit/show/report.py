@@ -80,7 +80,7 @@ def page(
         parts=_parts(explanation),
         apart=[clean(words.listed(group)) for group in explanation.unseparated],
         readings=[
-            (typeset(words.reading(r.node_or_part, r.reading)), f"+{100 * r.would_settle:.0f} %")
+            (typeset(words.reading(explanation, r)), f"+{100 * r.would_settle:.0f} %")
             for r in explanation.next_readings
         ],
         remedies=_remedies(explanation),
@@ -215,7 +215,7 @@ def _suspects(explanation: Explanation) -> list[tuple[str, str, str, float]]:
 def _parts(explanation: Explanation) -> list[list[Any]]:
     rows = []
     for p in explanation.parts:
-        if p.value is None:
+        if p.value is None or not words.resolved(p):
             continue
         limits = "" if p.limits is None else f"{si(p.limits[0], p.unit)} to {si(p.limits[1], p.unit)}"
         nominal = si(p.nominal, p.unit) if p.nominal is not None else "absent"

@@ -134,7 +134,7 @@ def _suspects(page: Page, explanation: Explanation) -> None:
 
 
 def _parts(page: Page, explanation: Explanation) -> None:
-    known = [p for p in explanation.parts if p.known_from != "build sheet" and _found(p)]
+    known = [p for p in explanation.parts if p.known_from != "build sheet" and words.resolved(p)]
     if known:
         page.section("Parts as built")
         rows = [["", "built", "nominal", "off", "limits", "known from"]]
@@ -151,11 +151,13 @@ def _parts(page: Page, explanation: Explanation) -> None:
         columns = [Column(), Column(True), Column(True, 3), Column(True), Column(rank=1), Column(rank=2)]
         page.table(rows, columns, styles)
     apart = [words.listed(group) for group in explanation.unseparated]
-    taken = [p.name for p in explanation.parts if p.known_from == "build sheet" and p.nominal is not None]
+    grouped = {name for group in explanation.unseparated for name in group}
+    sheet = [p.name for p in explanation.parts if p.known_from == "build sheet" and p.nominal is not None]
+    taken = [name for name in sheet if name not in grouped]
     if (apart or taken) and not known:
         page.section("Parts")
     if taken:
-        page.prose(f"As the sheet gives them: {', '.join(taken)}.", "  ", "dim")
+        page.prose(f"Known from the sheet rather than the capture: {', '.join(taken)}.", "  ", "dim")
     for group in apart:
         page.prose(
             f"Cannot be told apart by this capture: {group}; only their combined effect is known.", "  "
@@ -172,7 +174,7 @@ def _readings(page: Page, explanation: Explanation) -> None:
     if useful := words.worthwhile(explanation):
         page.section("Read next", "how much surer it would make the answer")
         for r in useful:
-            page.prose(words.reading(r.node_or_part, r.reading), f"  {f'+{100 * r.would_settle:.0f} %':>6}  ")
+            page.prose(words.reading(explanation, r), f"  {f'+{100 * r.would_settle:.0f} %':>6}  ")
 
 
 def _remedies(page: Page, explanation: Explanation) -> None:

@@ -83,6 +83,11 @@ def scene(explanation: Explanation, constants: CycleConstants | None, capture: C
     return Scene(explanation, constants, traces, placed)
 
 
+def panels(s: Scene) -> list[float]:
+    """Relative heights of the panels that a picture of the capture has."""
+    return [4.0, *([1.3] if s.others else []), *([1.3] if s.phases else [])]
+
+
 def draw_capture(axes: Sequence[Any], s: Scene) -> None:
     """The record with fitted phases, levels and asymptotes; the output below; residuals at the bottom.
 
@@ -234,8 +239,14 @@ def draw_cycle(axes: Sequence[Any], s: Scene) -> None:
     if period is None or starts.size < 2:
         nothing(ax, "no whole cycle in the capture")
         return
-    t, v = curves.folded(trace, starts, period)
-    build, nominal = _build(s, starts, period), s.explanation.nominal_model.get(trace.node)
+    build, nominal = _curve(s, trace.node), _curve(s, f"nominal:{trace.node}")
+    if build:
+        begins = np.array([p.begin for p in s.phases if p.fit.rising == (build[1][1] > build[1][0])])
+        t, v = curves.folded(trace, begins if begins.size > 1 else starts, period)
+        t = t if begins.size > 1 else curves.aligned(t, v, period, *build)
+    else:
+        t, v = curves.folded(trace, starts, period)
+        build = _fitted_cycle(s, starts, period)
     ends = [float(curve[0][-1]) for curve in (build, nominal) if curve and len(curve[0])]
     longest = max(period, s.target or 0.0, *ends)
     factor, unit = scale(longest, "s")
@@ -246,7 +257,7 @@ def draw_cycle(axes: Sequence[Any], s: Scene) -> None:
         x, y = build
         ax.plot(x * factor, y * volts, color=LIGHT["discharge"], lw=1.8, label="build, fitted")
     if nominal:
-        x, y = (np.asarray(z, dtype=float) for z in nominal)
+        x, y = nominal
         ax.plot(x * factor, y * volts, color=LIGHT["target"], lw=1.5, ls=(0, (5, 2)), label="nominal parts")
     if s.target is not None:
         ax.axvline(s.target * factor, color=LIGHT["target"], lw=1.1, ls=":", label="target period")
@@ -256,10 +267,15 @@ def draw_cycle(axes: Sequence[Any], s: Scene) -> None:
     legend_above(ax, markerscale=3)
 
 
-def _build(s: Scene, starts: Array, period: float) -> tuple[Array, Array] | None:
-    """The build's curve over one cycle: the fitted circuit's, or the phases where no circuit is given."""
-    if model := s.explanation.model.get(s.timing.node):
-        return np.asarray(model[0], dtype=float), np.asarray(model[1], dtype=float)
+def _curve(s: Scene, name: str) -> tuple[Array, Array] | None:
+    """A circuit's curve over one cycle, None where the explanation holds none."""
+    if not (found := s.explanation.model.get(name)) or len(found[0]) < 2:
+        return None
+    return np.asarray(found[0], dtype=float), np.asarray(found[1], dtype=float)
+
+
+def _fitted_cycle(s: Scene, starts: Array, period: float) -> tuple[Array, Array] | None:
+    """The fitted phases over one cycle, where no circuit is given."""
     x = np.linspace(0.0, period, 400)
     y = curves.fitted(s.phases, starts[0] + x)
     return (x, y) if np.isfinite(y).any() else None
@@ -278,7 +294,7 @@ def draw_slopes(axes: Sequence[Any], s: Scene) -> None:
             continue
         volts, v_unit = scale(float(np.max(np.abs(v))), "V")
         rates, r_unit = scale(float(np.max(np.abs(slope))), "V/s")
-        fit = next(p.fit for p in s.phases if p.fit.rising is (phase == "charge"))
+        fit = next(p.fit for p in s.phases if p.fit.rising == (phase == "charge"))
         ends = np.array([fit.start, fit.end])
         line = curves.rate(fit, ends) * rates
         ax.plot(ends * volts, line, color=LIGHT[phase], lw=1.8, label="one exponential")

@@ -6,7 +6,7 @@ import math
 import re
 from collections.abc import Mapping, Sequence
 
-from benchfit.explain.result import Explanation, Miss, NextReading, Quantity, Remedy, Suspect
+from benchfit.explain.result import Explanation, Miss, NextReading, PartFound, Quantity, Remedy, Suspect
 from benchfit.quantity import percent, si
 
 LABELS = {
@@ -96,7 +96,7 @@ def charge(suspect: Suspect) -> str:
     """The suspect's sentence, after the names of its causes where it does not name them itself."""
     said = suspect.says.rstrip(".")
     if not suspect.causes:
-        return f"nothing off: {said}" if said else NOTHING
+        return said if "nothing" in said else f"nothing off: {said}" if said else NOTHING
     if all(re.search(rf"(?<!\w){re.escape(name)}(?!\w)", said) for name in suspect.causes):
         return said
     return f"{listed(suspect.causes)}: {said}" if said else listed(suspect.causes)
@@ -211,7 +211,7 @@ def _best_reading(explanation: Explanation) -> str:
     if not explanation.next_readings:
         return ""
     best = explanation.next_readings[0]
-    return f" Read next: {reading(best.node_or_part, best.reading)}."
+    return f" Read next: {reading(explanation, best)}."
 
 
 def worthwhile(explanation: Explanation) -> list[NextReading]:
@@ -223,10 +223,18 @@ def worthwhile(explanation: Explanation) -> list[NextReading]:
     return [r for r in explanation.next_readings if r.would_settle >= least][:3]
 
 
-def reading(where: str, what: str) -> str:
-    """ "R: resistance, one end lifted"; the place is left out where the text names it."""
-    named = not where or re.search(rf"(?<!\w){re.escape(where)}(?!\w)", what)
-    return what if named else f"{where}, {what}"
+def reading(explanation: Explanation, r: NextReading) -> str:
+    """What to read, the part's name before it where the text does not say it."""
+    is_part = any(p.name == r.node_or_part for p in explanation.parts)
+    named = re.search(rf"(?<!\w){re.escape(r.node_or_part)}(?!\w)", r.reading)
+    return f"{r.node_or_part}, {r.reading}" if is_part and not named else r.reading
+
+
+def resolved(part: PartFound) -> bool:
+    """Whether a part has a value worth showing: a parasitic only where it stands out from nothing."""
+    if part.value is None or not math.isfinite(part.value):
+        return False
+    return part.nominal is not None or (part.u is not None and abs(part.value) > 2 * part.u)
 
 
 def count(n: float) -> str:

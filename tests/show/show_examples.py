@@ -64,7 +64,7 @@ def miss(
     """A budget whose unexplained part makes it add up."""
     total = built / target - 1
     rest = total - on_paper - math.fsum(s for _, s, _ in shares)
-    limits = None if limit is None else (target * (1 - limit), target * (1 + limit))
+    limits = None if limit is None else (-limit, limit)
     return Miss(target, built, total, on_paper, tuple(Share(*s) for s in shares), rest, limits)
 
 

@@ -93,6 +93,25 @@ def test_the_drawn_phases_lie_on_the_samples(shape: dict[str, object], rotation:
     assert np.median(np.abs(rest[inner])) < constants.noise["capacitor"]
 
 
+def test_without_kept_phases_they_are_made_of_the_constants() -> None:
+    capture, constants = waveform(**TIMER, samples=4000)
+    trace = curves.Trace("CH1", "capacitor", capture.time, capture.channels[0].values)
+    bare = dataclasses.replace(constants, phases=())
+    rest = trace.volts - curves.fitted(curves.place(bare, trace), trace.time)
+    assert np.nanmedian(np.abs(rest)) < constants.noise["capacitor"]
+
+
+@pytest.mark.parametrize("shift", [0.0, 0.3, 0.77])
+def test_a_folded_cycle_is_laid_on_the_circuits_curve(shift: float) -> None:
+    """From whichever turn the record's cycles are counted, the samples come to lie on the curve."""
+    x = np.linspace(0.0, 2.0, 400)
+    y = np.where(x < 1.9, 1 - np.exp(-x), (1 - math.exp(-1.9)) * (2.0 - x) / 0.1)
+    t = np.linspace(0.0, 1.999, 700)
+    v = np.interp((t + 2.0 * shift) % 2.0, x, y)
+    at = curves.aligned(t, v, 2.0, x, y)
+    assert np.median(np.abs(np.interp(at, x, y) - v)) < 0.005
+
+
 def test_slopes_are_the_differential_equations() -> None:
     """dv/dt = (A − v)/τ within its own error bars (95 % of points within U, here at least 80 % of 32)."""
     capture, constants = waveform(**TIMER, samples=40000)

@@ -20,6 +20,7 @@ SGR = re.compile(r"\x1b\[[0-9;]*m")
 
 PREDICTION = {
     "schema": 1,
+    "title": "Tide gauge beeper",
     "circuit": "op-amp",
     "oscillates": True,
     "predicted": {
@@ -42,13 +43,15 @@ PREDICTION = {
             ],
         }
     },
+    "root_sum_square": {"frequency": [484.0, 597.0], "duty": [0.485, 0.515]},
+    "monte_carlo": {"frequency": [489.1, 588.0], "duty": [0.487, 0.513], "oscillates": 0.974},
+    "contributions": [
+        {"part": "C", "at_low": 0.111, "at_high": -0.0909},
+        {"part": "R", "at_low": 0.0526, "at_high": -0.0476},
+    ],
+    "margins": [{"part": "R", "above": None, "below": 3.9e6, "unit": "Ω"}],
     "warnings": [{"code": "probe-loads", "says": "the ×1 probe would slow it by 4 %"}],
-    "capture_advice": {
-        "node": "capacitor",
-        "time_per_division": 5e-4,
-        "coupling": "dc",
-        "could_settle": ["R_leak", "delay", "slew"],
-    },
+    "capture_advice": ["capture the capacitor node, d.c. coupled", "set 500 µs per division: some 3 cycles"],
 }
 
 
@@ -72,7 +75,21 @@ def test_colour_changes_nothing_but_colour(name: str) -> None:
 
 @pytest.mark.parametrize("width", [60, 80])
 def test_a_prediction_is_printed_as_kept(width: int, golden: Callable[[str, str], None]) -> None:
-    golden(f"prediction_{width}.txt", render_prediction(PREDICTION, width=width) + "\n")
+    text = render_prediction(PREDICTION, width=width)
+    assert max(cells(line) for line in text.splitlines()) <= width
+    golden(f"prediction_{width}.txt", text + "\n")
+
+
+def test_advice_may_have_names() -> None:
+    advice = {
+        "node": "capacitor",
+        "time_per_division": 5e-4,
+        "could_settle": ["R_leak", "slew"],
+        "probe": None,
+    }
+    text = render_prediction({**PREDICTION, "capture_advice": advice})
+    assert "  time per division   500 µs" in text
+    assert "  could settle        R_leak, slew" in text
 
 
 def test_a_prediction_that_will_not_run_says_why() -> None:
