@@ -26,6 +26,9 @@ class Channel:
         The smallest step between different values in the record, in ``unit``; 0 where it has only one value.
     overloaded : ndarray of bool, shape (samples,), or None
         Where the instrument wrote an overload or clipping word instead of a number.
+    recorded : (minimum, maximum) or None
+        Extremes that the record shows, where ``values`` no longer do: those of an envelope of which
+        ``values`` are the mid-points.
     """
 
     name: str
@@ -33,12 +36,27 @@ class Channel:
     values: NDArray[np.float64]
     resolution: float = 0.0
     overloaded: NDArray[np.bool_] | None = None
+    recorded: tuple[float, float] | None = None
 
     def __post_init__(self) -> None:
         if self.values.ndim != 1:
             raise CaptureError(
                 f"channel {self.name}: values must be one-dimensional, got shape {self.values.shape}"
             )
+
+    @property
+    def minimum(self) -> float:
+        """Smallest recorded value, in ``unit``; NaN where there is none."""
+        return self.recorded[0] if self.recorded else _extreme(np.fmin, self.values)
+
+    @property
+    def maximum(self) -> float:
+        """Largest recorded value, in ``unit``; NaN where there is none."""
+        return self.recorded[1] if self.recorded else _extreme(np.fmax, self.values)
+
+
+def _extreme(of: np.ufunc, values: NDArray[np.float64]) -> float:
+    return float(of.reduce(values)) if values.size else float("nan")
 
 
 @dataclass(frozen=True, eq=False)
@@ -87,7 +105,7 @@ class Capture:
     @property
     def time(self) -> NDArray[np.float64]:
         """Time of every sample (s), shape (samples,); made anew at each call."""
-        return self.start + self.interval * np.arange(self.samples)
+        return self.start + self.interval * np.arange(self.samples, dtype=np.float64)
 
     def __getitem__(self, name: str) -> Channel:
         for channel in self.channels:

@@ -8,7 +8,6 @@ from pathlib import Path
 from typing import IO
 
 import numpy as np
-from numpy.typing import NDArray
 
 from benchfit.capture.evidence import MOST_BESIDE, Claim, Family
 from benchfit.capture.layouts import tell
@@ -111,14 +110,19 @@ def _check_fit(source: Source, table: Table, page: Page) -> None:
 
 
 def _channel(table: Table, axis: Axis, column: Column) -> Channel:
-    values = table.columns[column.index]
-    recorded = axis.values(values) if not axis.is_envelope else values
+    rows = table.columns[column.index]
+    values = axis.values(rows)
+    # The mid-points of an envelope have neither the converter's steps nor the record's extremes.
+    recorded = axis.frame(rows) if axis.is_envelope else values
     step = abs(column.scale) * resolution(recorded)
-    values = axis.values(values)
     if column.scale != 1.0:
         values = values * column.scale
     mask = table.overloaded.get(column.index)
-    return Channel(column.name, column.unit, values, step, axis.mask(mask) if mask is not None else None)
+    extremes = None
+    if axis.is_envelope and np.isfinite(recorded).any():
+        ends = column.scale * float(np.nanmin(recorded)), column.scale * float(np.nanmax(recorded))
+        extremes = (min(ends), max(ends))
+    return Channel(column.name, column.unit, values, step, axis.mask(mask) if mask is not None else None, extremes)
 
 
 def _damage(source: Source, table: Table, claim: Claim) -> tuple[Remark, ...]:
@@ -225,5 +229,3 @@ def _notes(source: Source, page: Page, what: _Understood) -> dict[str, str]:
 def _in(unit: str) -> str:
     return f" in {unit}" if unit else ""
 
-
-Floats = NDArray[np.float64]

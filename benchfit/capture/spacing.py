@@ -97,28 +97,29 @@ def settle(
 
 
 def _mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, int]:
-    """Lone stamps that fit on neither side, put in line with their neighbours where these fit each other."""
+    """Lone stamps far from their place, put in line with their neighbours where these fit each other."""
     tolerance = max(2 * quantum, 0.3 * step)
     with np.errstate(invalid="ignore", over="ignore"):
         fits = np.abs(np.diff(stamps) - step) <= tolerance
-    if np.mean(fits) < 0.8:
-        return stamps, 0
     sound = np.concatenate([[False], fits]) | np.concatenate([fits, [False]])
-    places = np.flatnonzero(sound)
-    mended = stamps.copy()
-    lone = np.flatnonzero(~sound)
-    count = 0
+    places, lone = np.flatnonzero(sound), np.flatnonzero(~sound)
+    if not lone.size or lone.size > 0.05 * stamps.size:
+        return stamps, 0
+    mended, count = stamps.copy(), 0
     for row in lone:
         at = int(np.searchsorted(places, row))
         if at in (0, places.size):
             near = places[0] if at == 0 else places[-1]
-            mended[row] = stamps[near] + step * (row - near)
+            place = stamps[near] + step * (row - near)
         else:
             a, b = places[at - 1], places[at]
             if abs(stamps[b] - stamps[a] - step * (b - a)) > tolerance + 0.01 * step * (b - a):
                 continue
-            mended[row] = stamps[a] + (stamps[b] - stamps[a]) * (row - a) / (b - a)
-        count += 1
+            place = stamps[a] + (stamps[b] - stamps[a]) * (row - a) / (b - a)
+        # A stamp nearer than a step is jitter, not damage.
+        if not abs(stamps[row] - place) <= max(step, 2 * quantum):
+            mended[row] = place
+            count += 1
     return mended, count
 
 
@@ -152,7 +153,7 @@ def _uneven(
     mean = span / jumps.size
     smallest, largest = float(np.min(jumps[jumps > 0])), float(np.max(jumps))
     start = float(stamps[0])
-    if columns and largest > 3 * mean and _is_log_of_changes(columns):
+    if columns and _is_log_of_changes(columns):
         interval = max(smallest / 10, span / 1_000_000)
         says = (f"One row per change: each value is held until the next change, on an even axis of {interval:.3g} s, which is the "
                 "resolution of every edge.")  # fmt: skip

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from benchfit.capture.arrange import Keep, Pairs, Step
 from benchfit.capture.frames import Frame, split
 from benchfit.capture.plan import Plan
-from benchfit.capture.spacing import Spacing, even, robust_step, settle
+from benchfit.capture.spacing import Spacing, even, mended, robust_step, settle
 from benchfit.capture.table import Table
 from benchfit.errors import CaptureError, Remark
 
@@ -42,6 +42,10 @@ class Axis:
         for step in self.steps:
             column = step.values(column)
         return column
+
+    def frame(self, column: Floats) -> Floats:
+        """A column of the table as the rows of its frame."""
+        return self.steps[0].values(column) if self.steps else column
 
     def mask(self, column: NDArray[np.bool_]) -> NDArray[np.bool_]:
         """A mask on a column of the table as one on samples."""
@@ -124,8 +128,11 @@ def _from_stamps(
     refusal: Refusal,
 ) -> Axis:
     step = robust_step(stamps)
+    # A spoilt stamp must be put in line first: it would pass for the begin of a frame.
+    stamps, damage = mended(stamps, step, quantum)
     _refuse_no_stamps(stamps, quantum, plan, refusal)
     kept, remarks = _one_frame(split(stamps, table, step, quantum), frame, plan, refusal)
+    remarks += damage
     stamps = stamps[kept.start : kept.stop]
     steps: tuple[Step, ...] = (Keep(kept.start, kept.stop),)
     if stamps.size < FEWEST:

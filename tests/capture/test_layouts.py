@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable
+from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -11,20 +11,9 @@ from typing import Any
 import numpy as np
 import pytest
 
-from benchfit.capture import Capture, describe, read
-from benchfit.errors import CaptureError
+from benchfit.capture import read
 
-Write = Callable[[str | bytes], Path]
-
-
-@pytest.fixture
-def write(tmp_path: Path) -> Write:
-    def save(content: str | bytes, name: str = "shot.csv") -> Path:
-        path = tmp_path / name
-        path.write_bytes(content if isinstance(content, bytes) else content.encode())
-        return path
-
-    return save
+Write = Callable[..., Path]
 
 
 def wave(k: int) -> float:
