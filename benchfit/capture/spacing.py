@@ -82,21 +82,12 @@ def settle(
     step = robust_step(stamps)
     if not (np.isfinite(step) and step > 0):
         raise refusal("the time column does not run forwards; give the time between samples with --interval")
-    stamps, mended = _mended(stamps, step, quantum)
-    remarks = (
-        (
-            Remark(
-                "damaged", f"{mended} time stamps do not fit between their neighbours and were put in line."
-            ),
-        )
-        if mended
-        else ()
-    )
+    stamps, remarks = mended(stamps, step, quantum)
     found = even(stamps, quantum) or _gapped(stamps, step, quantum) or _uneven(stamps, step, columns, refusal)
     return Spacing(found.start, found.interval, found.steps, remarks + found.remarks)
 
 
-def _mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, int]:
+def mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, tuple[Remark, ...]]:
     """Lone stamps far from their place, put in line with their neighbours where these fit each other."""
     tolerance = max(2 * quantum, 0.3 * step)
     with np.errstate(invalid="ignore", over="ignore"):
@@ -104,8 +95,8 @@ def _mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, int]:
     sound = np.concatenate([[False], fits]) | np.concatenate([fits, [False]])
     places, lone = np.flatnonzero(sound), np.flatnonzero(~sound)
     if not lone.size or lone.size > 0.05 * stamps.size:
-        return stamps, 0
-    mended, count = stamps.copy(), 0
+        return stamps, ()
+    result, count = stamps.copy(), 0
     for row in lone:
         at = int(np.searchsorted(places, row))
         if at in (0, places.size):
@@ -118,9 +109,10 @@ def _mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, int]:
             place = stamps[a] + (stamps[b] - stamps[a]) * (row - a) / (b - a)
         # A stamp nearer than a step is jitter, not damage.
         if not abs(stamps[row] - place) <= max(step, 2 * quantum):
-            mended[row] = place
+            result[row] = place
             count += 1
-    return mended, count
+    says = f"{count} time stamps do not fit between their neighbours and were put in line."
+    return (result, (Remark("damaged", says),)) if count else (stamps, ())
 
 
 def _gapped(stamps: Floats, step: float, quantum: float) -> Spacing | None:

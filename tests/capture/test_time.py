@@ -198,6 +198,17 @@ def test_a_few_spoilt_stamps_are_put_in_line(places: list[int], wrong: float) ->
     assert [remark.code for remark in spacing.remarks] == ["damaged"]
 
 
+@pytest.mark.parametrize("wrong", ["-9.00000", "900.00000", "0.00777"])
+def test_a_spoilt_stamp_begins_no_frame(wrong: str, write: Write) -> None:
+    stamps = [f"{k * 1e-3:.5f}" for k in range(300)]
+    stamps[150] = wrong
+    capture = read(write(rows(stamps)))
+    assert capture.samples == 300
+    assert capture.interval == pytest.approx(1e-3)
+    np.testing.assert_array_equal(capture.channels[0].values, ramp(np.arange(300)))
+    assert codes(capture) == {"damaged"}
+
+
 @given(
     st.integers(20, 400), st.floats(-1e3, 1e3), st.integers(-9, 0), st.integers(0, 6),
 )  # fmt: skip
