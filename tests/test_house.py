@@ -12,8 +12,8 @@ from benchfit import circuits
 REPO = Path(__file__).resolve().parents[1]
 PACKAGE = REPO / "benchfit"
 
-# Room → what it may import of the others: a room as a whole, or one module of it. Top to bottom is the
-# way the data flow; ``show`` knows results as data, the pipeline's files join the rooms, the commands open the doors.
+# Room → what it may import of the others: a room as a whole, or one module of it. Top to bottom is the way
+# the data flow; ``show`` knows results as data, the pipeline's files join the rooms, the commands open doors.
 MAY_KNOW = {
     "errors": set(),
     "quantity": {"errors"},
@@ -23,7 +23,10 @@ MAY_KNOW = {
     "circuits": {"errors", "quantity"},
     "sheet": {"errors", "quantity", "circuits"},
     "explain": {"errors", "quantity", "cycle.constants", "circuits", "sheet"},
-    "show": {"errors", "quantity", "explain.result", "circuits.model", "cycle.constants", "capture.model"},
+    "show": {
+        "errors", "quantity", "explain.result", "burnin.result", "circuits.model", "cycle.constants",
+        "capture.model",
+    },
     "assignment": {"errors", "quantity", "capture", "cycle", "circuits", "sheet"},
     "pipeline": {"errors", "capture", "cycle", "circuits", "sheet", "explain", "show", "assignment"},
     "burnin": {"errors", "quantity", "capture", "instrument", "pipeline"},
@@ -95,9 +98,9 @@ def test_no_circuit_is_known_by_name():
         tree = ast.parse(path.read_text(encoding="utf-8"))
         told = documents(tree)
         for node in ast.walk(tree):
-            if isinstance(node, ast.Constant) and isinstance(node.value, str) and id(node) not in told:
-                if names.search(node.value):
-                    wrong.append(f"{path.relative_to(REPO)}:{node.lineno} names {node.value!r}")
+            is_text = isinstance(node, ast.Constant) and isinstance(node.value, str) and id(node) not in told
+            if is_text and names.search(node.value):
+                wrong.append(f"{path.relative_to(REPO)}:{node.lineno} names {node.value!r}")
     assert not wrong, "\n".join(wrong)
 
 
