@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
     from benchfit.explain.expected import Expected
+    from benchfit.explain.trim import Trimming
 
 
 @dataclass(frozen=True, eq=False)
@@ -122,6 +123,43 @@ def measure(capture: Capture, sheet: Sheet | None = None) -> Mapping[str, Quanti
 
     constants = cycle.measure(capture, assign(capture, sheet))
     return measured(constants, sheet.scope if sheet is not None else Scope(), True)
+
+
+def look(capture: Capture, sheet: Sheet | None = None) -> Explanation:
+    """What one capture shows, measured and not yet explained (fast): for a live view, between explanations.
+
+    Raises
+    ------
+    CaptureError
+        A channel is missing or empty.
+    """
+    from benchfit import cycle
+    from benchfit.explain.measured import measured
+    from benchfit.sheet.model import Scope
+
+    assigned = assign(capture, sheet)
+    constants = cycle.measure(capture, assigned)
+    return Explanation(
+        captures=(facts_of(capture, assigned, constants),),
+        oscillates=constants.oscillates,
+        measured=measured(constants, sheet.scope if sheet is not None else Scope(), True),
+        circuit=sheet.circuit.name if sheet is not None and sheet.circuit is not None else None,
+        title=sheet.title if sheet is not None else "",
+        warnings=(*capture.warnings, *constants.remarks),
+    )
+
+
+def trimming(sheet: Sheet, part: str, low: float, high: float) -> Trimming:
+    """Help with turning a trimmer, ``part`` between ``low`` and ``high``, onto the sheet's target.
+
+    Raises
+    ------
+    SheetError
+        No circuit, no such part, no target, or the part moves nothing that has one.
+    """
+    from benchfit.explain.trim import trimming as trimming_of
+
+    return trimming_of(sheet, part, low, high)
 
 
 def explain(
