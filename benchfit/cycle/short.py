@@ -45,6 +45,8 @@ def own_samples(fitted: Fitted, layout: Layout, trace: Trace, sigma: float) -> L
     return replace(layout, first=first, stop=np.maximum(stop, first + 1))
 
 
-def _away(fitted: Fitted, trace: Trace, phase: NDArray[np.int64], index: NDArray[np.int64]) -> NDArray[np.float64]:
+def _away(
+    fitted: Fitted, trace: Trace, phase: NDArray[np.int64], index: NDArray[np.int64]
+) -> NDArray[np.float64]:
     curve = fitted.values_at(phase, index.astype(float))[0]
     return np.asarray(np.nan_to_num(trace.values[index] - curve, nan=np.inf))

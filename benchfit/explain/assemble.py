@@ -187,9 +187,7 @@ def assemble(sheet: Sheet, captures: Sequence[CycleConstants]) -> Model:
             continue
         offered = model.constants_of(views[number], model.values(model.center))
         wanted = [n for n in offered if n not in ("charge_end", "discharge_end")]
-        if views[number].shape != "jumping":
-            wanted = [n for n in wanted if n not in ("charge_start", "discharge_start")]
-        if any("high_share" in c for c in (constants,)) and "charge_share" in constants:
+        if "high_share" in constants and "charge_share" in constants:
             wanted = _one_share(wanted, constants)
         found, block = observe(constants, number, wanted)
         observations.extend(found)

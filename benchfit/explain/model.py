@@ -23,7 +23,7 @@ Array = NDArray[np.float64]
 TIMES = ("period", "rise_time", "fall_time")
 VOLTAGES = ("upper", "lower", "charge_start", "discharge_start", "charge_bow", "discharge_bow", "high", "low")
 EDGES = ("rise_time", "fall_time")
-DIFFERENCES = ("charge_bow", "discharge_bow")
+DIFFERENCES = ("charge_bow", "discharge_bow", "charge_jump", "discharge_jump")
 OUTPUT = ("high", "low")
 
 # What a closed form leaves out of a real circuit, as a share of the swing, of the period, of a phase's bend.
@@ -177,6 +177,9 @@ class Model:
         for rising, word in (("charge", "upper"), ("discharge", "lower")):
             if f"{rising}_end" in found:
                 found[word] = found[f"{rising}_end"]
+        if "charge_start" in found and "discharge_start" in found:
+            found["charge_jump"] = found["charge_start"] - found["lower"]
+            found["discharge_jump"] = found["discharge_start"] - found["upper"]
         if view.shape == "holding" and "charge_start" in found:
             found["lower"] = found["charge_start"]
         return found
@@ -200,7 +203,7 @@ class Model:
                 out[..., j] = np.where(np.asarray(x) > 0, np.log(np.maximum(x * clock, 1e-300)), o.value)
             elif o.name in TIMES:
                 out[..., j] = np.log(x * clock)
-            elif o.name in VOLTAGES:
+            elif o.name in VOLTAGES or o.name in DIFFERENCES:
                 node = "output" if o.name in OUTPUT else "timing"
                 offset = 0.0 if o.name in DIFFERENCES else values.get(f"offset:{node}", 0.0)
                 out[..., j] = (1 + values.get(f"gain:{node}", 0.0)) * x + offset
@@ -282,7 +285,32 @@ def observe(
         Observation(view, n, "constant", v, k if n.endswith("curvature") else 1.0)
         for n, v, k in zip(names, values, scales, strict=True)
     ]
-    return found, covariance
+    quiet = _no_jumps(constants, predicted, swing)
+    if not quiet:
+        return found, covariance
+    found += [Observation(view, name, "constant", 0.0) for name in quiet]
+    size = len(names)
+    larger = np.zeros((len(found), len(found)))
+    larger[:size, :size] = covariance
+    larger[range(size, len(found)), range(size, len(found))] = [u * u for u in quiet.values()]
+    return found, larger
+
+
+def _no_jumps(constants: CycleConstants, predicted: Sequence[str], swing: float) -> dict[str, float]:
+    """Corners at which no step was seen, with the u of that "none": a series resistance would have made one."""
+    if "charge_jump" not in predicted or "charge_start" in constants or "discharge_start" in constants:
+        return {}
+    if not all(n in constants for n in ("upper", "lower", "charge_share")):
+        return {}
+    noise = next((x for node, x in constants.noise.items() if not _is_output(node)), 0.0)
+    share = constants.value("charge_share")
+    fastest = swing / (constants.value("period") * max(min(share, 1 - share), 1e-6))
+    u = math.hypot(2 * FLOOR_VOLTS * swing, 2 * noise, min(fastest * constants.interval, 0.5 * swing))
+    return {"charge_jump": u, "discharge_jump": u}
+
+
+def _is_output(node: str) -> bool:
+    return node == "output" or node.startswith("collector")
 
 
 def _swing(constants: CycleConstants) -> float:
