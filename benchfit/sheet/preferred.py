@@ -61,7 +61,7 @@ def series_for(tolerance: float) -> str:
     A tolerance between two classes takes the coarser series, one over 20 % takes E3 (classes: IEC 60063).
     """
     for name, limit in _TOLERANCES:
-        if tolerance <= limit * (1 + 1e-9):
+        if tolerance <= 1.01 * limit:  # half a logarithmic width is a little more than the fraction
             return name
     return "E3"
 
