@@ -11,6 +11,7 @@ from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
 from benchfit.cycle.phases import Fitted, Layout, fit_phases, guarded, layout_from, meet
+from benchfit.cycle.residuals import end_guards
 from benchfit.cycle.scatter import correlation, mean_scatter, student
 from benchfit.cycle.short import own_samples
 from benchfit.cycle.trace import Trace
@@ -18,6 +19,9 @@ from benchfit.cycle.turns import Crossings, Turns, block_means, find_turns
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
+
+_ZONES = (0.08, 0.2)
+_TESTED = 300
 
 
 @dataclass(frozen=True, eq=False)
@@ -30,13 +34,27 @@ class Corners:
     top: Mask
 
 
+@dataclass(frozen=True, eq=False)
+class Met:
+    """Fitted phases, the turns between them, and the samples left out at the start and the end of each kind."""
+
+    fitted: Fitted
+    index: Array
+    top: Mask
+    guards: dict[bool, tuple[int, int]]
+
+    def rounded(self, top: bool) -> bool:
+        """Whether samples were left out about the upper (or lower) turns."""
+        return self.guards[top][1] > 0 or self.guards[not top][0] > 0
+
+
 def observe_meeting(trace: Trace, passages: Crossings) -> Observed | None:
     """Fit the phases of a timing node that turns without a step; None where nothing can be fitted."""
-    turns = with_ends(trace, find_turns(trace, passages))
-    fitted = fit_corners(trace, turns)
-    if fitted is None:
+    met = fit_corners(trace, with_ends(trace, find_turns(trace, passages)))
+    if met is None:
         return None
-    return constants(fitted, noise_variance(fitted))
+    met = guard_corners(trace, met)
+    return constants(trace, met)
 
 
 def with_ends(trace: Trace, turns: Turns) -> Turns:
@@ -60,26 +78,74 @@ def with_ends(trace: Trace, turns: Turns) -> Turns:
     return Turns(index, top, turns.block)
 
 
-def fit_corners(trace: Trace, turns: Turns) -> Fitted | None:
+def fit_corners(trace: Trace, turns: Turns) -> Met | None:
     """Fit, find where the phases meet, and fit again with the samples that belong to each."""
     layout = layout_from(turns.index, turns.top, 0, trace.size)
     layout = _trim_ends(trace, layout, turns)
     inner = guarded(layout, _guard(layout), _guard(layout))
     fitted = fit_phases(trace, inner)
     index = turns.index
-    for _ in range(4):
+    for _ in range(8):
         if len(fitted.fits) < 2:
             return None
         met = meet(fitted, index)
         moved = np.abs(np.where(np.isnan(met), 0.0, met - index))
         index = np.where(np.isnan(met), index, met)
-        if fitted.layout is not inner and np.mean(moved) < 0.1 * np.sqrt(np.mean(layout.length)) * 0.1:
+        if fitted.layout is not inner and (np.quantile(moved, 0.98) < 0.02 or _settled(moved, layout)):
             break
         layout = layout_from(index, turns.top, layout.first[0], layout.stop[-1])
         layout = _extend_ends(fitted, layout, trace, index, turns.top)
         layout = own_samples(fitted, layout, trace, trace.noise)
         fitted = fit_phases(trace, layout, begin=fitted)
-    return fitted if len(fitted.fits) == 2 else None
+    return Met(fitted, index, turns.top, {True: (0, 0), False: (0, 0)}) if len(fitted.fits) == 2 else None
+
+
+def guard_corners(trace: Trace, met: Met) -> Met:
+    """Leave samples out about the turns where, and only where, the residuals there ask for it."""
+    whole = _some(met.fitted.layout)
+    guards = {True: (0, 0), False: (0, 0)}
+    open_kinds = {True, False}
+    for zone in _ZONES:
+        inner = fit_phases(trace, guarded(whole, *(2 * [np.maximum(zone * whole.length, 1)])), begin=met.fitted)
+        for kind in sorted(open_kinds):
+            if kind not in inner.fits:
+                continue
+            before, after, through = end_guards(trace, inner, whole, kind, zone)
+            if not through:
+                guards[kind] = (before, after)
+                open_kinds.discard(kind)
+        if not open_kinds:
+            break
+    if not any(a or b for a, b in guards.values()):
+        return met
+    return _refit(trace, met, guards)
+
+
+def _some(layout: Layout) -> Layout:
+    """A few hundred whole phases, evenly spread, for tests of the residuals."""
+    mine = np.flatnonzero(layout.whole & (layout.length >= 8))
+    if mine.size > 2 * _TESTED:
+        mine = mine[np.linspace(0, mine.size - 1, 2 * _TESTED).astype(int)]
+    return Layout(layout.first[mine], layout.stop[mine], layout.rising[mine], layout.whole[mine])
+
+
+def _refit(trace: Trace, met: Met, guards: dict[bool, tuple[int, int]]) -> Met:
+    fitted, index = met.fitted, met.index
+    for _ in range(2):
+        layout = layout_from(index, met.top, fitted.layout.first[0], fitted.layout.stop[-1])
+        before = np.where(layout.rising, guards[True][0], guards[False][0])
+        after = np.where(layout.rising, guards[True][1], guards[False][1])
+        before[0] = after[-1] = 0
+        fitted = fit_phases(trace, guarded(layout, before, after), begin=fitted)
+        found = meet(fitted, index)
+        index = np.where(np.isnan(found), index, found)
+    return Met(fitted, index, met.top, guards)
+
+
+def _settled(moved: Array, layout: Layout) -> bool:
+    """Whether the turns moved by next to nothing against the shorter of the phases that they part."""
+    shorter = np.minimum(layout.length[:-1], layout.length[1:])
+    return bool(np.quantile(moved / np.maximum(shorter, 1), 0.98) < 2e-4)
 
 
 def _guard(layout: Layout) -> Array:
@@ -126,10 +192,10 @@ def noise_variance(fitted: Fitted) -> float:
     return float(rss / max(sum(f.freedom for f in fitted.fits.values()), 1))
 
 
-def corners(fitted: Fitted) -> Corners:
+def corners(fitted: Fitted, guess: Array) -> Corners:
     """Where neighbouring fitted phases meet."""
     layout = fitted.layout
-    index = meet(fitted, layout.stop[:-1] - 0.5)
+    index = meet(fitted, guess)
     before = np.arange(layout.size - 1)
     good = np.flatnonzero(np.isfinite(index) & fitted.sound[:-1] & fitted.sound[1:])
     voltage = fitted.values_at(before[good], index[good])[0]
@@ -146,9 +212,11 @@ def corner_forms(fitted: Fitted, corner: Corners, time: Array, voltage: Array) -
     return left + right
 
 
-def constants(fitted: Fitted, variance: float) -> Observed | None:
+def constants(trace: Trace, met: Met) -> Observed | None:
     """Cycle constants of the fitted phases."""
-    corner = corners(fitted)
+    fitted = met.fitted
+    variance = noise_variance(fitted)
+    corner = corners(fitted, met.index)
     top, low = np.flatnonzero(corner.top), np.flatnonzero(~corner.top)
     if top.size == 0 or low.size == 0 or corner.index.size < 3:
         return None

@@ -142,7 +142,19 @@ def find_turns(trace: Trace, passages: Crossings, points: int = 400) -> Turns:
     stops = np.clip(stops, starts + 1, values.size)
     top = passages.rising[:-1]
     index = np.where(top, _extreme(values, starts, stops, True), _extreme(values, starts, stops, False))
-    return Turns((index + 0.5) * block - 0.5, top, block)
+    return Turns(_near_passages((index + 0.5) * block - 0.5, passages), top, block)
+
+
+def _near_passages(index: Array, passages: Crossings) -> Array:
+    """Keep a turn near the faster of its two passages: noise on a flat ramp throws the extreme far off.
+
+    The band holds about half of the swing, so a phase is over within a few times as long as its passage takes.
+    """
+    taken = 4.0 * (passages.after - passages.before) + 1.0
+    latest = passages.after[:-1] + taken[:-1]
+    earliest = passages.before[1:] - taken[1:]
+    apart = earliest <= latest
+    return np.where(apart, np.clip(index, np.minimum(earliest, latest), np.maximum(earliest, latest)), index)
 
 
 def _extreme(values: Array, starts: Index, stops: Index, largest: bool) -> Index:
