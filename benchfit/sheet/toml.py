@@ -71,7 +71,9 @@ class Source:
             says = f"--set {text}: write it as dotted.key=value, for instance --set parts.R=1M"
             raise SheetError(says, path=self.path, key=key)
         table = self.table
-        for word in words[:-1]:
+        for depth, word in enumerate(words[:-1], 1):
+            if word not in table:
+                self._overridden.add(".".join(words[:depth]))
             table = table.setdefault(word, {})
             if not isinstance(table, dict):
                 says = f"--set {text}: {word} holds a value, it is no section"

@@ -418,3 +418,37 @@ def test_any_text_survives_the_dump(record):
     import tomllib
 
     assert tomllib.loads(dump({"record": record}))["record"] == record
+
+
+@given(
+    st.integers(0, len(LAMP) - 1),
+    st.integers(0, 9),
+    st.text(st.sampled_from("\"'[]{}=.,\n #aR1-%µ"), max_size=4),
+)
+def test_a_damaged_sheet_is_read_or_refused(at, length, instead):
+    """Whatever a slip of the pen does to a sheet, it is a sheet still or a SheetError, never another
+    error."""
+    try:
+        sheet = Sheet.parse(LAMP[:at] + instead + LAMP[at + length :])
+        if sheet.circuit is not None:
+            sheet.build()
+    except SheetError:
+        return
+    assert Sheet.parse(sheet.dump()).digest == sheet.digest
+
+
+@given(
+    st.lists(
+        st.sampled_from(["parts", "R", "target", "capture", "2", "probe", "capacitor", "scope", "title"]),
+        max_size=4,
+    ),
+    st.text(st.sampled_from("0123456789kM%V \"'{}=[]none."), max_size=8),
+)
+def test_any_override_is_taken_or_refused(words, value):
+    """No override breaks more than itself."""
+    says = ""
+    try:
+        Sheet.parse(LAMP, [f"{'.'.join(words)}={value}"])
+    except SheetError as error:
+        says = error.says
+    assert not says or says.startswith("--set")
