@@ -38,6 +38,10 @@ class Edges:
     def size(self) -> int:
         return int(self.index.size)
 
+    def take(self, which: NDArray[np.int64]) -> Edges:
+        """Some of the edges."""
+        return Edges(self.index[which], self.rising[which], self.variance[which])
+
 
 def find_edges(trace: Trace, states: States) -> Edges:
     """The 50 % crossings, each passed with a hysteresis of several σ so that noise makes none."""

@@ -36,7 +36,8 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     traces = [prepare(capture, a) for a in assignments]
     timing = next((t for t in traces if t.assignment.shape != "square"), None)
     output = next((t for t in traces if t.assignment.shape == "square"), None)
-    found_output = observe_output(output)[0] if output is not None else None
+    seen = observe_output(output) if output is not None else None
+    found_output = seen.observed if seen is not None else None
     found_timing = observe_timing(timing) if timing is not None else None
     if found_output is None and found_timing is None:
         at_rest = [observe_rest(timing)] if timing is not None else []

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass, replace
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -9,57 +11,72 @@ from benchfit.cycle.edges import Edges, durations, find_edges
 from benchfit.cycle.levels import States, state_levels
 from benchfit.cycle.period import fit_period
 from benchfit.cycle.observed import Observed
+from benchfit.cycle.scatter import mean_scatter
+from benchfit.cycle.sequence import Sequence, closed, put_in_order
 from benchfit.cycle.trace import Trace
 
 Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
 
 
-def observe_output(trace: Trace) -> tuple[Observed | None, States, Edges]:
-    """Constants of a square output; None where it has no full period."""
+@dataclass(frozen=True, eq=False)
+class OutputFound:
+    """Constants of an output (None without a full period), its levels, its regular edges and their order."""
+
+    observed: Observed | None
+    states: States
+    edges: Edges
+    order: Sequence
+
+
+def observe_output(trace: Trace) -> OutputFound:
+    """Constants of a square output; none where it has no full period."""
     states = state_levels(trace)
     edges = find_edges(trace, states)
-    if edges.size < 3:
-        return None, states, edges
-    names, values, variances = ["period", "high_share"], [0.0, 0.0], [0.0, 0.0]
+    order = put_in_order(edges.index, edges.rising)
+    kept = edges.take(order.keep)
+    if order.odd.size and order.odd[0]:
+        kept, order = kept.take(np.arange(1, kept.size)), replace(order, odd=order.odd[1:])
+    if kept.size < 3:
+        return OutputFound(None, states, kept, order)
     dt = trace.interval
-    number = (np.arange(edges.size) + int(edges.rising[0])) // 2
-    fit = fit_period(edges.index * dt, number, edges.rising.astype(int), edges.variance * dt**2)
-    share, share_variance = _share(edges, dt, fit.period)
-    values[:], variances[:] = [fit.period, share], [fit.u**2, share_variance]
-    for name, level in (("high", states.high), ("low", states.low)):
-        names.append(name)
-        values.append(level)
-        variances.append(_level_variance(trace, states, level, edges))
+    at, number = closed(kept.index * dt, kept.rising, order.odd)
+    fit = fit_period(at, number, kept.rising.astype(int), kept.variance * dt**2)
+    share, share_variance = _share(kept, dt, order.odd)
+    names = ["period", "high_share", "high", "low"]
+    values = [fit.period, share, states.high, states.low]
+    variances = [fit.u**2, share_variance, *(_level_variance(trace, kept) for _ in range(2))]
     for name, rising in (("rise_time", True), ("fall_time", False)):
-        found = durations(trace, states, edges, rising)
+        found = durations(trace, states, kept, rising)
         if found is not None:
             names.append(name)
             values.append(found[0])
             variances.append(found[1] ** 2)
-    turns = trace.time(edges.index[edges.rising])
-    return Observed(tuple(names), np.array(values), np.diag(variances), turns, fit.jitter, trace.noise), states, edges
+    turns = kept.index[kept.rising] * dt
+    observed = Observed(tuple(names), np.array(values), np.diag(variances), turns, fit.jitter, trace.noise)
+    return OutputFound(observed, states, kept, order)
 
 
-def _share(edges: Edges, dt: float, period: float) -> tuple[float, float]:
+def _share(edges: Edges, dt: float, odd: Mask) -> tuple[float, float]:
     """Mean high time over mean high plus mean low time, and its variance."""
     lengths = np.diff(edges.index) * dt
-    rising = edges.rising[:-1]
-    high, low = lengths[rising], lengths[~rising]
+    rises, falls = (np.flatnonzero((edges.rising[:-1] == d) & ~odd) for d in (True, False))
+    if rises.size == 0 or falls.size == 0:
+        rises, falls = (np.flatnonzero(edges.rising[:-1] == d) for d in (True, False))
+    high, low = lengths[rises], lengths[falls]
     total = high.mean() + low.mean()
     share = float(high.mean() / total)
     weight = np.zeros(edges.size)
-    for these, factor in ((np.flatnonzero(rising), 1 - share), (np.flatnonzero(~rising), -share)):
+    for these, factor in ((rises, 1 - share), (falls, -share)):
         np.add.at(weight, these + 1, factor / these.size)
         np.add.at(weight, these, -factor / these.size)
     variance = float(np.sum((weight * dt) ** 2 * edges.variance))
     pairs = min(high.size, low.size)
-    if pairs > 2:
-        rest = (1 - share) * high[:pairs] - share * low[:pairs]
-        variance = max(variance, float(rest.var(ddof=1)) / pairs)
-    return share, variance / total**2
+    rest = (1 - share) * high[:pairs] - share * low[:pairs]
+    single = float(np.mean(edges.variance)) * dt**2 * 2.0 * (1 - share + share**2)
+    return share, (variance + mean_scatter(rest, single)) / total**2
 
 
-def _level_variance(trace: Trace, states: States, level: float, edges: Edges) -> float:
-    """Of a level, from the noise of the samples near it and the scatter of the single states."""
-    near = max(trace.size // 4, 1)
-    return float(max(trace.noise**2 / near, trace.resolution**2 / 12.0 / max(edges.size, 1)))
+def _level_variance(trace: Trace, edges: Edges) -> float:
+    """Of a level, from the noise of the samples near it and the quantisation of the single states."""
+    return float(max(4.0 * trace.noise**2 / trace.size, trace.resolution**2 / 12.0 / max(edges.size, 1)))
