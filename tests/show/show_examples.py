@@ -624,6 +624,76 @@ ALL = {
 }
 
 
+def lot(
+    n: int = 24, *, low_c: float = 0.06, failures: int = 1, seed: int = 11
+) -> list[Explanation | dict[str, object]]:
+    """Units of one build whose capacitors are all a little high, one of them with a wrong part."""
+    rng = np.random.default_rng(seed)
+    found: list[Explanation | dict[str, object]] = []
+    for i in range(n):
+        c, r = 85e-9 * (1 + low_c + 0.02 * rng.standard_normal()), 10e3 * (1 + 0.004 * rng.standard_normal())
+        if i == 5:
+            r = 12e3
+        f = 535.0 * 85e-9 * 10e3 / (c * r)
+        bad = i == 5
+        u_c = 85e-9 * 0.006
+        off = abs(f / 535 - 1)
+        verdict = "pass" if off < 0.045 else "conditional" if off < 0.055 else "fail"
+        suspects = (
+            (Suspect(("R",), {"R": 0.2}, 0.97, "R is 20 % above its nominal"),)
+            if bad
+            else (
+                (Suspect((), {}, 0.94, "nothing is off beyond its tolerance"),)
+                if off < 0.06
+                else (
+                    Suspect(("C",), {"C": c / 85e-9 - 1}, 0.62, "C is high"),
+                    Suspect((), {}, 0.38, "nothing is off"),
+                )
+            )
+        )
+        found.append(
+            Explanation(
+                captures=(facts(f"lot 7/beeper {i + 1:03d}.csv"),),
+                oscillates=True,
+                measured={
+                    "frequency": q(f, 3e-4, "Hz"),
+                    "duty": Quantity(0.487 + 0.001 * rng.standard_normal(), 6e-4, ""),
+                },
+                circuit="op-amp",
+                title="Tide gauge beeper",
+                parts=(
+                    part("R", "Ω", 10e3, r, 20.0, "reading", 0.01),
+                    part("C", "F", 85e-9, c, u_c, "capture", 0.1),
+                    part("V_high", "V", 13.0, 12.93 + 0.05 * rng.standard_normal(), 0.2, "capture", 0.1),
+                ),
+                miss={"frequency": miss(535.0, f, 0.0, [("C", f / 535 - 1, 0.004)], 0.05), "duty": None},
+                suspects=suspects,
+                settled=bad or off < 0.06,
+                remedies=()
+                if verdict == "pass"
+                else (
+                    Remedy(
+                        "R",
+                        r,
+                        8.2e3 if bad else 9.1e3,
+                        "E24",
+                        {"frequency": q(535 * (1 + 0.01 * rng.standard_normal()), 0.004, "Hz")},
+                    ),
+                ),
+                verdict=verdict,
+            )
+        )
+    for i in range(failures):
+        found.append(
+            {
+                "schema": 1,
+                "capture": {"path": f"lot 7/beeper {n + i + 1:03d}.csv"},
+                "error": {"status": 3, "says": "beeper has no row of numbers; export it again"},
+            }
+        )
+    return found
+
+
 def waveform(
     *,
     lower: float,
