@@ -2,9 +2,13 @@
 
 from __future__ import annotations
 
+import numpy as np
+
 from benchfit.circuits.lag import lag, parasitics, phase
 from benchfit.circuits.likeness import over, under, yes
 from benchfit.circuits.model import Circuit, Condition, Cycle, Features, Node, Part, Parts
+
+_LEAST = 1e-30  # S; keeps the asymptote of a ramp that nothing bends out of the way
 
 
 def _cycle(p: Parts) -> Cycle:
@@ -25,7 +29,7 @@ def _cycle(p: Parts) -> Cycle:
                 up.current - up.conductance * upper,
                 "the ramp stops below the upper threshold: what leaks takes all the current",
                 "I_charge",
-                upper,
+                np.where(up.conductance > 0, up.current / np.maximum(up.conductance, _LEAST), upper),
             ),
             Condition(
                 "latched",

@@ -130,7 +130,10 @@ class Cycle:
 
     ``levels`` maps "high", "low" (V) and "rise_time", "fall_time" (s, 10 % to 90 %) to what the parts say of
     the
-    output; what they do not say is left out. ``rests`` maps a node to the level at which it is held while
+    output; what they do not say is left out. "rise_lag" (s) is how much later the output crosses its middle
+    rising
+    than it is driven, where that is slow (a collector that charges a capacitor). ``rests`` maps a node to the
+    level at which it is held while
     another node's phase lasts. ``remarks`` are sentences (code, mask, says) about a regime that the closed
     form enters, shown where the mask holds.
     """

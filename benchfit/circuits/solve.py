@@ -49,9 +49,17 @@ def time_to(phase: Phase, start: Array, end: Array) -> Array:
 
 
 def after(phase: Phase, start: Array, time: Array | float) -> Array:
-    """Voltage (V) that a phase reaches ``time`` (s) after it was at ``start`` (local τ at the start where C
-    bends)."""
-    stiff: Array = 1 + phase.slope * start
+    """Voltage (V) that a phase reaches ``time`` (s) after it was at ``start``.
+
+    Where C bends, with the local τ half-way (midpoint rule: exact to second order in the way gone).
+    """
+    end = _advanced(phase, start, 1 + phase.slope * start, time)
+    if np.any(np.asarray(phase.slope) != 0):
+        end = _advanced(phase, start, 1 + phase.slope * 0.5 * (start + end), time)
+    return end
+
+
+def _advanced(phase: Phase, start: Array, stiff: Array, time: Array | float) -> Array:
     y = phase.curvature / stiff * time
     small = np.abs(y) < 1e-8
     shape: Array = np.where(small, 1 - y / 2, -np.expm1(-y) / np.where(small, 1.0, y))
@@ -74,7 +82,8 @@ class Settled:
     @property
     def period(self) -> Array:
         """Sum of all phases (s)."""
-        return np.sum(self.durations, axis=0)
+        period: Array = np.sum(self.durations, axis=0)
+        return period
 
 
 def settle(cycle: Cycle) -> Settled:
@@ -99,6 +108,8 @@ def settle(cycle: Cycle) -> Settled:
     runs = np.ones(np.broadcast_shapes(*(np.shape(d) for d in durations)), bool)
     for condition in cycle.conditions:
         runs = runs & (condition.margin > 0)
+    # A device that goes out in the instant in which it fires (a large ESR) makes no cycle.
+    runs = runs & (sum(durations) > 0)
     shape = runs.shape
     stack = [np.stack([np.broadcast_to(x, shape) for x in row]) for row in (durations, starts, ends)]
     return Settled(np.where(runs, stack[0], np.nan), stack[1], stack[2])
@@ -108,6 +119,7 @@ def settle(cycle: Cycle) -> Settled:
 # --------------------------------------------
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(10)
+_STEP = 1e-4
 
 
 def _bend(ratio: Array) -> Array:
@@ -128,48 +140,66 @@ def _bend(ratio: Array) -> Array:
     return y
 
 
+def _sampled(
+    phases: Sequence[Phase], starts: Array, ends: Array, durations: Array
+) -> tuple[Array, Array, Array]:
+    """Gauss's nodes over phases in a row: time u in [−1, 1], voltage (V), weight (they sum to 1)."""
+    total = np.sum(durations, axis=0)
+    along = _NODES.reshape(-1, *[1] * total.ndim)
+    weights = _WEIGHTS.reshape(along.shape)
+    before = np.zeros_like(total)
+    u, v, w = [], [], []
+    for phase, start, end, duration in zip(phases, starts, ends, durations, strict=True):
+        # The variable is the time s that a constant capacitance would take: dt = (1 + β·v) ds, smooth in s.
+        constant = replace(phase, slope=0.0)
+        length = np.where(duration > 0, time_to(constant, start, end), 0.0)
+        volts = after(constant, start, length * (1 + along) / 2)
+        v.append(volts)
+        w.append(weights * length / 2 * (1 + phase.slope * volts) / total)
+        u.append(2 * (before + np.where(duration > 0, time_to(phase, start, volts), 0.0)) / total - 1)
+        before = before + duration
+    return np.concatenate(u), np.concatenate(v), np.concatenate(w)
+
+
+def _rise(u: Array, y: Array) -> Array:
+    """(1 − e^(−y·(1 + u)))/(1 − e^(−2y)): from 0 at u = −1 to 1 at u = 1, straight for y = 0."""
+    y = np.where(np.abs(y) < 1e-6, 1e-6, y)
+    return np.expm1(-y * (1 + u)) / np.expm1(-2 * y)
+
+
+def _line(f: Array, v: Array, w: Array) -> tuple[Array, Array]:
+    """a and b of the weighted least-squares line v ≈ a + b·f."""
+    mean_f, mean_v = np.sum(w * f, axis=0), np.sum(w * v, axis=0)
+    away = f - mean_f
+    b = np.sum(w * away * v, axis=0) / np.sum(w * away * away, axis=0)
+    return mean_v - b * mean_f, b
+
+
 def _stretch(
     phases: Sequence[Phase], starts: Array, ends: Array, durations: Array
 ) -> tuple[Array, Array, Array, Array]:
     """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in
     a row.
 
-    It shares the zeroth, first and second Legendre coefficient with the waveform: its tangent space is
-    theirs.
+    Begun where the zeroth to second Legendre coefficients are the waveform's, then three steps of variable
+    projection in the bend (Golub & Pereyra 1973, with Kaufman's Jacobian).
     """
-    total = np.sum(durations, axis=0)
-    c = [np.zeros_like(total) for _ in range(4)]
-    before = np.zeros_like(total)
-    for phase, start, end, duration in zip(phases, starts, ends, durations, strict=True):
-        # The variable is the time s that a constant capacitance would take: dt = (1 + β·v) ds, smooth in s.
-        constant = replace(phase, slope=0.0)
-        length = np.where(duration > 0, time_to(constant, start, end), 0.0)
-        along = _NODES.reshape(-1, *[1] * total.ndim)
-        v = after(constant, start, length * (1 + along) / 2)
-        dt = _WEIGHTS.reshape(along.shape) * length / 2 * (1 + phase.slope * v) / total
-        u = 2 * (before + np.where(duration > 0, time_to(phase, start, v), 0.0)) / total - 1
-        for n, p in enumerate((1.0, u, (3 * u * u - 1) / 2, (5 * u**3 - 3 * u) / 2)):
-            c[n] = c[n] + (2 * n + 1) * np.sum(v * p * dt, axis=0)
-        before = before + duration
-    y = _bend(c[2] / c[1])
-    tiny = np.abs(y) < 1e-4
-    s = np.where(tiny, 1.0, y)
-    # e^(−y·u) = i_0 − 3·i_1·P_1 + 5·i_2·P_2 − 7·i_3·P_3 …
-    i_1 = np.where(tiny, y / 3, (np.cosh(s) - np.sinh(s) / s) / s)
-    # amplitude·i_1 stays finite as y → 0, so amplitude·(e^(∓y) − i_0) is taken in ratios to i_1
-    up = np.where(tiny, -3.0 + 0 * y, (np.exp(-s) - np.sinh(s) / s) / np.where(tiny, 1.0, i_1))
-    down = np.where(tiny, 3.0 + 0 * y, (np.exp(s) - np.sinh(s) / s) / np.where(tiny, 1.0, i_1))
-    scaled = -c[1] / 3
-    i_3 = np.where(np.abs(y) < 0.05, y**3 / 105, _i3(np.where(np.abs(y) < 0.05, 1.0, y)))
-    bow = c[3] - np.where(tiny, 0.0, -7 * i_3 * scaled / np.where(tiny, 1.0, i_1))
-    return c[0] + scaled * down, c[0] + scaled * up, 2 * y / total, bow
-
-
-def _i3(y: Array) -> Array:
-    """Modified spherical Bessel function of the first kind, order 3."""
-    i_1 = (np.cosh(y) - np.sinh(y) / y) / y
-    i_2 = np.sinh(y) / y - 3 * i_1 / y
-    return i_1 - 5 * i_2 / y
+    u, v, w = _sampled(phases, starts, ends, durations)
+    first = 3 * np.sum(w * v * u, axis=0)
+    second = 5 * np.sum(w * v * (3 * u * u - 1) / 2, axis=0)
+    y = _bend(second / first)
+    for _ in range(3):
+        f = _rise(u, y)
+        a, b = _line(f, v, w)
+        slope = b * (_rise(u, y + _STEP) - _rise(u, y - _STEP)) / (2 * _STEP)
+        base, tilt = _line(f, slope, w)
+        slope = slope - base - tilt * f
+        step = np.sum(w * slope * (v - a - b * f), axis=0) / np.sum(w * slope * slope, axis=0)
+        y = y + np.clip(step, -1.0, 1.0)
+    f = _rise(u, y)
+    a, b = _line(f, v, w)
+    bow = 7 * np.sum(w * (v - a - b * f) * (5 * u**3 - 3 * u) / 2, axis=0)
+    return a, a + b, 2 * y / np.sum(durations, axis=0), bow
 
 
 def _only(phase: Phase, rows: NDArray[np.bool_]) -> Phase:
@@ -200,8 +230,9 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
             (d for p, d in zip(cycle.phases, settled.durations, strict=True) if p.output == "high"),
             0 * period,
         )
-        found["high_share"] = high / period
-    found.update({name: level + 0 * period for name, level in cycle.levels.items()})
+        late = cycle.levels.get("rise_lag", 0.0)
+        found["high_share"] = (high - late) / period
+    found.update({n: level + 0 * period for n, level in cycle.levels.items() if n != "rise_lag"})
     if not node:
         return found
     for rising, word in ((True, "charge"), (False, "discharge")):

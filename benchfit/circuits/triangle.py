@@ -38,20 +38,6 @@ def _cycle(p: Parts) -> Cycle:
                 "V_high",
                 reference,
             ),
-            Condition(
-                "never-reaches",
-                high - upper + 0 * upper,
-                "the integrator runs into its rail below the upper threshold",
-                "R_in",
-                high,
-            ),
-            Condition(
-                "never-reaches",
-                lower - low + 0 * lower,
-                "the integrator runs into its rail above the lower threshold",
-                "R_in",
-                low,
-            ),
         ),
         levels=levels,
     )

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from benchfit.circuits.lag import lag, parasitics, phase
+from benchfit.circuits.lag import Lag, lag, parasitics, phase
 from benchfit.circuits.likeness import close, yes
 from benchfit.circuits.model import (
     Array,
@@ -25,54 +25,79 @@ from benchfit.circuits.solve import after, time_to
 
 
 @dataclass(frozen=True, eq=False)
-class _Half:
-    """The phase in which a base is off; how long it lasts (s), and the voltage on the capacitor's plates, as
-    seen from the base, when its transistor turns on (V)."""
+class _Side:
+    """A base with its resistor and capacitor.
 
-    phase: Phase
-    margin: Array
-    time: Array
+    ``collector`` names what recovers while it is off: the load, and the capacitor that hangs on it.
+    ``plates``: the base less its capacitor's resistive drop, as its transistor turns on (V).
+    """
+
+    base: str
+    now: Lag
+    capacitor: str
+    collector: tuple[str, str]
+    output: Output
     plates: Array
 
 
-def _recovered(p: Parts, half: _Half, load: str, capacitor: str) -> Array:
-    """How far the collector has recovered by the end of its half-cycle, and so falls when it turns on (V).
+def _side(p: Parts, number: int) -> _Side:
+    other = 3 - number
+    base, capacitor = f"base{number}", f"C{number}"
+    now = lag(p, (1 / p[f"R{number}"], p["supply"]), node=base, capacitor=capacitor, foot=p["V_CE"])
+    end = after(phase(now, p["V_on"], rising=True), p["V_on"], p["delay"])
+    plates = end * (1 + now.conductance * now.esr) - now.esr * now.current
+    output: Output = "high" if number == 1 else "low"
+    return _Side(base, now, capacitor, (f"RC{number}", f"C{other}"), output, plates)
 
-    Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there
-    from where that base began to conduct: by so much the collector is up at once.
-    """
-    full = p["supply"] - p["V_CE"]
+
+def _half_way(p: Parts, reached: Array, load: str, capacitor: str) -> Array:
+    """Time (s) until a recovering collector crosses the middle between its levels, ``reached`` of a full
+    swing."""
     if load not in p:
-        return full + 0 * half.time
-    left = full - np.maximum(p["V_BE"] - half.plates, 0.0)
-    return full - left * np.exp(-half.time / ((p[load] + p["ESR"]) * p[capacitor]))
+        return 0 * reached
+    return -p[load] * p[capacitor] * np.log1p(-0.5 * reached)
 
 
-def _half(p: Parts, kick: Array, base: str, resistor: str, capacitor: str, output: Output) -> _Half:
-    """The half-cycle in which ``base`` is off: it starts below V_BE by the kick of the other collector.
+def _half(p: Parts, side: _Side, kick: Array) -> tuple[Phase, Array]:
+    """The phase in which a base is off, and its duration (s): it starts below V_BE by the kick it is given.
 
     Capacitance from the base to ground divides the kick by C/(C + C_stray + C_probe); a series resistance of
     the capacitor drops what the base resistor drives through it.
     """
-    now = lag(p, (1 / p[resistor], p["supply"]), node=base, capacitor=capacitor, foot=p["V_CE"])
-    aside = p["C_stray"] + p.get(f"C_probe:{base}", np.float64(0.0))
-    bent = p[capacitor] * (1 + p["C_slope"] * (p["V_BE"] - p["V_CE"] - kick))
+    now = side.now
+    aside = p["C_stray"] + p.get(f"C_probe:{side.base}", np.float64(0.0))
+    bent = p[side.capacitor] * (1 + p["C_slope"] * (p["V_BE"] - p["V_CE"] - kick))
     plates = np.maximum(p["V_BE"] - kick * bent / (bent + aside), -p["V_breakdown"])
-    below = 1 + now.conductance * now.esr
-    start = (plates + now.esr * now.current) / below
-    one = phase(now, p["V_on"], rising=True, node=base, start=start, delay=p["delay"], output=output)
-    time = np.where(start < p["V_on"], time_to(one, start, p["V_on"]), 0.0) + p["delay"]
-    end = after(one, np.maximum(p["V_on"], start), p["delay"])
-    return _Half(one, now.asymptote - p["V_on"], time, end * below - now.esr * now.current)
+    start = (plates + now.esr * now.current) / (1 + now.conductance * now.esr)
+    one = phase(
+        now, p["V_on"], rising=True, node=side.base, start=start, delay=p["delay"], output=side.output
+    )
+    return one, np.where(start < p["V_on"], time_to(one, start, p["V_on"]), 0.0) + p["delay"]
 
 
-def _round(p: Parts, kick: Array) -> tuple[_Half, _Half]:
-    """Both half-cycles, the first one begun by ``kick`` (V) at base 1."""
-    first = _half(p, kick, "base1", "R1", "C1", "high")
-    return first, _half(p, _recovered(p, first, "RC1", "C2"), "base2", "R2", "C2", "low")
+def _recovered(p: Parts, side: _Side, other: _Side, time: Array) -> Array:
+    """How far a collector has recovered after ``time`` (s), and so falls when its transistor turns on (V).
+
+    Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there
+    from where that base began to conduct: by so much the collector is up at once.
+    """
+    load, capacitor = side.collector
+    full = p["supply"] - p["V_CE"]
+    if load not in p:
+        return full + 0 * time
+    left = full - np.maximum(p["V_BE"] - other.plates, 0.0)
+    return full - left * np.exp(-time / ((p[load] + p["ESR"]) * p[capacitor]))
 
 
-def _settled_kick(p: Parts, full: Array) -> Array:
+def _round(p: Parts, one: _Side, two: _Side, kick: Array) -> tuple[Phase, Phase, Array, Array]:
+    """Both phases of the cycle that ``kick`` (V) at base 1 begins, the kick at base 2, the next at base 1."""
+    first, time_1 = _half(p, one, kick)
+    kick_2 = _recovered(p, one, two, time_1)
+    second, time_2 = _half(p, two, kick_2)
+    return first, second, kick_2, _recovered(p, two, one, time_2)
+
+
+def _settled_kick(p: Parts, one: _Side, two: _Side, full: Array) -> Array:
     """The kick at base 1 that a whole cycle reproduces: each depends on how long the other collector had.
 
     A fixed point in one number, found by Aitken's extrapolation (Steffensen's method).
@@ -81,8 +106,8 @@ def _settled_kick(p: Parts, full: Array) -> Array:
     if "RC1" not in p and "RC2" not in p:
         return kick
     for _ in range(2):
-        once = _recovered(p, _round(p, kick)[1], "RC2", "C1")
-        twice = _recovered(p, _round(p, once)[1], "RC2", "C1")
+        once = _round(p, one, two, kick)[3]
+        twice = _round(p, one, two, once)[3]
         bend = twice - 2 * once + kick
         moves = np.abs(bend) > 1e-9 * full
         jump = np.where(moves, (once - kick) ** 2 / np.where(moves, bend, 1.0), 0.0)
@@ -92,10 +117,9 @@ def _settled_kick(p: Parts, full: Array) -> Array:
 
 def _cycle(p: Parts) -> Cycle:
     full = p["supply"] - p["V_CE"]
-    kick_1 = _settled_kick(p, full)
-    first, second = _round(p, kick_1)
-    kick_2 = _recovered(p, first, "RC1", "C2")
-    one, two = first.phase, second.phase
+    side_1, side_2 = _side(p, 1), _side(p, 2)
+    kick_1 = _settled_kick(p, side_1, side_2, full)
+    one, two, kick_2, _ = _round(p, side_1, side_2, kick_1)
     broke = p["V_BE"] - np.maximum(kick_1, kick_2) < -p["V_breakdown"]
     short = (kick_1 < 0.97 * full) | (kick_2 < 0.97 * full)
     return Cycle(
@@ -103,20 +127,24 @@ def _cycle(p: Parts) -> Cycle:
         conditions=(
             Condition(
                 "stuck",
-                first.margin,
+                side_1.now.asymptote - p["V_on"],
                 "base 1 never rises to where its transistor conducts",
                 "R1",
-                one.drive / one.curvature,
+                side_1.now.asymptote,
             ),
             Condition(
                 "stuck",
-                second.margin,
+                side_2.now.asymptote - p["V_on"],
                 "base 2 never rises to where its transistor conducts",
                 "R2",
-                two.drive / two.curvature,
+                side_2.now.asymptote,
             ),
         ),
-        levels={"high": p["V_CE"] + kick_2, "low": p["V_CE"] + 0 * kick_2},
+        levels={
+            "high": p["V_CE"] + kick_2,
+            "low": p["V_CE"] + 0 * kick_2,
+            "rise_lag": _half_way(p, kick_2 / full, "RC1", "C2"),
+        },
         rests={"base1": p["V_BE"], "base2": p["V_BE"]},
         remarks=(
             (

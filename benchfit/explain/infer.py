@@ -17,6 +17,8 @@ from benchfit.explain.model import Array, Model
 
 IDENTITY, PLUS, MINUS, INVERSE = 0, 1, 2, 3
 _STEP = 1e-4
+# A slope beyond this is a state at the edge of oscillation, no information.
+_STEEP = 1e9
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,11 +97,15 @@ class Relaxed:
 
 
 def whitener(covariance: Array) -> Array:
-    """W with W·Wᵀ-whitened residuals: rows scale the data to unit, independent noise. Shape (m, m)."""
-    scale = np.sqrt(np.diag(covariance))
+    """W such that W·residual has unit, independent noise: shape (m, m).
+
+    Eigenvalues of the correlation below 1e-8 (rounding, or two names for one number) are lifted to that.
+    """
+    scale = np.sqrt(np.maximum(np.diag(covariance), 1e-300))
     correlation = covariance / np.outer(scale, scale)
-    correlation = 0.5 * (correlation + correlation.T) + 1e-10 * np.eye(len(scale))
-    return np.linalg.inv(np.linalg.cholesky(correlation)) / scale
+    values, vectors = np.linalg.eigh(0.5 * (correlation + correlation.T))
+    found: Array = (vectors / np.sqrt(np.maximum(values, 1e-8))).T / scale
+    return found
 
 
 def _to_state(batch: Batch, z: Array, free: NDArray[np.int64], t: Array) -> Array:
@@ -203,7 +209,20 @@ def _jacobian(
     with np.errstate(all="ignore"):
         moved_to = (observed - model.predict(shifted)) @ white.T
         slope = -(moved_to - residual[:, None, :]) / step[..., None]
-    found: Array = np.nan_to_num(np.swapaxes(slope, 1, 2), posinf=0.0, neginf=0.0)
+    found: Array = np.clip(np.nan_to_num(np.swapaxes(slope, 1, 2), posinf=0.0, neginf=0.0), -_STEEP, _STEEP)
+    return found
+
+
+def _prior(held: int, owns: int) -> Array:
+    """Precision of each column's own prior: 1 for what is held, next to nothing for what is free."""
+    return np.concatenate([np.ones(held), np.full(owns, 1e-9)])
+
+
+def _ridge(normal: Array) -> Array:
+    """A trace of the identity, so that rounding never makes a normal matrix singular."""
+    size = normal.shape[-1]
+    trace = np.trace(normal, axis1=-2, axis2=-1)
+    found: Array = 1e-13 * trace[..., None, None] * np.eye(size)
     return found
 
 
@@ -212,8 +231,7 @@ def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Arra
     held = k - owns
     transposed = np.swapaxes(jacobian, 1, 2)
     normal = transposed @ jacobian
-    prior = np.concatenate([np.ones(held), np.full(owns, 1e-9)])
-    normal = normal + np.diag(prior)
+    normal = normal + np.diag(_prior(held, owns)) + _ridge(normal)
     gradient = (transposed @ np.nan_to_num(residual, posinf=0.0, neginf=0.0)[..., None])[..., 0]
     gradient[:, :held] -= z
     return normal, gradient
@@ -248,13 +266,14 @@ def _weigh(
     held = free.size
     spread = batch.spread[:, free]
     part = jacobian[:, :, :held]
-    normal = np.swapaxes(part, 1, 2) @ part + np.eye(held)
+    normal = np.swapaxes(part, 1, 2) @ part
+    normal = normal + np.eye(held) + _ridge(normal)
     _, logdet = np.linalg.slogdet(normal)
     covariance = np.zeros((rows, n, n))
     own_u = np.full((rows, batch.own.shape[1]), np.nan)
     if owns:
         full = np.swapaxes(jacobian, 1, 2) @ jacobian
-        full = full + np.diag(np.concatenate([np.ones(held), np.full(owns, 1e-9)]))
+        full = full + np.diag(_prior(held, owns)) + _ridge(full)
         inverse = np.linalg.inv(full)
         own_u = np.sqrt(np.abs(np.diagonal(inverse, axis1=1, axis2=2)[:, held:]))
     inner = np.linalg.inv(normal)

@@ -297,7 +297,8 @@ def observe(
 
 
 def _no_jumps(constants: CycleConstants, predicted: Sequence[str], swing: float) -> dict[str, float]:
-    """Corners at which no step was seen, with the u of that "none": a series resistance would have made one."""
+    """Corners at which no step was seen, with the u of that "none": a series resistance would have made
+    one."""
     if "charge_jump" not in predicted or "charge_start" in constants or "discharge_start" in constants:
         return {}
     if not all(n in constants for n in ("upper", "lower", "charge_share")):

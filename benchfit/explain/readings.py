@@ -171,7 +171,7 @@ def _expected_rise(
     weights: Array, means: Sequence[Array], covariances: Sequence[Array], rng: np.random.Generator
 ) -> float:
     """E[largest posterior probability after the reading] − the largest now."""
-    factors = [np.linalg.cholesky(c + 1e-18 * np.eye(len(c))) for c in covariances]
+    factors = [np.linalg.cholesky(c + (1e-9 * np.trace(c) + 1e-30) * np.eye(len(c))) for c in covariances]
     total = 0.0
     for q, mean, factor in zip(weights, means, factors, strict=True):
         draws = mean + rng.standard_normal((DRAWS, mean.size)) @ factor.T
