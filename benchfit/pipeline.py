@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
     from benchfit.explain.expected import Expected
-    from benchfit.explain.trim import Trimming
+    from benchfit.explain.trim import Trimming as Trimming
 
 
 @dataclass(frozen=True, eq=False)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
@@ -104,6 +105,83 @@ class Candidate:
 
     circuit: str
     score: float
+
+
+@dataclass(frozen=True)
+class Rest:
+    """Acquisitions since the trimmer was last moved.
+
+    ``mean`` of ``count`` values; ``noise`` is the standard uncertainty of a single one by the record's own
+    scatter, ``scope`` what averaging does not lessen; ``began`` and ``last`` in s.
+    """
+
+    mean: float
+    noise: float
+    scope: float
+    began: float
+    last: float
+    count: int = 1
+
+    @property
+    def u(self) -> float:
+        """Standard uncertainty of the mean."""
+        return math.hypot(self.noise / math.sqrt(self.count), self.scope)
+
+
+@dataclass(frozen=True)
+class Turn:
+    """What to do with the trimmer.
+
+    Attributes
+    ----------
+    part, unit, quantity : str
+        The trimmer, its unit, and what it is turned for: "frequency" or "duty".
+    low, high : float
+        Its ends (in ``unit``).
+    now, goal, u : float or None
+        Its value, the one to turn to, and u of goal − now; None where the model has none.
+    is_reachable : bool
+        Whether ``goal`` lies between its ends.
+    miss, expanded, limit : float
+        (built − target)/target without the probe, its U (k = 2), and the limit.
+    best : float or None
+        The miss that is left at the nearer end where the goal is out of reach.
+    is_tight : bool
+        U is at most a quarter of the limit.
+    wait : float or None
+        Seconds at rest until it is (0 where it is; None: never, the scope alone is worse).
+    rest : Rest
+        The readings that it rests on.
+    """
+
+    part: str
+    unit: str
+    quantity: str
+    low: float
+    high: float
+    now: float | None
+    goal: float | None
+    u: float | None
+    is_reachable: bool
+    miss: float
+    expanded: float
+    limit: float
+    best: float | None
+    is_tight: bool
+    wait: float | None
+    rest: Rest
+
+    @property
+    def travel(self) -> float | None:
+        """How far to turn, as a signed share of the trimmer's range; None where that is not known."""
+        if self.now is None or self.goal is None:
+            return None
+        return (self.goal - self.now) / (self.high - self.low)
+
+    @property
+    def is_inside(self) -> bool:
+        """Whether the build is inside its limit beyond doubt: |miss| + U ≤ limit (JCGM 106)."""
+        return abs(self.miss) + self.expanded <= self.limit
 
 
 @dataclass(frozen=True)

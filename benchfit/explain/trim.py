@@ -17,7 +17,7 @@ import numpy as np
 from benchfit.errors import SheetError
 from benchfit.explain.expected import Expected, expected
 from benchfit.explain.model import Array
-from benchfit.explain.result import Quantity
+from benchfit.explain.result import Quantity, Rest, Turn
 from benchfit.sheet.model import Sheet
 
 TIGHT = 0.25
@@ -30,27 +30,6 @@ USUAL_LIMIT = 0.01
 _MOVED = 4.0
 _BEYOND = 4.0
 _POINTS = 600
-
-
-@dataclass(frozen=True)
-class Rest:
-    """Acquisitions since the trimmer was last moved.
-
-    ``mean`` of ``count`` values; ``noise`` is the standard uncertainty of a single one by the record's own
-    scatter, ``scope`` what averaging does not lessen; ``began`` and ``last`` in s.
-    """
-
-    mean: float
-    noise: float
-    scope: float
-    began: float
-    last: float
-    count: int = 1
-
-    @property
-    def u(self) -> float:
-        """Standard uncertainty of the mean."""
-        return math.hypot(self.noise / math.sqrt(self.count), self.scope)
 
 
 def rested(before: Rest | None, reading: Quantity, at: float) -> Rest:
@@ -71,59 +50,6 @@ def rested(before: Rest | None, reading: Quantity, at: float) -> Rest:
     return Rest(mean, before.noise + (noise - before.noise) / count, scope, before.began, at, count)
 
 
-@dataclass(frozen=True)
-class Turn:
-    """What to do with the trimmer.
-
-    Attributes
-    ----------
-    part, unit, quantity : str
-        The trimmer, its unit, and what it is turned for: "frequency" or "duty".
-    low, high : float
-        Its ends (in ``unit``).
-    now, goal, u : float or None
-        Its value, the one to turn to, and u of goal − now; None where the model has none.
-    is_reachable : bool
-        Whether ``goal`` lies between its ends.
-    miss, expanded, limit : float
-        (built − target)/target without the probe, its U (k = 2), and the limit.
-    best : float or None
-        The miss that is left at the nearer end where the goal is out of reach.
-    is_tight : bool
-        U is at most a quarter of the limit.
-    wait : float or None
-        Seconds at rest until it is (0 where it is; None: never, the scope alone is worse).
-    """
-
-    part: str
-    unit: str
-    quantity: str
-    low: float
-    high: float
-    now: float | None
-    goal: float | None
-    u: float | None
-    is_reachable: bool
-    miss: float
-    expanded: float
-    limit: float
-    best: float | None
-    is_tight: bool
-    wait: float | None
-
-    @property
-    def travel(self) -> float | None:
-        """How far to turn, as a signed share of the trimmer's range; None where that is not known."""
-        if self.now is None or self.goal is None:
-            return None
-        return (self.goal - self.now) / (self.high - self.low)
-
-    @property
-    def is_inside(self) -> bool:
-        """Whether the build is inside its limit beyond doubt: |miss| + U ≤ limit (JCGM 106)."""
-        return abs(self.miss) + self.expanded <= self.limit
-
-
 @dataclass(frozen=True, eq=False)
 class Trimming:
     """A trimmer in a build: the forward model with and without the probe, and what it is turned for.
@@ -140,18 +66,23 @@ class Trimming:
     probed: Expected
     bare: Expected
 
-    def turn(self, rest: Rest, parts: Mapping[str, float], pace: float) -> Turn:
+    def turn(
+        self, before: Turn | None, reading: Quantity, at: float, parts: Mapping[str, float], pace: float
+    ) -> Turn:
         """What to do now.
 
         Parameters
         ----------
-        rest : Rest
-            Readings of ``quantity`` since the trimmer was last moved.
+        before : Turn or None
+            What was said after the acquisition before this one.
+        reading : Quantity
+            ``quantity`` as measured now, ``at`` (s) on any clock.
         parts : mapping of float
             The other parts as they are known (SI); nominal where they are not.
         pace : float
             Seconds from one acquisition to the next.
         """
+        rest = rested(before.rest if before is not None else None, reading, at)
         grid = self._grid()
         with_probe, without = self._curve(self.probed, grid, parts), self._curve(self.bare, grid, parts)
         now = _crossing(grid, with_probe, rest.mean, parts.get(self.part))
@@ -176,6 +107,7 @@ class Trimming:
             best=None if reachable else self._best(grid, without),
             is_tight=wait == 0.0,
             wait=wait,
+            rest=rest,
         )
 
     def moves(self) -> bool:
