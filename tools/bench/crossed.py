@@ -36,7 +36,9 @@ def _half(p: Values, off: int, late: bool) -> Mode:
         return v, (current - g * v) / (c + aside)
 
     def recovery(s: Array) -> tuple[Array, Array]:
-        current = (p.supply - s) / (load + p.ESR)
+        gap = p.supply - s
+        # Recovered is recovered: what is left of a fast exponential must not hold up an explicit integrator.
+        current = np.where(np.abs(gap) < p.flat * p.supply, 0.0, gap) / (load + p.ESR)
         return s + p.ESR * current, current / (other * (1.0 + p.C_slope * (p.V_BE - s)))
 
     def rates(y: Array) -> Array:
@@ -101,7 +103,7 @@ TWO_TRANSISTOR = Rig(
         + 20.0 * p.delay
     ),
     required=("supply", "R1", "C1", "R2", "C2", "RC1", "RC2"),
-    defaults={"V_BE": 0.68, "V_on": None, "V_CE": 0.1, "V_breakdown": 7.0},
+    defaults={"V_BE": 0.68, "V_on": None, "V_CE": 0.1, "V_breakdown": 7.0, "flat": 1e-9},
     fill=_fill,
 )
 

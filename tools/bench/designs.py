@@ -1,7 +1,7 @@
 """Plausible designs: what somebody might have meant to build, with the tolerances of the shelf.
 
-Each design is a tuple of specifications, one a part. Timing parts are standard values (IEC 60063) drawn so that the
-period is log-uniform over what the circuit is used for.
+Each design is a tuple of specifications, one a part. Timing parts are standard values (IEC 60063) drawn so
+that the period is log-uniform over what the circuit is used for.
 """
 
 from __future__ import annotations
@@ -24,9 +24,9 @@ class Spec:
     """One part of a design.
 
     ``nominal``, ``low``, ``high`` in SI; ``text`` is its line in the build sheet (None: left to the circuit's
-    default). ``log``: spreads and faults are ratios, else differences. ``kind``: resistor, capacitor, supply, level,
-    threshold, ratio, current or device. ``follows``: the part whose true value the limits move with (by the
-    difference from that part's nominal).
+    default). ``log``: spreads and faults are ratios, else differences. ``kind``: resistor, capacitor, supply,
+    level, threshold, ratio, current or device. ``follows``: the part whose true value the limits move with
+    (by the difference from that part's nominal).
     """
 
     name: str
@@ -41,7 +41,8 @@ class Spec:
 
 @dataclass(frozen=True)
 class Design:
-    """A circuit and its parts as meant; ``nodes`` that could be probed, with the loading ones in ``loads``."""
+    """A circuit and its parts as meant; ``nodes`` that could be probed, with the loading ones in
+    ``loads``."""
 
     circuit: str
     specs: tuple[Spec, ...]
@@ -104,8 +105,13 @@ def _pick(rng: Rng, low: float, high: float, digits: int = 3) -> float:
 LEAKS = ("R_leak", "R_leak_supply", "I_leak", "C_stray", "ESR", "C_slope")
 
 
-def _rc(rng: Rng, factor: float, period: tuple[float, float], r: tuple[float, float],
-        c: tuple[float, float] = (100e-12, 47e-6)) -> tuple[float, float]:
+def _rc(
+    rng: Rng,
+    factor: float,
+    period: tuple[float, float],
+    r: tuple[float, float],
+    c: tuple[float, float] = (100e-12, 47e-6),
+) -> tuple[float, float]:
     """R and C for a period of about factor·R·C."""
     for _ in range(1000):
         product = _log(rng, *period) / factor
@@ -125,8 +131,18 @@ def op_amp(rng: Rng) -> Design:
     both = [_resistor(rng, "R_top", top), _resistor(rng, "R_bottom", bottom)]
     if style == "single":
         supply = float(rng.choice([5, 9, 12]))
-        levels = [Spec("V_high", supply - 0.2, supply - 0.35, supply - 0.05, f"{supply - 0.35:g} .. {supply - 0.05:g}",
-                       "level", False), Spec("V_low", 0.1, 0.0, 0.2, "0 .. 0.2 V", "level", False)]
+        levels = [
+            Spec(
+                "V_high",
+                supply - 0.2,
+                supply - 0.35,
+                supply - 0.05,
+                f"{supply - 0.35:g} .. {supply - 0.05:g}",
+                "level",
+                False,
+            ),
+            Spec("V_low", 0.1, 0.0, 0.2, "0 .. 0.2 V", "level", False),
+        ]
         both += [_resistor(rng, "R_bias", bottom), ratio("supply", supply, 2.0, "supply")]
     else:
         up, down = _pick(rng, 4, 14), -_pick(rng, 4, 14)
@@ -137,8 +153,11 @@ def op_amp(rng: Rng) -> Design:
     timing = [_resistor(rng, "R", r)]
     swaps: tuple[tuple[str, str], ...] = (("R_top", "R_bottom"),)
     if style == "steered":
-        timing = [_resistor(rng, "R_charge", r), _resistor(rng, "R_discharge", r * _log(rng, 0.3, 3.0)),
-                  default("V_diode", 0.6, 0.5, 0.7, False)]
+        timing = [
+            _resistor(rng, "R_charge", r),
+            _resistor(rng, "R_discharge", r * _log(rng, 0.3, 3.0)),
+            default("V_diode", 0.6, 0.5, 0.7, False),
+        ]
         swaps = (*swaps, ("R_charge", "R_discharge"))
     specs = (*timing, _capacitor(rng, "C", c), *both, *levels)
     return Design("op-amp", specs, ("capacitor", "output"), ("capacitor",), swaps, (*LEAKS, "delay", "slew"))
@@ -153,8 +172,10 @@ def gas_lamp(rng: Rng) -> Design:
     r, c = _rc(rng, factor, (2e-3, 5.0), (470e3, 4.7e6), (1e-9, 2.2e-6))
     specs = (
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        ratio("V_strike", strike, 8.0, "threshold"), ratio("V_extinguish", out, 8.0, "threshold"),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        ratio("V_strike", strike, 8.0, "threshold"),
+        ratio("V_extinguish", out, 8.0, "threshold"),
         default("V_maintain", out - 5, out - 8, out - 2, False, "V_extinguish"),
         default("r_lamp", 5e3, 2e3, 8e3, True),
     )
@@ -163,16 +184,24 @@ def gas_lamp(rng: Rng) -> Design:
 
 def unijunction(rng: Rng) -> Design:
     """A stand-off ratio known to 10 or 15 %."""
-    supply, eta, valley = float(rng.choice([9, 12, 15, 20, 24])), _pick(rng, 0.58, 0.72, 2), _pick(rng, 1.3, 2.2, 2)
+    supply, eta, valley = (
+        float(rng.choice([9, 12, 15, 20, 24])),
+        _pick(rng, 0.58, 0.72, 2),
+        _pick(rng, 1.3, 2.2, 2),
+    )
     factor = np.log((supply - valley) / (supply - eta * supply - 0.6))
     r, c = _rc(rng, factor, (1e-4, 5.0), (8.2e3, 330e3))
     specs = (
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        ratio("eta", eta, float(rng.choice([10, 15])), "ratio"), ratio("V_valley", valley, 30.0, "threshold"),
-        default("V_D", 0.6, 0.5, 0.7, False), default("r_discharge", 50.0, 20.0, 150.0, True),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        ratio("eta", eta, float(rng.choice([10, 15])), "ratio"),
+        ratio("V_valley", valley, 30.0, "threshold"),
+        default("V_D", 0.6, 0.5, 0.7, False),
+        default("r_discharge", 50.0, 20.0, 150.0, True),
         default("V_floor", valley - 1, valley - 1.7, valley - 0.3, False, "V_valley"),
-        ratio("I_peak", 2e-6, 50.0, "device"), ratio("I_valley", 5e-3, 50.0, "device"),
+        ratio("I_peak", 2e-6, 50.0, "device"),
+        ratio("I_valley", 5e-3, 50.0, "device"),
     )
     return Design("unijunction", specs, ("capacitor",), ("capacitor",), (), (*LEAKS, "delay"))
 
@@ -187,13 +216,23 @@ def programmable(rng: Rng) -> Design:
     r, c = _rc(rng, factor, (3e-4, 10.0), (100e3, 1e6))
     specs = (
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        _resistor(rng, "RG1", lower), _resistor(rng, "RG2", upper), ratio("V_valley", valley, 30.0, "threshold"),
-        default("V_offset", 0.6, 0.4, 0.8, False), default("r_discharge", 50.0, 20.0, 150.0, True),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        _resistor(rng, "RG1", lower),
+        _resistor(rng, "RG2", upper),
+        ratio("V_valley", valley, 30.0, "threshold"),
+        default("V_offset", 0.6, 0.4, 0.8, False),
+        default("r_discharge", 50.0, 20.0, 150.0, True),
         default("V_floor", valley - 1, valley - 1.7, valley - 0.3, False, "V_valley"),
     )
-    return Design("programmable-unijunction", specs, ("capacitor",), ("capacitor",), (("RG1", "RG2"),),
-                  (*LEAKS, "delay"))
+    return Design(
+        "programmable-unijunction",
+        specs,
+        ("capacitor",),
+        ("capacitor",),
+        (("RG1", "RG2"),),
+        (*LEAKS, "delay"),
+    )
 
 
 def trigger_diode(rng: Rng) -> Design:
@@ -205,8 +244,10 @@ def trigger_diode(rng: Rng) -> Design:
     low = over - back
     specs = (
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        ratio("V_breakover", over, 12.5, "threshold"), ratio("V_breakback", back, 40.0, "threshold"),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        ratio("V_breakover", over, 12.5, "threshold"),
+        ratio("V_breakback", back, 40.0, "threshold"),
         default("r_discharge", 30.0, 12.0, 90.0, True),
         default("V_floor", low - 4, low - 6.5, low - 1.5, False, "low"),
     )
@@ -216,14 +257,20 @@ def trigger_diode(rng: Rng) -> Design:
 def schmitt(rng: Rng) -> Design:
     """CMOS gates between 3.3 and 15 V, thresholds from a data sheet's typical column."""
     supply = float(rng.choice([3.3, 5, 9, 12, 15]))
-    upper, lower = float(f"{supply * rng.uniform(0.55, 0.7):.2g}"), float(f"{supply * rng.uniform(0.28, 0.45):.2g}")
+    upper, lower = (
+        float(f"{supply * rng.uniform(0.55, 0.7):.2g}"),
+        float(f"{supply * rng.uniform(0.28, 0.45):.2g}"),
+    )
     factor = np.log((supply - lower) / (supply - upper)) + np.log(upper / lower)
     r, c = _rc(rng, factor, (2e-5, 5.0), (4.7e3, 1e6), (220e-12, 10e-6))
     percent = float(rng.choice([5, 10, 15]))
     specs = (
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        ratio("V_upper", upper, percent, "threshold"), ratio("V_lower", lower, percent, "threshold"),
-        ratio("V_high", supply, float(rng.choice([1, 2, 5])), "level"), default("V_low", 0.0, -0.1, 0.1, False),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        ratio("V_upper", upper, percent, "threshold"),
+        ratio("V_lower", lower, percent, "threshold"),
+        ratio("V_high", supply, float(rng.choice([1, 2, 5])), "level"),
+        default("V_low", 0.0, -0.1, 0.1, False),
     )
     return Design("schmitt-inverter", specs, ("capacitor", "output"), ("capacitor",), (), (*LEAKS, "delay"))
 
@@ -234,7 +281,9 @@ def timer(rng: Rng) -> Design:
     r, c = _rc(rng, 1.4, (3e-5, 10.0), (3.3e3, 1e6))
     specs = [
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "RA", r * _log(rng, 0.3, 2.0)), _resistor(rng, "RB", r), _capacitor(rng, "C", c),
+        _resistor(rng, "RA", r * _log(rng, 0.3, 2.0)),
+        _resistor(rng, "RB", r),
+        _capacitor(rng, "C", c),
         default("k_upper", 2 / 3, 2 / 3 * 0.95, 2 / 3 * 1.05, True),
         default("k_lower", 1 / 3, 1 / 3 * 0.92, 1 / 3 * 1.08, True),
         default("V_discharge", 0.05, 0.0, 0.2, False),
@@ -243,8 +292,9 @@ def timer(rng: Rng) -> Design:
     specs[5] = replace(specs[5], kind="threshold")
     if rng.uniform() < 0.12:
         specs.append(Spec("V_diode", 0.6, 0.5, 0.7, "0.5 .. 0.7 V", "device", False))
-    return Design("timer-555", tuple(specs), ("capacitor", "output"), ("capacitor",), (("RA", "RB"),),
-                  (*LEAKS, "delay"))
+    return Design(
+        "timer-555", tuple(specs), ("capacitor", "output"), ("capacitor",), (("RA", "RB"),), (*LEAKS, "delay")
+    )
 
 
 def two_transistor(rng: Rng) -> Design:
@@ -256,14 +306,26 @@ def two_transistor(rng: Rng) -> Design:
     load = _log(rng, 12, 40)
     specs = (
         ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
-        _resistor(rng, "R1", r), _capacitor(rng, "C1", c), _resistor(rng, "R2", other), _capacitor(rng, "C2", second),
-        _resistor(rng, "RC1", r / load), _resistor(rng, "RC2", r / load),
-        default("V_BE", 0.68, 0.63, 0.73, False), default("V_on", 0.56, 0.51, 0.61, False, "V_BE"),
-        default("V_CE", 0.1, 0.0, 0.25, False), default("V_breakdown", 7.0, 5.5, 8.5, True),
+        _resistor(rng, "R1", r),
+        _capacitor(rng, "C1", c),
+        _resistor(rng, "R2", other),
+        _capacitor(rng, "C2", second),
+        _resistor(rng, "RC1", r / load),
+        _resistor(rng, "RC2", r / load),
+        default("V_BE", 0.68, 0.63, 0.73, False),
+        default("V_on", 0.56, 0.51, 0.61, False, "V_BE"),
+        default("V_CE", 0.1, 0.0, 0.25, False),
+        default("V_breakdown", 7.0, 5.5, 8.5, True),
     )
     swaps = tuple(s for s, same in ((("R1", "R2"), other == r), (("C1", "C2"), second == c)) if not same)
-    return Design("two-transistor", specs, ("base1", "base2", "collector1", "collector2"), ("base1", "base2"), swaps,
-                  (*LEAKS, "delay"))
+    return Design(
+        "two-transistor",
+        specs,
+        ("base1", "base2", "collector1", "collector2"),
+        ("base1", "base2"),
+        swaps,
+        (*LEAKS, "delay"),
+    )
 
 
 def gate_pair(rng: Rng) -> Design:
@@ -277,9 +339,13 @@ def gate_pair(rng: Rng) -> Design:
     if style == "series":
         series = [_resistor(rng, "R_series", 10 * r)]
     specs = (
-        ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"), timing, _capacitor(rng, "C", c), *series,
+        ratio("supply", supply, float(rng.choice([1, 2, 5])), "supply"),
+        timing,
+        _capacitor(rng, "C", c),
+        *series,
         replace(default("V_threshold", trip, 0.9 * trip, 1.1 * trip, True, "supply"), kind="threshold"),
-        default("V_clamp", 0.6, 0.5, 0.7, False), default("R_gate", 250.0, 0.0, 500.0, False),
+        default("V_clamp", 0.6, 0.5, 0.7, False),
+        default("R_gate", 250.0, 0.0, 500.0, False),
     )
     swaps = (("R", "R_series"),) if series else ()
     return Design("gate-pair", specs, ("capacitor", "output"), ("capacitor",), swaps, (*LEAKS, "delay"))
@@ -294,11 +360,16 @@ def triangle(rng: Rng) -> Design:
     r, c = _rc(rng, 4 * share, (3e-4, 10.0), (4.7e3, 470e3))
     percent = float(rng.choice([2, 5]))
     specs = (
-        _resistor(rng, "R", r), _capacitor(rng, "C", c),
-        _resistor(rng, "R_in", feedback * share), _resistor(rng, "R_feedback", feedback),
-        ratio("V_high", up, percent, "level"), ratio("V_low", down, percent, "level"),
+        _resistor(rng, "R", r),
+        _capacitor(rng, "C", c),
+        _resistor(rng, "R_in", feedback * share),
+        _resistor(rng, "R_feedback", feedback),
+        ratio("V_high", up, percent, "level"),
+        ratio("V_low", down, percent, "level"),
     )
-    return Design("triangle", specs, ("capacitor", "output"), (), (("R_in", "R_feedback"),), ("delay", "slew"))
+    return Design(
+        "triangle", specs, ("capacitor", "output"), (), (("R_in", "R_feedback"),), ("delay", "slew")
+    )
 
 
 def current_ramp(rng: Rng) -> Design:
@@ -310,8 +381,10 @@ def current_ramp(rng: Rng) -> Design:
         if 470e-12 <= c <= 22e-6:
             break
     specs = (
-        ratio("I_charge", float(f"{current:.2g}"), float(rng.choice([2, 5])), "current"), _capacitor(rng, "C", c),
-        ratio("V_upper", upper, 5.0, "threshold"), ratio("V_lower", lower, 10.0, "threshold"),
+        ratio("I_charge", float(f"{current:.2g}"), float(rng.choice([2, 5])), "current"),
+        _capacitor(rng, "C", c),
+        ratio("V_upper", upper, 5.0, "threshold"),
+        ratio("V_lower", lower, 10.0, "threshold"),
         default("r_discharge", 50.0, 20.0, 80.0, True),
     )
     parasitics = ("R_leak", "I_leak", "C_stray", "ESR", "C_slope", "delay")
@@ -319,8 +392,16 @@ def current_ramp(rng: Rng) -> Design:
 
 
 DESIGNS: dict[str, Callable[[Rng], Design]] = {
-    "op-amp": op_amp, "gas-lamp": gas_lamp, "unijunction": unijunction, "schmitt-inverter": schmitt,
-    "timer-555": timer, "programmable-unijunction": programmable, "trigger-diode": trigger_diode,
-    "two-transistor": two_transistor, "gate-pair": gate_pair, "triangle": triangle, "current-ramp": current_ramp,
+    "op-amp": op_amp,
+    "gas-lamp": gas_lamp,
+    "unijunction": unijunction,
+    "schmitt-inverter": schmitt,
+    "timer-555": timer,
+    "programmable-unijunction": programmable,
+    "trigger-diode": trigger_diode,
+    "two-transistor": two_transistor,
+    "gate-pair": gate_pair,
+    "triangle": triangle,
+    "current-ramp": current_ramp,
 }
 FIVE = ("op-amp", "gas-lamp", "unijunction", "schmitt-inverter", "timer-555")

@@ -1,7 +1,8 @@
 """Builds with something wrong (or not): drawn, built on the bench, looked at, and their truth written down.
 
-A draw is a function of its seed alone. Tolerances are drawn within their limits (mix "rectangular") or with the same
-standard deviation from a Gaussian (mix "gaussian"); the parts' own fault comes on top for one or two of them.
+A draw is a function of its seed alone. Tolerances are drawn within their limits (mix "rectangular") or with
+the same standard deviation from a Gaussian (mix "gaussian"); the parts' own fault comes on top for one or two
+of them.
 """
 
 from __future__ import annotations
@@ -22,7 +23,8 @@ LEAST = 0.15
 
 @dataclass(frozen=True)
 class Fault:
-    """What is wrong: ``causes`` as the record names them, ``values`` the true values of what is off, in SI."""
+    """What is wrong: ``causes`` as the record names them, ``values`` the true values of what is off, in
+    SI."""
 
     causes: tuple[str, ...]
     values: Mapping[str, float]
@@ -33,9 +35,9 @@ class Fault:
 class Build:
     """One build as it stands on the bench, with the truth about it.
 
-    ``true`` holds every part's true value (parasitics that are there included), ``probe`` what hung on the nodes.
-    ``frequency``, ``duty``: with the probe; ``lifted``: frequency without it; ``restored``: frequency with the faulty
-    parts at their nominals, the probe on. NaN where the circuit does not run.
+    ``true`` holds every part's true value (parasitics that are there included), ``probe`` what hung on the
+    nodes. ``frequency``, ``duty``: with the probe; ``lifted``: frequency without it; ``restored``: frequency
+    with the faulty parts at their nominals, the probe on. NaN where the circuit does not run.
     """
 
     seed: int
@@ -65,7 +67,9 @@ def _spread(rng: Rng, spec: Spec, mix: str, move: float) -> float:
     if spec.log:
         low, high = np.log(low), np.log(high)
     if mix == "gaussian":
-        value = 0.5 * (low + high) + (high - low) / np.sqrt(12) * float(np.clip(rng.standard_normal(), -2.5, 2.5))
+        value = 0.5 * (low + high) + (high - low) / np.sqrt(12) * float(
+            np.clip(rng.standard_normal(), -2.5, 2.5)
+        )
     else:
         value = rng.uniform(low, high)
     return float(np.exp(value)) * move if spec.log else float(value) + move
@@ -96,7 +100,8 @@ def within(rng: Rng, design: Design, mix: str, off: Mapping[str, float]) -> dict
 
 
 def least(spec: Spec) -> float:
-    """The smallest deviation that counts as a fault: 15 %, or three standard uncertainties of a wide tolerance."""
+    """The smallest deviation that counts as a fault: 15 %, or three standard uncertainties of a wide
+    tolerance."""
     if spec.log:
         half = 0.5 * np.log(spec.high / spec.low)
         return float(max(np.log1p(LEAST), np.sqrt(3) * half))
@@ -159,8 +164,16 @@ def _parasitic(rng: Rng, name: str, design: Design, period: float) -> float:
     return size
 
 
-WEIGHTS = {"resistor": 3.0, "capacitor": 3.0, "threshold": 2.0, "ratio": 2.0, "supply": 1.0, "level": 1.0,
-           "current": 2.0, "device": 0.3}
+WEIGHTS = {
+    "resistor": 3.0,
+    "capacitor": 3.0,
+    "threshold": 2.0,
+    "ratio": 2.0,
+    "supply": 1.0,
+    "level": 1.0,
+    "current": 2.0,
+    "device": 0.3,
+}
 
 
 def _single(rng: Rng, design: Design, period: float) -> Fault | None:
@@ -199,8 +212,11 @@ def draw_fault(rng: Rng, design: Design, period: float, kind: str) -> Fault:
         second = _single(rng, design, period)
         if second is None or set(second.causes) & set(first.causes) or "swap" in (first.how, second.how):
             continue
-        return Fault((*first.causes, *second.causes), {**first.values, **second.values},
-                     f"{first.how} and {second.how}")
+        return Fault(
+            (*first.causes, *second.causes),
+            {**first.values, **second.values},
+            f"{first.how} and {second.how}",
+        )
     raise ValueError(f"{design.circuit}: no such fault can be drawn")
 
 
@@ -221,7 +237,7 @@ def sensible(design: Design, values: Mapping[str, float]) -> bool:
     if design.circuit == "programmable-unijunction":
         return v["V_floor"] < v["V_valley"]
     if design.circuit == "trigger-diode":
-        return 0 < v["V_breakback"] and v["V_floor"] < v["V_breakover"] - v["V_breakback"]
+        return v["V_breakback"] > 0 and v["V_floor"] < v["V_breakover"] - v["V_breakback"]
     if design.circuit == "current-ramp":
         return v["V_lower"] < v["V_upper"]
     if design.circuit in ("op-amp", "triangle"):
@@ -237,10 +253,14 @@ def matters(design: Design, values: Mapping[str, float], fault: Fault) -> bool:
     for cause in fault.causes:
         if cause in values:
             continue
-        without = simulate(design.circuit, {**values, **{k: v for k, v in fault.values.items() if k != cause}})
+        without = simulate(
+            design.circuit, {**values, **{k: v for k, v in fault.values.items() if k != cause}}
+        )
         if not (with_it.oscillates and without.oscillates):
             continue
-        change = max(abs(np.log(with_it.period / without.period)), abs(with_it.high_share - without.high_share))
+        change = max(
+            abs(np.log(with_it.period / without.period)), abs(with_it.high_share - without.high_share)
+        )
         if change < 0.02 and _moved_levels(with_it, without, design.nodes[0]) < 0.02:
             return False
     return True
@@ -259,12 +279,17 @@ def restored(fault: Fault, design: Design, true: Mapping[str, float]) -> dict[st
     return {**out, **{k: nominal[k] for k in fault.values if k in nominal}}
 
 
-def _frequency(design: Design, values: Mapping[str, float], probe: Mapping[str, tuple[float, float]]) -> float:
+def _frequency(
+    design: Design, values: Mapping[str, float], probe: Mapping[str, tuple[float, float]]
+) -> float:
     return 1.0 / simulate(design.circuit, values, probe=probe).period
 
 
-def draw(circuit: str, seed: int, *, mix: str = "rectangular", kind: str | None = None, rough: bool = False) -> Build:
-    """One build of a circuit. ``rough``: devices that are not as simple as their models (bends, soft clamps)."""
+def draw(
+    circuit: str, seed: int, *, mix: str = "rectangular", kind: str | None = None, rough: bool = False
+) -> Build:
+    """One build of a circuit. ``rough``: devices that are not as simple as their models (bends, soft
+    clamps)."""
     rng = np.random.default_rng([seed, sorted(DESIGNS).index(circuit)])
     kind = kind or str(rng.choice(["healthy", "single", "two"], p=[0.25, 0.6, 0.15]))
     for _ in range(500):
@@ -317,38 +342,78 @@ def _options(rng: Rng, circuit: str, rough: bool) -> dict[str, float]:
     return {}
 
 
-def _built(rng: Rng, seed: int, design: Design, meant: Waves, fault: Fault, true: dict[str, float],
-           nodes: tuple[str, ...], probe: dict[str, tuple[float, float]], rough: bool) -> Build:
+def _built(
+    rng: Rng,
+    seed: int,
+    design: Design,
+    meant: Waves,
+    fault: Fault,
+    true: dict[str, float],
+    nodes: tuple[str, ...],
+    probe: dict[str, tuple[float, float]],
+    rough: bool,
+) -> Build:
     options = _options(rng, design.circuit, rough)
     if design.circuit == "timer-555":
         bipolar = rng.uniform() < 0.5
-        options.update({"output_drop": rng.uniform(1.1, 1.5) if bipolar else rng.uniform(0.0, 0.05),
-                        "output_floor": rng.uniform(0.0, 0.1)})
+        options.update(
+            {
+                "output_drop": rng.uniform(1.1, 1.5) if bipolar else rng.uniform(0.0, 0.05),
+                "output_floor": rng.uniform(0.0, 0.1),
+            }
+        )
     ideal = simulate(design.circuit, true, probe=probe, **options)
     cycles, samples = float(np.exp(rng.uniform(np.log(2.4), np.log(14)))), int(rng.uniform(1500, 8000))
     waves, interval, begin = _run(rng, seed, design, true, probe, ideal, cycles, samples, options)
     inputs, scope = _scope(rng, waves, nodes)
     ppm = 50.0 if not scope else 25.0
-    record = measure(waves, inputs, interval, samples, timebase=1e-6 * rng.uniform(-ppm, ppm), begin=begin, seed=seed)
+    record = measure(
+        waves, inputs, interval, samples, timebase=1e-6 * rng.uniform(-ppm, ppm), begin=begin, seed=seed
+    )
     readings = _readings(rng, design, true)
     names = {n: f"CH{i + 1}" for i, n in enumerate(nodes)}
     target = float(f"{1 / meant.period:.4g}")
     text = sheet_text(design, target, names, probe, readings, scope)
     return Build(
-        seed=seed, design=design, true=true, fault=fault, nodes=nodes, probe=probe, sheet=text, record=record,
-        names=names, waves=waves, target=target, frequency=1 / ideal.period, duty=ideal.high_share,
-        lifted=_frequency(design, true, {}), restored=_frequency(design, restored(fault, design, true), probe),
-        readings=readings, gains={n: i.gain for n, i in inputs.items()},
-        offsets={n: i.offset for n, i in inputs.items()}, inputs=inputs,
+        seed=seed,
+        design=design,
+        true=true,
+        fault=fault,
+        nodes=nodes,
+        probe=probe,
+        sheet=text,
+        record=record,
+        names=names,
+        waves=waves,
+        target=target,
+        frequency=1 / ideal.period,
+        duty=ideal.high_share,
+        lifted=_frequency(design, true, {}),
+        restored=_frequency(design, restored(fault, design, true), probe),
+        readings=readings,
+        gains={n: i.gain for n, i in inputs.items()},
+        offsets={n: i.offset for n, i in inputs.items()},
+        inputs=inputs,
     )
 
 
-def _run(rng: Rng, seed: int, design: Design, true: Mapping[str, float], probe: Mapping[str, tuple[float, float]],
-         ideal: Waves, cycles: float, samples: int, options: Mapping[str, float]) -> tuple[Waves, float, float | None]:
+def _run(
+    rng: Rng,
+    seed: int,
+    design: Design,
+    true: Mapping[str, float],
+    probe: Mapping[str, tuple[float, float]],
+    ideal: Waves,
+    cycles: float,
+    samples: int,
+    options: Mapping[str, float],
+) -> tuple[Waves, float, float | None]:
     """The waves to be recorded, the interval, and where the record begins."""
     if not ideal.oscillates:
         powered = rng.uniform() < 0.7
-        waves = simulate(design.circuit, true, probe=probe, start="from rest" if powered else "running", **options)
+        waves = simulate(
+            design.circuit, true, probe=probe, start="from rest" if powered else "running", **options
+        )
         length = max(waves.span, 1e-3) * rng.uniform(0.15, 0.6)
         return waves, float(f"{length / samples:.3g}"), -0.08 * length if powered else 0.0
     interval = float(f"{cycles * ideal.period / samples:.3g}")
@@ -356,12 +421,22 @@ def _run(rng: Rng, seed: int, design: Design, true: Mapping[str, float], probe: 
     if rng.uniform() < 0.4:
         swing = np.ptp(ideal.at(np.linspace(0, ideal.period, 400))[design.nodes[0]])
         noise = swing * float(np.exp(rng.uniform(np.log(1e-4), np.log(2e-3))))
-    lag = ideal.period * rng.uniform(0.0, 0.01) if design.circuit == "gas-lamp" and rng.uniform() < 0.5 else 0.0
+    lag = (
+        ideal.period * rng.uniform(0.0, 0.01) if design.circuit == "gas-lamp" and rng.uniform() < 0.5 else 0.0
+    )
     if not noise and not lag:
         return ideal, interval, None
     try:
-        waves = simulate(design.circuit, true, probe=probe, cycles=int(1.3 * cycles) + 4, seed=seed,
-                         threshold_noise=noise, lag=lag, **options)
+        waves = simulate(
+            design.circuit,
+            true,
+            probe=probe,
+            cycles=int(1.3 * cycles) + 4,
+            seed=seed,
+            threshold_noise=noise,
+            lag=lag,
+            **options,
+        )
     except RuntimeError:
         return ideal, interval, None
     return waves, interval, None
@@ -378,9 +453,16 @@ def _scope(rng: Rng, waves: Waves, nodes: tuple[str, ...]) -> tuple[dict[str, In
     inputs = {}
     for node in nodes:
         offset = limit if stated else 0.02 * spans[node]
-        inputs[node] = Input(gain=0.01 * gain * rng.uniform(-1, 1), offset=offset * rng.uniform(-1, 1),
-                             noise_divisions=float(np.exp(rng.uniform(np.log(0.015), np.log(0.08)))))
-    scope = {"gain": f"{gain:g}%", "offset": f"{written(limit)} V", "timebase": "25ppm"} if stated and limit else {}
+        inputs[node] = Input(
+            gain=0.01 * gain * rng.uniform(-1, 1),
+            offset=offset * rng.uniform(-1, 1),
+            noise_divisions=float(np.exp(rng.uniform(np.log(0.015), np.log(0.08)))),
+        )
+    scope = (
+        {"gain": f"{gain:g}%", "offset": f"{written(limit)} V", "timebase": "25ppm"}
+        if stated and limit
+        else {}
+    )
     return inputs, scope
 
 
@@ -391,14 +473,32 @@ def _readings(rng: Rng, design: Design, true: Mapping[str, float]) -> dict[str, 
     meters = {"resistor": 0.5, "capacitor": 2.0, "supply": 0.3}
     can = [s for s in design.specs if s.kind in meters and s.text is not None]
     chosen = rng.permutation(len(can))[: int(rng.integers(1, 3))]
-    return {can[i].name: (true[can[i].name] * (1 + 0.01 * meters[can[i].kind] * rng.uniform(-1, 1)), meters[can[i].kind])
-            for i in sorted(chosen)}
+    return {
+        can[i].name: (
+            true[can[i].name] * (1 + 0.01 * meters[can[i].kind] * rng.uniform(-1, 1)),
+            meters[can[i].kind],
+        )
+        for i in sorted(chosen)
+    }
 
 
-def sheet_text(design: Design, target: float, names: Mapping[str, str], probe: Mapping[str, tuple[float, float]],
-               readings: Mapping[str, tuple[float, float]], scope: Mapping[str, str]) -> str:
+def sheet_text(
+    design: Design,
+    target: float,
+    names: Mapping[str, str],
+    probe: Mapping[str, tuple[float, float]],
+    readings: Mapping[str, tuple[float, float]],
+    scope: Mapping[str, str],
+) -> str:
     """The build sheet as its owner would have written it."""
-    lines = [f'circuit = "{design.circuit}"', "", "[target]", f'frequency = "{written(target)} Hz 5%"', "", "[parts]"]
+    lines = [
+        f'circuit = "{design.circuit}"',
+        "",
+        "[target]",
+        f'frequency = "{written(target)} Hz 5%"',
+        "",
+        "[parts]",
+    ]
     lines += [f'{s.name} = "{s.text}"' for s in design.specs if s.text is not None]
     if design.circuit == "gate-pair" and all(s.name != "R_series" for s in design.specs):
         lines.append('R_series = "none"')
@@ -407,7 +507,12 @@ def sheet_text(design: Design, target: float, names: Mapping[str, str], probe: M
         lines += [f'{name} = "{value:.8g} ±{limit:g}%"' for name, (value, limit) in readings.items()]
     lines += ["", "[channels]", *(f'{node} = "{name}"' for node, name in names.items())]
     for node, (resistance, capacitance) in probe.items():
-        lines += ["", f"[probe.{node}]", f'resistance = "{resistance:g}"', f'capacitance = "{capacitance * 1e12:g}p"']
+        lines += [
+            "",
+            f"[probe.{node}]",
+            f'resistance = "{resistance:g}"',
+            f'capacitance = "{capacitance * 1e12:g}p"',
+        ]
     if scope:
         lines += ["", "[scope]", *(f'{key} = "{value}"' for key, value in scope.items())]
     return "\n".join(lines) + "\n"

@@ -129,12 +129,9 @@ def _moving(p: Values, rising: bool) -> Mode:
         return y[1] - (alpha + gamma * at(y)[1])
 
     there = End(goal, "high" if rising else "low")
-    noise, least = (
-        (p.trip_down, 1e-9 * (p.V_high - p.V_low)) if rising else (p.trip_up, 1e-9 * (p.V_high - p.V_low))
-    )
-    back = End(
-        lambda y: sign * (at(y)[1] - _plus(p, y[1]) - noise) - least, "falling" if rising else "rising"
-    )
+    # Once it moves it turns back only when overtaken clearly, more than by the noise of a trip level.
+    least = 5e-3 * (p.V_high - p.V_low)
+    back = End(lambda y: sign * (at(y)[1] - _plus(p, y[1])) - least, "falling" if rising else "rising")
     return Mode(rates, nodes, ends=(there, back))
 
 
@@ -154,7 +151,7 @@ def _horizon(p: Values) -> Array:
 OP_AMP = Rig(
     name="op-amp",
     nodes=("capacitor", "output"),
-    first="high",
+    first="rising",
     high=frozenset({"high", "late high", "rising"}),
     modes={
         "high": lambda p: _level(p, late=False, high=True),

@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from tools.bench.engine import Array, Entry, Rig, Run, Steps, Values, advance, run
+from tools.bench.engine import RTOL, Array, Entry, Rig, Run, Steps, Values, advance, run
 from tools.bench.parts import Number, Probe, prepare
 from tools.bench.rigs import RIGS
 
@@ -71,23 +71,25 @@ class Waves:
         return out
 
 
-def settle(rig: Rig, p: Values, most: int = 60) -> tuple[Run, NDArray[np.bool_]]:
+def settle(
+    rig: Rig, p: Values, most: int = 60, rtol: float = RTOL, close: float = SETTLED
+) -> tuple[Run, NDArray[np.bool_]]:
     """Run n builds until their cycles repeat; the last whole cycle, and which builds oscillate."""
     mode, y = rig.running(p)
     y = np.broadcast_to(y, (y.shape[0], p.size)).copy()
-    done = run(rig, p, mode, y, cycles=1)
+    done = run(rig, p, mode, y, cycles=1, rtol=rtol)
     alive = done.cycles >= 1
     for _ in range(most):
         if not alive.any():
             break
         index = np.flatnonzero(alive)
-        again = run(rig, p.take(index), rig.first, done.state[:, index], cycles=1)
+        again = run(rig, p.take(index), rig.first, done.state[:, index], cycles=1, rtol=rtol)
         moved = np.max(
             np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0
         )
         alive[index[(again.cycles < 1) | (again.time <= 0)]] = False
         done.state[:, index] = again.state
-        if np.all(moved[again.cycles >= 1] < SETTLED):
+        if np.all(moved[again.cycles >= 1] < close):
             break
     return done, alive
 

@@ -42,13 +42,12 @@ def _moving(p: Values, rising: bool) -> Mode:
     sign = 1.0 if rising else -1.0
     swing = p.V_high - p.V_low
     speed = np.minimum(p.slew, swing / (p.R * p.C * INSTANT))
-    noise = p.trip_down if rising else p.trip_up
 
     def rates(y: Array) -> Array:
         return np.stack([_slope(p, y), sign * speed + 0.0 * y[1]])
 
     there = End(lambda y: y[1] - p.V_high if rising else p.V_low - y[1], "high" if rising else "low")
-    back = End(lambda y: -sign * (_input(p, y) - noise) - 1e-9 * swing, "falling" if rising else "rising")
+    back = End(lambda y: -sign * _input(p, y) - 5e-3 * swing, "falling" if rising else "rising")
     return Mode(rates, _nodes, ends=(there, back))
 
 
@@ -60,8 +59,8 @@ def _upper(p: Values) -> Array:
 TRIANGLE = Rig(
     name="triangle",
     nodes=("capacitor", "output"),
-    first="high",
-    high=frozenset({"high", "late high", "falling"}),
+    first="rising",
+    high=frozenset({"rising", "high", "late high"}),
     modes={
         "high": lambda p: _level(p, high=True, late=False),
         "late high": lambda p: _level(p, high=True, late=True),
