@@ -21,6 +21,25 @@ SIGMAS = 3.0
 """The same in the records' own scatter, at least (but never more than half the half-width)."""
 QUIET = 3
 """Records in a row inside by the margin that clear an alarm."""
+MEASURED = {
+    "frequency": "Hz",
+    "period": "s",
+    "duty": "1",
+    "jitter": "s",
+    "charge_time": "s",
+    "discharge_time": "s",
+    "upper": "V",
+    "lower": "V",
+    "charge_asymptote": "V",
+    "charge_time_constant": "s",
+    "discharge_asymptote": "V",
+    "discharge_time_constant": "s",
+    "high": "V",
+    "low": "V",
+    "rise_time": "s",
+    "fall_time": "s",
+}
+"""The measured quantities that a limit may be set on, and their units (contract, section 5)."""
 _MEMORY = 50
 _RELATIVE = re.compile(r"(?:±|\+-|\+/-)?\s*([0-9.]+(?:[eE][+-]?\d+)?)\s*(%|ppm)")
 _SIDES = re.compile(r"-\s*([0-9.]+)\s*(%|ppm)\s*/\s*\+\s*([0-9.]+)\s*(%|ppm)")

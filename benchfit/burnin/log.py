@@ -81,6 +81,11 @@ class LogWriter:
         """Number of the last record, 0 before the first."""
         return self._seq
 
+    @property
+    def units(self) -> tuple[str, ...]:
+        """The names of the units."""
+        return tuple(self._units)
+
     def append(self, entries: Sequence[Entry]) -> list[int]:
         """Write records in one transaction and return their numbers once they are on the disk."""
         db, before = self._db, (list(self._quantities), self._dictionary)
@@ -232,8 +237,9 @@ class LogWriter:
     def _insert(self, seq: int, entry: Entry) -> int:
         db, unit = self._db, self._units[entry.unit]
         found = {one.name: one for one in packing.scalars(entry.record)}
-        for name in found.keys() - set(self._quantities):
-            one = found[name]
+        for name, one in found.items():
+            if name in self._quantities:
+                continue
             row = (len(self._quantities), name, one.unit, one.kind)
             db.execute("INSERT INTO quantity VALUES (?, ?, ?, ?)", row)
             self._quantities.append(name)

@@ -201,6 +201,34 @@ class LogReader:
             unit, names, units, kinds, stamps[0], stamps[1], times[0], times[1], stamps[2], values, u, noise
         )
 
+    def quantities(self) -> list[str]:
+        """The names of all quantities that any record has."""
+        with self._reading() as db:
+            return [name for (name,) in db.execute("SELECT name FROM quantity ORDER BY id")]
+
+    def rows(self, unit: str | None = None) -> Iterator[dict[str, Any]]:
+        """The records as rows of a table: seq, acquired (Unix time), unit, status, error, values, u."""
+        with self._reading() as db:
+            count = db.execute("SELECT count(*) FROM quantity").fetchone()[0]
+            rows = db.execute(
+                "SELECT seq, acquired, unit.name, status, scalars FROM record "
+                "JOIN unit ON unit.id = record.unit WHERE ? IS NULL OR unit.name = ? ORDER BY seq",
+                (unit, unit),
+            )
+            for seq, acquired, name, status, packed in rows:
+                values, u = np.full(count, np.nan), np.full(count, np.nan)
+                if packed:
+                    found = packing.unpack([packed])
+                    values[: found[0].shape[1]], u[: found[1].shape[1]] = found[0][0], found[1][0]
+                error = ""
+                if status:
+                    failed = next(self.records(seq, seq))
+                    error = str(failed["error"].get("says", ""))
+                yield {
+                    "seq": seq, "acquired": acquired, "unit": name, "status": status, "error": error,
+                    "values": values.tolist(), "u": u.tolist(),
+                }  # fmt: skip
+
     # --- inside ---------------------------------------------------------------------------------------------
 
     def _extent(self) -> tuple[int, float | None, float | None]:

@@ -98,8 +98,7 @@ def trend(
         )  # fmt: skip
 
 
-# --- one unit
-# -------------------------------------------------------------------------------------------------
+# --- one unit -------------------------------------------------------------------------------------
 
 
 def _unit(
@@ -224,11 +223,12 @@ def _with_stability(unit: UnitTrend, series: Series, t: Array, order: Any, keep:
         return unit
     mean = float(np.nanmean(values))
     found = overlapping_allan([part / mean - 1 for part in parts], interval)
+    if not any(d.adev > 0 for d in found):  # one capture again and again
+        return unit
     return replace(unit, stability=tuple(found), interval=interval)
 
 
-# --- causes
-# ---------------------------------------------------------------------------------------------------
+# --- causes ---------------------------------------------------------------------------------------
 
 
 def _build(log: LogReader, sheet: str, build_of: BuildOf | None) -> causes.Build | str | None:
@@ -276,8 +276,7 @@ def _is_like(one: Blocks, other: Blocks) -> bool:
     return one.time.size == other.time.size and float(one.count.sum()) > 0.9 * float(other.count.sum())
 
 
-# --- limits and alarms
-# ----------------------------------------------------------------------------------------
+# --- limits and alarms ----------------------------------------------------------------------------
 
 
 def _limits(specs: Sequence[str], series: Series) -> dict[str, Limit]:
@@ -311,8 +310,7 @@ def _seen(alarm: Alarm) -> AlarmSeen:
     )
 
 
-# --- several units
-# --------------------------------------------------------------------------------------------
+# --- several units --------------------------------------------------------------------------------
 
 
 def _for_comparison(name: str, series: Series) -> dict[tuple[str, str], tuple[Array, Array]]:
@@ -333,8 +331,7 @@ def _departures(common: Mapping[tuple[str, str], tuple[Array, Array]]) -> list[A
     return found
 
 
-# --- odds and ends
-# --------------------------------------------------------------------------------------------
+# --- odds and ends --------------------------------------------------------------------------------
 
 
 def _errors(log: LogReader, series: Series) -> Counter[str]:
