@@ -100,7 +100,8 @@ class Lot:
     """All units, and what they have in common.
 
     ``target`` of the frequency (Hz). ``apart``: units with a settled fault of their own, few among many, that
-    the spreads leave out. ``together``: groups of parts that most captures know only together. ``suits``: the value that more than half of the units would take, and how many.
+    the spreads leave out. ``together``: groups of parts that most captures know only together.
+    ``suits``: the value that more than half of the units would take, and how many.
     """
 
     units: tuple[Unit, ...]

@@ -109,7 +109,7 @@ def test_tolerance_factors_are_the_handbooks() -> None:
 
 
 def test_the_tolerance_interval_holds_what_it_says() -> None:
-    """Of 2000 seeded lots of 12 normal units, 95 % ± 2 % have an interval that holds 95 % of the population."""
+    """Of 2000 seeded lots of 12 normal units, 95 % ± 2 % have an interval that holds 95 % of them all."""
     from scipy.special import ndtr
 
     rng = np.random.default_rng(5)

@@ -36,7 +36,7 @@ def test_the_ending_decides_the_format(ending: str, tmp_path: Path) -> None:
     assert [p.name for p in tmp_path.iterdir()] == [path.name]
 
 
-@pytest.mark.parametrize("kind", KINDS)
+@pytest.mark.parametrize("kind", ["capture", "cycle", "slopes"])
 def test_a_million_samples_make_a_small_file(kind: str, tmp_path: Path) -> None:
     capture, constants = waveform(**LAMP, samples=1_000_000, output=(0.0, 5.0), jitter=0.01)
     for ending in ("png", "svg", "pdf") if kind in ("capture", "cycle") else ("svg",):
