@@ -149,6 +149,14 @@ def look(capture: Capture, sheet: Sheet | None = None) -> Explanation:
     )
 
 
+def warm_up() -> None:
+    """Import what explaining needs, so that the first capture need not wait for it."""
+    import lmfit  # noqa: F401
+
+    import benchfit.cycle
+    import benchfit.explain.explain  # noqa: F401
+
+
 def trimming(sheet: Sheet, part: str, low: float, high: float) -> Trimming:
     """Help with turning a trimmer, ``part`` between ``low`` and ``high``, onto the sheet's target.
 

@@ -157,10 +157,9 @@ def explain_one(
 
 
 def _warm_up() -> None:
-    """Import what explaining needs, so that the first capture need not wait for it."""
-    import lmfit  # noqa: F401
+    from benchfit import pipeline
 
-    import benchfit.explain.explain  # noqa: F401
+    pipeline.warm_up()
 
 
 def _leave_interrupts_alone() -> None:

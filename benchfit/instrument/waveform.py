@@ -154,10 +154,13 @@ def _volts(raw: NDArray[np.float64], dialect: Dialect, fields: Mapping[str, floa
 
 
 def _smallest_difference(levels: NDArray[np.float64], least: float) -> float:
-    """The smallest difference above ``least`` between sorted levels; 0 where there is none."""
+    """The smallest difference above ``least`` between sorted levels; 0 where there is none.
+
+    Differences that are the same but for rounding are averaged.
+    """
     steps = np.diff(levels)
     steps = steps[steps > least]
-    return float(steps.min()) if steps.size else 0.0
+    return float(np.median(steps[steps <= 1.001 * steps.min()])) if steps.size else 0.0
 
 
 def _axis_difference(a: Trace, b: Trace) -> str:
