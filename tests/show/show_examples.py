@@ -754,3 +754,41 @@ def waveform(
             ),
         ),
     )
+
+
+PREDICTION = {
+    "schema": 1,
+    "title": "Tide gauge beeper",
+    "circuit": "op-amp",
+    "oscillates": True,
+    "predicted": {
+        "frequency": {"value": 535.4, "u": None, "unit": "Hz"},
+        "duty": {"value": 0.5, "u": None, "unit": ""},
+        "period": {"value": 1 / 535.4, "u": None, "unit": "s"},
+        "charge_time": {"value": 0.5 / 535.4, "u": None, "unit": "s"},
+        "upper": {"value": 6.5, "u": None, "unit": "V"},
+        "lower": {"value": -6.5, "u": None, "unit": "V"},
+    },
+    "band": {"frequency": [455.2, 640.1], "duty": [0.48, 0.52]},
+    "miss": {
+        "frequency": {
+            "target": 535.0,
+            "on_paper": 0.0007,
+            "shares": [
+                {"cause": "C", "share": 0.71},
+                {"cause": "R", "share": 0.2},
+                {"cause": "R_top", "share": 0.09},
+            ],
+        }
+    },
+    "root_sum_square": {"frequency": [484.0, 597.0], "duty": [0.485, 0.515]},
+    "monte_carlo": {"frequency": [489.1, 588.0], "duty": [0.487, 0.513], "oscillates": 0.974},
+    "contributions": [
+        {"part": "C", "at_low": 0.111, "at_high": -0.0909},
+        {"part": "R", "at_low": 0.0526, "at_high": -0.0476},
+    ],
+    "margins": [{"part": "R", "above": None, "below": 3.9e6, "unit": "Ω"}],
+    "warnings": [{"code": "probe-loads", "says": "the ×1 probe would slow it by 4 %"}],
+    "capture_advice": ["capture the capacitor node, d.c. coupled", "set 500 µs per division: some 3 cycles"],
+}
+"""A prediction record."""

@@ -9,7 +9,17 @@ from collections.abc import Callable
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from show_examples import ALL, cancelling, fault_settled, healthy, hostile, no_sheet, probe_loads, unsettled
+from show_examples import (
+    ALL,
+    PREDICTION,
+    cancelling,
+    fault_settled,
+    healthy,
+    hostile,
+    no_sheet,
+    probe_loads,
+    unsettled,
+)
 
 from benchfit.explain.result import Miss, Quantity, Share
 from benchfit.show import words
@@ -17,42 +27,6 @@ from benchfit.show.layout import Column, bar, cells, clean, fitting, shortened, 
 from benchfit.show.text import render, render_circuit, render_prediction
 
 SGR = re.compile(r"\x1b\[[0-9;]*m")
-
-PREDICTION = {
-    "schema": 1,
-    "title": "Tide gauge beeper",
-    "circuit": "op-amp",
-    "oscillates": True,
-    "predicted": {
-        "frequency": {"value": 535.4, "u": None, "unit": "Hz"},
-        "duty": {"value": 0.5, "u": None, "unit": ""},
-        "period": {"value": 1 / 535.4, "u": None, "unit": "s"},
-        "charge_time": {"value": 0.5 / 535.4, "u": None, "unit": "s"},
-        "upper": {"value": 6.5, "u": None, "unit": "V"},
-        "lower": {"value": -6.5, "u": None, "unit": "V"},
-    },
-    "band": {"frequency": [455.2, 640.1], "duty": [0.48, 0.52]},
-    "miss": {
-        "frequency": {
-            "target": 535.0,
-            "on_paper": 0.0007,
-            "shares": [
-                {"cause": "C", "share": 0.71},
-                {"cause": "R", "share": 0.2},
-                {"cause": "R_top", "share": 0.09},
-            ],
-        }
-    },
-    "root_sum_square": {"frequency": [484.0, 597.0], "duty": [0.485, 0.515]},
-    "monte_carlo": {"frequency": [489.1, 588.0], "duty": [0.487, 0.513], "oscillates": 0.974},
-    "contributions": [
-        {"part": "C", "at_low": 0.111, "at_high": -0.0909},
-        {"part": "R", "at_low": 0.0526, "at_high": -0.0476},
-    ],
-    "margins": [{"part": "R", "above": None, "below": 3.9e6, "unit": "Ω"}],
-    "warnings": [{"code": "probe-loads", "says": "the ×1 probe would slow it by 4 %"}],
-    "capture_advice": ["capture the capacitor node, d.c. coupled", "set 500 µs per division: some 3 cycles"],
-}
 
 
 @pytest.mark.parametrize("width", [60, 80, 120])
