@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from benchfit.circuits.model import Array, Cycle, Phase
 
 _SMALL = 1e-4
+_NO_WAY = 1e-9
 
 
 def _log_ratio(z: Array) -> Array:
@@ -95,6 +96,7 @@ def settle(cycle: Cycle) -> Settled:
     durations: list[Array] = []
     starts: list[Array] = []
     ends: list[Array] = []
+    goes: dict[tuple[str, bool], NDArray[np.bool_]] = {}
     for phase in cycle.phases:
         start = phase.gain * at[phase.node] + phase.jump if phase.start is None else phase.start + phase.jump
         ahead = (phase.threshold - start) if phase.rising else (start - phase.threshold)
@@ -105,11 +107,15 @@ def settle(cycle: Cycle) -> Settled:
         starts.append(start + 0 * end)
         ends.append(end)
         at[phase.node] = end
+        way = (phase.node, phase.rising)
+        moves = ahead > _NO_WAY * np.abs(phase.threshold)
+        goes[way] = goes[way] | moves if way in goes else moves
     runs = np.ones(np.broadcast_shapes(*(np.shape(d) for d in durations)), bool)
     for condition in cycle.conditions:
         runs = runs & (condition.margin > 0)
-    # A device that goes out in the instant in which it fires (a large ESR) makes no cycle.
-    runs = runs & (sum(durations) > 0)
+    for moves in goes.values():
+        # A node that a switching throws beyond its next threshold (a large ESR) makes no cycle.
+        runs = runs & moves
     shape = runs.shape
     stack = [np.stack([np.broadcast_to(x, shape) for x in row]) for row in (durations, starts, ends)]
     return Settled(np.where(runs, stack[0], np.nan), stack[1], stack[2])
