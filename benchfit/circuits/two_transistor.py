@@ -50,14 +50,6 @@ def _side(p: Parts, number: int) -> _Side:
     return _Side(base, now, capacitor, (f"RC{number}", f"C{other}"), output, plates)
 
 
-def _half_way(p: Parts, reached: Array, load: str, capacitor: str) -> Array:
-    """Time (s) until a recovering collector crosses the middle between its levels, ``reached`` of a full
-    swing."""
-    if load not in p:
-        return 0 * reached
-    return -p[load] * p[capacitor] * np.log1p(-0.5 * reached)
-
-
 def _half(p: Parts, side: _Side, kick: Array) -> tuple[Phase, Array]:
     """The phase in which a base is off, and its duration (s): it starts below V_BE by the kick it is given.
 
@@ -75,18 +67,33 @@ def _half(p: Parts, side: _Side, kick: Array) -> tuple[Phase, Array]:
     return one, np.where(start < p["V_on"], time_to(one, start, p["V_on"]), 0.0) + p["delay"]
 
 
-def _recovered(p: Parts, side: _Side, other: _Side, time: Array) -> Array:
-    """How far a collector has recovered after ``time`` (s), and so falls when its transistor turns on (V).
+def _head_start(p: Parts, other: _Side) -> Array:
+    """How far a collector is up as soon as its transistor turns off (V).
 
     Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there
-    from where that base began to conduct: by so much the collector is up at once.
+    from where that base began to conduct.
     """
+    return np.maximum(p["V_BE"] - other.plates, 0.0)
+
+
+def _recovered(p: Parts, side: _Side, other: _Side, time: Array) -> Array:
+    """How far a collector has recovered after ``time`` (s), and so falls when its transistor turns on (V)."""
     load, capacitor = side.collector
     full = p["supply"] - p["V_CE"]
     if load not in p:
         return full + 0 * time
-    left = full - np.maximum(p["V_BE"] - other.plates, 0.0)
-    return full - left * np.exp(-time / ((p[load] + p["ESR"]) * p[capacitor]))
+    return full - (full - _head_start(p, other)) * np.exp(-time / ((p[load] + p["ESR"]) * p[capacitor]))
+
+
+def _half_way(p: Parts, side: _Side, other: _Side, reached: Array) -> Array:
+    """Time (s) until a recovering collector crosses the middle of what it will have ``reached`` (V)."""
+    load, capacitor = side.collector
+    full = p["supply"] - p["V_CE"]
+    if load not in p:
+        return 0 * reached
+    # A leg's resistance lifts the collector by its share of the recovering current.
+    left = (full - _head_start(p, other)) * p[load] / (p[load] + p["ESR"])
+    return (p[load] + p["ESR"]) * p[capacitor] * np.log(np.maximum(left / (full - 0.5 * reached), 1.0))
 
 
 def _round(p: Parts, one: _Side, two: _Side, kick: Array) -> tuple[Phase, Phase, Array, Array]:
@@ -143,7 +150,7 @@ def _cycle(p: Parts) -> Cycle:
         levels={
             "high": p["V_CE"] + kick_2,
             "low": p["V_CE"] + 0 * kick_2,
-            "rise_lag": _half_way(p, kick_2 / full, "RC1", "C2"),
+            "rise_lag": _half_way(p, side_1, side_2, kick_2),
         },
         rests={"base1": p["V_BE"], "base2": p["V_BE"]},
         remarks=(

@@ -7,7 +7,7 @@ import pytest
 from scipy.integrate import solve_ivp
 
 from benchfit import circuits
-from benchfit.circuits.solve import after, settle
+from benchfit.circuits.solve import after, constants, settle
 from tests.circuits.builds import VALUES, leg_of, loads, parts_of, plus_input
 from tests.circuits.kirchhoff import TIGHT, Half, Leg, run, through
 from tests.circuits.test_phases import halves_of, integrated
@@ -173,6 +173,31 @@ def test_two_transistors_are_those_of_their_node_equations(case):
         assert float(settled.durations[i]) == pytest.approx(time, rel=1e-6)
         assert float(settled.starts[i]) == pytest.approx(start, abs=1e-6 * p["supply"])
         assert float(settled.ends[i]) == pytest.approx(end, abs=1e-6 * p["supply"])
+
+
+@pytest.mark.parametrize("case", ["as it is", "slow collectors", "series resistance", "late"])
+def test_the_output_is_high_from_the_middle_of_its_slow_rise(case):
+    """Duty by 50 % crossings (IEEE 181): the collector crosses its middle late, and falls at once."""
+    p = {**VALUES["two-transistor"], **CROSSED[case]}
+    truth = crossed(p)
+    (time_1, _, _, top), (time_2, _, end, _) = truth[1], truth[2]
+    esr = p.get("ESR", 0.0)
+    g, short = 1 / p["R2"], p["supply"] / p["R2"]
+    plates = end * (1 + esr * g) - esr * short
+    y0 = p["V_CE"] + max(p["V_BE"] - plates, 0.0)
+
+    def collector(y):
+        return y + esr * (p["supply"] - y) / (p["RC1"] + esr)
+
+    def middle(t, y):
+        return collector(y[0]) - 0.5 * (p["V_CE"] + top)
+
+    middle.terminal = True
+    tau = (p["RC1"] + esr) * p["C2"]
+    done = solve_ivp(lambda t, y: [(p["supply"] - y[0]) / tau], (0, 1), [y0], events=middle, **TIGHT)
+    late = float(done.t_events[0][0])
+    found = constants(circuits.get("two-transistor").cycle(parts_of("two-transistor", p)), "")
+    assert float(found["high_share"]) == pytest.approx((time_1 - late) / (time_1 + time_2), rel=1e-6)
 
 
 def test_the_output_s_high_level_is_what_the_collector_reached():
