@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import os
 import re
-from collections.abc import Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -69,8 +68,12 @@ def page(
         sentences=[typeset(words.verdict_sentence(explanation)), typeset(words.blame_sentence(explanation))],
         rule=words.RULE if explanation.verdict else "",
         identity=_identity(explanation, acquired),
-        cautions=[typeset(w.says) for w in _once(explanation) if w.code == "hazard"],
-        warnings=[(clean(w.code), typeset(w.says)) for w in _once(explanation) if w.code != "hazard"],
+        cautions=[typeset(says) for code, says in words.said_warnings(explanation) if code == "hazard"],
+        warnings=[
+            (clean(code), typeset(says))
+            for code, says in words.said_warnings(explanation)
+            if code != "hazard"
+        ],
         captures=[_capture_table(c, len(explanation.captures) > 1) for c in explanation.captures],
         measured=_measured(explanation),
         budgets=_budgets(explanation),
@@ -123,10 +126,6 @@ def write(path: str | os.PathLike[str], text: str) -> None:
 def typeset(text: str) -> str:
     """A sentence or a number of our own for a page: numbers whole, minus signs proper."""
     return glued(re.sub(r"(?<![\w.])-(?=\d)", "−", clean(text)))
-
-
-def _once(explanation: Explanation) -> Iterable[Any]:
-    return dict.fromkeys(explanation.warnings)
 
 
 def _identity(explanation: Explanation, acquired: str | None) -> list[tuple[str, str]]:

@@ -28,7 +28,7 @@ def render(explanation: Explanation, *, width: int = 80, colour: bool = False) -
     _parts(page, explanation)
     _readings(page, explanation)
     _remedies(page, explanation)
-    page.remarks((w.code, w.says) for w in explanation.warnings)
+    page.remarks(words.said_warnings(explanation))
     return "\n".join(page.lines)
 
 
@@ -75,7 +75,8 @@ def _measured(page: Page, explanation: Explanation) -> None:
     for left, right, names in pairs:
         block = [[text, get(a), get(b)] for text, a, b in names if get(a) or get(b)]
         if block:
-            page.table([["", left, right], *block], [Column(), Column(True), Column(True)], ["dim"])
+            head = ["", *(h if any(row[i] for row in block) else "" for i, h in ((1, left), (2, right)))]
+            page.table([head, *block], [Column(), Column(True), Column(True)], ["dim"])
 
 
 def _target_row(explanation: Explanation, name: str) -> list[list[str]]:
@@ -134,7 +135,7 @@ def _suspects(page: Page, explanation: Explanation) -> None:
 
 
 def _parts(page: Page, explanation: Explanation) -> None:
-    known = [p for p in explanation.parts if p.known_from != "build sheet" and words.resolved(p)]
+    known = words.told(explanation)
     if known:
         page.section("Parts as built")
         rows = [["", "built", "nominal", "off", "limits", "known from"]]
@@ -151,7 +152,7 @@ def _parts(page: Page, explanation: Explanation) -> None:
         columns = [Column(), Column(True), Column(True, 3), Column(True), Column(rank=1), Column(rank=2)]
         page.table(rows, columns, styles)
     apart = [words.listed(group) for group in explanation.unseparated]
-    grouped = {name for group in explanation.unseparated for name in group}
+    grouped = {name for group in explanation.unseparated for name in group} | {p.name for p in known}
     sheet = [p.name for p in explanation.parts if p.known_from == "build sheet" and p.nominal is not None]
     taken = [name for name in sheet if name not in grouped]
     if (apart or taken) and not known:

@@ -152,8 +152,9 @@ def verdict_sentence(explanation: Explanation) -> str:
     word = VERDICTS.get(explanation.verdict or "", "")
     head = f"{word}: " if word else ""
     if not explanation.oscillates:
-        rest = f" {explanation.finding}" if explanation.finding else ""
-        return f"{head}{'does' if head else 'Does'} not oscillate.{rest}"
+        finding = explanation.finding.rstrip(".")
+        rest = f": {finding[0].lower()}{finding[1:]}" if finding else ""
+        return f"{head}{'does' if head else 'Does'} not oscillate{rest}."
     runs = amount("frequency", judged(explanation, "frequency")[0])
     if not runs:
         return f"{head}{'the' if head else 'The'} frequency cannot be told from this capture."
@@ -180,7 +181,8 @@ def blame_sentence(explanation: Explanation) -> str:
     sure = f"{chance(first.probability)} sure"
     if explanation.settled:
         if not first.causes:
-            return f"Nothing to blame: {NOTHING} ({sure})."
+            allowed = "; the tolerances together allow this miss" if _is_off(explanation) else ""
+            return f"Nothing to blame: {NOTHING} ({sure}){allowed}."
         word = "To blame" if _is_off(explanation) else "Found off"
         return f"{word}, {sure}: {charge(first)}."
     live = live_suspects(explanation.suspects)
@@ -228,6 +230,24 @@ def reading(explanation: Explanation, r: NextReading) -> str:
     is_part = any(p.name == r.node_or_part for p in explanation.parts)
     named = re.search(rf"(?<!\w){re.escape(r.node_or_part)}(?!\w)", r.reading)
     return f"{r.node_or_part}, {r.reading}" if is_part and not named else r.reading
+
+
+def told(explanation: Explanation) -> list[PartFound]:
+    """The parts of which more is known than the sheet says: by capture or reading, or as live suspects."""
+    suspected = {name for s in explanation.suspects if s.probability >= 0.05 for name in s.causes}
+    return [
+        p
+        for p in explanation.parts
+        if resolved(p) and (p.known_from != "build sheet" or p.name in suspected or p.within is False)
+    ]
+
+
+def said_warnings(explanation: Explanation) -> list[tuple[str, str]]:
+    """(code, says) of the warnings, each once, without what the verdict says already."""
+    once = dict.fromkeys((w.code, w.says) for w in explanation.warnings)
+    return [
+        (code, says) for code, says in once if says.rstrip(".") != explanation.finding.rstrip(".") or not says
+    ]
 
 
 def resolved(part: PartFound) -> bool:
