@@ -5,14 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.levels import States
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import block_means, crossings
-
-Array = NDArray[np.float64]
-Mask = NDArray[np.bool_]
 
 _EDGES = 128
 
@@ -38,7 +35,7 @@ class Edges:
     def size(self) -> int:
         return int(self.index.size)
 
-    def take(self, which: NDArray[np.int64]) -> Edges:
+    def take(self, which: Index) -> Edges:
         """Some of the edges."""
         return Edges(self.index[which], self.rising[which], self.variance[which])
 
@@ -61,7 +58,7 @@ def find_edges(trace: Trace, states: States) -> Edges:
 
 
 def _interpolate(
-    trace: Trace, before: NDArray[np.int64], after: NDArray[np.int64], middle: float, sign: Array
+    trace: Trace, before: Index, after: Index, middle: float, sign: Array
 ) -> tuple[Array, Array]:
     """Linear interpolation between the last sample on the old side of ``middle`` and the next."""
     last = before.copy()
@@ -76,7 +73,7 @@ def _interpolate(
 
 
 def _regress(
-    trace: Trace, before: NDArray[np.int64], after: NDArray[np.int64], middle: float, sign: Array
+    trace: Trace, before: Index, after: Index, middle: float, sign: Array
 ) -> tuple[Mask, Array, Array]:
     """Edges with many samples in the band: a line through these, solved for the middle."""
     count = after - before - 1

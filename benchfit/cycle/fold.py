@@ -3,15 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_exponentials, fit_levels
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
 
 POINTS = 40_000
 PART = 20_000
@@ -82,7 +81,7 @@ def _sums(values: NDArray[np.generic], begin: Index, end: Index) -> Array:
     return np.asarray(np.add.reduceat(values, bounds)[::2], dtype=float)
 
 
-def _keep(bins: Bins, keep: NDArray[np.bool_]) -> Bins:
+def _keep(bins: Bins, keep: Mask) -> Bins:
     return Bins(bins.t[keep], bins.v[keep], bins.n[keep], bins.spread[keep], bins.cycle[keep])
 
 
@@ -119,7 +118,7 @@ def _chunks(points: Index) -> list[slice]:
     total = np.cumsum(points)
     cuts = np.searchsorted(total, np.arange(_CHUNK, int(total[-1]), _CHUNK))
     edges = np.unique(np.concatenate([[0], cuts, [points.size]]))
-    return [slice(int(a), int(b)) for a, b in zip(edges[:-1], edges[1:], strict=True)]
+    return [slice(int(a), int(b)) for a, b in pairwise(edges)]
 
 
 def _from_fold(

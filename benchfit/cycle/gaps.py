@@ -11,14 +11,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.phases import Fitted
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Crossings
-
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
 
 _MARGIN = 8
 _CHUNK = 50_000
@@ -74,7 +71,7 @@ def find_gaps(trace: Trace, rough: Gaps, fitted: Fitted, tolerance: float) -> Ga
     return Gaps(np.clip(last, 0, trace.size - 1), np.clip(np.maximum(first, last + 1), 0, trace.size - 1))
 
 
-def _close(fitted: Fitted, phase: Index, index: Array, v: Array, tolerance: float) -> NDArray[np.bool_]:
+def _close(fitted: Fitted, phase: Index, index: Array, v: Array, tolerance: float) -> Mask:
     where = np.repeat(phase, index.shape[1])
     curve, _ = fitted.values_at(where, index.ravel())
     return np.asarray(np.abs(v - curve.reshape(v.shape)) <= tolerance)
@@ -107,7 +104,9 @@ def censored_mean(lower: Array, upper: Array, noise: float) -> Threshold:
     reach = 4.0 * spread / np.sqrt(lower.size) + max(overlap, 0.0)
     centre = 0.5 * (upper.min() + lower.max()) if overlap > 0 else float(middle.mean())
     least = max(noise, 0.02 * max(overlap, gap / lower.size))
-    means = centre + np.linspace(-1.0, 1.0, 101) * min(max(reach, 1.5 * max(overlap, 0.0)), 3 * gap + 4 * spread)
+    means = centre + np.linspace(-1.0, 1.0, 101) * min(
+        max(reach, 1.5 * max(overlap, 0.0)), 3 * gap + 4 * spread
+    )
     scatters = np.geomspace(least, max(3.0 * spread, 3.0 * least), 18)
     log = np.empty((scatters.size, means.size))
     for i, s in enumerate(scatters):

@@ -5,12 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.noise import stretches
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
 
 _BINS = 256
 
@@ -63,7 +61,7 @@ def _robust_extremes(values: Array, noise: float) -> tuple[float, float]:
     return low, high
 
 
-def _smooth(counts: NDArray[np.int64]) -> Array:
+def _smooth(counts: Index) -> Array:
     return np.convolve(counts, [0.5, 1.0, 0.5], mode="same")
 
 
@@ -82,5 +80,7 @@ def _plateaus(trace: Trace, states: States) -> bool:
     reach = max(4.0 * trace.noise, 0.04 * states.amplitude)
     shares = []
     for level in (states.low, states.high):
-        shares.append(np.mean([np.mean(np.abs(trace.values[s] - level) <= reach) for s in stretches(trace.size)]))
-    return min(shares) > 0.01
+        shares.append(
+            np.mean([np.mean(np.abs(trace.values[s] - level) <= reach) for s in stretches(trace.size)])
+        )
+    return bool(min(shares) > 0.01)

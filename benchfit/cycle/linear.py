@@ -10,11 +10,9 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.phases import Fitted
-
-Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False)
@@ -36,7 +34,7 @@ class Form:
         return Form(self.own * factor, self.shared * factor, self.extra * factor)
 
 
-def phase_form(fitted: Fitted, phase: NDArray[np.int64], index: Array, weight: Array) -> Form:
+def phase_form(fitted: Fitted, phase: Index, index: Array, weight: Array) -> Form:
     """Σ weight · δv(phase, index)."""
     own, shared = fitted.derivatives(phase, index)
     total = np.bincount(phase, weights=weight * own, minlength=fitted.layout.size).astype(float)
@@ -59,15 +57,22 @@ def extra_form(fitted: Fitted, upper: float, lower: float) -> Form:
     return Form(np.zeros(fitted.layout.size), np.zeros((2, 2)), np.array([upper, lower]))
 
 
-def covariance(fitted: Fitted, forms: list[Form], variance: float, extra: Array | None = None) -> Array:
-    """Covariance of forms when a sample has ``variance`` (V²); ``extra`` (2,) the variances of the instants (s²)."""
+def covariance(
+    fitted: Fitted, forms: list[Form], variance: dict[bool, float], extra: Array | None = None
+) -> Array:
+    """Covariance of forms.
+
+    ``variance`` is that of a sample (V²) in the phases of each kind, ``extra`` (2,) those of the instants (s²).
+    """
     own = np.stack([f.own for f in forms])
-    with np.errstate(divide="ignore"):
-        spread = np.where(fitted.information > 0, 1.0 / fitted.information, 0.0)
-    result = variance * ((own * spread) @ own.T)
+    sigma2 = np.where(fitted.layout.rising, variance.get(True, 0.0), variance.get(False, 0.0))
+    spread = np.where(
+        fitted.information > 0, sigma2 / np.where(fitted.information > 0, fitted.information, 1.0), 0.0
+    )
+    result = (own * spread) @ own.T
     for kind, fit in fitted.fits.items():
         shared = np.stack([f.shared[int(kind)] for f in forms])
-        result = result + variance * (shared @ fit.shared @ shared.T)
+        result = result + variance[kind] * (shared @ fit.shared @ shared.T)
     if extra is not None:
         instants = np.stack([f.extra for f in forms])
         result = result + (instants * extra) @ instants.T

@@ -4,13 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-import numpy as np
-
 from benchfit.capture.model import Capture
+from benchfit.cycle import conditions
 from benchfit.cycle.constants import Assignment, CycleConstants
-from benchfit.cycle.levels import is_square
-from benchfit.cycle.output import observe_output
+from benchfit.cycle.join import join
 from benchfit.cycle.observed import Observed
+from benchfit.cycle.output import observe_output
 from benchfit.cycle.rest import observe_output_rest, observe_rest
 from benchfit.cycle.timing import observe_timing
 from benchfit.cycle.trace import Trace, prepare
@@ -24,7 +23,8 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     ----------
     capture : Capture
     assignments : sequence of Assignment
-        What each channel was clipped to; channels without one are not looked at.
+        What each channel was clipped to; channels without one are not looked at. The first that is no square
+        output times the cycle.
 
     Raises
     ------
@@ -37,59 +37,72 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     timing = next((t for t in traces if t.assignment.shape != "square"), None)
     output = next((t for t in traces if t.assignment.shape == "square"), None)
     seen = observe_output(output) if output is not None else None
-    found_output = seen.observed if seen is not None else None
-    found_timing = observe_timing(timing) if timing is not None else None
-    if found_output is None and found_timing is None:
-        at_rest = [observe_rest(timing)] if timing is not None else []
-        at_rest += [observe_output_rest(output)] if output is not None else []
-        return _join(capture, traces, at_rest)
-    return _join(capture, traces, [p for p in (found_timing, found_output) if p is not None])
-
-
-def _join(
-    capture: Capture, traces: list[Trace], parts: list[Observed]
-) -> CycleConstants:
-    names: list[str] = []
-    values: list[float] = []
-    blocks = []
-    for part in parts:
-        keep = [i for i, n in enumerate(part.names) if n not in names]
-        names += [part.names[i] for i in keep]
-        values += [float(part.values[i]) for i in keep]
-        blocks.append(part.covariance[np.ix_(keep, keep)])
-    covariance = np.zeros((len(names), len(names)))
-    at = 0
-    for block in blocks:
-        covariance[at : at + len(block), at : at + len(block)] = block
-        at += len(block)
-    cycles = capture.samples * capture.interval / values[names.index("period")] if "period" in names else 0.0
-    oscillates = "period" in names
-    remarks: tuple[Remark, ...] = ()
+    found = [observe_timing(timing, seen)] if timing is not None else []
+    found += [seen.observed] if seen is not None else []
+    parts = [p for p in found if p is not None]
+    oscillates = bool(parts)
     if not oscillates:
-        remarks = (Remark("no-oscillation", _rest_says(names, values)),)
-    elif cycles < 3:
-        remarks = (Remark("few-cycles", f"only {cycles:.2g} cycles in the record; take a longer capture"),)
+        parts = [observe_rest(timing)] if timing is not None else []
+        parts += [observe_output_rest(output)] if output is not None else []
+    noise = {t.node: t.noise for t in traces} | {p.node: p.noise for p in parts}
+    return _result(capture, traces, parts, noise, _remarks(capture, traces, parts, oscillates))
+
+
+def _result(
+    capture: Capture,
+    traces: list[Trace],
+    parts: list[Observed],
+    noise: dict[str, float],
+    remarks: tuple[Remark, ...],
+) -> CycleConstants:
+    names, values, covariance = join(parts)
+    period = float(values[names.index("period")]) if "period" in names else 0.0
     return CycleConstants(
-        oscillates=oscillates,
-        names=tuple(names),
-        values=np.array(values),
+        oscillates=period > 0,
+        names=names,
+        values=values,
         covariance=covariance,
-        cycles=cycles,
-        jitter=parts[0].jitter if parts else None,
-        noise={t.node: t.noise for t in traces},
+        cycles=capture.samples * capture.interval / period if period > 0 else 0.0,
+        jitter=next((p.jitter for p in parts if p.jitter is not None), None),
+        highest=next((p.highest for p in parts if p.highest is not None), None),
+        lowest=next((p.lowest for p in parts if p.lowest is not None), None),
+        noise=noise,
         spans={t.node: t.span for t in traces},
         resolutions={t.node: t.resolution for t in traces},
         coupling={t.node: t.assignment.coupling for t in traces},
         turns=capture.start + parts[0].turns,
-        phases=parts[0].phases if parts else (),
+        phases=tuple(f for p in parts for f in p.phases),
         remarks=remarks,
         samples=capture.samples,
         interval=capture.interval,
     )
 
 
-def _rest_says(names: list[str], values: list[float]) -> str:
-    known = dict(zip(names, values, strict=True))
+def _remarks(
+    capture: Capture,
+    traces: list[Trace],
+    parts: list[Observed],
+    oscillates: bool,
+) -> tuple[Remark, ...]:
+    remarks = [r for p in parts for r in p.remarks]
+    if oscillates:
+        period = parts[0].value("period")
+        shares = tuple(p.value(n) for p in parts for n in ("charge_share", "high_share") if n in p.names)
+        remarks += conditions.sampling(period, shares, capture.samples, capture.interval)
+        for part in parts[:1]:
+            remarks += conditions.drift(part) or conditions.ripple(part)
+    else:
+        remarks.append(Remark("no-oscillation", _rest_says(parts)))
+    remarks += conditions.clipping(traces) + conditions.quantisation(traces) + conditions.coupling(traces)
+    unique: dict[str, Remark] = {}
+    for remark in remarks:
+        old = unique.get(remark.code)
+        unique[remark.code] = remark if old is None else Remark(remark.code, f"{old.says}; {remark.says}")
+    return tuple(unique.values())
+
+
+def _rest_says(parts: list[Observed]) -> str:
+    known = {n: float(v) for p in parts for n, v in zip(p.names, p.values, strict=True)}
     says = "the record shows no oscillation"
     if "ramp_start" in known:
         says += f"; the node starts once from {known['ramp_start']:.4g} V"
@@ -100,19 +113,3 @@ def _rest_says(names: list[str], values: list[float]) -> str:
     if "output_rest" in known:
         says += f"; the output stays at {known['output_rest']:.4g} V"
     return says
-
-
-def guess(capture: Capture) -> tuple[Assignment, ...]:
-    """Nodes of a capture without a build sheet: a square channel is the output, another the capacitor."""
-    square = []
-    for channel in capture.channels:
-        if channel.unit not in ("V", "") or not np.isfinite(channel.values).any():
-            continue
-        trace = prepare(capture, Assignment(channel.name, "capacitor"))
-        square.append((channel.name, is_square(trace)))
-    found: list[Assignment] = []
-    for name, two_state in square:
-        node = "output" if two_state else "capacitor"
-        if all(a.node != node for a in found):
-            found.append(Assignment(name, node, "square" if two_state else "timing"))
-    return tuple(found)

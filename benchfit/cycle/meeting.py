@@ -5,185 +5,60 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.conditions import irregularities
+from benchfit.cycle.constants import PhaseFit
+from benchfit.cycle.corners import Met, corner_forms, corners, extreme, fit_corners, guard_corners
+from benchfit.cycle.cycles import Cycles
+from benchfit.cycle.ends import started, with_ends
 from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
-from benchfit.cycle.phases import Fitted, Layout, fit_phases, guarded, layout_from, meet
-from benchfit.cycle.residuals import end_guards
+from benchfit.cycle.phases import Corners, Fitted
+from benchfit.cycle.residuals import Profile, body_profile, poor_fit
 from benchfit.cycle.scatter import correlation, mean_scatter, student
-from benchfit.cycle.short import own_samples
+from benchfit.cycle.sequence import Sequence, closed, put_in_order
 from benchfit.cycle.trace import Trace
-from benchfit.cycle.turns import Crossings, Turns, block_means, find_turns
-
-Array = NDArray[np.float64]
-Mask = NDArray[np.bool_]
-
-_ZONES = (0.08, 0.2)
-_TESTED = 300
+from benchfit.cycle.turns import Turns
+from benchfit.errors import Remark
 
 
 @dataclass(frozen=True, eq=False)
-class Corners:
-    """Turns between neighbouring phases: sample index, voltage, and which phase comes before."""
+class _View:
+    """A fit with all that the constants are drawn from.
 
-    index: Array
-    voltage: Array
-    before: NDArray[np.int64]
-    top: Mask
+    ``variance`` is that of a sample (V²) of each kind, widened for slow noise; ``order`` tells the regular
+    intervals between the corners.
+    """
 
+    trace: Trace
+    met: Met
+    corner: Corners
+    order: Sequence
+    profiles: dict[bool, Profile]
+    variance: dict[bool, float]
 
-@dataclass(frozen=True, eq=False)
-class Met:
-    """Fitted phases, the turns between them, and the samples left out at the start and the end of each kind."""
-
-    fitted: Fitted
-    index: Array
-    top: Mask
-    guards: dict[bool, tuple[int, int]]
-
-    def rounded(self, top: bool) -> bool:
-        """Whether samples were left out about the upper (or lower) turns."""
-        return self.guards[top][1] > 0 or self.guards[not top][0] > 0
+    @property
+    def fitted(self) -> Fitted:
+        return self.met.fitted
 
 
-def observe_meeting(trace: Trace, passages: Crossings) -> Observed | None:
-    """Fit the phases of a timing node that turns without a step; None where nothing can be fitted."""
-    met = fit_corners(trace, with_ends(trace, find_turns(trace, passages)))
+def observe_meeting(trace: Trace, turns: Turns) -> Observed | None:
+    """Fit the phases of a timing node that turns without a step; None where there is no full period."""
+    met = fit_corners(trace, with_ends(trace, turns))
     if met is None:
         return None
     met = guard_corners(trace, met)
-    return constants(trace, met)
-
-
-def with_ends(trace: Trace, turns: Turns) -> Turns:
-    """Turns before the first and after the last passage, where the record shows one."""
-    values = block_means(trace.values, turns.block)
-    noise = trace.noise / np.sqrt(turns.block)
-    index, top = turns.index, turns.top
-    inside = (index + 0.5) / turns.block - 0.5
-    heights = values[np.clip(np.round(inside).astype(int), 0, values.size - 1)]
-    swing = float(abs(np.median(heights[top]) - np.median(heights[~top]))) if top.any() and (~top).any() else 0.0
-    margin = max(6.0 * noise, 0.05 * swing)
-    head = values[: int(inside[0])] * (-1.0 if top[0] else 1.0)
-    tail = values[int(np.ceil(inside[-1])) + 1 :] * (-1.0 if top[-1] else 1.0)
-    if head.size > 2 and head.max() - head[0] > margin:
-        index = np.concatenate([[(int(head.argmax()) + 0.5) * turns.block - 0.5], index])
-        top = np.concatenate([[not top[0]], top])
-    if tail.size > 2 and tail.max() - tail[-1] > margin:
-        place = int(np.ceil(inside[-1])) + 1 + int(tail.argmax())
-        index = np.concatenate([index, [(place + 0.5) * turns.block - 0.5]])
-        top = np.concatenate([top, [not top[-1]]])
-    return Turns(index, top, turns.block)
-
-
-def fit_corners(trace: Trace, turns: Turns) -> Met | None:
-    """Fit, find where the phases meet, and fit again with the samples that belong to each."""
-    layout = layout_from(turns.index, turns.top, 0, trace.size)
-    layout = _trim_ends(trace, layout, turns)
-    inner = guarded(layout, _guard(layout), _guard(layout))
-    fitted = fit_phases(trace, inner)
-    index = turns.index
-    for _ in range(8):
-        if len(fitted.fits) < 2:
-            return None
-        met = meet(fitted, index)
-        moved = np.abs(np.where(np.isnan(met), 0.0, met - index))
-        index = np.where(np.isnan(met), index, met)
-        if fitted.layout is not inner and (np.quantile(moved, 0.98) < 0.02 or _settled(moved, layout)):
-            break
-        layout = layout_from(index, turns.top, layout.first[0], layout.stop[-1])
-        layout = _extend_ends(fitted, layout, trace, index, turns.top)
-        layout = own_samples(fitted, layout, trace, trace.noise)
-        fitted = fit_phases(trace, layout, begin=fitted)
-    return Met(fitted, index, turns.top, {True: (0, 0), False: (0, 0)}) if len(fitted.fits) == 2 else None
-
-
-def guard_corners(trace: Trace, met: Met) -> Met:
-    """Leave samples out about the turns where, and only where, the residuals there ask for it."""
-    whole = _some(met.fitted.layout)
-    guards = {True: (0, 0), False: (0, 0)}
-    open_kinds = {True, False}
-    for zone in _ZONES:
-        inner = fit_phases(trace, guarded(whole, *(2 * [np.maximum(zone * whole.length, 1)])), begin=met.fitted)
-        for kind in sorted(open_kinds):
-            if kind not in inner.fits:
-                continue
-            before, after, through = end_guards(trace, inner, whole, kind, zone)
-            if not through:
-                guards[kind] = (before, after)
-                open_kinds.discard(kind)
-        if not open_kinds:
-            break
-    if not any(a or b for a, b in guards.values()):
-        return met
-    return _refit(trace, met, guards)
-
-
-def _some(layout: Layout) -> Layout:
-    """A few hundred whole phases, evenly spread, for tests of the residuals."""
-    mine = np.flatnonzero(layout.whole & (layout.length >= 8))
-    if mine.size > 2 * _TESTED:
-        mine = mine[np.linspace(0, mine.size - 1, 2 * _TESTED).astype(int)]
-    return Layout(layout.first[mine], layout.stop[mine], layout.rising[mine], layout.whole[mine])
-
-
-def _refit(trace: Trace, met: Met, guards: dict[bool, tuple[int, int]]) -> Met:
-    fitted, index = met.fitted, met.index
-    for _ in range(2):
-        layout = layout_from(index, met.top, fitted.layout.first[0], fitted.layout.stop[-1])
-        before = np.where(layout.rising, guards[True][0], guards[False][0])
-        after = np.where(layout.rising, guards[True][1], guards[False][1])
-        before[0] = after[-1] = 0
-        fitted = fit_phases(trace, guarded(layout, before, after), begin=fitted)
-        found = meet(fitted, index)
-        index = np.where(np.isnan(found), index, found)
-    return Met(fitted, index, met.top, guards)
-
-
-def _settled(moved: Array, layout: Layout) -> bool:
-    """Whether the turns moved by next to nothing against the shorter of the phases that they part."""
-    shorter = np.minimum(layout.length[:-1], layout.length[1:])
-    return bool(np.quantile(moved / np.maximum(shorter, 1), 0.98) < 2e-4)
-
-
-def _guard(layout: Layout) -> Array:
-    return np.where(layout.length >= 8, np.ceil(0.06 * layout.length), np.where(layout.length >= 4, 1, 0))
-
-
-def _trim_ends(trace: Trace, layout: Layout, turns: Turns) -> Layout:
-    """Leave out what lies before the first phase's and after the last phase's own extreme."""
-    first, stop = layout.first.copy(), layout.stop.copy()
-    values = block_means(trace.values[: stop[0]], turns.block) * (1.0 if layout.rising[0] else -1.0)
-    if values.size > 1:
-        first[0] = int(values.argmin()) * turns.block
-    values = block_means(trace.values[first[-1] :], turns.block) * (-1.0 if layout.rising[-1] else 1.0)
-    if values.size > 1:
-        stop[-1] = min(trace.size, first[-1] + (int(values.argmin()) + 1) * turns.block)
-    return Layout(first, np.maximum(stop, first + 1), layout.rising, layout.whole)
-
-
-def _extend_ends(fitted: Fitted, layout: Layout, trace: Trace, index: Array, top: Mask) -> Layout:
-    """Let the first and the last phase reach as far as their curves stay within the cycle's corners."""
-    before = np.arange(index.size)
-    heights = fitted.values_at(before, index)[0]
-    upper, lower = np.nanmedian(heights[top]), np.nanmedian(heights[~top])
-    first, stop = layout.first.copy(), layout.stop.copy()
-    for end in (0, layout.size - 1):
-        if not fitted.sound[end]:
-            continue
-        rising = bool(layout.rising[end])
-        target = (lower if rising else upper) if end == 0 else (upper if rising else lower)
-        reach = fitted.model(rising).time_to(target, fitted.level[end : end + 1])[0] / trace.interval
-        limit = fitted.middle[end] + reach
-        if not np.isfinite(limit):
-            continue
-        if end == 0:
-            first[0] = int(np.clip(np.ceil(limit), 0, stop[0] - 1))
-        else:
-            stop[-1] = int(np.clip(np.floor(limit) + 1, first[-1] + 1, trace.size))
-    return Layout(first, stop, layout.rising, layout.whole)
+    corner = corners(met.fitted, met.index)
+    if (
+        not (corner.top.any() and (~corner.top).any())
+        or max(np.bincount(met.fitted.layout.rising[met.fitted.sound])) < 2
+    ):
+        return None
+    profiles = {k: p for k in met.fitted.fits if (p := body_profile(trace, met.fitted, k)) is not None}
+    order = put_in_order(corner.index, ~corner.top)
+    return _constants(_View(trace, met, corner, order, profiles, _variances(met.fitted, profiles)))
 
 
 def noise_variance(fitted: Fitted) -> float:
@@ -192,34 +67,15 @@ def noise_variance(fitted: Fitted) -> float:
     return float(rss / max(sum(f.freedom for f in fitted.fits.values()), 1))
 
 
-def corners(fitted: Fitted, guess: Array) -> Corners:
-    """Where neighbouring fitted phases meet."""
-    layout = fitted.layout
-    index = meet(fitted, guess)
-    before = np.arange(layout.size - 1)
-    good = np.flatnonzero(np.isfinite(index) & fitted.sound[:-1] & fitted.sound[1:])
-    voltage = fitted.values_at(before[good], index[good])[0]
-    return Corners(index[good], voltage, before[good], layout.rising[good])
+def _variances(fitted: Fitted, profiles: dict[bool, Profile]) -> dict[bool, float]:
+    freedom = sum(f.freedom for f in fitted.fits.values())
+    base = noise_variance(fitted) * student(freedom) ** 2
+    return {kind: base * (profiles[kind].colour if kind in profiles else 1.0) for kind in fitted.fits}
 
 
-def corner_forms(fitted: Fitted, corner: Corners, time: Array, voltage: Array) -> Form:
-    """Σ (time·δt + voltage·δv) over corners, δt in s and δv in V."""
-    _, r0 = fitted.values_at(corner.before, corner.index)
-    _, r1 = fitted.values_at(corner.before + 1, corner.index)
-    gap = r0 - r1
-    left = phase_form(fitted, corner.before, corner.index, (-time - voltage * r1) / gap)
-    right = phase_form(fitted, corner.before + 1, corner.index, (time + voltage * r0) / gap)
-    return left + right
-
-
-def constants(trace: Trace, met: Met) -> Observed | None:
+def _constants(view: _View) -> Observed | None:
     """Cycle constants of the fitted phases."""
-    fitted = met.fitted
-    variance = noise_variance(fitted)
-    corner = corners(fitted, met.index)
-    top, low = np.flatnonzero(corner.top), np.flatnonzero(~corner.top)
-    if top.size == 0 or low.size == 0 or corner.index.size < 3:
-        return None
+    fitted, corner = view.fitted, view.corner
     names: list[str] = []
     values: list[float] = []
     forms: list[Form] = []
@@ -229,118 +85,188 @@ def constants(trace: Trace, met: Met) -> Observed | None:
         values.append(value)
         forms.append(form)
 
-    period, period_form = _period(fitted, corner, variance)
+    upper, lower = (_level_weights(view, top) for top in (True, False))
+    period, period_form = _period(view, float(upper @ corner.voltage), float(lower @ corner.voltage))
     add("period", period.period, period_form)
-    share, share_form = _share(fitted, corner)
+    share, share_form = _share(view, period.period, period_form)
     add("charge_share", share, share_form)
-    for name, these in (("upper", top), ("lower", low)):
-        weight = np.zeros(corner.index.size)
-        weight[these] = 1.0 / these.size
+    for name, weight in (("upper", upper), ("lower", lower)):
         add(name, float(weight @ corner.voltage), corner_forms(fitted, corner, 0.0 * weight, weight))
     for name, rising in (("charge_curvature", True), ("discharge_curvature", False)):
         add(name, fitted.model(rising).curvature, curvature_form(fitted, rising))
-    variance *= student(sum(f.freedom for f in fitted.fits.values())) ** 2
-    cov = covariance(fitted, forms, variance)
-    cov = cov + _scatter(fitted, corner, cov, share, variance, period.u)
+    cov = covariance(fitted, forms, view.variance)
+    jitter, series = _scatter(view, cov, share, period.u)
+    cov = cov + jitter + _structure(view, forms)
+    names, values_array, cov = _with_bows(view, names, np.array(values), cov)
+    ends = {}
+    for top, name in ((True, "upper"), (False, "lower")):
+        i = names.index(name)
+        plain = (float(values_array[i]), float(np.sqrt(cov[i, i])))
+        ends[top] = extreme(view.trace, view.met, corner, top, np.sqrt(noise_variance(fitted))) or plain
+    starts = corner.index[~corner.top] if (~corner.top).any() else corner.index
     return Observed(
         tuple(names),
-        np.array(values),
+        values_array,
         cov,
-        corner.index[~corner.top] * fitted.interval,
+        starts * fitted.interval,
         period.jitter,
-        float(np.sqrt(noise_variance(fitted))),
+        _sample_noise(view),
+        ends[True],
+        ends[False],
+        _phase_fits(view, values_array, names),
+        poor_fit(view.profiles, values_array[2] - values_array[3]) + _irregular(view),
+        series,
+        float(jitter[1, 1]),
+        view.trace.node,
     )
 
 
-def _scatter(fitted: Fitted, corner: Corners, cov: Array, share: float, variance: float, u_period: float) -> Array:
-    """What jitter of the cycles adds to the covariance of (period, charge_share, upper, lower)."""
+def _sample_noise(view: _View) -> float:
+    """Noise of a sample (V rms): of neighbours where structure would pass for noise, else of all residuals."""
+    sigma = [p.sigma for p in view.profiles.values() if p.structure > 0]
+    return float(np.sqrt(noise_variance(view.fitted))) if not sigma else float(min(sigma))
+
+
+def _irregular(view: _View) -> tuple[Remark, ...]:
+    node = view.trace.node
+    return tuple(irregularities(node, view.order) + started(view.trace, view.fitted, view.corner))
+
+
+def _level_weights(view: _View, top: bool) -> Array:
+    """Equal weights of the corners of one kind, those at the end of an irregular phase left out."""
+    mine = view.corner.top == top
+    after_odd = np.concatenate([[False], view.order.odd]) if view.order.odd.size == mine.size - 1 else ~mine
+    fine = mine & ~after_odd
+    chosen = fine if fine.any() else mine
+    return np.asarray(chosen / chosen.sum())
+
+
+def _scatter(view: _View, cov: Array, share: float, u_period: float) -> tuple[Array, dict[str, Array]]:
+    """What jitter of the cycles adds to the covariance of (period, charge_share, upper, lower), and the cycles."""
     result = np.zeros_like(cov)
-    cycles = Cycles.of(fitted, corner, share)
+    cycles = Cycles.of(view.fitted, view.corner, share, view.order.odd)
     extra = np.zeros(4)
     extra[0] = max(u_period**2 - cov[0, 0], 0.0)
+    rho, series = np.eye(4), {}
     if cycles is not None:
-        noise = cycles.noise(fitted, variance)
+        noise = cycles.noise(view.fitted, view.variance)
         for i in (1, 2, 3):
             extra[i] = mean_scatter(cycles.samples[:, i], float(noise[i, i]))
         extra[1] /= float(cycles.samples[:, 0].mean()) ** 2
         rho = correlation(cycles.samples, noise)
-    else:
-        rho = np.eye(4)
+        series = {name: cycles.samples[:, i] for name, i in (("period", 0), ("upper", 2), ("lower", 3))}
     size = np.sqrt(extra)
     result[:4, :4] = rho * np.outer(size, size)
+    return np.asarray(result), series
+
+
+def _structure(view: _View, forms: list[Form]) -> Array:
+    """What structure that one exponential leaves adds: the same in every cycle, so that none averages it away.
+
+    It counts as an error of a tenth of the phase each, and as one of every level together; the period, which
+    compares like with like, is free of it.
+    """
+    result = np.zeros((len(forms), len(forms)))
+    for kind, profile in view.profiles.items():
+        if profile.structure == 0.0:
+            continue
+        mine = view.fitted.layout.rising == kind
+        samples = float(view.fitted.layout.length[mine].sum())
+        shared = np.stack([f.shared[int(kind)] for f in forms])
+        level = np.array([f.own[mine].sum() for f in forms])
+        shared[0], level[0] = 0.0, 0.0
+        spread = shared @ view.fitted.fits[kind].shared @ shared.T
+        result += profile.structure**2 * (spread * samples / 10.0 + np.outer(level, level))
     return result
 
 
-@dataclass(frozen=True, eq=False)
-class Cycles:
-    """Single cycles from lower to lower turn: period, (1 − share)·rise − share·fall, upper, lower (s, s, V, V)."""
-
-    first: NDArray[np.int64]
-    samples: Array
-    corner: Corners
-    share: float
-
-    @staticmethod
-    def of(fitted: Fitted, corner: Corners, share: float) -> Cycles | None:
-        """The whole cycles among the corners, None where there are fewer than two."""
-        steps = np.diff(corner.before)
-        first = np.flatnonzero((steps[:-1] == 1) & (steps[1:] == 1) & ~corner.top[:-2])
-        if first.size < 2:
-            return None
-        t = corner.index * fitted.interval
-        rise, fall = t[first + 1] - t[first], t[first + 2] - t[first + 1]
-        samples = np.stack(
-            [rise + fall, (1 - share) * rise - share * fall, corner.voltage[first + 1], corner.voltage[first]], axis=1
-        )
-        return Cycles(first, samples, corner, share)
-
-    def noise(self, fitted: Fitted, variance: float) -> Array:
-        """Covariance of a single cycle's quantities from the record's noise alone, of a typical cycle."""
-        middle = self.first[self.first.size // 2]
-        index, before = self.corner.index[middle : middle + 3], self.corner.before[middle : middle + 3]
-        _, r0 = fitted.values_at(before, index)
-        _, r1 = fitted.values_at(before + 1, index)
-        own0, own1 = fitted.derivatives(before, index)[0], fitted.derivatives(before + 1, index)[0]
-        # Each turn's time and voltage by the own errors of the phase before and of the phase after it.
-        time, volt = np.zeros((3, 4)), np.zeros((3, 4))
-        for j in range(3):
-            gap = r0[j] - r1[j]
-            time[j, j], time[j, j + 1] = -own0[j] / gap, own1[j] / gap
-            volt[j, j], volt[j, j + 1] = -r1[j] * own0[j] / gap, r0[j] * own1[j] / gap
-        rise, fall = time[1] - time[0], time[2] - time[1]
-        form = np.stack([rise + fall, (1 - self.share) * rise - self.share * fall, volt[1], volt[0]])
-        phases = np.arange(before[0], before[0] + 4)
-        return np.asarray((form * (variance / fitted.information[phases])) @ form.T)
-
-
-def _period(fitted: Fitted, corner: Corners, variance: float) -> tuple[PeriodFit, Form]:
+def _period(view: _View, upper: float, lower: float) -> tuple[PeriodFit, Form]:
     """The phases' shifts as instants of their own: each phase's passage through the middle level."""
-    layout = fitted.layout
-    middle_level = 0.5 * (corner.voltage[corner.top].mean() + corner.voltage[~corner.top].mean())
-    instants = np.full(layout.size, np.nan)
-    rate = np.full(layout.size, np.nan)
+    fitted, layout = view.fitted, view.fitted.layout
+    middle_level = 0.5 * (upper + lower)
+    instants, rate, sigma2 = (np.full(layout.size, np.nan) for _ in range(3))
     for kind, fit in fitted.fits.items():
         mine = np.flatnonzero(fitted.sound & (layout.rising == kind))
-        instants[mine] = fitted.middle[mine] * fitted.interval + fit.model.time_to(middle_level, fitted.level[mine])
+        passage = fit.model.time_to(middle_level, fitted.level[mine])
+        instants[mine] = fitted.middle[mine] * fitted.interval + passage
         rate[mine] = fit.model.rate(np.array(middle_level))
+        sigma2[mine] = view.variance[kind]
     good = np.flatnonzero(np.isfinite(instants))
-    number = (good + int(layout.rising[0])) // 2
-    own, _ = fitted.derivatives(good, instants[good] / fitted.interval)
-    spread = variance * own**2 / fitted.information[good] / rate[good] ** 2
-    period = fit_period(instants[good], number, layout.rising[good].astype(int), spread)
-    return period, phase_form(fitted, good, instants[good] / fitted.interval, -period.weights / rate[good])
+    index = instants[good] / fitted.interval
+    own, _ = fitted.derivatives(good, index)
+    spread = sigma2[good] * own**2 / fitted.information[good] / rate[good] ** 2
+    rising = layout.rising[good]
+    at, number = instants[good], (good + int(layout.rising[0])) // 2
+    if np.all(rising[1:] != rising[:-1]):
+        at, number = closed(at, rising, put_in_order(at, rising).odd)
+    period = fit_period(at, number, rising.astype(int), spread)
+    return period, phase_form(fitted, good, index, -period.weights / rate[good])
 
 
-def _share(fitted: Fitted, corner: Corners) -> tuple[float, Form]:
+def _share(view: _View, period: float, period_form: Form) -> tuple[float, Form]:
     """Mean rising time over mean rising plus mean falling time, from neighbouring corners."""
-    neighbours = np.flatnonzero(np.diff(corner.before) == 1)
+    corner, fitted = view.corner, view.fitted
+    neighbours = np.flatnonzero(
+        (np.diff(corner.before) == 1) & ~_padded(view.order.odd, corner.index.size - 1)
+    )
     rises = neighbours[~corner.top[neighbours]]
     falls = neighbours[corner.top[neighbours]]
     lengths = np.diff(corner.index) * fitted.interval
-    charge, discharge = float(lengths[rises].mean()), float(lengths[falls].mean())
-    total = charge + discharge
     weight = np.zeros(corner.index.size)
-    for these, factor in ((rises, discharge / total**2), (falls, -charge / total**2)):
+
+    def mean_of(these: Array, factor: float) -> float:
         np.add.at(weight, these + 1, factor / these.size)
         np.add.at(weight, these, -factor / these.size)
-    return charge / total, corner_forms(fitted, corner, weight, 0.0 * weight)
+        return float(lengths[these].mean())
+
+    if rises.size and falls.size:
+        charge, discharge = float(lengths[rises].mean()), float(lengths[falls].mean())
+        total = charge + discharge
+        mean_of(rises, discharge / total**2)
+        mean_of(falls, -charge / total**2)
+        return charge / total, corner_forms(fitted, corner, weight, 0.0 * weight)
+    # Only one kind is seen whole: the other is what it leaves of the period.
+    sign = 1.0 if rises.size else -1.0
+    whole = mean_of(rises if rises.size else falls, sign / period)
+    form = corner_forms(fitted, corner, weight, 0.0 * weight) + period_form * (-sign * whole / period**2)
+    return (whole / period if rises.size else 1.0 - whole / period), form
+
+
+def _padded(odd: Mask, size: int) -> Mask:
+    return odd if odd.size == size else np.zeros(size, dtype=bool)
+
+
+def _with_bows(view: _View, names: list[str], values: Array, cov: Array) -> tuple[list[str], Array, Array]:
+    """The bows, whose errors are those that the fit has not taken: independent of all the rest."""
+    for kind, name in ((True, "charge_bow"), (False, "discharge_bow")):
+        profile = view.profiles.get(kind)
+        if profile is None or profile.bow_u == 0.0:
+            continue
+        names = [*names, name]
+        values = np.append(values, profile.bow)
+        cov = np.pad(cov, (0, 1))
+        cov[-1, -1] = profile.bow_u**2
+    return names, values, cov
+
+
+def _phase_fits(view: _View, values: Array, names: list[str]) -> tuple[PhaseFit, ...]:
+    known = dict(zip(names, values, strict=True))
+    result = []
+    for rising in (True, False):
+        fit, profile = view.fitted.fits[rising], view.profiles.get(rising)
+        ends = (known["lower"], known["upper"])
+        share = known["charge_share"] if rising else 1.0 - known["charge_share"]
+        left = 1.0 if profile is None or profile.sigma == 0.0 else np.sqrt(fit.variance) / profile.sigma
+        start, end = ends if rising else ends[::-1]
+        result.append(
+            PhaseFit(
+                view.trace.node,
+                rising,
+                start,
+                end,
+                fit.model.curvature,
+                share * known["period"],
+                float(max(left, 1.0)),
+            )
+        )
+    return tuple(result)

@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import NDArray
 
-Array = NDArray[np.float64]
+from benchfit.cycle.arrays import Array
 
 _STRETCH = 1 << 15
 
@@ -22,16 +21,17 @@ def difference_noise(values: Array, resolution: float) -> float:
     """Noise (V rms) from third differences of neighbours, robust against corners and edges.
 
     The differences' variance is 20 σ² (sum of the squared binomial coefficients) and whatever is locally a
-    parabola drops out. The median absolute deviation makes a minority of corners harmless; the result is
-    never below what the quantisation step alone gives, resolution/√12.
+    parabola drops out. The median absolute deviation tells what is far out, as a minority of corners is; the
+    variance of the rest is finer than a median of whole quantisation steps. The result is never below what the
+    quantisation step alone gives, resolution/√12.
     """
-    parts = [np.diff(values[s], 3) for s in stretches(values.size)]
-    d = np.concatenate(parts) if parts else np.empty(0)
+    d = np.concatenate([np.diff(values[s], 3) for s in stretches(values.size)])
     floor = resolution / np.sqrt(12.0) if np.isfinite(resolution) else 0.0
     if d.size == 0:
         return float(floor)
-    mad = float(np.median(np.abs(d))) / 0.6745 / np.sqrt(20.0)
-    if mad == 0.0:
-        # More than half of the differences vanish: quantised, or a flat record.
-        mad = min(float(np.sqrt(np.mean(d * d) / 20.0)), float(floor))
-    return max(mad, float(floor))
+    size = np.abs(d)
+    reach = 4.0 * max(1.4826 * float(np.median(size)), resolution)
+    inner = d[size <= reach] if reach > 0 else d[:0]
+    if inner.size == 0:
+        return float(floor)
+    return float(max(np.sqrt(np.mean(inner**2) / 20.0), floor))

@@ -5,18 +5,16 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.conditions import irregularities
 from benchfit.cycle.edges import Edges, durations, find_edges
 from benchfit.cycle.levels import States, state_levels
-from benchfit.cycle.period import fit_period
 from benchfit.cycle.observed import Observed
+from benchfit.cycle.period import fit_period
 from benchfit.cycle.scatter import mean_scatter
 from benchfit.cycle.sequence import Sequence, closed, put_in_order
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
-Mask = NDArray[np.bool_]
 
 
 @dataclass(frozen=True, eq=False)
@@ -35,14 +33,14 @@ def observe_output(trace: Trace) -> OutputFound:
     edges = find_edges(trace, states)
     order = put_in_order(edges.index, edges.rising)
     kept = edges.take(order.keep)
-    if order.odd.size and order.odd[0]:
+    if order.odd.size > 2 and order.odd[0]:
         kept, order = kept.take(np.arange(1, kept.size)), replace(order, odd=order.odd[1:])
     if kept.size < 3:
         return OutputFound(None, states, kept, order)
     dt = trace.interval
     at, number = closed(kept.index * dt, kept.rising, order.odd)
     fit = fit_period(at, number, kept.rising.astype(int), kept.variance * dt**2)
-    share, share_variance = _share(kept, dt, order.odd)
+    share, share_variance, share_jitter = _share(kept, dt, order.odd)
     names = ["period", "high_share", "high", "low"]
     values = [fit.period, share, states.high, states.low]
     variances = [fit.u**2, share_variance, *(_level_variance(trace, kept) for _ in range(2))]
@@ -53,12 +51,23 @@ def observe_output(trace: Trace) -> OutputFound:
             values.append(found[0])
             variances.append(found[1] ** 2)
     turns = kept.index[kept.rising] * dt
-    observed = Observed(tuple(names), np.array(values), np.diag(variances), turns, fit.jitter, trace.noise)
+    observed = Observed(
+        tuple(names),
+        np.array(values),
+        np.diag(variances),
+        turns,
+        fit.jitter,
+        trace.noise,
+        remarks=tuple(irregularities(trace.node, order)),
+        series=_series(kept, dt, order.odd),
+        share_jitter=share_jitter,
+        node=trace.node,
+    )
     return OutputFound(observed, states, kept, order)
 
 
-def _share(edges: Edges, dt: float, odd: Mask) -> tuple[float, float]:
-    """Mean high time over mean high plus mean low time, and its variance."""
+def _share(edges: Edges, dt: float, odd: Mask) -> tuple[float, float, float]:
+    """Mean high time over mean high plus mean low time, its variance, and how much of that is jitter."""
     lengths = np.diff(edges.index) * dt
     rises, falls = (np.flatnonzero((edges.rising[:-1] == d) & ~odd) for d in (True, False))
     if rises.size == 0 or falls.size == 0:
@@ -74,7 +83,15 @@ def _share(edges: Edges, dt: float, odd: Mask) -> tuple[float, float]:
     pairs = min(high.size, low.size)
     rest = (1 - share) * high[:pairs] - share * low[:pairs]
     single = float(np.mean(edges.variance)) * dt**2 * 2.0 * (1 - share + share**2)
-    return share, (variance + mean_scatter(rest, single)) / total**2
+    jitter = mean_scatter(rest, single)
+    return share, (variance + jitter) / total**2, jitter / total**2
+
+
+def _series(edges: Edges, dt: float, odd: Mask) -> dict[str, Array]:
+    """Single periods between like edges, irregular ones left out."""
+    periods = (edges.index[2:] - edges.index[:-2]) * dt
+    fine = ~(odd[1:] | odd[:-1])
+    return {"period": periods[fine][::2]}
 
 
 def _level_variance(trace: Trace, edges: Edges) -> float:

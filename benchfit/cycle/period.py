@@ -13,12 +13,10 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.spectrum import differences
 
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
 Evaluate = Callable[[Array, Array], tuple[Array, Array, Array]]
 
 _DENSE = 48
@@ -206,7 +204,8 @@ def _dense(
     base = base + np.eye(y.size) * (1e-9 * variance.mean() + (1e-13 * period) ** 2)
 
     def covariances(walk: Array, white: Array) -> Array:
-        return base + white[:, None, None] * np.eye(y.size) + walk[:, None, None] * elapsed / period
+        more = white[:, None, None] * np.eye(y.size) + walk[:, None, None] * elapsed / period
+        return np.asarray(base + more)
 
     def evaluate(walk: Array, white: Array) -> tuple[Array, Array, Array]:
         chol = np.linalg.cholesky(covariances(walk, white))
@@ -216,7 +215,11 @@ def _dense(
         inverse = np.linalg.inv(normal)
         x = inverse @ (a.transpose(0, 2, 1) @ b)
         rest = ((b - a @ x) ** 2).sum(axis=(1, 2))
-        log = -np.log(np.diagonal(chol, axis1=1, axis2=2)).sum(axis=1) - 0.5 * np.linalg.slogdet(normal)[1] - 0.5 * rest
+        log = (
+            -np.log(np.diagonal(chol, axis1=1, axis2=2)).sum(axis=1)
+            - 0.5 * np.linalg.slogdet(normal)[1]
+            - 0.5 * rest
+        )
         return x[:, 0, 0], inverse[:, 0, 0], log
 
     def weigh(walk: float, white: float) -> Array:

@@ -14,10 +14,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
+from benchfit.cycle.arrays import Array, Index
 
 # Kurtosis of a uniform distribution: bins hold evenly spaced samples.
 _KURTOSIS = 9.0 / 5.0
@@ -40,8 +38,9 @@ class PhaseModel:
 
     def value(self, t: Array, level: Array) -> Array:
         """Voltage at time t after the instant at which it was ``level``."""
-        return self.reference + (level - self.reference) * np.exp(-self.curvature * t) + self.slope * phi(
-            t, self.curvature
+        decay = np.exp(-self.curvature * t)
+        return np.asarray(
+            self.reference + (level - self.reference) * decay + self.slope * phi(t, self.curvature)
         )
 
     def rate(self, v: Array) -> Array:
@@ -56,7 +55,7 @@ class PhaseModel:
             # −ln(1 − κx)/κ, regular at κ = 0.
             y = self.curvature * x
             t = x * np.where(np.abs(y) < 1e-8, 1.0 + 0.5 * y, -np.log1p(-y) / np.where(y == 0, 1.0, y))
-        return np.where(1.0 - y > 0, t, np.nan)
+        return np.asarray(np.where(1.0 - y > 0, t, np.nan))
 
     def columns(self, t: Array, level: Array) -> tuple[Array, Array, Array]:
         """Derivatives of ``value`` by level, slope and curvature."""
@@ -107,22 +106,36 @@ class ExponentialFit:
         """Covariance of (asymptote, curvature), shape (2, 2), from the residuals' own variance."""
         s, k = self.model.slope, self.model.curvature
         jacobian = np.array([[1.0 / k, -s / k**2], [0.0, 1.0]])
-        return self.variance * jacobian @ self.shared @ jacobian.T
+        return np.asarray(self.variance * jacobian @ self.shared @ jacobian.T)
 
 
 def phi(t: Array, curvature: float) -> Array:
     """φ(t) = (1 − e^(−κt))/κ, t itself at κ = 0."""
     x = curvature * t
     safe = np.where(x == 0.0, 1.0, x)
-    return t * np.where(x == 0.0, 1.0, -np.expm1(-x) / safe)
+    return np.asarray(t * np.where(x == 0.0, 1.0, -np.expm1(-x) / safe))
 
 
 def _bend(x: Array) -> Array:
     """(x·e^(−x) − (1 − e^(−x)))/x², by its series near 0, where the difference cancels."""
     small = np.abs(x) < 0.2
     z = np.where(small, x, 0.0)
-    series = -1 / 2 + z * (1 / 3 + z * (-1 / 8 + z * (1 / 30 + z * (-1 / 144 + z * (1 / 840 + z * (
-        -1 / 5760 + z * (1 / 45360 + z * (-1 / 403200 + z / 3991680))))))))
+    series = -1 / 2 + z * (
+        1 / 3
+        + z
+        * (
+            -1 / 8
+            + z
+            * (
+                1 / 30
+                + z
+                * (
+                    -1 / 144
+                    + z * (1 / 840 + z * (-1 / 5760 + z * (1 / 45360 + z * (-1 / 403200 + z / 3991680))))
+                )
+            )
+        )
+    )
     y = np.where(small, 1.0, x)
     e = np.exp(-y)
     return np.where(small, series, (y * e - 1.0 + e) / y**2)
@@ -205,7 +218,13 @@ class _Problem:
     """The fit in units of its own span, in which κ is of order one."""
 
     def __init__(
-        self, t: Array, v: Array, cycle: Index | None, weight: Array | None, spread: Array | None, start: float | None
+        self,
+        t: Array,
+        v: Array,
+        cycle: Index | None,
+        weight: Array | None,
+        spread: Array | None,
+        start: float | None,
     ) -> None:
         t, v = np.asarray(t, dtype=float), np.asarray(v, dtype=float)
         self.cycle = np.zeros(t.size, dtype=np.int64) if cycle is None else np.asarray(cycle)

@@ -5,15 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.fold import PART, POINTS, Bins, bins_per_phase, fold_phases, gather
 from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_exponentials
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
-Mask = NDArray[np.bool_]
 
 
 @dataclass(frozen=True, eq=False)
@@ -84,6 +80,16 @@ class Fitted:
             own[mine] = decay
             shared[mine] = np.stack([ramp, bend], axis=1) + decay[:, None] * self.coupling[phase[mine]]
         return own, shared
+
+
+@dataclass(frozen=True, eq=False)
+class Corners:
+    """Turns between neighbouring phases: sample index, voltage, and which phase comes before."""
+
+    index: Array
+    voltage: Array
+    before: Index
+    top: Mask
 
 
 def fit_phases(

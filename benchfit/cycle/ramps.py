@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import replace
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.gaps import Gaps, Threshold, censored_mean, find_gaps, rough_gaps
 from benchfit.cycle.linear import Form, covariance, curvature_form, extra_form, phase_form
 from benchfit.cycle.observed import Observed
@@ -15,16 +15,17 @@ from benchfit.cycle.phases import Fitted, Layout, fit_phases, guarded
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Crossings
 
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
-
 FEW = 4
 
 
 def fast_direction(passages: Crossings) -> bool | None:
     """The direction (True: rising) whose passages take no more than a few samples, None where both are slow."""
     taken = passages.after - passages.before
-    medians = {up: float(np.median(taken[passages.rising == up])) for up in (True, False) if np.any(passages.rising == up)}
+    medians = {
+        up: float(np.median(taken[passages.rising == up]))
+        for up in (True, False)
+        if np.any(passages.rising == up)
+    }
     if len(medians) < 2:
         return None
     fast = min(medians, key=lambda up: medians[up])
@@ -53,7 +54,9 @@ def fit_ramps(trace: Trace, passages: Crossings, fast: bool) -> tuple[Fitted, Ga
 def _reach(fitted: Fitted) -> float:
     layout = fitted.layout
     phase = np.arange(layout.size)
-    ends = fitted.values_at(phase, layout.stop - 1.0)[0] - fitted.values_at(phase, layout.first.astype(float))[0]
+    ends = (
+        fitted.values_at(phase, layout.stop - 1.0)[0] - fitted.values_at(phase, layout.first.astype(float))[0]
+    )
     return float(np.nanmedian(np.abs(ends)))
 
 
@@ -72,7 +75,7 @@ def _guarded(layout: Layout) -> Layout:
     return guarded(layout, before, after)
 
 
-def observe_ramps(fitted: Fitted, gaps: Gaps, fast: bool, noise: float) -> Observed | None:
+def observe_ramps(fitted: Fitted, gaps: Gaps, fast: bool, noise: float, node: str) -> Observed | None:
     """Cycle constants of ramps; None with fewer than two turns."""
     joints = np.flatnonzero(fitted.sound[:-1] & fitted.sound[1:])
     if joints.size < 2:
@@ -106,11 +109,12 @@ def observe_ramps(fitted: Fitted, gaps: Gaps, fast: bool, noise: float) -> Obser
     ]
     names = ["period", "charge_share", *(("upper", "lower") if rising else ("lower", "upper"))]
     names.append("charge_curvature" if rising else "discharge_curvature")
-    cov = covariance(fitted, forms, variance, np.array([end_extra, start_extra]))
+    cov = covariance(fitted, forms, {rising: variance}, np.array([end_extra, start_extra]))
     cov[0, 0] = max(period.u**2, cov[0, 0])
     values = np.array([period.period, share, end.mean, start.mean, model.curvature])
     turns = gaps.last[joints] * fitted.interval
-    return Observed(tuple(names), values, cov, turns, period.jitter, noise)
+    series = {"period": np.diff(instants)}
+    return Observed(tuple(names), values, cov, turns, period.jitter, noise, series=series, node=node)
 
 
 def _bounds(fitted: Fitted, gaps: Gaps, joints: Index, phase: Index) -> tuple[Array, Array]:
@@ -131,7 +135,13 @@ def _threshold(fitted: Fitted, gaps: Gaps, joints: Index, phase: Index, variance
 
 
 def _corner_form(
-    fitted: Fitted, gaps: Gaps, joints: Index, phase: Index, rate: float, threshold: Threshold, variance: float
+    fitted: Fitted,
+    gaps: Gaps,
+    joints: Index,
+    phase: Index,
+    rate: float,
+    threshold: Threshold,
+    variance: float,
 ) -> tuple[Form, float]:
     """The curve's own error at the turn, and the variance (s²) of the turn's instant that is left beside it."""
     index = (gaps.last[joints] + 0.5) if phase[0] == joints[0] else (gaps.first[joints] - 0.5)

@@ -5,20 +5,19 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.fold import Bins, gather
 from benchfit.cycle.phase import basis, fit_levels
 from benchfit.cycle.phases import Fitted, Layout
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
+from benchfit.errors import Remark
 
 _BODY = 20
 _BINS = 40
 _PHASES = 600
 _CLEAR = 4.5
+_MATTERS = 1.5e-3
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,12 +67,14 @@ def body_profile(trace: Trace, fitted: Fitted, kind: bool) -> Profile | None:
     held = n > 0
     mean = np.bincount(place, bins.n * residual, _BODY)[held] / n[held]
     error = sigma * np.sqrt(colour / n[held])
-    degrees = max(int(held.sum()) - 3, 1)
+    degrees = max(np.count_nonzero(held) - 3, 1)
     chi2 = float(np.sum((mean / error) ** 2)) if np.all(error > 0) else 0.0
-    found = chi2 > degrees + _CLEAR * np.sqrt(2.0 * degrees) + 4.0
-    structure = float(np.sqrt(max(np.mean(mean**2 - error**2), 0.0))) if found else 0.0
+    found = chi2 > degrees + _CLEAR * float(np.sqrt(2.0 * degrees)) + 4.0
+    structure = float(np.sqrt(max(float(np.mean(mean**2 - error**2)), 0.0))) if found else 0.0
     bow, bow_u = _bow(bins, residual, u, fitted, kind, sigma * np.sqrt(colour))
-    return Profile(np.linspace(-1, 1, 2 * _BODY + 1)[1::2][held], mean, error, structure, sigma, colour, bow, bow_u)
+    return Profile(
+        np.linspace(-1, 1, 2 * _BODY + 1)[1::2][held], mean, error, structure, sigma, colour, bow, bow_u
+    )
 
 
 def _gather_some(trace: Trace, fitted: Fitted, kind: bool) -> Bins | None:
@@ -129,7 +130,32 @@ def _bow(
     return bow, float(sigma * np.sqrt(np.sum(left**2)) / weight)
 
 
-def end_guards(trace: Trace, fitted: Fitted, layout: Layout, kind: bool, zone: float) -> tuple[int, int, bool]:
+def poor_fit(profiles: dict[bool, Profile], swing: float) -> tuple[Remark, ...]:
+    """A remark where one exponential leaves structure that matters: over 0.15 % of the swing, or half the noise."""
+    says = []
+    for kind, profile in profiles.items():
+        if profile.structure < min(_MATTERS * abs(swing), 0.5 * profile.sigma) or profile.structure == 0.0:
+            continue
+        worst = int(np.argmax(np.abs(profile.mean)))
+        where = 50.0 * (profile.place[worst] + 1.0)
+        bent = abs(profile.bow) > 0.7 * profile.structure * np.sqrt(7.0)
+        shape = (
+            "bends as a whole (a capacitance that changes with voltage does that)"
+            if bent
+            else (
+                f"departs most at {where:.0f} % of its course (a clamp, or an input that draws current, does that)"
+            )
+        )
+        says.append(
+            f"the {'rising' if kind else 'falling'} phase is not one exponential: it {shape},"
+            f" by {abs(profile.mean[worst]):.2g} V"
+        )
+    return (Remark("poor-fit", "; ".join(says)),) if says else ()
+
+
+def end_guards(
+    trace: Trace, fitted: Fitted, layout: Layout, kind: bool, zone: float
+) -> tuple[int, int, bool]:
     """Samples at the start and at the end of a kind's phases that do not follow the exponential between them.
 
     ``fitted`` is a fit that left a share ``zone`` of each phase out at both ends; ``layout`` has the whole phases.

@@ -5,16 +5,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array
 from benchfit.cycle.constants import PhaseFit
 from benchfit.cycle.fold import gather
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.phase import ExponentialFit, fit_exponentials
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import block_means
-
-Array = NDArray[np.float64]
 
 _POINTS = 2000
 _BINS = 300
@@ -56,7 +54,7 @@ def _resting(trace: Trace, name: str, first: int | None = None) -> Observed:
     parts = np.array([p.mean() for p in np.array_split(tail, min(10, tail.size))])
     wander = float(parts.std(ddof=1) / np.sqrt(parts.size)) if parts.size > 1 else 0.0
     u = max(trace.noise / np.sqrt(tail.size), wander, trace.resolution / np.sqrt(12.0) / np.sqrt(parts.size))
-    return Observed((name,), np.array([tail.mean()]), np.array([[u**2]]), noise=trace.noise)
+    return Observed((name,), np.array([tail.mean()]), np.array([[u**2]]), noise=trace.noise, node=trace.node)
 
 
 def _find_ramp(w: Array, noise: float, block: int, size: int) -> _Ramp | None:
@@ -116,18 +114,32 @@ def _ramp_constants(trace: Trace, ramp: _Ramp, fit: ExponentialFit) -> Observed:
     cov = rows_array @ base @ rows_array.T
     found = Observed(tuple(names), np.array(values), cov, noise=float(np.sqrt(variance)))
     found = _joined(found, _start(trace, ramp, fit, base))
-    settled = ramp.held_after or abs(model.rate(_last(trace, ramp, fit))) < 0.01 * abs(model.rate(np.array(level)))
+    settled = ramp.held_after or abs(model.rate(_last(trace, ramp, fit))) < 0.01 * abs(
+        model.rate(np.array(level))
+    )
     if ramp.held_after:
-        found = _joined(found, _resting(trace, "rest", min(ramp.stop + (trace.size - ramp.stop) // 10, trace.size - 1)))
+        found = _joined(
+            found, _resting(trace, "rest", min(ramp.stop + (trace.size - ramp.stop) // 10, trace.size - 1))
+        )
     elif settled:
         found = _joined(found, _resting(trace, "rest", trace.size - max(trace.size // 50, 1)))
     phase = PhaseFit(
-        trace.node, slope > 0, found.value("ramp_start"), float(_last(trace, ramp, fit)), curvature,
+        trace.node,
+        slope > 0,
+        found.value("ramp_start"),
+        float(_last(trace, ramp, fit)),
+        curvature,
         (ramp.stop - ramp.first) * trace.interval,
     )
     return Observed(
-        found.names, found.values, found.covariance, np.array([ramp.first * trace.interval]), None, found.noise,
+        found.names,
+        found.values,
+        found.covariance,
+        np.array([ramp.first * trace.interval]),
+        None,
+        found.noise,
         phases=(phase,),
+        node=trace.node,
     )
 
 

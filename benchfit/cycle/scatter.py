@@ -3,11 +3,9 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array
 from benchfit.cycle.period import half_width
-
-Array = NDArray[np.float64]
 
 # As in the period's fit: prior weight of an e-fold of a variance against that of its absence.
 _SLAB = 0.04

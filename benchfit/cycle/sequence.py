@@ -5,11 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
-Mask = NDArray[np.bool_]
+from benchfit.cycle.arrays import Array, Index, Mask
 
 _GLITCH = 0.25
 _LONG = 1.5

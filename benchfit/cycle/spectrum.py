@@ -10,9 +10,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-Array = NDArray[np.float64]
+from benchfit.cycle.arrays import Array
 
 _EXACT = 512
 _GROUPS = 512

@@ -5,15 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from benchfit.capture.model import Capture
+from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.clipping import clipped_ends
 from benchfit.cycle.constants import Assignment
 from benchfit.cycle.noise import difference_noise
 from benchfit.errors import CaptureError
-
-Array = NDArray[np.float64]
-Mask = NDArray[np.bool_]
 
 
 @dataclass(frozen=True, eq=False)
@@ -29,6 +27,8 @@ class Trace:
     noise : float
         First guess of the noise (V rms), from differences of neighbours.
     span : (minimum, maximum)
+    clipped : (value or None, value or None)
+        Bottom and top of the range, where samples ran into it.
     """
 
     assignment: Assignment
@@ -39,6 +39,7 @@ class Trace:
     noise: float
     span: tuple[float, float]
     valid: Mask | None = None
+    clipped: tuple[float | None, float | None] = (None, None)
 
     @property
     def node(self) -> str:
@@ -79,11 +80,17 @@ def prepare(capture: Capture, assignment: Assignment) -> Trace:
             column=channel.name,
         )
     valid = _usable(values, channel.overloaded)
+    clipped = clipped_ends(values) if assignment.shape != "square" and high > low else (None, None)
+    for level in clipped:
+        if level is not None:
+            fine = values != level
+            valid = fine if valid is None else valid & fine
     if assignment.scale != 1.0:
         values = values * assignment.scale
+        clipped = _scaled(clipped, assignment.scale)
         low, high = sorted((low * assignment.scale, high * assignment.scale))
     if valid is not None:
-        values = _bridge(values, valid)
+        values = _bridge(values, np.isfinite(values))
     resolution = abs(channel.resolution * assignment.scale)
     return Trace(
         assignment,
@@ -94,7 +101,13 @@ def prepare(capture: Capture, assignment: Assignment) -> Trace:
         difference_noise(values, resolution),
         (float(low), float(high)),
         valid,
+        clipped,
     )
+
+
+def _scaled(ends: tuple[float | None, float | None], scale: float) -> tuple[float | None, float | None]:
+    low, high = (None if x is None else x * scale for x in ends)
+    return (low, high) if scale > 0 else (high, low)
 
 
 def _extremes(values: Array) -> tuple[float, float]:
@@ -118,6 +131,8 @@ def _usable(values: Array, overloaded: Mask | None) -> Mask | None:
 
 
 def _bridge(values: Array, valid: Mask) -> Array:
+    if valid.all():
+        return values
     known = np.flatnonzero(valid)
     gaps = np.flatnonzero(~valid)
     values = values.copy()

@@ -5,13 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.noise import stretches
 from benchfit.cycle.trace import Trace
-
-Array = NDArray[np.float64]
-Index = NDArray[np.int64]
 
 _CHUNK = 1 << 20
 _LEVELS = 33
@@ -40,11 +37,15 @@ class Crossings:
 
     before: Index
     after: Index
-    rising: NDArray[np.bool_]
+    rising: Mask
 
     @property
     def size(self) -> int:
         return int(self.before.size)
+
+    def take(self, which: Index) -> Crossings:
+        """Some of the passages."""
+        return Crossings(self.before[which], self.after[which], self.rising[which])
 
 
 def crossings(values: Array, lower: float, upper: float) -> Crossings:
@@ -128,7 +129,7 @@ class Turns:
     """
 
     index: Array
-    top: NDArray[np.bool_]
+    top: Mask
     block: int
 
 

@@ -1,0 +1,158 @@
+"""Corners of phases that meet: which samples belong to each phase, and where they turn."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.ends import extend_ends, trim_ends
+from benchfit.cycle.linear import Form, phase_form
+from benchfit.cycle.phases import Corners, Fitted, Layout, fit_phases, guarded, layout_from, meet
+from benchfit.cycle.residuals import end_guards
+from benchfit.cycle.short import own_samples
+from benchfit.cycle.trace import Trace
+from benchfit.cycle.turns import Turns
+
+_ZONES = (0.08, 0.2)
+_TESTED = 300
+
+
+@dataclass(frozen=True, eq=False)
+class Met:
+    """Fitted phases, the turns between them, and the samples left out at the start and the end of each kind."""
+
+    fitted: Fitted
+    index: Array
+    top: Mask
+    guards: dict[bool, tuple[int, int]]
+
+    def rounded(self, top: bool) -> bool:
+        """Whether samples were left out about the upper (or lower) turns."""
+        return self.guards[top][1] > 0 or self.guards[not top][0] > 0
+
+
+def fit_corners(trace: Trace, turns: Turns) -> Met | None:
+    """Fit, find where the phases meet, and fit again with the samples that belong to each."""
+    layout = layout_from(turns.index, turns.top, 0, trace.size)
+    layout = trim_ends(trace, layout, turns)
+    inner = guarded(layout, _guard(layout), _guard(layout))
+    fitted = fit_phases(trace, inner)
+    index = turns.index
+    for _ in range(8):
+        if len(fitted.fits) < 2:
+            return None
+        met = meet(fitted, index)
+        moved = np.abs(np.where(np.isnan(met), 0.0, met - index))
+        index = np.where(np.isnan(met), index, met)
+        if fitted.layout is not inner and (np.quantile(moved, 0.98) < 0.02 or _settled(moved, layout)):
+            break
+        layout = layout_from(index, turns.top, layout.first[0], layout.stop[-1])
+        layout = extend_ends(fitted, layout, trace, index, turns.top)
+        layout = own_samples(fitted, layout, trace, trace.noise)
+        fitted = fit_phases(trace, layout, begin=fitted)
+    return Met(fitted, index, turns.top, {True: (0, 0), False: (0, 0)}) if len(fitted.fits) == 2 else None
+
+
+def guard_corners(trace: Trace, met: Met) -> Met:
+    """Leave samples out about the turns where, and only where, the residuals there ask for it."""
+    whole = _some(met.fitted.layout)
+    guards = {True: (0, 0), False: (0, 0)}
+    open_kinds = {True, False}
+    for zone in _ZONES:
+        inner = fit_phases(
+            trace, guarded(whole, *(2 * [np.maximum(zone * whole.length, 1)])), begin=met.fitted
+        )
+        for kind in sorted(open_kinds):
+            if kind not in inner.fits:
+                continue
+            before, after, through = end_guards(trace, inner, whole, kind, zone)
+            if not through:
+                guards[kind] = (before, after)
+                open_kinds.discard(kind)
+        if not open_kinds:
+            break
+    if not any(a or b for a, b in guards.values()):
+        return met
+    return _refit(trace, met, guards)
+
+
+def _some(layout: Layout) -> Layout:
+    """A few hundred whole phases, evenly spread, for tests of the residuals."""
+    mine = np.flatnonzero(layout.whole & (layout.length >= 8))
+    if mine.size > 2 * _TESTED:
+        mine = mine[np.linspace(0, mine.size - 1, 2 * _TESTED).astype(int)]
+    return Layout(layout.first[mine], layout.stop[mine], layout.rising[mine], layout.whole[mine])
+
+
+def _refit(trace: Trace, met: Met, guards: dict[bool, tuple[int, int]]) -> Met:
+    fitted, index = met.fitted, met.index
+    for _ in range(2):
+        layout = layout_from(index, met.top, fitted.layout.first[0], fitted.layout.stop[-1])
+        before = np.where(layout.rising, guards[True][0], guards[False][0])
+        after = np.where(layout.rising, guards[True][1], guards[False][1])
+        before[0] = after[-1] = 0
+        fitted = fit_phases(trace, guarded(layout, before, after), begin=fitted)
+        found = meet(fitted, index)
+        index = np.where(np.isnan(found), index, found)
+    return Met(fitted, index, met.top, guards)
+
+
+def _settled(moved: Array, layout: Layout) -> bool:
+    """Whether the turns moved by next to nothing against the shorter of the phases that they part."""
+    shorter = np.minimum(layout.length[:-1], layout.length[1:])
+    return bool(np.quantile(moved / np.maximum(shorter, 1), 0.98) < 2e-4)
+
+
+def _guard(layout: Layout) -> Array:
+    return np.where(layout.length >= 8, np.ceil(0.06 * layout.length), np.where(layout.length >= 4, 1, 0))
+
+
+def corners(fitted: Fitted, guess: Array) -> Corners:
+    """Where neighbouring fitted phases meet."""
+    layout = fitted.layout
+    index = meet(fitted, guess)
+    before = np.arange(layout.size - 1)
+    good = np.flatnonzero(np.isfinite(index) & fitted.sound[:-1] & fitted.sound[1:])
+    voltage = fitted.values_at(before[good], index[good])[0]
+    return Corners(index[good], voltage, before[good], layout.rising[good])
+
+
+def corner_forms(fitted: Fitted, corner: Corners, time: Array, voltage: Array) -> Form:
+    """Σ (time·δt + voltage·δv) over corners, δt in s and δv in V."""
+    _, r0 = fitted.values_at(corner.before, corner.index)
+    _, r1 = fitted.values_at(corner.before + 1, corner.index)
+    gap = r0 - r1
+    left = phase_form(fitted, corner.before, corner.index, (-time - voltage * r1) / gap)
+    right = phase_form(fitted, corner.before + 1, corner.index, (time + voltage * r0) / gap)
+    return left + right
+
+
+def extreme(trace: Trace, met: Met, corner: Corners, top: bool, noise: float) -> tuple[float, float] | None:
+    """Extreme of the waveform about its upper or lower turns without its noise, with its u (V).
+
+    None where the turns are sharp: there it is the corner itself. About rounded ones a low polynomial follows the
+    mean of all cycles, aligned on the corners.
+    """
+    if not met.rounded(top):
+        return None
+    mine = np.flatnonzero(corner.top == top)
+    if mine.size > _TESTED:
+        mine = mine[np.linspace(0, mine.size - 1, _TESTED).astype(int)]
+    reach = int(1.5 * max(met.guards[top][1], met.guards[not top][0])) + 3
+    offsets = np.arange(-reach, reach + 1)
+    index = np.round(corner.index[mine]).astype(np.int64)[:, None] + offsets
+    inside = ((index >= 0) & (index < trace.size)).all(axis=1)
+    if not inside.any():
+        return None
+    index = index[inside]
+    x = ((index - corner.index[mine][inside][:, None]) / reach).ravel()
+    columns = np.polynomial.legendre.legvander(np.clip(x, -1.1, 1.1), min(6, 2 * reach - 2))
+    coefficients, *_ = np.linalg.lstsq(columns, trace.values[index].ravel(), rcond=None)
+    grid = np.linspace(-1.0, 1.0, 401)
+    curve = np.polynomial.legendre.legval(grid, coefficients)
+    at = int(curve.argmax() if top else curve.argmin())
+    row = np.polynomial.legendre.legvander(grid[at : at + 1], columns.shape[1] - 1)[0]
+    spread = row @ np.linalg.pinv(columns.T @ columns) @ row
+    return float(curve[at]), float(noise * np.sqrt(spread))
