@@ -10,7 +10,7 @@ import numpy as np
 
 from benchfit.explain import odds
 from benchfit.explain.assemble import assemble_bare
-from benchfit.explain.model import Array, Model, View
+from benchfit.explain.model import Array, Model, Parameter, View
 from benchfit.sheet.model import Sheet
 
 
@@ -28,6 +28,8 @@ class Expected:
         Of every part that the build has, parasitics included.
     weights : tuple of float
         How often each is the one that is off, relative to each other (judgement).
+    sizes : tuple of float
+        The size, in its coordinate, at which a part that is absent begins to matter; inf for the others.
     """
 
     names: tuple[str, ...]
@@ -35,6 +37,7 @@ class Expected:
     coordinates: tuple[str, ...]
     kinds: tuple[str, ...]
     weights: tuple[float, ...]
+    sizes: tuple[float, ...]
     _model: Model
     _view: View
 
@@ -101,9 +104,20 @@ def expected(sheet: Sheet, nodes: Sequence[str]) -> Expected:
         tuple(p.coordinate for p in parts),
         kinds,
         tuple(odds.weight(p.name, kind) for p, kind in zip(parts, kinds, strict=True)),
+        tuple(_size(p, model) for p in parts),
         model,
         view,
     )
+
+
+def _size(parameter: Parameter, model: Model) -> float:
+    """The geometric middle of the range in which a parasitic matters."""
+    part = parameter.part
+    if part is None or part.reach is None:
+        return math.inf
+    low, high = part.reach(model.values(model.nominal))
+    middle = math.sqrt(low * high)
+    return 1 / middle if part.coordinate == "inverse" else middle
 
 
 def _coordinate(coordinate: str, value: float, base: float | None, fallback: float) -> float:

@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
+from scipy.special import chdtrc
 
 from benchfit.circuits.solve import curve
 from benchfit.cycle.constants import CycleConstants
@@ -27,6 +28,8 @@ from benchfit.explain.suspects import ruled_out, settled, suspects_of
 from benchfit.explain.verdict import judge, without_probe, worst
 from benchfit.explain.weigh import Weighed, weigh
 from benchfit.sheet.model import Sheet
+
+POOR = 1e-4
 
 
 def explain(
@@ -129,6 +132,8 @@ def _explain_cycle(
             settled=False,
             miss=_bare_misses(sheet, base.measured),
         )
+    model, weighed, poor = _widened(model, weighed)
+    sure = settled(weighed) and not poor
     weighed = [refine(model, weighed[0]), *weighed[1:]]
     averaged = parts_room.average(weighed)
     built = {n: q for n in ("frequency", "duty") if (q := base.measured.get(n)) is not None}
@@ -145,12 +150,7 @@ def _explain_cycle(
         if t is not None and n in judged
     ]
     readings = tuple(sheet.readings)
-    warnings = (
-        warnings
-        + _probe_warning(built, bare)
-        + _fit_warning(model, weighed)
-        + _cancelling(model, weighed, misses)
-    )
+    warnings = warnings + _probe_warning(built, bare) + poor + _cancelling(model, weighed, misses)
     warnings += cautions(model, sheet, captures)
     return replace(
         base,
@@ -158,9 +158,9 @@ def _explain_cycle(
         unseparated=parts_room.unseparated(model, averaged.live[0].mean),
         miss=misses or None,
         suspects=suspects_of(model, weighed),
-        settled=settled(weighed),
+        settled=sure,
         ruled_out=ruled_out(model, weighed),
-        next_readings=() if settled(weighed) else next_readings(model, averaged, readings),
+        next_readings=() if sure else next_readings(model, averaged, readings),
         remedies=remedies_of(model, averaged, sheet.target_frequency, sheet.target_duty),
         without_probe=bare,
         verdict=worst(verdicts),
@@ -209,20 +209,30 @@ def _probe_warning(built: Mapping[str, Quantity], bare: Mapping[str, Quantity] |
     return []
 
 
-def _fit_warning(model: Model, weighed: Sequence[Weighed]) -> list[Remark]:
-    from scipy.special import chdtrc
+def _widened(model: Model, weighed: Sequence[Weighed]) -> tuple[Model, list[Weighed], list[Remark]]:
+    """Where nothing explains the record, the record is believed less until something does, and that is said.
 
-    live = [w for w in weighed if w.probability > 0.02]
-    best = min(w.misfit for w in live)
-    if chdtrc(max(len(model.observations), 1), best) < 1e-4:
-        return [
+    The observations' covariance grows by what the best hypothesis leaves over what it should (Birge 1932);
+    the
+    answer is then the least bad account with honest widths, and is never settled.
+    """
+    size = max(len(model.observations), 1)
+    found = list(weighed)
+    notes: list[Remark] = []
+    for _ in range(2):
+        live = [w.misfit for w in found if w.probability > 0.02]
+        if not live or float(chdtrc(size, min(live))) > POOR:
+            break
+        notes = [
             Remark(
                 "poor-fit",
                 "no single cause or pair of causes explains everything that was measured; "
                 "what is said of the parts is the least bad account",
             )
         ]
-    return []
+        model = replace(model, covariance=model.covariance * min(min(live) / size, 1e4))
+        found = weigh(model)
+    return model, found, notes
 
 
 def _cancelling(model: Model, weighed: Sequence[Weighed], misses: Mapping[str, Miss]) -> list[Remark]:

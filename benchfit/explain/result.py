@@ -138,8 +138,12 @@ class Turn:
         The trimmer, its unit, and what it is turned for: "frequency" or "duty".
     low, high : float
         Its ends (in ``unit``).
-    now, goal, u : float or None
-        Its value, the one to turn to, and u of goal − now; None where the model has none.
+    now, goal : float or None
+        Its value and the one to turn to; None where the model has none.
+    u : float or None
+        u of goal − now; None before the first explanation: how well its value is known is then not known.
+    is_there : bool
+        goal − now is nothing within what the readings alone can tell.
     is_reachable : bool
         Whether ``goal`` lies between its ends.
     miss, expanded, limit : float
@@ -162,6 +166,7 @@ class Turn:
     now: float | None
     goal: float | None
     u: float | None
+    is_there: bool
     is_reachable: bool
     miss: float
     expanded: float

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import difflib
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,7 +17,7 @@ import numpy as np
 from benchfit.errors import SheetError
 from benchfit.explain.expected import Expected, expected
 from benchfit.explain.model import Array
-from benchfit.explain.result import Quantity, Rest, Turn
+from benchfit.explain.result import PartFound, Quantity, Rest, Turn
 from benchfit.sheet.model import Sheet
 
 TIGHT = 0.25
@@ -67,7 +67,7 @@ class Trimming:
     bare: Expected
 
     def turn(
-        self, before: Turn | None, reading: Quantity, at: float, parts: Mapping[str, float], pace: float
+        self, before: Turn | None, reading: Quantity, at: float, known: Sequence[PartFound], pace: float
     ) -> Turn:
         """What to do now.
 
@@ -77,11 +77,12 @@ class Trimming:
             What was said after the acquisition before this one.
         reading : Quantity
             ``quantity`` as measured now, ``at`` (s) on any clock.
-        parts : mapping of float
-            The other parts as they are known (SI); nominal where they are not.
+        known : sequence of PartFound
+            The parts as they were explained last; without them all are taken as nominal.
         pace : float
             Seconds from one acquisition to the next.
         """
+        parts = {p.name: p.value for p in known if p.value is not None}
         rest = rested(before.rest if before is not None else None, reading, at)
         grid = self._grid()
         with_probe, without = self._curve(self.probed, grid, parts), self._curve(self.bare, grid, parts)
@@ -89,6 +90,7 @@ class Trimming:
         goal = _crossing(grid, without, self.target, now)
         built = _at(grid, without, now) if now is not None else rest.mean
         miss, expanded = built / self.target - 1, 2 * rest.u / self.target
+        least = _u_of_reading(grid, with_probe, now, rest.u)
         reachable = goal is not None and self.low <= goal <= self.high
         wait = self._wait(rest, pace)
         return Turn(
@@ -99,7 +101,8 @@ class Trimming:
             high=self.high,
             now=now,
             goal=goal,
-            u=_u_of_turn(grid, with_probe, now, rest.u),
+            u=self._u(now, goal, least, known),
+            is_there=now is not None and goal is not None and abs(goal - now) <= 2 * (least or 0.0),
             is_reachable=reachable,
             miss=miss,
             expanded=expanded,
@@ -114,6 +117,15 @@ class Trimming:
         """Whether the trimmer moves the quantity at all, by 0.1 % at least between its ends."""
         curve = self._curve(self.probed, self._grid(), {})
         return bool(np.nanmax(curve) > 1.001 * np.nanmin(curve)) if np.isfinite(curve).any() else False
+
+    def _u(
+        self, now: float | None, goal: float | None, least: float | None, known: Sequence[PartFound]
+    ) -> float | None:
+        """u of goal − now: the reading's own, and how well the trimmer's value is known, in proportion."""
+        own = next((p for p in known if p.name == self.part), None)
+        if now is None or goal is None or own is None or not own.value or own.u is None:
+            return None
+        return math.hypot(least or 0.0, (goal - now) * own.u / own.value)
 
     def _grid(self) -> Array:
         """Values of the trimmer, beyond its ends too: where it would have to be is worth saying."""
@@ -203,7 +215,7 @@ def _at(grid: Array, curve: Array, x: float) -> float:
     return float(np.interp(math.log(x), np.log(grid[good]), curve[good])) if good.any() else math.nan
 
 
-def _u_of_turn(grid: Array, curve: Array, now: float | None, u: float) -> float | None:
+def _u_of_reading(grid: Array, curve: Array, now: float | None, u: float) -> float | None:
     if now is None:
         return None
     step = 1.02
