@@ -319,12 +319,22 @@ class Judge:
                 x[k] = true
         best = np.full(len(hypothesis), np.inf)
         kept, curve = x.copy(), np.tile(np.eye(x.shape[1]), (len(hypothesis), 1, 1))
-        for _ in range(6):
-            here, _, after, curvature = self._solve(x, hypothesis)
-            better = here < best
-            best[better], kept[better], curve[better] = here[better], x[better], curvature[better]
-            x = np.where(better[:, None], after, 0.5 * (kept + after))
-            x = np.where(np.isfinite(here)[:, None], x, 0.5 * (kept + x))
+        open_ = np.arange(len(hypothesis))
+        for _ in range(9):
+            if not open_.size:
+                break
+            here, _, after, curvature = self._solve(x[open_], [hypothesis[k] for k in open_])
+            settled = np.isfinite(here) & (
+                np.abs(here - np.where(np.isfinite(best[open_]), best[open_], 1e300)) < 0.02
+            )
+            better = here < best[open_]
+            some = open_[better]
+            best[some], kept[some], curve[some] = here[better], x[some], curvature[better]
+            lost = ~np.isfinite(here)
+            # A step may overshoot in the period, which is known to parts per million; the next one mends
+            # that.
+            x[open_] = np.where(lost[:, None], 0.5 * (kept[open_] + x[open_]), after)
+            open_ = open_[~settled]
         log_z = np.array([self._evidence(h, best[k], curve[k]) for k, h in enumerate(hypothesis)])
         return self._posterior(hypothesis, log_z, best, curve)
 
