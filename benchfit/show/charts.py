@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 from benchfit.show import words
+from benchfit.show.layout import wrapped
 from benchfit.show.palette import LIGHT, minus, nothing, plain, scale, symbol
 
 if TYPE_CHECKING:
@@ -135,5 +135,5 @@ def _names(suspect: Suspect) -> str:
 
 def _sentence(suspect: Suspect) -> str:
     """What a suspect says, on two lines at most."""
-    lines = textwrap.wrap(plain(words.charge(suspect)), 100)
+    lines = wrapped(plain(words.charge(suspect)), 100)
     return "\n".join([lines[0], lines[1] + (" …" if len(lines) > 2 else "")] if len(lines) > 1 else lines)

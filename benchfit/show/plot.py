@@ -148,29 +148,27 @@ def _own(
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
 
-    from benchfit.show import waveforms, words
+    from benchfit.show import waveforms
 
     figure = Figure(figsize=(8.0, _rows(explanation, kind)), layout="constrained")
     FigureCanvasAgg(figure)
     axes: Any
+    says = TITLES[kind]
     if kind == "capture" and capture is not None:
-        heights = waveforms.panels(waveforms.scene(explanation, constants, capture))
+        scene = waveforms.scene(explanation, constants, capture)
+        heights = waveforms.panels(scene)
+        says = says if scene.phases else "capture"
         axes = figure.subplots(len(heights), 1, sharex=True, height_ratios=heights)
     else:
         axes = figure.subplots(1, 2 if kind == "slopes" else 1)
     _draw(_listed(axes), explanation, constants, capture, kind)
     if heading:
+        from benchfit.show.layout import shortened
         from benchfit.show.palette import LIGHT, plain
 
-        title = ", ".join(words.identity(explanation)[:1] or [explanation.circuit or "capture"])
-        figure.suptitle(
-            plain(f"{title}: {TITLES[kind]}"),
-            x=0.012,
-            ha="left",
-            fontsize=11,
-            fontweight="bold",
-            color=LIGHT["ink"],
-        )
+        title = shortened(explanation.title or Path(explanation.captures[0].path).name or "capture", 64)
+        style = {"ha": "left", "fontsize": 11, "fontweight": "bold", "color": LIGHT["ink"]}
+        figure.suptitle(plain(f"{title}: {says}"), x=0.012, **style)
     return figure
 
 
