@@ -340,3 +340,156 @@ unit = "pond 2"
 ambient = "24 °C"
 note = "runs slower every summer"
 """
+
+SHEETS["level_crossing_lamps"] = """\
+title = "Level crossing lamps, model line"
+circuit = "two-transistor"
+
+[target]
+frequency = "1.5 Hz 20 %"
+
+[parts]
+supply = "12 V 2%"
+R1 = "47k 5%"
+C1 = "10u 10%"
+R2 = "47k 5%"
+C2 = "10u 10%"
+RC1 = "1k 5%"
+RC2 = "1k 5%"
+
+[channels]
+base1 = "CH1"
+collector1 = "CH2"
+
+[probe.base1]
+resistance = "10M"
+capacitance = "12p"
+
+[record]
+unit = "mill lane"
+"""
+
+SHEETS["misting_bench_clock"] = """\
+title = "Misting bench clock"
+circuit = "gate-pair"
+
+[target]
+frequency = "207 Hz 10 %"
+
+[parts]
+supply = "9 V 2%"
+R = "100k 1%"
+C = "22n 5%"
+R_series = "1M 5%"
+
+[channels]
+capacitor = "X"
+output = "Y"
+
+[probe.capacitor]
+resistance = "10M"
+capacitance = "12p"
+
+[record]
+unit = "bench C"
+"""
+
+SHEETS["loom_shuttle_sweep"] = """\
+title = "Loom shuttle sweep"
+circuit = "triangle"
+
+[target]
+frequency = "4.3 kHz 8 %"
+
+[parts]
+R = "12k 1%"
+C = "10n 5%"
+R_in = "33k 1%"
+R_feedback = "68k 1%"
+V_high = "9.5 V 3%"
+V_low = "-9.5 V 3%"
+
+[channels]
+capacitor = "CH1"
+output = "CH2"
+
+[record]
+unit = "loom 6"
+"""
+
+SHEETS["sap_flow_ramp"] = """\
+title = "Sap flow ramp"
+circuit = "current-ramp"
+
+[target]
+frequency = "2.36 Hz 8 %"
+
+[parts]
+I_charge = "5 uA 2%"
+C = "470n 5%"
+V_upper = "5 V 3%"
+V_lower = "0.5 V 10%"
+
+[channels]
+capacitor = "CH1"
+
+[probe.capacitor]
+resistance = "100M"
+capacitance = "3p"
+
+[record]
+unit = "tree 11"
+ambient = "wet"
+"""
+
+SHEETS["barn_owl_camera"] = """\
+title = "Barn owl camera trigger"
+circuit = "programmable-unijunction"
+
+[target]
+frequency = "1.97 Hz 10 %"
+
+[parts]
+supply = "9 V 2%"
+R = "470k 5%"
+C = "1u 10%"
+RG1 = "27k 1%"
+RG2 = "16k 1%"
+V_valley = "0.9 V 30%"
+
+[channels]
+capacitor = "CH1"
+
+[probe.capacitor]
+resistance = "100M"
+capacitance = "3p"
+
+[record]
+unit = "barn, north"
+"""
+
+SHEETS["kiln_damper_pulser"] = """\
+title = "Kiln damper pulser"
+circuit = "trigger-diode"
+
+[target]
+frequency = "330 Hz 20 %"
+
+[parts]
+supply = "60 V 3%"
+R = "100k 5%"
+C = "100n 10%"
+V_breakover = "32 V 12.5%"
+V_breakback = "10 V 40%"
+
+[channels]
+capacitor = "CH1"
+
+[probe.capacitor]
+resistance = "10M"
+capacitance = "12p"
+
+[record]
+unit = "kiln 2"
+caution = "60 V d.c.: discharge the capacitor first, one hand, a probe rated for it"
+"""
