@@ -99,7 +99,7 @@ def draw_capture(axes: Sequence[Any], s: Scene) -> None:
     finite = np.abs(trace.volts[np.isfinite(trace.volts)])
     volts, v_unit = scale(float(finite.max()) if finite.size else 1.0, "V")
     t, v = _between(trace, begin, end)
-    _samples(main, t * factor, v * volts, "data", f"{plain(trace.name)}, captured", 3.2)
+    _samples(main, t * factor, v * volts, "data", f"{plain(trace.name)}, captured", 3.2 if s.phases else 1.4)
     for role, style in (("charge", "-"), ("discharge", _DASHES)):
         x, y = curves.polylines(s.phases, role == "charge", begin, end)
         if x.size:
@@ -176,7 +176,7 @@ def _draw_residuals(ax: Any, s: Scene, begin: float, end: float, factor: float) 
 def _mark_levels(ax: Any, s: Scene, volts: float) -> None:
     """Turning levels and asymptotes as lines, named beside the right-hand edge."""
     lines: list[tuple[float, str, Any]] = []
-    for name in ("upper", "lower"):
+    for name in ("upper", "lower") if s.phases else ("high", "low"):
         if (v := s.value(name)) is not None:
             lines.append((v, _level_name(s, name, v), ":"))
     bottom, top = ax.get_ylim()
@@ -189,7 +189,7 @@ def _mark_levels(ax: Any, s: Scene, volts: float) -> None:
         else:
             _point_to(ax, v, phase, v * volts > top)
     for v, _, style in lines:
-        ax.axhline(v * volts, color=LIGHT["ink"], lw=0.8, ls=style, zorder=1.5)
+        ax.axhline(v * volts, color=LIGHT["ink"], lw=0.8, ls=style, zorder=1.5 if s.phases else 2.5)
     heights = [bottom, top, *(v * volts for v, _, _ in lines)]
     pad = 0.05 * (max(heights) - min(heights))
     ax.set_ylim(min(heights) - pad, max(heights) + pad)
