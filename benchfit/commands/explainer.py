@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import signal
-from collections.abc import Callable
+import threading
+from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -55,8 +57,13 @@ class Explainer:
         self._deaths = 0
         self._future: Future[Explained] | None = None
         self._waiting: tuple[int, str, Capture] | None = None
-        self._executor: Executor = self._start()
-        self._executor.submit(_warm_up)
+        self._executor = self._start_warm()
+
+    def _start_warm(self) -> Executor:
+        with _interrupts_ignored():
+            executor = self._start()
+            executor.submit(_warm_up)
+        return executor
 
     def _start(self) -> Executor:
         import multiprocessing
@@ -91,7 +98,7 @@ class Explainer:
         except (BrokenProcessPool, OSError) as error:
             self._deaths += 1
             self._executor.shutdown(wait=False, cancel_futures=True)
-            self._executor = self._start()
+            self._executor = self._start_warm()
             found = Explained(
                 0, "", says=f"the process that explains died ({type(error).__name__}); started anew"
             )
@@ -125,7 +132,7 @@ class Explainer:
             )
         except (BrokenProcessPool, RuntimeError):
             self._deaths += 1
-            self._executor = self._start()
+            self._executor = self._start_warm()
             return
         self._future.add_done_callback(lambda _: self._when_done())
 
@@ -160,6 +167,19 @@ def _warm_up() -> None:
     from benchfit import pipeline
 
     pipeline.warm_up()
+
+
+@contextmanager
+def _interrupts_ignored() -> Iterator[None]:
+    """A process started meanwhile ignores Ctrl-C from its first instant on, before it can say so itself."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
 
 
 def _leave_interrupts_alone() -> None:

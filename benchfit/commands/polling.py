@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import queue
+import statistics
 import sys
 import threading
 import time
@@ -11,6 +12,7 @@ from collections.abc import Mapping
 from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime
+from itertools import pairwise
 from typing import TYPE_CHECKING, Any, Final
 
 from benchfit.commands import streams
@@ -30,6 +32,7 @@ SPAN: Final = 120.0
 _TICK: Final = 0.2
 _FRAMES: Final = 0.1
 _BACKLOG: Final = 2
+_PACE_OVER: Final = 33
 _TRACE_STEP: Final = SPAN / 1200
 _LAST_WAIT: Final = 300.0
 _LEARN_WAIT: Final = 15.0
@@ -81,10 +84,11 @@ class Polling:
         self._trace: deque[tuple[float, float]] = deque(maxlen=4096)
         self._last: Pending | None = None
         self._captures = self._failures = 0
-        self._first_at = self._last_at = 0.0
+        self._times: deque[float] = deque(maxlen=_PACE_OVER)
         self._last_fault = ""
         self._outputs = _outputs(plan, sheet)
         self._is_read = True
+        self._was_interrupted = False
         self._drawn = 0.0
         self._screen: LiveScreen | None = None
 
@@ -115,8 +119,6 @@ class Polling:
             raise error
         reader.join(timeout=1.0)
         return self.status if self._captures == 0 and self._failures and not self._was_interrupted else 0
-
-    _was_interrupted = False
 
     def _view(self) -> AbstractContextManager[Any]:
         plain = self.plan.quiet or "-" in (self.plan.json, self.plan.csv)
@@ -184,8 +186,7 @@ class Polling:
         look = pipeline.look(acquisition.capture, self.sheet)
         now = time.monotonic()
         self._captures += 1
-        self._first_at = self._first_at or now
-        self._last_at = now
+        self._times.append(now)
         pending = Pending(acquisition, look, self._turn(look, now))
         self._pending = self._last = pending
         name = self.trimming.quantity if self.trimming is not None else "frequency"
@@ -201,7 +202,7 @@ class Polling:
             return None
         latest = self._explainer.latest
         explained = latest.explanation if latest is not None else None
-        parts = {} if explained is None else {p.name: p.value for p in explained.parts if p.value is not None}
+        parts = explained.parts if explained is not None else ()
         before = self._last.turn if self._last is not None else None
         return trimming.turn(before, q, now, parts, self._pace() or 0.0)
 
@@ -292,7 +293,10 @@ class Polling:
             streams.say(_account(self._captures, self._failures, self.session))
 
     def _pace(self) -> float | None:
-        return (self._last_at - self._first_at) / (self._captures - 1) if self._captures > 1 else None
+        """Seconds from one capture to the next: the median of the last ones."""
+        times = list(self._times)
+        steps = [after - before for before, after in pairwise(times)]
+        return statistics.median(steps) if steps else None
 
     def _draw(self) -> None:
         now = time.monotonic()

@@ -36,6 +36,10 @@ def chart(
     values = [value for age, value in points if 0 <= age <= span and math.isfinite(value)]
     low, high = _scale(values, zero, limit)
     grid = [[0] * (across // 2) for _ in range(rows)]
+    axis = round(high / (high - low) * (down - 1)) if zero else None
+    if axis is not None:
+        for x in range(0, across, 8):
+            grid[axis // 4][x // 2] |= _DOTS[axis % 4][x % 2]
     last: tuple[int, int] | None = None
     for age, value in points:
         if not (0 <= age <= span and math.isfinite(value)):
@@ -45,7 +49,7 @@ def chart(
         for px, py in _between(last, (x, y)):
             grid[py // 4][px // 2] |= _DOTS[py % 4][px % 2]
         last = (x, y)
-    labels = _labels(low, high, rows, unit)
+    labels = _labels(low, high, rows, unit, None if axis is None else axis // 4)
     return [
         f"{label:>{_LABEL}}┤{''.join(chr(_BLANK + cell) for cell in row)}"
         for label, row in zip(labels, grid, strict=True)
@@ -65,16 +69,15 @@ def _scale(values: Sequence[float], zero: bool, limit: float | None) -> tuple[fl
     return low - edge, high + edge
 
 
-def _labels(low: float, high: float, rows: int, unit: str) -> list[str]:
+def _labels(low: float, high: float, rows: int, unit: str, zero_row: int | None) -> list[str]:
+    """Values at the top, at the bottom and in between: at 0 where that is on the scale."""
     if rows == 1:
         return [_number((low + high) / 2, high - low, unit)]
-    labels = [""] * rows
     places = {0: high, rows - 1: low}
-    if rows >= 5:
-        places[rows // 2] = high - (high - low) * (rows // 2) / (rows - 1)
-    for row, value in places.items():
-        labels[row] = _number(value, high - low, unit)
-    return labels
+    between = rows // 2 if zero_row is None else zero_row
+    if 2 <= between <= rows - 3:
+        places[between] = high - (high - low) * between / (rows - 1) if zero_row is None else 0.0
+    return [_number(places[row], high - low, unit) if row in places else "" for row in range(rows)]
 
 
 def _number(value: float, span: float, unit: str) -> str:

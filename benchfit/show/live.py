@@ -13,7 +13,7 @@ from benchfit.show.chart_cells import chart
 from benchfit.show.layout import Style, cells, clean, paint, shortened, wrapped
 
 _GAUGE = 21
-_LEAST_CHART, _MOST_CHART = 3, 9
+_LEAST_CHART, _MOST_CHART = 3, 14
 
 
 @dataclass(frozen=True)
@@ -131,7 +131,7 @@ def turn_sentence(turn: Turn) -> str:
         return (
             f"trim {turn.part}: out of reach, it would take {needs}; turn it to its {side} end {stop}{best}"
         )
-    if abs(turn.goal - turn.now) <= 2 * (turn.u or 0.0):
+    if turn.is_there:
         text = f"trim {turn.part}: leave it, it is where it should be within the uncertainty"
     else:
         way = "raise" if turn.goal > turn.now else "lower"
@@ -143,7 +143,7 @@ def turn_sentence(turn: Turn) -> str:
 
 def _patience(turn: Turn) -> str:
     if turn.is_tight:
-        return "on target, stop" if turn.is_inside else "the estimate is tight enough to go by"
+        return "inside the limit, you may stop" if turn.is_inside else "the estimate is tight enough to go by"
     if turn.wait is None:
         return "the scope's own uncertainty is too large for this limit"
     return f"hold still {_seconds(turn.wait)} for an estimate tight enough to stop"
@@ -278,10 +278,10 @@ def _suspects(state: LiveState, width: int, colour: bool) -> list[str]:
     lines = ["", paint(shortened(head, width), "bold", colour)]
     if not explanation.suspects:
         lines += wrapped(words.blame_sentence(explanation), width, "  ")[:2]
-    for suspect in explanation.suspects[:3]:
-        first = f"  {words.chance(suspect.probability):>6}  "
-        said = wrapped(clean(words.charge(suspect)), width, first)
-        lines.append(said[0] if len(said) == 1 else shortened(f"{said[0]} …", width))
+    for number, suspect in enumerate(explanation.suspects[:3]):
+        said = wrapped(clean(words.charge(suspect)), width - 2, f"  {words.chance(suspect.probability):>6}  ")
+        most = 2 if number == 0 else 1
+        lines += said[:most] if len(said) <= most else [*said[: most - 1], f"{said[most - 1]} …"]
     if explanation.next_readings:
         reading = words.reading(explanation, explanation.next_readings[0])
         lines.append(shortened(f"  read next: {clean(reading)}", width))
