@@ -19,6 +19,7 @@ from benchfit.cycle.phases import Corners, Fitted
 from benchfit.cycle.residuals import Profile, body_profile, poor_fit
 from benchfit.cycle.scatter import correlation, mean_scatter, student
 from benchfit.cycle.sequence import Sequence, closed, put_in_order
+from benchfit.cycle.stepping import steps_instead
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Turns
 from benchfit.errors import Remark
@@ -49,7 +50,10 @@ def observe_meeting(trace: Trace, turns: Turns) -> Observed | None:
     met = fit_corners(trace, with_ends(trace, turns))
     if met is None:
         return None
+    plain = met
     met = guard_corners(trace, met)
+    if any(any(g) for g in met.guards.values()) and (stepped := steps_instead(trace, plain)) is not None:
+        return stepped
     corner = corners(met.fitted, met.index)
     if (
         not (corner.top.any() and (~corner.top).any())

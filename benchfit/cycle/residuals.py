@@ -67,9 +67,9 @@ def body_profile(trace: Trace, fitted: Fitted, kind: bool) -> Profile | None:
     held = n > 0
     mean = np.bincount(place, bins.n * residual, _BODY)[held] / n[held]
     error = sigma * np.sqrt(colour / n[held])
-    degrees = max(np.count_nonzero(held) - 3, 1)
+    degrees = float(np.maximum(np.count_nonzero(held) - 3, 1))
     chi2 = float(np.sum((mean / error) ** 2)) if np.all(error > 0) else 0.0
-    found = chi2 > degrees + _CLEAR * float(np.sqrt(2.0 * degrees)) + 4.0
+    found = bool(chi2 > degrees + _CLEAR * np.sqrt(2.0 * degrees) + 4.0)
     structure = float(np.sqrt(max(float(np.mean(mean**2 - error**2)), 0.0))) if found else 0.0
     bow, bow_u = _bow(bins, residual, u, fitted, kind, sigma * np.sqrt(colour))
     return Profile(

@@ -10,6 +10,7 @@ from benchfit.cycle.observed import Observed
 from benchfit.cycle.output import OutputFound
 from benchfit.cycle.ramps import fast_direction, fit_ramps, observe_ramps, resolved
 from benchfit.cycle.sequence import put_in_order
+from benchfit.cycle.stepping import observe_held, observe_steps
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Turns, crossings, find_band, find_turns
 
@@ -25,6 +26,11 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
     passages = crossings(trace.values, *band.limits)
     if passages.size < 2:
         return None
+    shape = trace.assignment.shape
+    if shape == "jumping" and (stepped := observe_steps(trace, passages)) is not None:
+        return stepped
+    if shape == "holding" and (held := observe_held(trace, passages)) is not None:
+        return held
     fast = fast_direction(passages)
     if fast is not None:
         found = fit_ramps(trace, passages, fast)
