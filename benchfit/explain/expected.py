@@ -29,7 +29,8 @@ class Expected:
     weights : tuple of float
         How often each is the one that is off, relative to each other (judgement).
     sizes : tuple of float
-        The size, in its coordinate, at which a part that is absent begins to matter; inf for the others.
+        The size, in its coordinate, at which a part that is absent matters; 0 where it cannot, inf for the
+        others.
     """
 
     names: tuple[str, ...]
@@ -115,7 +116,11 @@ def _size(parameter: Parameter, model: Model) -> float:
     part = parameter.part
     if part is None or part.reach is None:
         return math.inf
-    low, high = part.reach(model.values(model.nominal))
+    scales = {**model.values(model.nominal), "period": np.asarray(model.period)}
+    try:
+        low, high = part.reach(scales)
+    except (KeyError, StopIteration, ValueError):  # a scale that this build does not have
+        return 0.0
     middle = math.sqrt(low * high)
     return 1 / middle if part.coordinate == "inverse" else middle
 

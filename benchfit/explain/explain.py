@@ -133,7 +133,7 @@ def _explain_cycle(
             miss=_bare_misses(sheet, base.measured),
         )
     model, weighed, poor = _widened(model, weighed)
-    sure = settled(weighed) and not poor
+    sure = settled(model, weighed) and not poor
     weighed = [refine(model, weighed[0]), *weighed[1:]]
     averaged = parts_room.average(weighed)
     built = {n: q for n in ("frequency", "duty") if (q := base.measured.get(n)) is not None}
@@ -290,9 +290,11 @@ def _explain_rest(
         parts=parts_room.parts_found(model, averaged, tuple(sheet.readings)),
         miss=misses,
         suspects=suspects_of(model, weighed),
-        settled=settled(weighed),
+        settled=settled(model, weighed),
         finding=says,
-        next_readings=() if settled(weighed) else next_readings(model, averaged, tuple(sheet.readings)),
+        next_readings=()
+        if settled(model, weighed)
+        else next_readings(model, averaged, tuple(sheet.readings)),
         verdict=_failed(sheet),
         warnings=tuple(_unique(warnings)),
         without_probe=_probe_stops(model, averaged),

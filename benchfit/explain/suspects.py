@@ -16,6 +16,7 @@ from benchfit.quantity import percent, si
 
 SHOWN = 0.005
 SURE = 0.9
+MATTERS = 0.03
 
 # Bayes factor within which two hypotheses count as look-alikes: the data prefer neither by more than 20 : 1.
 ALIKE = math.log(20.0)
@@ -97,26 +98,33 @@ def lookalikes(w: Weighed, weighed: Sequence[Weighed]) -> list[Weighed]:
     ]
 
 
-def settled(weighed: Sequence[Weighed]) -> bool:
+def settled(model: Model, weighed: Sequence[Weighed]) -> bool:
     """Whether the first is at 0.9, by its prior odds and with equal prior odds among its look-alikes.
 
-    "Nothing off" has no look-alikes that are worth naming: a parasitic too small to show changes nothing.
+    A look-alike of "nothing off" counts only where it would matter: a parasitic too small to move the
+    frequency by
+    3 % is as good as none.
     """
     first = weighed[0]
     if first.probability < SURE:
         return False
+    floor = first.log_evidence - math.log(1e4)
+    group = [o for o in weighed[1:] if o.log_evidence > floor and o.order <= max(first.order, 1)]
     if not first.causes:
-        return True
-    group = [
-        first,
-        *(
-            o
-            for o in weighed[1:]
-            if o.log_evidence > first.log_evidence - math.log(1e4) and o.order <= first.order
-        ),
-    ]
-    logs = np.array([o.log_evidence for o in group])
+        group = [o for o in group if _matters(model, o)]
+    logs = np.array([first.log_evidence, *(o.log_evidence for o in group)])
     return bool(1 / np.sum(np.exp(logs - logs[0])) >= SURE)
+
+
+def _matters(model: Model, w: Weighed) -> bool:
+    """Whether these causes, as large as this hypothesis takes them to be, move frequency or duty by 3 %."""
+    put_right = w.mean.copy()
+    for name in w.causes:
+        put_right[model.index[name]] = model.parameters[model.index[name]].nominal
+    with np.errstate(all="ignore"):
+        f, duty = model.frequency_and_duty(np.vstack([w.mean, put_right]), model.views[0])
+    moved = abs(math.log(f[0] / f[1])) if np.all(np.isfinite(f)) and f[0] > 0 else math.inf
+    return moved > MATTERS or abs(float(duty[0] - duty[1])) > MATTERS
 
 
 def suspects_of(model: Model, weighed: Sequence[Weighed]) -> tuple[Suspect, ...]:
