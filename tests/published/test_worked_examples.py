@@ -255,7 +255,9 @@ def test_what_a_slew_limit_adds_to_first_order(share):
 
 
 def test_an_op_amp_of_the_741_class_crosses_28_volts_in_56_microseconds():
-    """Bell, Electronic Devices and Circuits, Ex. 14.12 (re-solved; its unit is misprinted there): 0.5 V/µs."""
+    """Bell, Electronic Devices and Circuits, Ex. 14.12 (re-solved; its unit is misprinted there): 0.5
+    V/µs.
+    """
     sheet = {**op_amp(10e3, 100e-9, 10e3, 10e3, 14.0), "slew": 0.5e6}
     made = circuits.get("op-amp")
     absent = {
@@ -268,7 +270,9 @@ def test_an_op_amp_of_the_741_class_crosses_28_volts_in_56_microseconds():
 @pytest.mark.parametrize("share", [0.3, 0.5, 0.7])
 @pytest.mark.parametrize("late", [0.002, 0.02, 0.2])
 def test_what_a_comparator_s_delay_adds(share, late):
-    """T = 2·{RC ln[(1 + Vo)/(1 − b)] + td}, Vo = 1 − (1 − b)·e^(−td/RC); at first T0 + 4·td/(1 + b) (OPA-S2)."""
+    """T = 2·{RC ln[(1 + Vo)/(1 − b)] + td}, Vo = 1 − (1 − b)·e^(−td/RC); at first T0 + 4·td/(1 + b)
+    (OPA-S2).
+    """
     parts = op_amp(1e6, 1e-6, 10e3 * (1 - share), 10e3 * share)
     over = 1 - (1 - share) * math.exp(-late)
     exact = 2 * (math.log((1 + over) / (1 - share)) + late)
@@ -312,7 +316,9 @@ def test_a_pulse_text_s_unijunction():
 
 @pytest.mark.parametrize(("resistance", "period"), [(4e6, 0.27726), (1.5e6, 0.10397)])
 def test_a_lamp_s_settled_period(resistance, period):
-    """The lamp of Alexander & Sadiku, Ex. 7.19 (110 V, 0.1 µF, 70 V), out at 30 V through 100 Ω: by the law."""
+    """The lamp of Alexander & Sadiku, Ex. 7.19 (110 V, 0.1 µF, 70 V), out at 30 V through 100 Ω: by the
+    law.
+    """
     record = prediction("gas-lamp", supply=110.0, R=resistance, C=0.1e-6, V_strike=70.0, V_extinguish=30.0,
                         V_maintain=20.0, r_lamp=100.0)  # fmt: skip
     assert quantity(record, "charge_time") == pytest.approx(period, rel=2e-5)
@@ -343,7 +349,9 @@ def schmitt(supply: float, upper: float, lower: float) -> dict[str, Any]:
 
 @pytest.mark.parametrize(("part", "supply", "upper", "lower", "k", "duty"), SCHMITT)
 def test_schmitt_gates_by_their_data_sheets(part, supply, upper, lower, k, duty):
-    """K = ln[(VP/VN)·(VDD − VN)/(VDD − VP)] (ON MC14106B, fig. 5) and duty at the sheets' typical thresholds."""
+    """K = ln[(VP/VN)·(VDD − VN)/(VDD − VP)] (ON MC14106B, fig. 5) and duty at the sheets' typical
+    thresholds.
+    """
     record = schmitt(supply, upper, lower)
     assert quantity(record, "period") == pytest.approx(k, abs=6e-5), part
     assert quantity(record, "duty") == pytest.approx(duty, abs=6e-4), part
