@@ -165,7 +165,6 @@ class Polling:
         self._stop.set()
 
     def _take(self, acquisition: Acquisition) -> None:
-        self._emit_pending()
         error: BenchfitError | None = acquisition.error
         if acquisition.capture is not None:
             try:
@@ -177,6 +176,7 @@ class Polling:
 
                 error = CaptureError(f"{self.session.resource}: {fault(caught)}", path=self.session.resource)
         if error is not None:
+            self._emit_pending()
             self._failed(acquisition, error)
 
     def _measure(self, acquisition: Acquisition) -> None:
@@ -188,6 +188,8 @@ class Polling:
         self._captures += 1
         self._times.append(now)
         pending = Pending(acquisition, look, self._turn(look, now))
+        # Not before: interrupted while it measures, the run still ends with a record that waited.
+        self._emit_pending()
         self._pending = self._last = pending
         name = self.trimming.quantity if self.trimming is not None else "frequency"
         q = look.measured.get(name)

@@ -204,8 +204,9 @@ def test_a_dialect_and_other_channels(
     scope = bench()
     status = poll(
         scope.resource, "--dialect", DIALECT, "--channel", "output=CH2", "--set", "circuit=op-amp",
-        "--set", "parts.R=47k", "--set", "parts.C=100n", "--set", "parts.R_top=22k", "--set",
-        "parts.R_bottom=22k", "--set", "parts.V_high=10.6", "--set", "parts.V_low=-9.9", "--count", 1, "--json", "-",
+        "--set", "parts.R=47k", "--set", "parts.C=100n", "--set", "parts.R_top=22k",
+        "--set", "parts.R_bottom=22k", "--set", "parts.V_high=10.6", "--set", "parts.V_low=-9.9",
+        "--count", 1, "--json", "-",
     )  # fmt: skip
     assert status == 0
     (record,) = records(capsys.readouterr().out)
