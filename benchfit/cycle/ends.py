@@ -67,15 +67,21 @@ def extend_ends(fitted: Fitted, layout: Layout, trace: Trace, index: Array, top:
             continue
         if end == 0:
             first[0] = int(np.clip(np.ceil(limit), 0, stop[0] - 1))
-            first[0] = _follows(fitted, trace, end, int(first[0]), 0, abs(upper - lower))
+            first[0] = follows(fitted, trace, end, int(first[0]), 0, abs(upper - lower))
         else:
             stop[-1] = int(np.clip(np.floor(limit) + 1, first[-1] + 1, trace.size))
-            stop[-1] = _follows(fitted, trace, end, int(stop[-1]), trace.size, abs(upper - lower))
+            stop[-1] = follows(fitted, trace, end, int(stop[-1]), trace.size, abs(upper - lower))
     return Layout(first, stop, layout.rising, layout.whole)
 
 
-def _follows(fitted: Fitted, trace: Trace, phase: int, at: int, edge: int, swing: float) -> int:
-    """How far from ``at`` towards the record's ``edge`` the samples go on along the phase's curve."""
+def follows(
+    fitted: Fitted, trace: Trace, phase: int, at: int, edge: int, swing: float, least: float = 0.06
+) -> int:
+    """How far from ``at`` towards the record's ``edge`` the samples go on along the phase's curve.
+
+    Nowhere, where they leave it before it has gone on by a share ``least`` of the swing: next to a turn every
+    curve is near the samples.
+    """
     size = abs(edge - at)
     if size < 4:
         return at
@@ -87,11 +93,10 @@ def _follows(fitted: Fitted, trace: Trace, phase: int, at: int, edge: int, swing
     curve = fitted.values_at(np.full(count, phase), middle)[0]
     means = np.array([trace.values[b:e].mean() for b, e in zip(begin, end, strict=True)])
     limit = 5.0 * trace.noise / np.sqrt(end - begin) + 0.01 * swing
-    # Next to the turn every curve is near the samples: only what goes on well beyond it counts.
     good = np.abs(means - curve) < limit
     run = count if good.all() else int(np.argmin(good))
     gone = abs(float(curve[max(run - 1, 0)] - curve[0]))
-    return int(cuts[run]) if run >= 2 and gone > max(0.06 * swing, 6.0 * trace.noise) else at
+    return int(cuts[run]) if run >= 2 and gone >= (max(least * swing, 6.0 * trace.noise) if least else 0.0) else at
 
 
 def started(trace: Trace, fitted: Fitted, corner: Corners) -> list[Remark]:
@@ -101,12 +106,13 @@ def started(trace: Trace, fitted: Fitted, corner: Corners) -> list[Remark]:
         return []
     upper, lower = np.median(corner.voltage[corner.top]), np.median(corner.voltage[~corner.top])
     begin = float(fitted.values_at(np.zeros(1, dtype=np.int64), layout.first[:1].astype(float))[0][0])
-    beyond = lower - begin if layout.rising[0] else begin - upper
+    return started_beyond(trace, begin, bool(layout.rising[0]), float(lower), float(upper))
+
+
+def started_beyond(trace: Trace, begin: float, rising: bool, lower: float, upper: float) -> list[Remark]:
+    """``startup``, where the first phase begins at a voltage outside the cycle's range."""
+    beyond = lower - begin if rising else begin - upper
     if beyond < max(0.05 * (upper - lower), 5.0 * trace.noise):
         return []
-    return [
-        Remark(
-            "startup",
-            f"{trace.node}: the record begins with the start-up from {begin:.3g} V; its curve is used, its duration not",
-        )
-    ]
+    says = f"{trace.node}: the record begins with the start-up from {begin:.3g} V; its curve is used, its duration not"
+    return [Remark("startup", says)]

@@ -7,12 +7,14 @@ Everything that a timing node tells is, to first order, a linear form in these.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
 
 from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.phases import Fitted
+from benchfit.cycle.residuals import Profile
 
 
 @dataclass(frozen=True, eq=False)
@@ -77,3 +79,23 @@ def covariance(
         instants = np.stack([f.extra for f in forms])
         result = result + (instants * extra) @ instants.T
     return np.asarray(result)
+
+
+def structure_covariance(fitted: Fitted, forms: list[Form], profiles: Mapping[bool, Profile]) -> Array:
+    """What structure that one exponential leaves adds: the same in every cycle, so that none averages it away.
+
+    It counts as an error of a tenth of the phase each, and as one of every level together. The first form, the
+    period, compares like with like and is free of it.
+    """
+    result = np.zeros((len(forms), len(forms)))
+    for kind, profile in profiles.items():
+        if profile.structure == 0.0:
+            continue
+        mine = fitted.layout.rising == kind
+        samples = float(fitted.layout.length[mine].sum())
+        shared = np.stack([f.shared[int(kind)] for f in forms])
+        level = np.array([f.own[mine].sum() for f in forms])
+        shared[0], level[0] = 0.0, 0.0
+        spread = shared @ fitted.fits[kind].shared @ shared.T
+        result += profile.structure**2 * (spread * samples / 10.0 + np.outer(level, level))
+    return result

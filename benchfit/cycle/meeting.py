@@ -12,7 +12,7 @@ from benchfit.cycle.constants import PhaseFit
 from benchfit.cycle.corners import Met, corner_forms, corners, extreme, fit_corners, guard_corners
 from benchfit.cycle.cycles import Cycles
 from benchfit.cycle.ends import started, with_ends
-from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form
+from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form, structure_covariance
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
 from benchfit.cycle.phases import Corners, Fitted
@@ -100,7 +100,7 @@ def _constants(view: _View) -> Observed | None:
         add(name, fitted.model(rising).curvature, curvature_form(fitted, rising))
     cov = covariance(fitted, forms, view.variance)
     jitter, series = _scatter(view, cov, share, period.u)
-    cov = cov + jitter + _structure(view, forms)
+    cov = cov + jitter + structure_covariance(fitted, forms, view.profiles)
     names, values_array, cov = _with_bows(view, names, np.array(values), cov)
     ends = {}
     for top, name in ((True, "upper"), (False, "lower")):
@@ -162,26 +162,6 @@ def _scatter(view: _View, cov: Array, share: float, u_period: float) -> tuple[Ar
     size = np.sqrt(extra)
     result[:4, :4] = rho * np.outer(size, size)
     return np.asarray(result), series
-
-
-def _structure(view: _View, forms: list[Form]) -> Array:
-    """What structure that one exponential leaves adds: the same in every cycle, so that none averages it away.
-
-    It counts as an error of a tenth of the phase each, and as one of every level together; the period, which
-    compares like with like, is free of it.
-    """
-    result = np.zeros((len(forms), len(forms)))
-    for kind, profile in view.profiles.items():
-        if profile.structure == 0.0:
-            continue
-        mine = view.fitted.layout.rising == kind
-        samples = float(view.fitted.layout.length[mine].sum())
-        shared = np.stack([f.shared[int(kind)] for f in forms])
-        level = np.array([f.own[mine].sum() for f in forms])
-        shared[0], level[0] = 0.0, 0.0
-        spread = shared @ view.fitted.fits[kind].shared @ shared.T
-        result += profile.structure**2 * (spread * samples / 10.0 + np.outer(level, level))
-    return result
 
 
 def _period(view: _View, upper: float, lower: float) -> tuple[PeriodFit, Form]:

@@ -13,7 +13,7 @@ from benchfit.cycle.levels import States, state_levels
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import fit_period
 from benchfit.cycle.scatter import mean_scatter
-from benchfit.cycle.sequence import Sequence, closed, put_in_order
+from benchfit.cycle.sequence import Sequence, closed, put_in_order, regular
 from benchfit.cycle.trace import Trace
 
 
@@ -32,6 +32,8 @@ def observe_output(trace: Trace) -> OutputFound:
     states = state_levels(trace)
     edges = find_edges(trace, states)
     order = put_in_order(edges.index, edges.rising)
+    if states.amplitude < 6.0 * trace.noise and not regular(edges.index, edges.rising):
+        return OutputFound(None, states, edges, order)
     kept = edges.take(order.keep)
     if order.odd.size > 2 and order.odd[0]:
         kept, order = kept.take(np.arange(1, kept.size)), replace(order, odd=order.odd[1:])

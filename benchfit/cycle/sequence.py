@@ -117,3 +117,30 @@ def closed(at: Array, up: Mask, odd: Mask) -> tuple[Array, Index]:
         typical[mine] = np.median(gap[usable]) if usable.any() else np.median(gap[mine])
     moved = np.where(odd, typical, gap)
     return at[0] + np.concatenate([[0.0], np.cumsum(moved)]), (np.arange(at.size) + int(up[0])) // 2
+
+
+def odd_periods(at: Array) -> tuple[Mask, int, int]:
+    """Irregular ones among the intervals of like events, and how many of them are too long and too short."""
+    gap = np.diff(at)
+    if gap.size < 3:
+        return np.zeros(gap.size, dtype=bool), 0, 0
+    ratio = gap / np.median(gap)
+    long, short = ratio > _LONG, ratio < _SHORT
+    return long | short, int(long.sum()), int(short.sum())
+
+
+def evened(at: Array, odd: Mask) -> Array:
+    """Like events with irregular intervals replaced by the median of the regular ones."""
+    gap = np.diff(at)
+    if not odd.any() or odd.all():
+        return at
+    return np.asarray(at[0] + np.concatenate([[0.0], np.cumsum(np.where(odd, np.median(gap[~odd]), gap))]))
+
+
+def regular(at: Array, up: Mask) -> bool:
+    """Whether like events follow each other evenly, as noise does not make them."""
+    gaps = np.concatenate([np.diff(at[up == d]) for d in (True, False)])
+    if gaps.size < 4:
+        return False
+    middle = float(np.median(gaps))
+    return bool(np.median(np.abs(gaps - middle)) < 0.15 * middle)

@@ -12,7 +12,14 @@ from benchfit.cycle.corners import Met
 from benchfit.cycle.ends import with_ends
 from benchfit.cycle.gaps import Threshold, censored_mean
 from benchfit.cycle.joints import Joints, clear_of, split
-from benchfit.cycle.linear import Form, covariance, curvature_form, extra_form, phase_form
+from benchfit.cycle.linear import (
+    Form,
+    covariance,
+    curvature_form,
+    extra_form,
+    phase_form,
+    structure_covariance,
+)
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
 from benchfit.cycle.phase import ExponentialFit, PhaseModel
@@ -203,12 +210,25 @@ def constants(trace: Trace, found: Stepped) -> Observed | None:
     cov = covariance(fitted, [p[2] for p in parts], variances, np.array([upper.variance, lower.variance]))
     cov[0, 0] = max(cov[0, 0], period.u**2)
     cov[1, 1] = max(cov[1, 1], share_variance)
-    values = np.array([p[1] for p in parts])
     profiles = {k: p for k in real if (p := body_profile(trace, fitted, k)) is not None}
+    cov = cov + structure_covariance(fitted, [p[2] for p in parts], profiles)
+    values = np.array([p[1] for p in parts])
+    extremes = _extremes(trace, found, names, values, cov)
     return Observed(
-        names, values, cov, t_low, period.jitter, float(np.sqrt(variance)), phases=_phase_fits(trace, found, names, values),
+        names, values, cov, t_low, period.jitter, float(np.sqrt(variance)), *extremes, phases=_phase_fits(trace, found, names, values),
         remarks=poor_fit(profiles, values[2] - values[3]), series={"period": np.diff(t_low)}, node=trace.node,
     )
+
+
+def _extremes(
+    trace: Trace, found: Stepped, names: tuple[str, ...], values: Array, cov: Array
+) -> tuple[tuple[float, float], tuple[float, float]]:
+    """Highest and lowest voltage of the waveform without its noise, each with its u (V)."""
+    known = {n: (float(v), float(u)) for n, v, u in zip(names, values, np.sqrt(np.diag(cov)), strict=True)}
+    ends = [known[n] for n in ("upper", "lower", "charge_start", "discharge_start") if n in known]
+    if found.held:
+        ends.append((found.fitted.model(False).reference, trace.noise / np.sqrt(trace.size / 4.0)))
+    return max(ends), min(ends)
 
 
 @dataclass(frozen=True, eq=False)

@@ -8,8 +8,8 @@ from benchfit.cycle.edges import Edges
 from benchfit.cycle.meeting import observe_meeting
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.output import OutputFound
-from benchfit.cycle.ramps import fast_direction, fit_ramps, observe_ramps, resolved
-from benchfit.cycle.sequence import put_in_order
+from benchfit.cycle.ramps import fast_direction, fit_ramps, observe_ramps
+from benchfit.cycle.sequence import put_in_order, regular
 from benchfit.cycle.stepping import observe_held, observe_steps
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Turns, crossings, find_band, find_turns
@@ -26,6 +26,12 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
     passages = crossings(trace.values, *band.limits)
     if passages.size < 2:
         return None
+    at = (passages.before + passages.after) / 2.0
+    if band.half < 4.5 * trace.noise and not regular(at, passages.rising):
+        return None
+    passages = passages.take(put_in_order(at, passages.rising).keep)
+    if passages.size < 2:
+        return None
     shape = trace.assignment.shape
     if shape == "jumping" and (stepped := observe_steps(trace, passages)) is not None:
         return stepped
@@ -34,14 +40,8 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
     fast = fast_direction(passages)
     if fast is not None:
         found = fit_ramps(trace, passages, fast)
-        if found is not None and not resolved(found[1]):
-            fitted, gaps = found
-            noise = float(np.sqrt(fitted.fits[not fast].variance))
-            return observe_ramps(fitted, gaps, fast, noise, trace.node)
-    order = put_in_order((passages.before + passages.after) / 2.0, passages.rising)
-    passages = passages.take(order.keep)
-    if passages.size < 2:
-        return None
+        if found is not None and not found.resolved:
+            return observe_ramps(trace, found)
     turns = find_turns(trace, passages)
     return observe_meeting(trace, from_edges(turns, output.edges) if output is not None else turns)
 
