@@ -110,7 +110,10 @@ class _Parser:
             self.fail(dotted, f'unknown {kind} "{word}"; {hint}{also}')
 
     def text(self, key: str) -> str:
+        """The text at a key, "" where there is none; a bare number is the text that it is written as."""
         found = self.at(key)
+        if isinstance(found, int | float) and not isinstance(found, bool):
+            return str(found)
         if found is not None and not isinstance(found, str):
             self.fail(key, f"found {_shown(found)} where a text was expected")
         return found or ""
@@ -327,4 +330,6 @@ def _is_none(value: object) -> bool:
 def _shown(value: object) -> str:
     if isinstance(value, Mapping):
         return "a section"
+    if isinstance(value, bool):
+        return str(value).lower()
     return "a list" if isinstance(value, list) else f'"{value}"' if isinstance(value, str) else str(value)

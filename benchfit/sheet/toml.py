@@ -78,7 +78,8 @@ class Source:
             if not isinstance(table, dict):
                 says = f"--set {text}: {word} holds a value, it is no section"
                 raise SheetError(says, path=self.path, key=key)
-        table[words[-1]] = _value(value.strip(), is_text=words[0] in ("title", "circuit", "record"))
+        is_text = words[0] in ("title", "circuit", "record") or "channels" in words
+        table[words[-1]] = _value(value.strip(), is_text=is_text)
         self._overridden.add(".".join(words))
 
 
@@ -130,13 +131,16 @@ def _words(dotted: str) -> list[str]:
 
 
 def _value(text: str, *, is_text: bool) -> Any:
-    """What an override sets: a number, a truth value, a string or a table as in TOML, else the text."""
+    """What an override sets: a number, a truth value, a string or a table as in TOML, else the text.
+
+    Where a text is expected, a bare number is that text as it was written: a channel may be named 1.
+    """
     try:
         found = tomllib.loads(f"x = {text}")
     except tomllib.TOMLDecodeError:
         return text
     value = found["x"] if len(found) == 1 else text
-    wanted = (str,) if is_text else (str, bool, int, float, dict)
+    wanted = (str, dict) if is_text else (str, bool, int, float, dict)
     return value if isinstance(value, wanted) else text
 
 

@@ -226,7 +226,8 @@ def test_unknown_words_name_the_nearest_known_one(old, new, expected):
         ),
         ("ratio = 10", "", "probe.capacitor: scaled = false needs the ratio"),
         ('"2%"', '"-2%"', 'scope.gain: "-2%" must be one limit that is not negative'),
-        ('title = "Mast beacon flasher"', "title = 3", "title: found 3 where a text was expected"),
+        ('title = "Mast beacon flasher"', "title = true", "title: found true where a text was expected"),
+        ('title = "Mast beacon flasher"', "title = [3]", "title: found a list where a text was expected"),
         ("[capture.2]", "[capture.0]", 'capture.0: "0" is no number of a capture'),
         ("[capture.2]", "[capture.two]", 'capture.two: "two" is no number of a capture'),
         ('supply = "119 V 0.2%"', 'supply = "none"', 'capture.2.supply: "none" is for optional parts'),
@@ -344,6 +345,23 @@ def test_overrides_alone_are_a_sheet():
     assert sheet.record["date"] == "2026-12-01"
     with pytest.raises(SheetError, match="also needs supply, R, C"):
         Sheet.load(None, ["circuit=gas-lamp"])
+
+
+def test_a_bare_number_is_a_text_where_one_is_expected():
+    """A channel may be called 1, with or without quotes, in the file and on the command line."""
+    sheet = Sheet.parse(f"title = 1999\n{AMPLIFIER}R = 1e3\n[channels]\ncapacitor = 1\noutput = {{ name = 2 }}\n"
+                        "[record]\nunit = 17\n")  # fmt: skip
+    assert (sheet.title, sheet.record["unit"]) == ("1999", "17")
+    assert [sheet.channels[node].name for node in ("capacitor", "output")] == ["1", "2"]
+    assert Sheet.parse(sheet.dump()).channels == sheet.channels
+    for text in ("1", "'1'", '"1"'):
+        assert Sheet.parse(LAMP, [f"channels.capacitor={text}"]).channels["capacitor"].name == "1"
+    assert Sheet.parse(LAMP, ["channels.capacitor=01"]).channels["capacitor"].name == "01"
+    assert Sheet.parse(LAMP, ["channels.capacitor.name=1"]).channels["capacitor"].name == "1"
+    assert Sheet.parse(LAMP, ["capture.2.channels.capacitor=2"]).captures[2].channels["capacitor"].name == "2"
+    assert "channels.capacitor: found true where a text" in refusal(
+        LAMP.replace('capacitor = "CH1"', "capacitor = true")
+    )
 
 
 def test_files(tmp_path):
