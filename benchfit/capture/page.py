@@ -50,12 +50,8 @@ class Page:
 
     @property
     def body(self) -> tuple[tuple[str, ...], ...]:
-        """Rows of the table in the head that are rows of numbers."""
-        return tuple(row for row in self.rows[self.first :] if self.is_data(row))
-
-    def is_data(self, row: Sequence[str]) -> bool:
-        """Whether a row has numbers, or nothing, in all columns that hold numbers."""
-        return _fits(row, self.numeric, self.decimal)
+        """Rows of the table in the head, spoilt ones too, so that each row has its place; blank ones not."""
+        return tuple(row for row in self.rows[self.first :] if any(row))
 
     def column(self, index: int) -> list[str]:
         """Cells of a column in ``body``, "" where a row is short."""
@@ -154,13 +150,20 @@ def _first(rows: Sequence[Sequence[str]], lines: Sequence[str], numeric: Sequenc
         return len(rows)
     first = longest[0]
     for start, end in reversed([run for run in runs if run[1] <= longest[0]]):
-        gap = sum(bool(line.strip()) for line in lines[end:first])
+        between = [line for line in lines[end:first] if line.strip()]
         complete = all(_is_complete(row, numeric, decimal) for row in rows[start:end] if row)
-        if len(numeric) > 1 and gap <= 4 and (end - start >= 8 or complete):
+        spoilt = len(numeric) > 1 or all(_is_mostly_digits(line) for line in between)
+        if len(between) <= 4 and (end - start >= 8 or (complete and spoilt)):
             first = start
         else:
             break
     return _below_header(rows, first, numeric)
+
+
+def _is_mostly_digits(line: str) -> bool:
+    """Whether a line is a row of numbers with a character or two spoilt, rather than a name or a setting."""
+    bare = "".join(line.split())
+    return sum(character in "0123456789.,;eE+-" for character in bare) > 0.7 * len(bare)
 
 
 def _is_complete(row: Sequence[str], numeric: Sequence[int], decimal: str) -> bool:

@@ -13,6 +13,7 @@ from benchfit.capture.cells import Precision, number, precision
 from benchfit.capture.evidence import Layout
 from benchfit.capture.header import Title, title
 from benchfit.capture.page import Page
+from benchfit.capture.spacing import robust_step
 from benchfit.errors import CaptureError, Remark
 
 Floats = NDArray[np.float64]
@@ -90,31 +91,50 @@ class _Columns:
         return self.precision(column).quantum(float(np.max(np.abs(values))) if values.size else 0.0)
 
     def is_whole(self, column: int) -> bool:
+        """Whether the values are whole numbers."""
         values = self.finite(column)
-        return bool(values.size) and bool(np.all(values == np.round(values)))
+        return values.size > 0 and _nearly_all(values == np.round(values))
+
+    def is_steady(self, column: int) -> bool:
+        """Whether the values grow or fall by the same step in every row."""
+        steps = np.diff(self.finite(column))
+        usual = float(np.median(steps)) if steps.size > 1 else 0.0
+        return usual != 0.0 and _nearly_all(steps == usual)
 
     def is_count(self, column: int) -> bool:
         """Whether the column counts rows: whole numbers, one more in every row."""
-        values = self.finite(column)
-        return self.is_whole(column) and values.size > 2 and bool(np.all(np.diff(values) == 1))
+        steps = np.diff(self.finite(column))
+        return steps.size > 1 and self.is_whole(column) and _nearly_all(steps == 1)
 
     def is_rising(self, column: int) -> bool:
         """Whether hardly a value is less than the one before."""
         values = self.finite(column)
         return values.size > 2 and bool(values[-1] > values[0]) and bool(np.mean(np.diff(values) >= 0) > 0.9)
 
+    def step(self, column: int) -> float:
+        """The usual step from row to row, rounded print or not."""
+        return robust_step(self.finite(column)) if self.finite(column).size > 2 else 0.0
+
     def is_even(self, column: int) -> bool:
         """Whether the values grow by equal steps, within what the printed digits leave open."""
-        values = self.finite(column)
-        if values.size < 3 or values[-1] <= values[0]:
+        values, step = self.values(column), self.step(column)
+        known = np.isfinite(values)
+        if not step > 0 or known.sum() < 3:
             return False
-        steps = np.diff(values)
-        mean = (values[-1] - values[0]) / (values.size - 1)
-        line = values[0] + mean * np.arange(values.size)
-        return bool(
-            np.all(steps >= 0)
-            and np.max(np.abs(values - line)) <= max(1.01 * self.quantum(column), 1e-3 * mean)
-        )
+        tolerance = max(1.5 * self.quantum(column), 2e-3 * step)
+        rows = np.flatnonzero(known)
+        if tolerance < 0.2 * step:
+            return _nearly_all(np.abs(np.diff(values[known]) - step * np.diff(rows)) <= tolerance)
+        # Rounded stamps: any slow rise has such steps, only time stays on a line.
+        off = values[known] - step * rows
+        quarter = off.size // 4 + 1
+        off -= np.median(off[-quarter:] - off[:quarter]) * rows / (0.75 * values.size)
+        return _nearly_all(np.abs(off - np.median(off)) <= tolerance)
+
+
+def _nearly_all(facts: NDArray[np.bool_]) -> bool:
+    """Whether facts hold but for a damaged cell or two, each of which spoils its row and a step or two."""
+    return bool(facts.size) and int(np.count_nonzero(~facts)) <= max(2 if facts.size > 15 else 0, 0.02 * facts.size)
 
 
 def make_plan(
@@ -133,7 +153,10 @@ def make_plan(
         plan = _with_time(plan, table, time, layout, why)
     elif why:
         plan = replace(plan, why_no_time=why)
-    return _with_channels(plan, page, table, time)
+    plan = _with_channels(plan, page, table, time)
+    if not plan.channels:
+        raise refusal("has a time axis and no column of values")
+    return plan
 
 
 # -- time ----------------------------------------------------------------------------------------------------
@@ -145,6 +168,9 @@ def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | Non
         return None, ""
     numeric = page.numeric
     titled = [(k, table.title(k)) for k in numeric]
+    # A lone letter names the time only in the first place: further on, "T" is a temperature or a period.
+    titled = [(k, named) for place, (k, named) in enumerate(titled) if len(named.name) != 1 or named.unit or not place or (
+        place == 1 and titled[0][1].is_index)]
     for test, why in (
         (lambda t: t.unit is not None and t.unit.is_time and not t.is_increment, "its unit"),
         (lambda t: t.is_time and not t.is_increment, "its name"),
@@ -161,7 +187,7 @@ def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | Non
     if layout.time_is_first and table.is_rising(first):
         return first, "its place"
     if table.is_even(first):
-        step = float(np.diff(table.finite(first)[[0, -1]])[0]) / (table.finite(first).size - 1)
+        step = table.step(first)
         if layout.interval is not None and abs(step / layout.interval - 1) < 0.01:
             return first, f"its steps, which are those of {layout.stated}"
         if not table.is_whole(first):
@@ -180,6 +206,8 @@ def _with_time(plan: Plan, table: _Columns, time: int, layout: Layout, why: str)
     name = named.name or f"column {time + 1}"
     if measure is None and layout.horizontal:
         measure = title(f"[{layout.horizontal}]").unit
+    if measure is not None and measure.base and not measure.is_time:
+        return replace(plan, why_no_time=f'"{name}" is in "{measure.text}", which is no unit of time')
     if measure is None or not measure.is_time:
         whole = table.is_whole(time) and not why.startswith("its steps")
         if whole:
@@ -265,9 +293,9 @@ def _no_channel(column: int, others: Sequence[int], table: _Columns, time: int |
     """Why a column is no channel of its own; "" where it is one."""
     named = table.title(column)
     values = table.finite(column)
-    if time is not None and np.array_equal(table.values(column), table.values(time), equal_nan=True):
+    if time is not None and _nearly_all(table.values(column) == table.values(time)):
         return "the time axis once more"
-    if (named.is_index or named.is_axis_letter) and table.is_whole(column) and _is_steady(values):
+    if (named.is_index or named.is_axis_letter) and table.is_whole(column) and table.is_steady(column):
         return _NUMBERS_THE_ROWS
     if named.unit is not None and named.unit.is_time:
         return "a second time axis"
@@ -277,7 +305,7 @@ def _no_channel(column: int, others: Sequence[int], table: _Columns, time: int |
     if table.is_whole(column) and values.size > 2 and _is_bare(named):
         if _EPOCH[0] < float(np.min(values)) and float(np.max(values)) < _EPOCH[1]:
             return "a clock"
-        if _is_steady(values) and (table.is_count(column) or abs(values[1] - values[0]) > 1):
+        if table.is_steady(column) and (table.is_count(column) or abs(table.step(column)) > 1):
             return "a counter"
     for other in others:
         if other != column and (reason := _derived(column, other, table)):
@@ -290,11 +318,6 @@ def _is_bare(named: Title) -> bool:
     return named.unit is None or not named.unit.base
 
 
-def _is_steady(values: Floats) -> bool:
-    steps = np.diff(values)
-    return values.size > 2 and bool(steps[0] != 0) and bool(np.all(steps == steps[0]))
-
-
 def _derived(column: int, other: int, table: _Columns) -> str:
     """Whether a column follows from another: raw codes of the same channel, or its logarithm."""
     x, y = table.values(column), table.values(other)
@@ -303,9 +326,10 @@ def _derived(column: int, other: int, table: _Columns) -> str:
     if x.size < 8 or np.ptp(x) == 0 or np.ptp(y) == 0:
         return ""
     if table.is_whole(column) and not table.is_whole(other) and _is_bare(table.title(column)):
-        slope = np.ptp(y) / np.ptp(x) * np.sign(np.dot(x - x.mean(), y - y.mean()))
-        misfit = np.max(np.abs(y - y.mean() - slope * (x - x.mean())))
-        if misfit <= max(1.01 * table.quantum(other), 1e-6 * np.ptp(y)):
+        order = np.argsort(x, kind="stable")
+        a, b = order[x.size // 20], order[-1 - x.size // 20]
+        slope = (y[b] - y[a]) / (x[b] - x[a]) if x[b] != x[a] else np.inf
+        if _nearly_all(np.abs(y - y[a] - slope * (x - x[a])) <= max(2.01 * table.quantum(other), 1e-6 * abs(y[b] - y[a]))):
             return "raw codes of"
     positive = y > 0
     if _LOGARITHM.fullmatch(table.title(column).name) or table.title(column).unit is None:

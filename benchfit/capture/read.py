@@ -74,7 +74,8 @@ def _read_one(
     limit: int | None,
     stdin: IO[bytes] | None,
 ) -> Capture:
-    with Source(path, limit, stdin) as source:
+    # Garbled digits make numbers that overflow in sums and squares; what comes of them fails the checks.
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"), Source(path, limit, stdin) as source:
         page = look(source.head.lines, source.head.whole)
         family, claim, found = tell(page)
         if claim.layout is None:

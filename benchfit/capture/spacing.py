@@ -67,7 +67,9 @@ def robust_step(stamps: Floats) -> float:
     """The usual distance of neighbouring stamps, over a span of rows so that rounding does not matter."""
     lag = max(1, min(32, stamps.size // 4))
     with np.errstate(invalid="ignore", over="ignore"):
-        return float(np.median(stamps[lag:] - stamps[:-lag])) / lag
+        steps = stamps[lag:] - stamps[:-lag]
+    steps = steps[np.isfinite(steps)]
+    return float(np.median(steps)) / lag if steps.size else float("nan")
 
 
 def settle(
@@ -89,6 +91,8 @@ def settle(
 
 def mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, tuple[Remark, ...]]:
     """Lone stamps far from their place, put in line with their neighbours where these fit each other."""
+    if not (np.isfinite(step) and step > 0):
+        return stamps, ()
     tolerance = max(2 * quantum, 0.3 * step)
     with np.errstate(invalid="ignore", over="ignore"):
         fits = np.abs(np.diff(stamps) - step) <= tolerance
@@ -100,19 +104,28 @@ def mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, tuple[R
     for row in lone:
         at = int(np.searchsorted(places, row))
         if at in (0, places.size):
-            near = places[0] if at == 0 else places[-1]
-            place = stamps[near] + step * (row - near)
+            near = int(places[0] if at == 0 else places[-1])
+            place = float(stamps[near] + step * (row - near))
+            spoilt = _is_off_grid(float(stamps[row] - stamps[near]) * (1 if row > near else -1), step, tolerance, stamps.size)
         else:
-            a, b = places[at - 1], places[at]
+            a, b = int(places[at - 1]), int(places[at])
             if abs(stamps[b] - stamps[a] - step * (b - a)) > tolerance + 0.01 * step * (b - a):
                 continue
-            place = stamps[a] + (stamps[b] - stamps[a]) * (row - a) / (b - a)
-        # A stamp nearer than a step is jitter, not damage.
-        if not abs(stamps[row] - place) <= max(step, 2 * quantum):
+            place = float(stamps[a] + (stamps[b] - stamps[a]) * (row - a) / (b - a))
+            # A stamp nearer than a step is jitter, not damage.
+            spoilt = not abs(stamps[row] - place) <= max(1.01 * step, 2 * quantum)
+        if spoilt:
             result[row] = place
             count += 1
     says = f"{count} time stamps do not fit between their neighbours and were put in line."
     return (result, (Remark("damaged", says),)) if count else (stamps, ())
+
+
+def _is_off_grid(distance: float, step: float, tolerance: float, rows: int) -> bool:
+    """Whether the stamp of a first or last row cannot be that of a row after a gap."""
+    if not 0 < distance < step * rows:
+        return True
+    return abs(distance - step * round(distance / step)) > tolerance
 
 
 def _gapped(stamps: Floats, step: float, quantum: float) -> Spacing | None:
@@ -120,7 +133,7 @@ def _gapped(stamps: Floats, step: float, quantum: float) -> Spacing | None:
     jumps = np.diff(stamps)
     counts = np.round(jumps / step)
     off = np.abs(jumps - counts * step)
-    if np.any(counts < 1) or np.any(off > max(2 * quantum, 0.15 * step) * np.maximum(1, 0.01 * counts)):
+    if not (np.all(counts >= 1) and np.all(off <= max(2 * quantum, 0.15 * step) * np.maximum(1, 0.01 * counts))):
         return None
     total = int(counts.sum())
     if total == jumps.size or total > 4 * stamps.size:

@@ -65,7 +65,7 @@ def make_axis(table: Table, plan: Plan, interval: float | None, frame: int | Non
     stamps = table.columns[plan.time]
     if plan.time_scale != 1.0:
         stamps = stamps * plan.time_scale
-    quantum = plan.time_scale * plan.precision.quantum(float(np.nanmax(np.abs(stamps))) / plan.time_scale)
+    quantum = plan.time_scale * plan.precision.quantum(_largest(stamps) / plan.time_scale)
     if plan.is_increment:
         return _from_increments(table, plan, stamps, quantum, interval, refusal)
     spacing = even(stamps, quantum)
@@ -78,6 +78,13 @@ def make_axis(table: Table, plan: Plan, interval: float | None, frame: int | Non
             table.rows,
         )
     return _from_stamps(table, plan, stamps, quantum, interval, frame, refusal)
+
+
+def _largest(stamps: Floats) -> float:
+    """About the largest size of the stamps; a garbled one does not count."""
+    sizes = np.abs(stamps[:: max(1, stamps.size // 4096)])
+    sizes = sizes[np.isfinite(sizes)]
+    return float(np.quantile(sizes, 0.97)) if sizes.size else 0.0
 
 
 def _without_stamps(
