@@ -231,7 +231,7 @@ def _widened(model: Model, weighed: Sequence[Weighed]) -> tuple[Model, list[Weig
             )
         ]
         model = replace(model, covariance=model.covariance * min(min(live) / size, 1e4))
-        found = weigh(model)
+        found = weigh(model, pairs=True)
     return model, found, notes
 
 

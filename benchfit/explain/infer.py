@@ -17,6 +17,8 @@ from benchfit.explain.model import Array, Model
 
 IDENTITY, PLUS, MINUS, INVERSE = 0, 1, 2, 3
 _STEP = 1e-4
+# How soon a tolerance ends beyond its limits, in its own standard deviations. Judgement.
+BEYOND = 0.3
 # A slope beyond this is a state at the edge of oscillation, no information.
 _STEEP = 1e9
 
@@ -74,7 +76,8 @@ class Relaxed:
     state : ndarray, shape (rows, n)
     t : ndarray, shape (rows, owns)
     cost : ndarray, shape (rows,)
-        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed; inf where
+        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed, what lies
+        beyond its limits added; inf where
         the
         state does not oscillate.
     log_weight : ndarray, shape (rows,)
@@ -246,7 +249,7 @@ def _beyond(batch: Batch, state: Array, free: NDArray[np.int64]) -> Array:
     """
     spread = batch.spread[:, free]
     z = np.where(spread > 0, (state - batch.center)[:, free] / np.where(spread > 0, spread, 1.0), 0.0)
-    over = np.maximum(np.abs(z) - np.sqrt(3.0), 0.0) / 0.5
+    over = np.maximum(np.abs(z) - np.sqrt(3.0), 0.0) / BEYOND
     lost: Array = -0.5 * np.sum(np.minimum(over, 20.0) ** 2, axis=1)
     return lost
 
@@ -278,11 +281,12 @@ def _weigh(
         own_u = np.sqrt(np.abs(np.diagonal(inverse, axis1=1, axis2=2)[:, held:]))
     inner = np.linalg.inv(normal)
     covariance[:, free[:, None], free[None, :]] = inner * spread[:, :, None] * spread[:, None, :]
-    edges = model.unexplained_edges(state) + _beyond(batch, state, free)
+    beyond = _beyond(batch, state, free)
+    edges = model.unexplained_edges(state) + beyond
     return Relaxed(
         state,
         t,
-        cost,
+        cost - 2 * beyond,
         np.where(np.isfinite(cost), -0.5 * cost - 0.5 * logdet + edges, -np.inf),
         np.sum(np.nan_to_num(residual, posinf=1e6, neginf=1e6) ** 2, axis=1),
         own_u,

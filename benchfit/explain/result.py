@@ -201,6 +201,51 @@ class CaptureFacts:
 
 
 @dataclass(frozen=True)
+class Changed:
+    """A part that is another one than when the build was found.
+
+    ``before`` and ``after`` are nominals (None: not there); where ``is_taken`` the nominal is the same and a
+    remedy's part is taken to have been fitted, ``before`` is what was found.
+    """
+
+    part: str
+    before: float | None
+    after: float | None
+    unit: str
+    is_taken: bool = False
+
+
+@dataclass(frozen=True)
+class AsFound:
+    """What a change to the build did, by the record of before.
+
+    Attributes
+    ----------
+    path : str
+        The capture of then.
+    verdict : str or None
+        The verdict of then.
+    before, predicted, obtained : mapping of Quantity
+        Frequency (Hz) and duty: as found, what the record's remedy said the change would give (empty where it
+        named no such change), as left.
+    is_lifted : bool
+        Where a probe was on it, before and obtained are those without it.
+    changed : tuple of Changed
+    effect : str or None
+        "as predicted", "partly" or "not by this change"; None where nothing was predicted.
+    """
+
+    path: str
+    verdict: str | None
+    before: Mapping[str, Quantity]
+    predicted: Mapping[str, Quantity]
+    obtained: Mapping[str, Quantity]
+    is_lifted: bool
+    changed: tuple[Changed, ...] = ()
+    effect: str | None = None
+
+
+@dataclass(frozen=True)
 class Explanation:
     """The whole answer for one capture (or one joint set): section 5 of the contract, as data.
 
@@ -229,3 +274,4 @@ class Explanation:
     record_notes: Mapping[str, str] = field(default_factory=dict)
     finding: str = ""
     model: Mapping[str, tuple[tuple[float, ...], tuple[float, ...]]] = field(default_factory=dict)
+    as_found: AsFound | None = None

@@ -16,6 +16,8 @@ from benchfit.explain.infer import IDENTITY, Batch, Relaxed, relax, whitener
 from benchfit.explain.model import Array, Model
 
 STARTS = 13
+# A held part this far out (its limits lie at 1.73) is a second cause to be asked about.
+STRAINED = 2.0
 _Q = np.array([-5.0, -3.5, -2.5, -1.75, -1.2, -0.75, -0.35, 0.0, 0.35, 0.75, 1.2, 1.75, 2.5, 3.5, 5.0])
 
 
@@ -84,8 +86,11 @@ def _starts(way: Freed) -> Array:
     return found
 
 
-def weigh(model: Model) -> list[Weighed]:
-    """Every hypothesis that the circuit and the sheet allow, by falling probability (which sum to 1)."""
+def weigh(model: Model, pairs: bool = False) -> list[Weighed]:
+    """Every hypothesis that the circuit and the sheet allow, by falling probability (which sum to 1).
+
+    Two independent causes are tried where no single one explains the record, or where ``pairs`` asks for it.
+    """
     white = whitener(model.covariance)
     hypotheses = singles(model)
     fixed = [h for h in hypotheses if not h.freed]
@@ -94,15 +99,27 @@ def weigh(model: Model) -> list[Weighed]:
     found = _weigh_fixed(model, fixed, white) + _weigh_free(model, free, white)
     found += _weigh_families(model, families, white)
     merged = _merge(found)
-    if not _explains(model, merged):
+    if pairs or not _explains(model, merged):
         merged = _merge(found + _weigh_pairs(model, merged, white))
     return merged
 
 
 def _explains(model: Model, found: Sequence[Weighed]) -> bool:
-    """Whether one of the live hypotheses fits the record as well as its noise and floors allow."""
-    best = min((w.misfit for w in found[:4] if w.probability > 0.02), default=np.inf)
-    return bool(chdtrc(max(len(model.observations), 1), best) > 0.2)
+    """Whether one of the live hypotheses fits the record as well as its noise and floors allow, with every
+    part
+    that it holds within its limits."""
+    live = [w for w in found[:4] if w.probability > 0.02]
+    best = min((w.misfit for w in live), default=np.inf)
+    size = sum(not o.name.endswith("_jump") for o in model.observations)
+    return bool(chdtrc(max(size, 1), best) > 0.2) and bool(live) and _strain(model, live[0]) < STRAINED
+
+
+def _strain(model: Model, w: Weighed) -> float:
+    """How far, in its prior's standard deviations, the most stretched of the held parts lies from its
+    middle."""
+    away = np.abs(w.mode - model.center) / np.where(model.spread > 0, model.spread, np.inf)
+    held = [i for i, p in enumerate(model.parameters) if p.part is not None and p.name not in w.causes]
+    return float(np.max(away[held], initial=0.0))
 
 
 def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
@@ -288,8 +305,17 @@ def _gauged(way: Freed, x: float) -> float:
     return float(np.clip(t, way.low, way.high))
 
 
+def _is_ridge(h: Hypothesis, own_u: Array) -> bool:
+    """Whether the data fix the two freed parts only together: no pair that is unseparated is a hypothesis."""
+    return all(not u < 0.25 * (way.high - way.low) for u, way in zip(own_u, h.freed, strict=True))
+
+
 def _pair(h: Hypothesis, fine: Relaxed, r: int) -> Weighed:
     """Laplace in the two freed parameters; a width beyond the range counts as the range."""
+    if _is_ridge(h, fine.own_u[r]):
+        return Weighed(
+            h.causes, h.weight, -np.inf, fine.state[r], fine.covariance[r], fine.state[r], np.inf, h.order
+        )
     density = 1.0
     volume = 1.0
     for k, way in enumerate(h.freed):
