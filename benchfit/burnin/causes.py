@@ -29,12 +29,17 @@ EFFECT = 0.05
 """Prior standard deviation of a cause's effect on ln f."""
 MOST = 0.3
 """Prior standard deviation of a part's own relative change, at most."""
-FLOOR = 0.02
+FLOOR = 0.004
 """What the closed forms leave out of a real circuit's change, as a share of it."""
+LIVE = 0.03
+"""Probability from which a part counts as one that may have drifted."""
 PAIR = 0.02
 """Prior odds of two drifting parts against one."""
-ALIKE = 0.995
-"""Cosine of two fingerprints from which captures cannot tell them apart."""
+ALIKE = 0.999
+"""Cosine of two fingerprints from which on they are not tried as a pair."""
+MOVES = {"delay": 0.02, "slew": 0.02, "C_stray": 0.02, "C_slope": 0.02, "ESR": 0.3, "I_leak": 0.5}
+"""How readily a parasitic drifts in a burn-in, against how often it is there at all (judgement: a leak grows or
+heals, an electrolytic dries out; a chip's speed and a board's layout stay what they are)."""
 SHOWN = 0.02
 """Smallest share that is listed."""
 _INDEPENDENT = (
@@ -62,6 +67,8 @@ class Build(Protocol):
     def coordinates(self) -> tuple[str, ...]: ...
     @property
     def weights(self) -> tuple[float, ...]: ...
+    @property
+    def sizes(self) -> tuple[float, ...]: ...
     def state(self, values: Mapping[str, float]) -> Array: ...
     def values(self, states: Array) -> dict[str, Array]: ...
     def measured(self, states: Array) -> dict[str, Array]: ...
@@ -96,8 +103,8 @@ def quantities(names: Sequence[str]) -> tuple[str, ...]:
     return tuple(n for n in ("frequency", "duty") if n in names) + found
 
 
-def fingerprint(base: Basis, names: Sequence[str], y: Array, frequency: Array, found: Drift) -> Fingerprint:
-    """Regress every quantity on the shape that the frequency's drift has.
+def fingerprint(base: Basis, names: Sequence[str], y: Array, period: Array, found: Drift) -> Fingerprint:
+    """Regress every quantity on the shape that the period's drift has.
 
     Parameters
     ----------
@@ -105,15 +112,15 @@ def fingerprint(base: Basis, names: Sequence[str], y: Array, frequency: Array, f
     names : sequence of str
     y : ndarray, shape (p, n)
         Block means of the quantities.
-    frequency : ndarray, shape (n,)
-        Block means of the frequency.
+    period : ndarray, shape (n,)
+        Block means of the period.
     found : Drift
-        The frequency's drift.
+        The period's drift.
     """
     c = base.shapes.index(found.shape)
     share = (found.walk / found.sigma) ** 2 if found.sigma > 0 else 0.0
     w = 1 / (1 + share * base.power)
-    rows = np.vstack([y, frequency])
+    rows = np.vstack([y, period])
     level = rows.mean(axis=1)
     z = ((rows - level[:, None]) @ base.rotated.T) * np.sqrt(w)
     design = np.stack([base.one, base.columns[c]], axis=1) * np.sqrt(w)[:, None]
@@ -128,8 +135,8 @@ def fingerprint(base: Basis, names: Sequence[str], y: Array, frequency: Array, f
     reach = float(ends[1] - ends[0])
     change = solution[1] * reach
     covariance = spread * inverse[1, 1] * reach**2
-    start = level[-1] - 0.5 * change[-1]
-    moved = math.log((start + change[-1]) / start)
+    start = level[-1] + solution[0, -1] + solution[1, -1] * float(ends[0])
+    moved = -math.log((start + change[-1]) / start)
     by_name = dict(zip(names, level, strict=False))
     swing = abs(by_name.get("upper", 0.0) - by_name.get("lower", 0.0))
     swing = swing or abs(by_name.get("high", 1.0) - by_name.get("low", 0.0))
@@ -161,7 +168,7 @@ def blame(build: Build, found: Fingerprint, parts: Mapping[str, float]) -> Blame
     hypotheses = _weighed(build, white @ slopes.T, ln_f, white @ change)
     if not hypotheses:
         return Blamed(why="no part of the circuit moves what was measured")
-    return _shared(build, hypotheses, white @ slopes.T, ln_f, found, middle)
+    return _shared(build, hypotheses, ln_f, found, middle)
 
 
 @dataclass(frozen=True, eq=False)
@@ -256,11 +263,12 @@ def _secant(
 
 def _weighed(build: Build, columns: Array, ln_f: Array, seen: Array) -> list[_Hypothesis]:
     """Every part and pair with its log odds; columns: whitened fingerprints, shape (names, parts)."""
-    weights = np.array(build.weights) / sum(build.weights)
+    weights = np.array([w * MOVES.get(n, 1.0) for n, w in zip(build.names, build.weights, strict=True)])
+    weights = weights / weights.sum()
     with np.errstate(divide="ignore"):
         scale = np.where(np.abs(ln_f) > 1e-9, EFFECT / np.abs(ln_f), 0.0)
     log = np.array(build.coordinates) == "log"
-    scale = np.where(log, np.minimum(scale, MOST), scale)
+    scale = np.minimum(scale, np.where(log, MOST, np.array(build.sizes)))
     live = [j for j in range(columns.shape[1]) if scale[j] > 0 and weights[j] > 0 and np.any(columns[:, j])]
     found = [_hypothesis((j,), columns, scale, seen, math.log(weights[j])) for j in live]
     best = sorted(found, key=lambda h: -h.log_odds)[:12]
@@ -288,12 +296,7 @@ def _cosine(a: Array, b: Array) -> float:
 
 
 def _shared(
-    build: Build,
-    hypotheses: list[_Hypothesis],
-    columns: Array,
-    ln_f: Array,
-    found: Fingerprint,
-    middle: Array,
+    build: Build, hypotheses: list[_Hypothesis], ln_f: Array, found: Fingerprint, middle: Array
 ) -> Blamed:
     """Shares averaged over the hypotheses."""
     odds = np.array([h.log_odds for h in hypotheses])
@@ -308,13 +311,15 @@ def _shared(
             square[j] += p * (share**2 + variance * (ln_f[j] / found.frequency) ** 2)
             moved[j] += p * amplitude
     live = [j for j in np.argsort(-np.abs(mean)) if abs(mean[j]) >= SHOWN]
+    # Parts that would each do alone: no capture of this run tells one from the other.
+    rivals = {
+        h.parts[0] for p, h in zip(probability, hypotheses, strict=True) if len(h.parts) == 1 and p > LIVE
+    }
     causes = []
     for j in live:
         chance = float(sum(p for p, h in zip(probability, hypotheses, strict=True) if j in h.parts))
         change, unit = _own_change(build, middle, j, moved[j] / chance)
-        either = tuple(
-            build.names[k] for k in live if k != j and _cosine(columns[:, j], columns[:, k]) >= ALIKE
-        )
+        either = tuple(build.names[k] for k in live if k != j and {j, k} <= rivals)
         u = math.sqrt(max(square[j] - mean[j] ** 2, 0.0))
         causes.append(Cause(build.names[j], mean[j], u, mean[j] * found.frequency, change, unit, either))
     return Blamed(tuple(causes), 1 - float(sum(c.share for c in causes)))

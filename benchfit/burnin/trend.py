@@ -12,12 +12,13 @@ from typing import Any
 import numpy as np
 
 from benchfit.burnin import causes, drift
-from benchfit.burnin.alarms import Limit, Raised, Watch, parse_limit
+from benchfit.burnin.alarms import Limit, parse_limit
 from benchfit.burnin.blocks import Array, Blocks, block, edges
 from benchfit.burnin.contents import Alarm, Series
 from benchfit.burnin.leaving import leaving
 from benchfit.burnin.reader import LogReader
-from benchfit.burnin.result import AlarmSeen, Drawn, GapSeen, QuantityTrend, Trend, UnitTrend
+from benchfit.burnin.reduced import decimated, replayed
+from benchfit.burnin.result import AlarmSeen, Drawn, GapSeen, Leaving, QuantityTrend, Trend, UnitTrend
 from benchfit.burnin.siblings import departures
 from benchfit.burnin.stability import overlapping_allan
 from benchfit.burnin.timeline import stretches, timeline
@@ -26,7 +27,6 @@ from benchfit.errors import BenchfitError, UsageError
 BuildOf = Callable[[str, Sequence[str]], causes.Build]
 """(build sheet as text, nodes that were probed) → the build's forward model."""
 COMPARED = ("frequency", "duty", "upper", "lower", "high", "low")
-_DRAWN = 1200
 
 
 def trend(
@@ -79,8 +79,8 @@ def trend(
             time = timeline(series.session, series.acquired, series.steady)
             bounds = _limits(specs, series)
             if limits:
-                alarms += _alarms_of(series, bounds)
-            units.append(_unit(series, time, bounds, model))
+                alarms += replayed(series, bounds)
+            units.append(unit_trend(series, time, bounds, model))
             if len(chosen) > 2:
                 common |= _for_comparison(name, series)
             errors.update(_errors(log, series))
@@ -101,9 +101,21 @@ def trend(
 # --- one unit -------------------------------------------------------------------------------------
 
 
-def _unit(
+def unit_trend(
     series: Series, time: Array, bounds: Mapping[str, Limit], model: causes.Build | str | None
 ) -> UnitTrend:
+    """What one unit's records say.
+
+    Parameters
+    ----------
+    series : Series
+    time : ndarray, shape (n,)
+        Seconds since the run's start, of every record.
+    bounds : mapping of Limit
+        By quantity.
+    model : Build, str or None
+        The build's forward model, or why there is none.
+    """
     good = series.status == 0
     order = np.argsort(time, kind="stable")
     is_sorted = bool(np.all(order == np.arange(order.size)))
@@ -128,7 +140,7 @@ def _unit(
         one, law = _quantity(series, i, values, (first, last), bases, limit)
         found[name] = one
         if name == "frequency" or one.is_drifting or limit is not None:
-            drawn[name] = _draw(t, values, law)
+            drawn[name] = decimated(t, values, law, inverted=name == "frequency")
     span = float(t[-1]) if t.size else 0.0
     records, failures = int(series.seq.size), int(np.count_nonzero(~good))
     unit = UnitTrend(series.unit, records, failures, span, found, drawn=drawn, limits=within)
@@ -186,13 +198,23 @@ def _quantity(
     if np.ptp(blocks.mean) <= 1e-14 * np.max(np.abs(blocks.mean)):
         still = replace(plain, law="none", probability=1.0, drift=0.0, u_drift=0.0, change=0.0, u_change=0.0)
         return replace(still, drift_now=0.0, scatter=0.0, wander=0.0), None
+    if name == "frequency":
+        return _frequency(plain, blocks, base, bases, systematic, limit)
     found = drift.analyse(base, blocks.mean)
     bases.drifts[name] = found
+    leaves = None if limit is None else leaving(base, blocks.mean, found, *limit)
+    return _judged(plain, found, systematic, leaves), found
+
+
+def _judged(
+    plain: QuantityTrend, found: drift.Drift, systematic: float, leaves: Leaving | None
+) -> QuantityTrend:
+    """The plain facts with the drift that was found."""
     ranked = sorted(((p, law) for law, p in found.probability.items() if law != found.law), reverse=True)
     has_parameter = found.law in ("settling", "logarithmic", "step")
     return replace(
         plain,
-        u=math.hypot(systematic, found.sigma / math.sqrt(count)),
+        u=math.hypot(systematic, found.sigma / math.sqrt(plain.records)),
         law=found.law,
         probability=found.probability[found.law],
         runner_up=(ranked[0][1], ranked[0][0]),
@@ -205,8 +227,45 @@ def _quantity(
         u_parameter=found.u_parameter if has_parameter else math.nan,
         scatter=found.sigma,
         wander=found.walk,
-        leaving=None if limit is None else leaving(base, blocks.mean, found, *limit),
-    ), found
+        leaving=leaves,
+    )
+
+
+def _frequency(
+    plain: QuantityTrend,
+    blocks: Blocks,
+    base: drift.Basis,
+    bases: _Bases,
+    systematic: float,
+    limit: tuple[float, float] | None,
+) -> tuple[QuantityTrend, drift.Drift]:
+    """The frequency's drift, by the law of the period's: parts set times, and the laws are the parts'."""
+    period = 1 / blocks.mean
+    found = drift.analyse(base, period)
+    bases.drifts["period of frequency"] = found
+    leaves = None
+    if limit is not None and limit[0] > 0:
+        leaves = leaving(base, period, found, 1 / limit[1], 1 / limit[0])
+        leaves = replace(
+            leaves, low=limit[0], high=limit[1], limit=None if leaves.limit is None else 1 / leaves.limit
+        )
+    f = plain.mean
+    at = {"none": f, "step": f}.get(found.law) or 1 / float(found.curve(np.array([base.span]))[0])
+    change = -found.change * f**2
+    if found.law != "none":
+        start = float(found.curve(np.array([0.0]))[0])
+        change = 1 / (start + found.change) - 1 / start
+    turned = replace(
+        found,
+        change=change,
+        u_change=found.u_change * f**2,
+        rate=-found.rate * f**2 if found.law in ("none", "step") else change / base.span,
+        u_rate=found.u_rate * f**2,
+        rate_now=-found.rate_now * at**2,
+        sigma=found.sigma * f**2,
+        walk=found.walk * f**2,
+    )
+    return _judged(plain, turned, systematic, leaves), found
 
 
 def _or_zero(x: float) -> float:
@@ -261,13 +320,13 @@ def _with_causes(unit: UnitTrend, bases: _Bases, model: causes.Build | str | Non
     if base is None or not listed:
         return replace(unit, why_no_cause="too little was measured together with the frequency")
     y = np.stack([bases.means[n].mean for n in listed])
-    print_ = causes.fingerprint(base, listed, y, own.mean, bases.drifts["frequency"])
+    seen = causes.fingerprint(base, listed, y, 1 / own.mean, bases.drifts["period of frequency"])
     parts = {
         n: q.mean
         for n, q in unit.quantities.items()
         if q.kind == "part" and q.records > 0.5 * frequency.records
     }
-    blamed = causes.blame(model, print_, parts)
+    blamed = causes.blame(model, seen, parts)
     return replace(unit, causes=blamed.causes, unexplained=blamed.unexplained, why_no_cause=blamed.why)
 
 
@@ -284,23 +343,6 @@ def _limits(specs: Sequence[str], series: Series) -> dict[str, Limit]:
     if not units:
         return {}
     return {limit.quantity: limit for limit in (parse_limit(spec, units) for spec in specs)}
-
-
-def _alarms_of(series: Series, bounds: Mapping[str, Limit]) -> list[AlarmSeen]:
-    """The alarms that these limits would have raised."""
-    found: list[AlarmSeen] = []
-    for name, limit in bounds.items():
-        watch = Watch(limit)
-        values = np.where(series.status == 0, series.row(name), np.nan)
-        noise = float(series.noise[series.names.index(name)])
-        for i, value in enumerate(values.tolist()):
-            event = watch.step(value, noise)
-            if isinstance(event, Raised):
-                raised = (int(series.seq[i]), float(series.acquired[i]), series.unit, name, value)
-                found.append(AlarmSeen(*raised, event.limit, event.text, None))
-            elif event is not None:
-                found[-1] = replace(found[-1], cleared=int(series.seq[i]))
-    return found
 
 
 def _seen(alarm: Alarm) -> AlarmSeen:
@@ -342,17 +384,3 @@ def _errors(log: LogReader, series: Series) -> Counter[str]:
         for record in log.records(int(seq), int(seq)):
             found[str(record["error"].get("says", ""))] += 1
     return found
-
-
-def _draw(t: Array, values: Array, law: drift.Drift | None) -> Drawn:
-    """Few points for drawing: each block's mean, smallest and largest."""
-    known = np.isfinite(values)
-    t, values = t[known], values[known]
-    starts = np.unique(np.linspace(0, t.size, min(t.size, _DRAWN) + 1).astype(int)[:-1])
-    count = np.diff(np.append(starts, t.size))
-    when = np.add.reduceat(t, starts) / count
-    curve = np.full(when.size, np.nan) if law is None else law.curve(when)
-    return Drawn(
-        when / 3600, np.add.reduceat(values, starts) / count, np.minimum.reduceat(values, starts),
-        np.maximum.reduceat(values, starts), curve,
-    )  # fmt: skip

@@ -93,9 +93,8 @@ def run(args: argparse.Namespace) -> int:
             log.bounds({limit.quantity: limit.text for limit in plan.limits})
         _resumed(args, log)
         why = _measure(args, plan, log, sheet, sources)
-    except (KeyboardInterrupt, BrokenPipeError):
+    except KeyboardInterrupt:
         why = "stopped"
-        raise
     finally:
         log.close(why)
     _closing(args, log, plan, why)
@@ -124,13 +123,23 @@ def _sources(args: argparse.Namespace) -> dict[str, str]:
 
 def _sheet(args: argparse.Namespace) -> Sheet | None:
     """The build sheet; --channel stands in for its [channels]."""
+    from benchfit.sheet import Sheet
+
+    given: dict[str, str] = {}
     for entry in args.channel:
         node, equals, channel = (word.strip() for word in entry.partition("="))
         if not (node and equals and channel):
             raise UsageError(f"--channel {entry}: write it as NODE=CHANNEL, for instance capacitor=CH1")
-        if args.build is not None or args.set:
-            args.set = [*args.set, f"channels.{node}={channel}"]
-    return options.sheet_of(args)
+        given[node] = channel
+    sheet = options.sheet_of(args)
+    if not given:
+        return sheet
+    overrides = list(args.set)
+    for node, channel in given.items():
+        has_more = sheet is not None and node in sheet.channels and sheet.channels[node].coupling != "dc"
+        overrides.append(f"channels.{node}{'.name' if has_more else ''}={channel}")
+    args.set = overrides
+    return Sheet.load(args.build, overrides)
 
 
 def _plan(args: argparse.Namespace, sheet: Sheet | None, sources: Mapping[str, str]) -> Plan:
@@ -190,7 +199,7 @@ def _measure(
 
     opened = {name: _source(args, name, source, log, sheet) for name, source in sources.items()}
     stop = threading.Event()
-    with _ended_by_signals(stop), _Output(args, plan, log) as output:
+    with _ended_by_signals(stop), _Output(args, plan, log, stop) as output:
         burnin = Burnin(plan, opened, log, explain, output.take, output.say, _changed(args, sheet), stop)
         try:
             return burnin.run()
@@ -207,7 +216,7 @@ def _source(args: argparse.Namespace, unit: str, source: str, log: LogWriter, sh
 
         dialect = Dialect.load(args.dialect) if args.dialect is not None else SCPI_1999
         return InstrumentSource(
-            source, Session(source, _channels(args, sheet), dialect=dialect, library=args.visa_library)
+            source, Session(source, _channels(sheet), dialect=dialect, library=args.visa_library)
         )
     from benchfit.capture import read
 
@@ -217,10 +226,9 @@ def _source(args: argparse.Namespace, unit: str, source: str, log: LogWriter, sh
     )
 
 
-def _channels(args: argparse.Namespace, sheet: Sheet | None) -> list[str]:
+def _channels(sheet: Sheet | None) -> list[str]:
     """The instrument's channels to read."""
-    named = [entry.partition("=")[2].strip() for entry in args.channel]
-    named = named or [choice.name for choice in (sheet.channels if sheet is not None else {}).values()]
+    named = [choice.name for choice in (sheet.channels if sheet is not None else {}).values()]
     return list(dict.fromkeys(named)) or ["CH1"]
 
 
@@ -286,8 +294,8 @@ def _ended_by_signals(stop: threading.Event) -> Iterator[None]:
 class _Output:
     """Where the records go once they are on the disk: lines of text or JSON, progress on a terminal."""
 
-    def __init__(self, args: argparse.Namespace, plan: Plan, log: LogWriter) -> None:
-        self.args, self.plan = args, plan
+    def __init__(self, args: argparse.Namespace, plan: Plan, log: LogWriter, stop: threading.Event) -> None:
+        self.args, self.plan, self._stop = args, plan, stop
         self._first = {unit: log.first_value(unit, "frequency") for unit in log.units}
         self._json: Any = None
         self._progress: Any = None
@@ -317,7 +325,7 @@ class _Output:
         from benchfit.show.record import dumps
 
         if self.args.json == "-":
-            print(dumps(logged.record), flush=True)
+            self._emit(dumps(logged.record))
         else:
             self._show(logged)
         if self._json is not None:
@@ -339,7 +347,11 @@ class _Output:
         if self._progress is not None:
             self._progress.line(line, logged.done)
         elif not self.args.quiet:
-            print(line, flush=True)
+            self._emit(line)
+
+    def _emit(self, text: str) -> None:
+        if not streams.emit(text):
+            self._stop.set()
 
     def say(self, text: str) -> None:
         """A sentence for people."""

@@ -57,7 +57,7 @@ def run(args: argparse.Namespace) -> int:
     if "-" not in (args.json, args.csv):
         from benchfit.show.trend import render
 
-        print(render(found, width=streams.width(), colour=streams.colour()), flush=True)
+        streams.emit(render(found, width=streams.width(), colour=streams.colour()))
     _write(args, found)
     return 0
 
@@ -74,11 +74,11 @@ def _write(args: argparse.Namespace, found: Trend) -> None:
         from benchfit.show.record import dumps
         from benchfit.show.trend_record import record
 
-        text = f"{dumps(record(found))}\n"
+        text = dumps(record(found))
         if args.json == "-":
-            print(text, end="", flush=True)
+            streams.emit(text)
         else:
-            streams.write(args.json, text)
+            streams.write(args.json, f"{text}\n")
     if args.csv is not None:
         from benchfit.burnin.reader import LogReader
 
@@ -96,7 +96,8 @@ def _table(args: argparse.Namespace, log: LogReader) -> None:
     lines: Iterator[str] = csv_lines(log.quantities(), log.rows(args.unit), has_units=log.units() != [""])
     if args.csv == "-":
         for line in lines:
-            print(line, end="")
+            if not streams.emit(line.removesuffix("\n")):
+                break
         return
     with streams.replacing(args.csv) as scratch, scratch.open("w", encoding="utf-8", newline="\n") as file:
         file.writelines(lines)

@@ -112,12 +112,12 @@ def _finding(page: Page, unit: UnitTrend, started: float) -> None:
 
 def _drifting(q: QuantityTrend, started: float) -> str:
     moved = percent(q.change / abs(q.mean), q.u_change / abs(q.mean), signed=True)
-    law = {
-        "linear": "linear in time",
-        "logarithmic": "logarithmic in time, as class-2 ceramics age",
-        "settling": f"settling with a time constant of {_spoken(q.parameter)}",
-        "step": f"a step at {_utc(started + q.parameter)}",
-    }[q.law or "linear"]
+    if q.law == "settling":
+        law = f"settling with a time constant of {_spoken(q.parameter)}"
+    elif q.law == "step":
+        law = f"a step at {_utc(started + q.parameter)}"
+    else:
+        law = "logarithmic in time, as class-2 ceramics age" if q.law == "logarithmic" else "linear in time"
     says = f"The frequency changed by {moved} over the run, {law} ({words.chance(q.probability)} sure)"
     if q.probability < 0.9 and q.runner_up[1] > 0.05:
         says += f"; {LAWS[q.runner_up[0]]} is possible too ({words.chance(q.runner_up[1])})"
@@ -167,7 +167,9 @@ def _table(page: Page, unit: UnitTrend, mark: str) -> None:
     rows = [["", "mean", "change over the run", "drift per hour", "law"]]
     styles: list[Style] = ["dim"]
     for q in unit.quantities.values():
-        if q.law is None and q.kind == "part":
+        # Parts that the captures do not show, and parasitics that do not stand out from nothing, move at
+        # random.
+        if q.kind == "part" and (q.law is None or abs(q.mean) <= 2 * q.u):
             continue
         law = LAWS.get(q.law or "", "too few records")
         if q.law is not None:

@@ -143,10 +143,8 @@ def _alarms(ax: Any, trend: Trend, unit: UnitTrend, factor: float, time: Any, ho
 
 def _moving(ax: Any, unit: UnitTrend) -> None:
     """What drifts besides the frequency, relative to its start."""
-    moving = [
-        q for q in unit.quantities.values()
-        if q.is_drifting and q.name not in ("frequency", "period") and q.mean and q.name in unit.drawn
-    ]  # fmt: skip
+    moving = [q for q in unit.quantities.values() if q.is_drifting and q.name in unit.drawn]
+    moving = [q for q in moving if q.name not in ("frequency", "period") and abs(q.mean) > 2 * q.u]
     moving.sort(key=lambda q: -abs(q.change / q.mean))
     if not moving:
         nothing(ax, "nothing else drifts")
