@@ -38,8 +38,8 @@ PAIR = 0.02
 ALIKE = 0.999
 """Cosine of two fingerprints from which on they are not tried as a pair."""
 MOVES = {"delay": 0.02, "slew": 0.02, "C_stray": 0.02, "C_slope": 0.02, "ESR": 0.3, "I_leak": 0.5}
-"""How readily a parasitic drifts in a burn-in, against how often it is there at all (judgement: a leak grows or
-heals, an electrolytic dries out; a chip's speed and a board's layout stay what they are)."""
+"""How readily a parasitic drifts in a burn-in, against how often it is there at all (judgement: a leak grows
+or heals, an electrolytic dries out; a chip's speed and a board's layout stay what they are)."""
 SHOWN = 0.02
 """Smallest share that is listed."""
 _INDEPENDENT = (
@@ -76,12 +76,14 @@ class Build(Protocol):
 
 @dataclass(frozen=True, eq=False)
 class Fingerprint:
-    """Changes of measured quantities over the run, with their covariance; ``frequency`` is Δ ln f."""
+    """Changes over the run with their covariance: of voltages in V, of everything else as Δ ln.
+
+    ``frequency`` is Δ ln f, ``swing`` (V) the size that voltages are of.
+    """
 
     names: tuple[str, ...]
     change: Array
     covariance: Array
-    level: Array
     frequency: float
     swing: float
 
@@ -135,12 +137,17 @@ def fingerprint(base: Basis, names: Sequence[str], y: Array, period: Array, foun
     reach = float(ends[1] - ends[0])
     change = solution[1] * reach
     covariance = spread * inverse[1, 1] * reach**2
-    start = level[-1] + solution[0, -1] + solution[1, -1] * float(ends[0])
-    moved = -math.log((start + change[-1]) / start)
+    start = level + solution[0] + solution[1] * float(ends[0])
+    middle = start + 0.5 * change
+    is_log = np.array([not _is_voltage(n) for n in (*names, "period")]) & (start > 0) & (start + change > 0)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        change = np.where(is_log, np.log((start + change) / start), change)
+    size = np.where(is_log, middle, 1.0)
+    covariance = covariance / np.outer(size, size)
     by_name = dict(zip(names, level, strict=False))
     swing = abs(by_name.get("upper", 0.0) - by_name.get("lower", 0.0))
     swing = swing or abs(by_name.get("high", 1.0) - by_name.get("low", 0.0))
-    return Fingerprint(tuple(names), change[:-1], covariance[:-1, :-1], level[:-1], moved, swing)
+    return Fingerprint(tuple(names), change[:-1], covariance[:-1, :-1], -float(change[-1]), swing)
 
 
 def blame(build: Build, found: Fingerprint, parts: Mapping[str, float]) -> Blamed:
@@ -163,7 +170,7 @@ def blame(build: Build, found: Fingerprint, parts: Mapping[str, float]) -> Blame
     names = [found.names[i] for i in use]
     change = found.change[use]
     white = _whitener(_with_floor(found, use))
-    slopes, ln_f = _slopes(build, middle, names, here)
+    slopes, ln_f = _slopes(build, middle, names)
     slopes, ln_f = _secant(build, middle, names, slopes, ln_f, found.frequency)
     hypotheses = _weighed(build, white @ slopes.T, ln_f, white @ change)
     if not hypotheses:
@@ -181,12 +188,7 @@ class _Hypothesis:
 
 def _with_floor(found: Fingerprint, use: list[int]) -> Array:
     """The covariance, widened by what a closed form leaves out of a real circuit's change."""
-    scale = np.array(
-        [
-            found.swing if _is_voltage(found.names[i]) else abs(found.level[i])
-            for i in use
-        ]
-    )  # fmt: skip
+    scale = np.array([found.swing if _is_voltage(found.names[i]) else 1.0 for i in use])
     floor = FLOOR * (np.abs(found.change[use]) + abs(found.frequency) * scale)
     return found.covariance[np.ix_(use, use)] + np.diag(floor**2)
 
@@ -203,21 +205,18 @@ def _whitener(covariance: Array) -> Array:
     return np.asarray((vectors / np.sqrt(power)).T / size)
 
 
-def _slopes(
-    build: Build, middle: Array, names: Sequence[str], here: Mapping[str, float]
-) -> tuple[Array, Array]:
-    """d(measured)/d(coordinate), shape (parts, names), and d(ln f)/d(coordinate)."""
+def _slopes(build: Build, middle: Array, names: Sequence[str]) -> tuple[Array, Array]:
+    """d(fingerprint)/d(coordinate), shape (parts, names), and d(ln f)/d(coordinate)."""
     step = np.array([_step(c, x) for c, x in zip(build.coordinates, middle, strict=False)])
     # A parasitic has no size of its own: its step is grown until it moves the frequency.
     for _ in range(40):
-        moved = _moved(build, middle, step, ("frequency",))[0] / here["frequency"]
+        moved = _moved(build, middle, step, ("frequency",))[0]
         small = (np.abs(moved) < 1e-5) & (np.abs(step) < 1e12) & np.isfinite(moved)
         if not small.any():
             break
         step = np.where(small & (np.array(build.coordinates) != "log"), step * 10, step)
-    rows = _moved(build, middle, step, (*names, "frequency"))
-    slopes = np.nan_to_num(rows[:-1].T / step[:, None])
-    return slopes, np.nan_to_num(rows[-1] / step / here["frequency"])
+    rows = np.nan_to_num(_moved(build, middle, step, (*names, "frequency")) / step)
+    return rows[:-1].T, rows[-1]
 
 
 def _step(coordinate: str, x: float) -> float:
@@ -233,14 +232,19 @@ def _moved(build: Build, middle: Array, step: Array, names: Sequence[str]) -> Ar
     index = np.arange(count)
     up[index, index] += step / 2
     down[index, index] -= step / 2
-    here = build.measured(middle[None, :])
-    above, below = build.measured(up), build.measured(down)
+    here, above, below = (_scaled(build.measured(x), names) for x in (middle[None, :], up, down))
     rows = []
     for name in names:
         both = above[name] - below[name]
         one = 2 * (above[name] - here[name])
         rows.append(np.where(np.isfinite(both), both, np.nan_to_num(one)))
     return np.array(rows)
+
+
+def _scaled(measured: Mapping[str, Array], names: Sequence[str]) -> dict[str, Array]:
+    """Voltages as they are, the logarithm of everything else."""
+    with np.errstate(invalid="ignore", divide="ignore"):
+        return {n: measured[n] if _is_voltage(n) else np.log(measured[n]) for n in names}
 
 
 def _secant(
@@ -254,10 +258,7 @@ def _secant(
     step = np.where(sensible, step, 1.0)
     rows = _moved(build, middle, step, (*names, "frequency"))
     fine = sensible & np.isfinite(rows).all(axis=0)
-    level = float(build.measured(middle[None, :])["frequency"][0])
-    with np.errstate(divide="ignore", invalid="ignore"):
-        new = rows[:-1].T / step[:, None]
-        ratio = rows[-1] / level / step
+    new, ratio = rows[:-1].T / step[:, None], rows[-1] / step
     return np.where(fine[:, None], new, slopes), np.where(fine, ratio, ln_f)
 
 
