@@ -30,6 +30,9 @@ from tools.bench.faults import Build, draw  # noqa: E402
 from tools.bench.identify import judge  # noqa: E402
 from tools.bench.score import Outcome, report, score  # noqa: E402
 
+# Raise it whenever the draws or the judgement change: what is in the cache is of no use then.
+JUDGEMENT = 2
+
 Task = tuple[str, int, str, bool, str | None, str | None]
 
 
@@ -68,6 +71,7 @@ def judged(build: Build, name: str, cache: str | None) -> Mapping[str, Any] | No
         return known
     found = judge(build)
     answer = {
+        "excess": found.excess,
         "truth": found.truth,
         "u": dict(found.u),
         "posterior": [[list(k), v] for k, v in list(found.posterior.items())[:6]],
@@ -83,7 +87,7 @@ def one(task: Task) -> Outcome:
     circuit, seed, mix, rough, kind, cache = task
     build = draw(circuit, seed, mix=mix, rough=rough, kind=kind)
     record, spent, error = explained(build)
-    name = f"{circuit}-{seed}-{mix}-{'rough' if rough else 'plain'}-{kind or 'any'}"
+    name = f"{JUDGEMENT}-{circuit}-{seed}-{mix}-{'rough' if rough else 'plain'}-{kind or 'any'}"
     return score(build, record, spent, error, judged(build, name, cache))
 
 

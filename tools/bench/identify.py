@@ -52,8 +52,12 @@ class Hypothesis:
 
 @dataclass(frozen=True)
 class Judgement:
-    """Posterior of every cause under equal odds, and each part's standard uncertainty under the true one."""
+    """Posterior of every cause under equal odds, and each part's standard uncertainty under the true one.
 
+    ``excess``: by how much the best single cause misfits (chi-square) more than the true parts do.
+    """
+
+    excess: float
     posterior: Mapping[tuple[str, ...], float]
     truth: float
     u: Mapping[str, float]
@@ -73,11 +77,23 @@ class Judge:
         self.n = len(self.specs)
         self.nuisances = 1 + 2 * len(build.nodes)
         self._prior_scope()
+        self.read = self._readings()
         truth = self.observe({k: np.array([v]) for k, v in build.true.items()})
         self.sigma = self._noise(truth[:, 0])
         self.keep = np.isfinite(self.sigma) & np.isfinite(truth[:, 0])
         self.data = truth[self.keep, 0]
         self.sigma = self.sigma[self.keep]
+
+    def _readings(self) -> list[tuple[int, float, float]]:
+        """Meter readings as (coordinate, true value there, u): the mean of what a meter would show."""
+        index = {s.name: i for i, s in enumerate(self.specs)}
+        found = []
+        for name, (_, limit) in self.build.readings.items():
+            if name in index:
+                true, log = self.build.true[name], self.specs[index[name]].log
+                u = 0.01 * limit / np.sqrt(3) * (1.0 if log else abs(true))
+                found.append((index[name], float(np.log(true)) if log else true, u))
+        return found
 
     def _prior_scope(self) -> None:
         b = self.build
@@ -252,7 +268,9 @@ class Judge:
     def _model(self, x: Array, hypothesis: list[Hypothesis]) -> Array:
         """Whitened residuals of the data (m, N)."""
         seen = self.shown(self.observe(self._parts(x, hypothesis)), x[:, self.n + 1 :])[self.keep]
-        return (seen - self.data[:, None]) / self.sigma[:, None]
+        rows = [(seen - self.data[:, None]) / self.sigma[:, None]]
+        rows += [((x[:, i] - value) / u)[None] for i, value, u in self.read]
+        return np.concatenate(rows)
 
     def _centre(self, h: Hypothesis) -> Array:
         x = np.concatenate([self.mid, [0.0], np.zeros(self.nuisances)])
@@ -315,7 +333,7 @@ class Judge:
         x = self._scan(hypothesis, x)
         true, sort = self._truth()
         for k, h in enumerate(hypothesis):
-            if h.causes == self.build.fault.causes and h.sign == sort.sign:
+            if h.causes == self.build.fault.causes and (not h.parasitic or h.sign == sort.sign):
                 x[k] = true
         best = np.full(len(hypothesis), np.inf)
         kept, curve = x.copy(), np.tile(np.eye(x.shape[1]), (len(hypothesis), 1, 1))
@@ -355,9 +373,10 @@ class Judge:
                 move = _follow(plain, self.build.design.nominal(), true, s)
                 value = value / move if s.log else value - move
             x[i] = np.log(value) if s.log else value
-        cause = self.build.fault.causes[0] if len(self.build.fault.causes) == 1 else ""
-        if cause not in self.build.design.parasitics:
+        causes = [c for c in self.build.fault.causes if c in self.build.design.parasitics]
+        if not causes:
             return x, Hypothesis(())
+        cause = causes[0]
         x[self.n] = np.log(abs(true[cause]))
         return x, Hypothesis((), parasitic=cause, sign=float(np.sign(true[cause])))
 
@@ -435,7 +454,14 @@ class Judge:
         k = next((i for i, h in enumerate(hypothesis) if h.causes == truth), 0)
         sd = np.sqrt(np.abs(np.diag(np.linalg.pinv(curve[k])))) * self._scale()
         u = {s.name: float(sd[i]) for i, s in enumerate(self.specs)}
-        return Judgement(posterior, posterior.get(truth, 0.0), u, fits)
+        return Judgement(min(fits.values()) - self._penalty(), posterior, posterior.get(truth, 0.0), u, fits)
+
+    def _penalty(self) -> float:
+        """Chi-square of the true parts against their tolerances, what is off left out."""
+        x, _ = self._truth()
+        z = ((x - self._centre(Hypothesis(()))) / self._scale())[: self.n]
+        off = {i for i, s in enumerate(self.specs) if s.name in self.build.fault.causes}
+        return float(sum(z[i] ** 2 for i in range(self.n) if i not in off))
 
 
 def _follow(

@@ -12,6 +12,8 @@ import numpy as np
 from tools.bench.faults import Build
 
 SURE = 0.9
+# Two faults are needed where the best single cause misfits by this much more (chi-square).
+PAIRED = 14.0
 BINS = (0.0, 0.05, 0.2, 0.5, 0.8, 0.95, 1.0001)
 
 
@@ -37,6 +39,7 @@ class Outcome:
     settled: bool | None
     truth: float | None
     most: float | None
+    excess: float | None
     parts: tuple[tuple[str, str, float, float | None], ...]
     probe: float | None
     share: tuple[float, float] | None
@@ -72,7 +75,7 @@ class Outcome:
             found.append("first suspect wrong" if self.in_three else "not among the first three")
         if self.kind == "single" and self.most is not None and self.most < SURE and self.settled:
             found.append("settled where nothing decides")
-        if self.kind == "two" and self.oscillates and not self.in_three:
+        if self.kind == "two" and self.excess is not None and self.excess >= PAIRED and not self.in_three:
             found.append("two faults not named")
         if self.oscillates != self.said_oscillates:
             found.append("oscillation misread")
@@ -112,6 +115,7 @@ def score(
         settled=None if record is None else record.get("settled"),
         truth=None if judged is None else float(judged["truth"]),
         most=None if judged is None else max(float(v) for _, v in judged["posterior"]),
+        excess=None if judged is None else float(judged["excess"]),
         parts=_parts(build, record, judged),
         probe=_probe(build, record),
         share=_share(build, record),
@@ -170,6 +174,7 @@ def _judged_lines(outcomes: Sequence[Outcome]) -> list[str]:
     wide = [o for o in single if o.most is not None and o.most < 0.7]
     healthy = [o for o in outcomes if o.kind == "healthy" and o.oscillates]
     two = [o for o in outcomes if o.kind == "two" and o.oscillates]
+    needed = [o for o in two if o.excess is not None and o.excess >= PAIRED]
     still = [o for o in outcomes if not o.oscillates]
     return [
         f"single faults that can be identified   {len(clear)} of {len(single)}",
@@ -182,8 +187,10 @@ def _judged_lines(outcomes: Sequence[Outcome]) -> list[str]:
         f"  truth within the first three         {_rate([o.in_three for o in open_])}",
         f"healthy builds accused                 {_rate([not o.first_right for o in healthy])}",
         f"settled on a wrong answer, of all      {_rate([o.settled_wrong for o in outcomes])}",
-        f"two faults: both in one of three       {_rate([o.in_three for o in two])}",
-        f"  first right                          {_rate([o.first_right for o in two])}",
+        f"two faults that no single cause explains {len(needed)} of {len(two)}",
+        f"  both named in one of three           {_rate([o.in_three for o in needed])}",
+        f"  first right                          {_rate([o.first_right for o in needed])}",
+        f"two faults, all: both in one of three  {_rate([o.in_three for o in two])}",
         f"does not oscillate: seen               {_rate([o.said_oscillates is False for o in still])}",
         f"  truth within the first three         {_rate([o.in_three for o in still])}",
         f"no answer at all                       {_rate([bool(o.error) for o in outcomes])}",
