@@ -17,10 +17,10 @@ LIST_LIMIT: Final = 1 << 28
 # pyvisa-py looks at its own clock only while nothing arrives: an answer that trickles in would hold a long
 # read for ever. Small reads, each with a short time-out, leave the clock to us; they grow while data flow.
 PART: Final = 4096
-LARGEST_PART: Final = 1 << 16
+LARGEST_PART: Final = 1 << 15
 FIRST_PART: Final = 128
-FIRST_SLICE: Final = 0.02
-NEXT_SLICE: Final = 0.002
+HEADER_LIMIT: Final = 32
+SLICE: Final = 0.004
 QUIET: Final = 0.15
 
 traffic = logging.getLogger("benchfit.instrument.traffic")
@@ -141,7 +141,7 @@ class Link:
         found = bytearray()
         begun = heard = time.monotonic()
         while len(found) < TEXT_LIMIT and time.monotonic() - heard < (QUIET if found else wait):
-            data, _ = self._wire.some(PART, self._slice(wait, bool(found)), stop=False, command=command)
+            data, _ = self._wire.some(PART, self._slice(wait), stop=False, command=command)
             if data:
                 found += data
                 heard = time.monotonic()
@@ -161,7 +161,7 @@ class Link:
             now = time.monotonic()
             if now >= deadline:
                 raise faults.timed_out(self, command, timeout, bytes(found))
-            size, wait = PART if found else FIRST_PART, self._slice(deadline - now, bool(found))
+            size, wait = PART if found else FIRST_PART, self._slice(deadline - now)
             data, ended = self._wire.some(size, wait, stop=stop, command=command)
             if ended:
                 return bytes(found + data)
@@ -173,25 +173,33 @@ class Link:
             if len(found) > limit:
                 self._refuse("unreadable", command, f"answered more than {limit:,} bytes without a line end")
 
-    def _slice(self, left: float, begun: bool) -> float:
+    def _slice(self, left: float) -> float:
         """How long one read may wait (s): a little on a socket, else all the time that is left."""
-        return min(left, NEXT_SLICE if begun else FIRST_SLICE) if self.is_socket else left
+        return min(left, SLICE) if self.is_socket else left
 
     # -- blocks ---------------------------------------------------------------------------------------------
 
     def _from_stream(self, command: str, expected: int | None, text: bool) -> bytes:
-        start = self._exactly(1 if text else 2, command).lstrip()
-        if text and start != b"#":
-            return start + self._line(command, self.timeout, LIST_LIMIT)
-        while missing := missing_header_bytes(start):
-            start += self._exactly(missing, command)
-        count = self._count(parse_header(start), expected, command)
+        end = len(self.read_termination)
+        # Where the length is known beforehand, one read can bring the whole message, and never more.
+        least = 1 if text else 2
+        guess = least if expected is None else 2 + len(str(expected)) + expected + end
+        found = self._fill(bytearray(), least, command, ask=guess)
+        while found[:1].isspace():
+            del found[:1]
+            self._fill(found, least, command)
+        if text and found != b"#":
+            return bytes(found) + self._line(command, self.timeout, LIST_LIMIT)
+        while missing := missing_header_bytes(bytes(found[:HEADER_LIMIT])):
+            self._fill(found, len(found) + missing, command)
+        header = parse_header(bytes(found[:HEADER_LIMIT]))
+        count = self._count(header, expected, command)
         if count is None:
             return self._until_quiet(command)
         # The line end comes off the wire with the data, or it would answer the next question.
-        found = self._exactly(count + len(self.read_termination), command, of=count)
-        self._expect_line_end(found[count:], command, count)
-        return found[:count]
+        self._fill(found, header.size + count + end, command, block=(header.size, count))
+        self._expect_line_end(bytes(found[header.size + count :]), command, count)
+        return bytes(memoryview(found)[header.size : header.size + count])
 
     def _count(self, header: Header, expected: int | None, command: str) -> int | None:
         """How many bytes follow: from the header, else from the preamble; None where neither says."""
@@ -202,31 +210,33 @@ class Link:
             self._refuse("wrong-length", command, says)
         return header.count
 
-    def _exactly(self, count: int, command: str, of: int = 0) -> bytes:
-        """``count`` bytes, whatever values they have: a data byte may look like a line end."""
-        found = bytearray()
-        part, due = PART, PART
+    def _fill(
+        self, found: bytearray, need: int, command: str, *, ask: int = 0, block: tuple[int, int] | None = None
+    ) -> bytearray:
+        """Add to ``found`` until it has ``need`` bytes, whatever their values: one may look like a line end.
+
+        It may grow to ``ask`` bytes where they are there already. ``block``: size of its header and count.
+        """
+        part, due = PART, len(found) + PART
         deadline = time.monotonic() + self.timeout
-        while len(found) < count:
+        while len(found) < need:
             left = deadline - time.monotonic()
             if left <= 0:
-                if of:
-                    raise faults.short_block(self, command, len(found), of)
+                if block is not None:
+                    raise faults.short_block(self, command, len(found) - block[0], block[1])
                 raise faults.timed_out(self, command, self.timeout, bytes(found))
-            size = min(part, count - len(found))
+            size = min(part, max(need, ask) - len(found))
             try:
-                data, _ = self._wire.some(
-                    size, self._slice(left, begun=bool(found or of)), stop=False, command=command
-                )
+                data, _ = self._wire.some(size, self._slice(left), stop=False, command=command)
             except InstrumentError as error:
-                if of and error.facts.get("kind") == "disconnected":
-                    raise faults.broken_off(self, command, len(found), of) from error
+                if block is not None and error.facts.get("kind") == "disconnected":
+                    raise faults.broken_off(self, command, len(found) - block[0], block[1]) from error
                 raise
             found += data
             part = min(2 * part, LARGEST_PART) if len(data) == size else PART
             if len(found) >= due:
                 due, deadline = len(found) + PART, time.monotonic() + self.timeout
-        return bytes(found)
+        return found
 
     def _expect_line_end(self, rest: bytes, command: str, count: int) -> None:
         """``rest`` came after the block's data: as long as a line end, which it or what follows must be."""
@@ -245,7 +255,7 @@ class Link:
         due, heard = PART, time.monotonic()
         deadline = heard + self.timeout
         while time.monotonic() < deadline:
-            data, _ = self._wire.some(PART, NEXT_SLICE, stop=False, command=command)
+            data, _ = self._wire.some(PART, SLICE, stop=False, command=command)
             if data:
                 found += data
                 heard = time.monotonic()

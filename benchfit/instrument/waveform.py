@@ -120,20 +120,8 @@ def _channel(
     numbers: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, float], name: str
 ) -> Channel:
     overloaded = None
-    if numbers.dtype.itemsize == 1:
-        # A converter of eight bits has few levels: each is converted once.
-        low = -128 if numbers.dtype.kind == "i" else 0
-        index = numbers.view(np.uint8) ^ np.uint8(-low)
-        seen = np.zeros(256, dtype=np.bool_)
-        seen[index] = True
-        levels = np.arange(low, low + 256, dtype=np.float64)
-        volts, step = _volts(levels, dialect, fields)[index], _smallest_difference(levels[seen], 0.0)
-    elif numbers.dtype.kind in "iu":
-        raw = numbers.astype(np.float64)
-        volts, step = (
-            _volts(raw, dialect, fields),
-            _smallest_difference(np.unique(numbers).astype(np.float64), 0.0),
-        )
+    if numbers.dtype.kind in "iu":
+        volts, step = _volts(numbers, dialect, fields), _smallest_code_step(numbers)
     else:
         raw, overloaded = mark_overloads(numbers.astype(np.float64))
         volts = _volts(raw, dialect, fields)
@@ -141,23 +129,37 @@ def _channel(
         # Two floats that stand for one converter level differ by their own rounding alone.
         eps = np.finfo(np.float32 if numbers.dtype.itemsize == 4 else np.float64).eps
         rounding = 4.0 * float(eps) * float(np.max(np.abs(finite), initial=0.0))
-        step = _smallest_difference(np.unique(finite), rounding)
+        step = _smallest_level_step(np.unique(finite), rounding)
     return Channel(name, "V", volts, step * abs(fields.get("y_increment", 1.0)), overloaded)
 
 
-def _volts(raw: NDArray[np.float64], dialect: Dialect, fields: Mapping[str, float]) -> NDArray[np.float64]:
-    step = fields.get("y_increment", 1.0)
-    reference, origin = fields.get("y_reference", 0.0), fields.get("y_origin", 0.0)
+def _volts(raw: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, float]) -> NDArray[np.float64]:
+    origin, reference = fields.get("y_origin", 0.0), fields.get("y_reference", 0.0)
     if dialect.y_origin_unit == "step":
-        return (raw - reference - origin) * step
-    return (raw - reference) * step + origin
+        reference, origin = reference + origin, 0.0
+    # Each pass over a long record counts: those that would change nothing are left out.
+    shifted = np.subtract(raw, reference, dtype=np.float64) if reference else raw
+    volts: NDArray[np.float64] = np.multiply(shifted, fields.get("y_increment", 1.0), dtype=np.float64)
+    if origin:
+        volts += origin
+    return volts
 
 
-def _smallest_difference(levels: NDArray[np.float64], least: float) -> float:
-    """The smallest difference above ``least`` between sorted levels; 0 where there is none.
+def _smallest_code_step(codes: NDArray[np.generic]) -> float:
+    """The smallest step between different integers; 0 where there is only one.
 
-    Differences that are the same but for rounding are averaged.
+    Of a long record every so many samples are looked at, 32,768 at least: they hold every level that counts.
     """
+    codes = codes[:: max(1, codes.size // 32768)]
+    if codes.dtype.itemsize > 1:
+        levels = np.unique(codes).astype(np.int64)
+    else:
+        levels = np.bincount(codes.astype(np.int16) + (128 if codes.dtype.kind == "i" else 0)).nonzero()[0]
+    return float((levels[1:] - levels[:-1]).min()) if levels.size > 1 else 0.0
+
+
+def _smallest_level_step(levels: NDArray[np.float64], least: float) -> float:
+    """The smallest step above ``least`` between sorted levels; those the same but for rounding averaged."""
     steps = np.diff(levels)
     steps = steps[steps > least]
     return float(np.median(steps[steps <= 1.001 * steps.min()])) if steps.size else 0.0
