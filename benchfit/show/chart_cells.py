@@ -83,6 +83,8 @@ def _labels(low: float, high: float, rows: int, unit: str, zero_row: int | None)
 def _number(value: float, span: float, unit: str) -> str:
     decimals = max(0, min(6, 1 - math.floor(math.log10(span)))) if span > 0 else 0
     text = f"{value:.{decimals}f}"
+    if len(text) > _LABEL:
+        text = f"{value:.2g}"
     return text if len(text) + len(unit) + 1 > _LABEL else f"{text} {unit}".rstrip()
 
 
