@@ -152,15 +152,27 @@ def _first(rows: Sequence[Sequence[str]], lines: Sequence[str], numeric: Sequenc
     for start, end in reversed([run for run in runs if run[1] <= longest[0]]):
         between = [line for line in lines[end:first] if line.strip()]
         complete = all(_is_complete(row, numeric, decimal) for row in rows[start:end] if row)
-        spoilt = len(numeric) > 1 or all(_is_mostly_digits(line) for line in between)
+        spoilt = len(numeric) > 1 or all(is_mostly_digits(line) for line in between)
         if len(between) <= 4 and (end - start >= 8 or (complete and spoilt)):
             first = start
         else:
             break
+    first = _with_spoilt_rows(rows, lines, first)
     return _below_header(rows, first, numeric)
 
 
-def _is_mostly_digits(line: str) -> bool:
+def _with_spoilt_rows(rows: Sequence[Sequence[str]], lines: Sequence[str], first: int) -> int:
+    """``first``, or a row or two above it that are rows of the table with a character spoilt."""
+    width = len(rows[first])
+    for _ in range(2):
+        above = next((k for k in range(first - 1, -1, -1) if lines[k].strip()), -1)
+        if above < 0 or len(rows[above]) != width or not all(is_mostly_digits(cell) for cell in rows[above] if cell):
+            break
+        first = above
+    return first
+
+
+def is_mostly_digits(line: str) -> bool:
     """Whether a line is a row of numbers with a character or two spoilt, rather than a name or a setting."""
     bare = "".join(line.split())
     return sum(character in "0123456789.,;eE+-" for character in bare) > 0.7 * len(bare)

@@ -23,12 +23,13 @@ from benchfit.capture.cells import (
     number,
 )
 from benchfit.capture.dialect import Dialect
-from benchfit.capture.page import Page, is_comment
+from benchfit.capture.page import Page, is_comment, is_mostly_digits
 from benchfit.capture.source import Source
 
 # Below this size a file is read in one block anyway, and pandas would not split it over its threads.
 _WHOLE_FILE = 5 << 20
 _FEW_LINES = 64
+_MOST_BREAKS = 10_000
 _LINE_ENDS = re.compile(r"\r\n|\n|\r")
 
 Floats = NDArray[np.float64]
@@ -274,9 +275,9 @@ def _row(work: _Work, line: str, number_of_line: int, row: int) -> list[float] |
     cells = work.dialect.cells(line)
     decimal = work.dialect.decimal
     kinds = [kind(cells[column], decimal) if column < len(cells) else "" for column in work.wanted]
-    if NUMBER not in kinds and OVERLOAD not in kinds:
-        if TEXT in kinds or is_comment(line) or any(cells):
-            return _no_row(work, line, number_of_line, row)
+    if NUMBER not in kinds and OVERLOAD not in kinds and not (TEXT in kinds and is_mostly_digits(line)):
+        if any(cells) and len(work.breaks) < _MOST_BREAKS:
+            work.breaks.append((row, line.strip()))
         return None
     short = "" in kinds
     long = row >= work.wide_rows and any(cells[work.width :])
@@ -294,13 +295,6 @@ def _row(work: _Work, line: str, number_of_line: int, row: int) -> list[float] |
             work.unread += 1
             work.note(number_of_line, line)
     return values
-
-
-def _no_row(work: _Work, line: str, number_of_line: int, row: int) -> list[float] | None:
-    """A line without a number where numbers are due: text between rows, or a row that lost its values."""
-    if len(work.breaks) < 10_000:
-        work.breaks.append((row, line.strip()))
-    return None
 
 
 def _split_last(block: bytes) -> tuple[bytes, bytes]:
@@ -321,7 +315,7 @@ def _is_cut(work: _Work, last: bytes, before: bytes) -> bool:
     cells = work.dialect.cells(last.decode("latin-1"))
     if len(cells) <= max(work.wanted) or kind(cells[max(work.wanted)], decimal) == TEXT:
         return True
-    end = max(k for k, cell in enumerate(cells) if cell)
+    end = max((k for k, cell in enumerate(cells) if cell), default=-1)
     if end < max(work.wanted) and all(
         len(row) > max(work.wanted) and row[max(work.wanted)] for row in earlier
     ):
