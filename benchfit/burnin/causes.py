@@ -207,22 +207,17 @@ def _whitener(covariance: Array) -> Array:
 
 def _slopes(build: Build, middle: Array, names: Sequence[str]) -> tuple[Array, Array]:
     """d(fingerprint)/d(coordinate), shape (parts, names), and d(ln f)/d(coordinate)."""
-    step = np.array([_step(c, x) for c, x in zip(build.coordinates, middle, strict=False)])
-    # A parasitic has no size of its own: its step is grown until it moves the frequency.
-    for _ in range(40):
-        moved = _moved(build, middle, step, ("frequency",))[0]
-        small = (np.abs(moved) < 1e-5) & (np.abs(step) < 1e12) & np.isfinite(moved)
-        if not small.any():
-            break
-        step = np.where(small & (np.array(build.coordinates) != "log"), step * 10, step)
+    facts = zip(build.coordinates, build.sizes, middle, strict=False)
+    step = np.array([_step(coordinate, size, x) for coordinate, size, x in facts])
     rows = np.nan_to_num(_moved(build, middle, step, (*names, "frequency")) / step)
     return rows[:-1].T, rows[-1]
 
 
-def _step(coordinate: str, x: float) -> float:
+def _step(coordinate: str, size: float, x: float) -> float:
+    """A step small enough for a derivative: of ln x, of a part's size, of a level's (V) that may be 0."""
     if coordinate == "log":
         return 1e-3
-    return 1e-3 * abs(x) if x else 1e-15
+    return 1e-3 * (abs(x) or (size if 0 < size < math.inf else 0.1))
 
 
 def _moved(build: Build, middle: Array, step: Array, names: Sequence[str]) -> Array:

@@ -332,6 +332,7 @@ def _connect(path: Path) -> sqlite3.Connection:
     db = sqlite3.connect(path, isolation_level=None, timeout=10)
     db.execute("PRAGMA journal_mode = WAL").fetchone()
     db.execute("PRAGMA synchronous = FULL")
+    db.execute("PRAGMA wal_autocheckpoint = 250")  # pages: 4 MB
     db.execute("PRAGMA fullfsync = 1")  # macOS: a plain fsync does not reach the disk
     db.execute("PRAGMA checkpoint_fullfsync = 1")
     return db

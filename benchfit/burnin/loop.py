@@ -12,7 +12,7 @@ from benchfit.burnin.alarms import Cleared, Limit, Raised, Watch
 from benchfit.burnin.clock import Reading, now, spoken, steady, stepped
 from benchfit.burnin.contents import Entry
 from benchfit.burnin.log import LogWriter
-from benchfit.burnin.packing import Scalar, scalars
+from benchfit.burnin.packing import Scalar, rounded, scalars
 from benchfit.burnin.reader import line
 from benchfit.burnin.schedule import Cadence, next_slot
 from benchfit.burnin.source import Arrival, Source
@@ -215,7 +215,7 @@ class Burnin:
             error = arrival.error or InstrumentError(f"{arrival.path}: no capture")
             return failure(arrival.path, error.status, error.says)
         try:
-            return self.explain(arrival.capture)
+            return rounded(self.explain(arrival.capture))
         except BenchfitError as fault:
             return failure(arrival.path, fault.status, fault.says)
         except Exception as fault:  # a run of days must not end by one capture; its record says what happened

@@ -83,6 +83,19 @@ def plain_json(record: Mapping[str, Any]) -> str:
         return json.dumps(_finite(record), allow_nan=False)
 
 
+def rounded(record: Mapping[str, Any], digits: int = 12) -> dict[str, Any]:
+    """The record with its numbers to 12 significant digits: all that means anything, in less room."""
+
+    def short(x: Any) -> Any:
+        if isinstance(x, float):
+            return float(f"{x:.{digits}g}") if math.isfinite(x) else None
+        if isinstance(x, Mapping):
+            return {k: short(v) for k, v in x.items()}
+        return [short(v) for v in x] if isinstance(x, list | tuple) else x
+
+    return {k: short(v) for k, v in record.items()}
+
+
 def compress(body: str, dictionary: bytes | None) -> bytes:
     """The JSON of a record, deflated (RFC 1950) against the log's dictionary: an earlier record."""
     plain = body.encode()
