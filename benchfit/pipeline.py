@@ -4,7 +4,7 @@ face."""
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from benchfit.capture.model import Capture
@@ -171,9 +171,21 @@ def trimming(sheet: Sheet, part: str, low: float, high: float) -> Trimming:
 
 
 def explain(
-    capture: Capture | None = None, sheet: Sheet | None = None, *, captures: Sequence[Capture] = ()
+    capture: Capture | None = None,
+    sheet: Sheet | None = None,
+    *,
+    captures: Sequence[Capture] = (),
+    as_found: Mapping[str, Any] | Found | None = None,
 ) -> Found:
     """Read the cycle out of one capture (or several of one build, jointly) and explain it.
+
+    Parameters
+    ----------
+    capture, sheet
+    captures : sequence of Capture
+        In place of one capture: several of one build, explained jointly.
+    as_found : Found or mapping
+        What was found, or its record, before the build was changed: says what the change did.
 
     Raises
     ------
@@ -181,6 +193,8 @@ def explain(
         A channel is missing or empty.
     SheetError
         The sheet cannot be used.
+    UsageError
+        ``as_found`` is of another circuit.
     """
     from benchfit import cycle
     from benchfit.explain.explain import explain as explain_constants
@@ -192,10 +206,13 @@ def explain(
     constants = tuple(cycle.measure(c, a) for c, a in zip(every, assigned, strict=True))
     facts = [facts_of(c, a, k) for c, a, k in zip(every, assigned, constants, strict=True)]
     explanation = explain_constants(constants, sheet, facts)
-    from dataclasses import replace
-
     read = tuple(w for c in every for w in c.warnings)
     explanation = replace(explanation, warnings=(*read, *explanation.warnings))
+    if as_found is not None:
+        from benchfit.explain.as_found import compare
+
+        before = as_found.record() if isinstance(as_found, Found) else as_found
+        explanation = replace(explanation, as_found=compare(before, explanation, sheet))
     return Found(explanation, every, constants)
 
 

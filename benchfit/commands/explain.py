@@ -39,6 +39,10 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     options.add_layout(parser)
     options.add_results(parser)
     group = parser.add_argument_group("how")
+    group.add_argument(
+        "--as-found", metavar="FILE",
+        help="record (--json) of the build before a change: says what the change did",
+    )  # fmt: skip
     group.add_argument("--check", action="store_true", help="exit with 1 where the verdict is not pass")
     group.add_argument("--jobs", metavar="N", type=int, help="processes to work on many captures with")
     group.add_argument("--cluster", metavar="ADDRESS", help="dask scheduler to work on many captures with")
@@ -89,7 +93,7 @@ def run(args: argparse.Namespace) -> int:
     from benchfit.commands.work import Task
 
     task = Task(captures=tuple(captures), sheet=sheet, layout=options.layout_of(args),
-                plot=args.plot, report=args.report)  # fmt: skip
+                plot=args.plot, report=args.report, as_found=_as_found(args.as_found))  # fmt: skip
     tasks = [task] if args.joint else [
         replace(task, captures=(paths,), plot=_each(args.plot, number, captures),
                 report=_each(args.report, number, captures))
@@ -127,6 +131,26 @@ def _found(captures: Sequence[list[str]]) -> list[list[str]]:
     return found
 
 
+def _as_found(path: str | None) -> dict[str, Any] | None:
+    """The record of before.
+
+    Raises
+    ------
+    UsageError
+        Where the file cannot be read, or holds no such record.
+    """
+    if path is None:
+        return None
+    from benchfit.show.record import loads
+
+    try:
+        text = Path(path).read_bytes().decode("utf-8-sig", "replace")
+    except OSError as error:
+        says = f"--as-found {path}: cannot be read: {error.strerror or error}"
+        raise UsageError(says, path=path) from None
+    return loads(text, path)
+
+
 def _check_command(word: str) -> None:
     from difflib import get_close_matches
 
@@ -143,6 +167,8 @@ def _check(args: argparse.Namespace, captures: Sequence[Sequence[str]], sheet: S
         raise UsageError(f"the build sheet has [capture.{numbers[-1]}], yet {len(captures)} are given")
     if numbers and not args.joint and len(captures) > 1:
         raise UsageError(f"the build sheet's [capture.{numbers[0]}] counts only with --joint; add it")
+    if args.as_found is not None and len(captures) > 1 and not args.joint:
+        raise UsageError("--as-found is the record of one build; give one capture, or --joint")
     if args.jobs is not None and args.jobs < 1:
         raise UsageError(f"--jobs {args.jobs}: at least one process is needed")
     if sum(paths[0] == "-" for paths in captures) > 1:

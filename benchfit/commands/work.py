@@ -19,7 +19,8 @@ if TYPE_CHECKING:
 class Task:
     """Captures to explain together (one, but for joint explanations), each with the files that belong to it.
 
-    ``layout`` holds keywords of :func:`benchfit.read`; ``plot`` and ``report`` are files to write.
+    ``layout`` holds keywords of :func:`benchfit.read`; ``plot`` and ``report`` are files to write;
+    ``as_found`` is the record of before.
     """
 
     captures: tuple[Sequence[str], ...]
@@ -27,6 +28,7 @@ class Task:
     layout: Mapping[str, Any] = field(default_factory=dict)
     plot: str | None = None
     report: str | None = None
+    as_found: Mapping[str, Any] | None = None
 
     @property
     def name(self) -> str:
@@ -72,10 +74,7 @@ def _explained(task: Task) -> Outcome:
     from benchfit.commands.streams import replacing
 
     captures = [read(path, also=also, **task.layout) for path, *also in task.captures]
-    if len(captures) == 1:
-        found = pipeline.explain(captures[0], task.sheet)
-    else:
-        found = pipeline.explain(captures=captures, sheet=task.sheet)
+    found = pipeline.explain(captures=captures, sheet=task.sheet, as_found=task.as_found)
     if task.plot is not None:
         with replacing(task.plot) as scratch:
             found.plot(str(scratch))

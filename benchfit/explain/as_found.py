@@ -168,10 +168,10 @@ def _quantities(table: object) -> dict[str, Quantity]:
     """Frequency and duty of a record's section, those that are known."""
     found = {}
     for name, unit in NAMES:
-        q = table.get(name) if isinstance(table, Mapping) else None
-        value = _number(q.get("value")) if isinstance(q, Mapping) else None
+        q = _mapping(table, name) if isinstance(table, Mapping) else {}
+        value = _number(q.get("value"))
         if value is not None:
-            found[name] = Quantity(value, _number(q["u"]) if q.get("u") is not None else None, unit)
+            found[name] = Quantity(value, _number(q.get("u")), unit)
     return found
 
 

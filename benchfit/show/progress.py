@@ -50,9 +50,8 @@ class Progress:
         self._bars = Bars(TextColumn("{task.description}"), *columns, console=self._console, transient=True,
                           get_time=time.monotonic, refresh_per_second=2)  # fmt: skip
         total = float(count) if count is not None else span
-        self._task = self._bars.add_task(
-            "burn-in", total=total, completed=done if count is not None else spent
-        )
+        self._task = self._bars.add_task("burn-in", total=total)
+        self._bars.update(self._task, completed=done if count is not None else spent)
 
     def start(self) -> None:
         """Show it."""

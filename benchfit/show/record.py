@@ -5,10 +5,11 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Iterable, Mapping
-from typing import Any
+from typing import Any, NoReturn
 
-from benchfit.errors import BenchfitError, Remark
-from benchfit.explain.result import CaptureFacts, Explanation, Miss, PartFound, Quantity, Suspect
+from benchfit.errors import BenchfitError, Remark, UsageError
+from benchfit.explain.result import AsFound, CaptureFacts, Explanation, Miss, PartFound, Quantity, Suspect
+from benchfit.show.layout import clean
 
 SCHEMA = 1
 
@@ -43,7 +44,8 @@ def record(
     """The result record of one capture, or of one joint set of captures, as plain dicts, lists and numbers.
 
     Every name is always there, null where it is not known, but for ``candidates`` (only where no circuit is
-    given), ``record`` (only where the sheet has notes), and the three stamps below.
+    given), ``record`` (only where the sheet has notes), ``as_found`` (only where there is a record of
+    before), and the three stamps below.
 
     Parameters
     ----------
@@ -94,6 +96,7 @@ def record(
         else {k: quantity(explanation.without_probe.get(k)) for k in ("frequency", "duty")},
         "verdict": explanation.verdict,
         "warnings": remarks(explanation.warnings),
+        **({"as_found": _as_found(explanation.as_found)} if explanation.as_found is not None else {}),
         **({"record": _plain(explanation.record_notes)} if explanation.record_notes else {}),
     }
 
@@ -120,6 +123,39 @@ def dumps(record: Mapping[str, Any]) -> str:
         Where a number is infinite or undefined: such a record was not made here.
     """
     return json.dumps(record, allow_nan=False)
+
+
+def loads(text: str, path: str) -> dict[str, Any]:
+    """The result record in a text: one object, or the last of one object a line.
+
+    Raises
+    ------
+    UsageError
+        Where it is something else, or of a capture that could not be explained.
+    """
+    wanted = "give the file that --json FILE wrote of the build before the change"
+    for candidate in (text, text.strip().rpartition("\n")[2]):
+        try:
+            found = json.loads(candidate, parse_constant=_refuse)
+            break
+        except (ValueError, RecursionError):
+            found = None
+    if not isinstance(found, dict) or "schema" not in found:
+        raise UsageError(f"{path}: this is no result record; {wanted}", path=path)
+    if found["schema"] != SCHEMA:
+        says = f"a record of schema {found['schema']}, and this version reads schema {SCHEMA}"
+        raise UsageError(f"{path}: {clean(says)}; make it anew from its capture", path=path)
+    if isinstance(error := found.get("error"), dict):
+        says = clean(error.get("says") or "no reason is given")
+        raise UsageError(f"{path}: the capture could not be explained then ({says}); {wanted}", path=path)
+    if not isinstance(found.get("measured"), dict):
+        says = "this record holds nothing that was measured of a build"
+        raise UsageError(f"{path}: {says}; {wanted}", path=path)
+    return found
+
+
+def _refuse(word: str) -> NoReturn:
+    raise ValueError(word)
 
 
 def quantity(q: Quantity | None) -> dict[str, Any] | None:
@@ -182,6 +218,31 @@ def _miss(miss: Miss | None) -> dict[str, Any] | None:
             {"cause": _text(s.cause), "share": _number(s.share), "u": _number(s.u)} for s in miss.shares
         ],
         "unexplained": _number(miss.unexplained),
+    }
+
+
+def _as_found(as_found: AsFound) -> dict[str, Any]:
+    def both(side: Mapping[str, Quantity]) -> dict[str, Any]:
+        return {name: quantity(side.get(name)) for name in ("frequency", "duty")}
+
+    return {
+        "path": _text(as_found.path),
+        "verdict": as_found.verdict,
+        "changed": [
+            {
+                "part": _text(c.part),
+                "from": _number(c.before),
+                "to": _number(c.after),
+                "unit": _text(c.unit),
+                "known_from": "remedy" if c.is_taken else "build sheet",
+            }
+            for c in as_found.changed
+        ],
+        "without_probe": as_found.is_lifted,
+        "found": both(as_found.before),
+        "predicted": both(as_found.predicted) if as_found.predicted else None,
+        "obtained": both(as_found.obtained),
+        "effect": as_found.effect,
     }
 
 

@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from benchfit.errors import UsageError
-from benchfit.explain.result import CaptureFacts, Explanation
+from benchfit.explain.result import AsFound, CaptureFacts, Explanation
 from benchfit.quantity import si
 from benchfit.show import words
 from benchfit.show.layout import clean, glued
@@ -28,7 +28,6 @@ def report(
     capture: Capture | None,
     path: str | os.PathLike[str],
     *,
-    as_left: Explanation | None = None,
     acquired: str | None = None,
 ) -> None:
     """Write the page of one explanation; the file appears whole or not at all.
@@ -36,10 +35,8 @@ def report(
     Parameters
     ----------
     explanation, constants, capture
-        As found; without a capture the page has no drawings of waveforms.
+        What was found; without a capture the page has no drawings of waveforms.
     path : path-like
-    as_left : Explanation, optional
-        What the same build did after the change, shown beside what was found.
     acquired : str, optional
         When the capture was taken (UTC, ISO 8601).
 
@@ -48,7 +45,7 @@ def report(
     UsageError
         Where the file cannot be written.
     """
-    write(path, page(explanation, constants, capture, as_left=as_left, acquired=acquired))
+    write(path, page(explanation, constants, capture, acquired=acquired))
 
 
 def page(
@@ -56,7 +53,6 @@ def page(
     constants: CycleConstants | None = None,
     capture: Capture | None = None,
     *,
-    as_left: Explanation | None = None,
     acquired: str | None = None,
 ) -> str:
     """The page of one explanation as text."""
@@ -87,7 +83,7 @@ def page(
             for r in explanation.next_readings
         ],
         remedies=_remedies(explanation),
-        left=None if as_left is None else _left(explanation, as_left),
+        before=_before(explanation.as_found),
         figures=_figures(explanation, constants, capture),
     )
 
@@ -235,16 +231,14 @@ def _remedies(explanation: Explanation) -> list[list[str]]:
     return rows
 
 
-def _left(found: Explanation, left: Explanation) -> Table:
-    names = [n for n in words.LABELS if words.amount(n, left.measured.get(n))]
-    before, after = ([words.amount(n, e.measured.get(n)) for n in names] for e in (found, left))
+def _before(as_found: AsFound | None) -> Table | None:
+    if as_found is None:
+        return None
     return {
-        "rows": [
-            [typeset(c) for c in row] for row in zip(map(words.label, names), before, after, strict=True)
-        ],
-        "sentence": typeset(words.verdict_sentence(left)),
-        "verdict": left.verdict,
-        "path": clean(left.captures[0].path),
+        "rows": [[typeset(cell) for cell in row] for row in words.as_left_rows(as_found)],
+        "sentences": [typeset(says) for says in words.as_left_sentences(as_found)],
+        "path": clean(as_found.path),
+        "is_lifted": as_found.is_lifted,
     }
 
 

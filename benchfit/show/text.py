@@ -16,12 +16,13 @@ _MOST_RULED_OUT = 3
 def render(explanation: Explanation, *, width: int = 80, colour: bool = False) -> str:
     """The printed report of one explanation, no line wider than ``width`` (60 at least).
 
-    Verdict, measured against target, budget of the miss, suspects, parts, what cannot be told apart, next
-    readings, remedies, warnings and cautions; a section of which nothing is known is left out. With
-    ``colour`` the lines hold SGR sequences. No newline at the end.
+    Verdict, what a change did, measured against target, budget of the miss, suspects, parts, what cannot be
+    told apart, next readings, remedies, warnings and cautions; a section of which nothing is known is left
+    out. With ``colour`` the lines hold SGR sequences. No newline at the end.
     """
     page = Page(max(width, 60), colour)
     _heading(page, explanation)
+    _as_found(page, explanation)
     _measured(page, explanation)
     _budgets(page, explanation)
     _suspects(page, explanation)
@@ -47,6 +48,21 @@ def _heading(page: Page, explanation: Explanation) -> None:
     styles: dict[str | None, Style] = {"pass": "good", "fail": "bad", "conditional": "doubt"}
     page.prose(words.verdict_sentence(explanation), style=styles.get(explanation.verdict, "bold"))
     page.prose(words.blame_sentence(explanation), style="bold")
+
+
+def _as_found(page: Page, explanation: Explanation) -> None:
+    if explanation.as_found is None:
+        return
+    lifted = "; probe lifted" if explanation.as_found.is_lifted else ""
+    page.section("As found, as left", f"± U, k = 2{lifted}")
+    rows = [["", words.label("frequency"), words.label("duty")], *words.as_left_rows(explanation.as_found)]
+    if len(rows) > 1:
+        page.table(rows, [Column(), Column(True), Column(True)], ["dim"])
+    good: dict[str | None, Style] = {"as predicted": "good", "partly": "doubt", "not by this change": "bad"}
+    what, *effect = words.as_left_sentences(explanation.as_found)
+    page.prose(what, "  ")
+    for says in effect:
+        page.prose(says, "  ", good.get(explanation.as_found.effect, "plain"))
 
 
 def _measured(page: Page, explanation: Explanation) -> None:

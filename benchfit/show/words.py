@@ -6,7 +6,17 @@ import math
 import re
 from collections.abc import Mapping, Sequence
 
-from benchfit.explain.result import Explanation, Miss, NextReading, PartFound, Quantity, Remedy, Suspect
+from benchfit.explain.result import (
+    AsFound,
+    Changed,
+    Explanation,
+    Miss,
+    NextReading,
+    PartFound,
+    Quantity,
+    Remedy,
+    Suspect,
+)
 from benchfit.quantity import percent, si
 
 LABELS = {
@@ -288,6 +298,40 @@ def exchange(remedy: Remedy, unit: str) -> str:
     """ "R 10.4 kΩ → 8.2 kΩ (E24)"."""
     series = f" ({remedy.series})" if remedy.series else ""
     return f"{remedy.part} {si(remedy.before, unit)} → {si(remedy.after, unit)}{series}"
+
+
+def changed(c: Changed) -> str:
+    """ "C 22 nF → 18 nF"; a part that came or went has "absent" on one side."""
+    before, after = (si(x, c.unit) if x is not None else "absent" for x in (c.before, c.after))
+    return f"{c.part} {before} → {after}"
+
+
+def as_left_rows(as_found: AsFound) -> list[list[str]]:
+    """(as found, predicted or as left; frequency; duty cycle), with U."""
+    sides = (
+        ("as found", as_found.before), ("predicted", as_found.predicted), ("as left", as_found.obtained)
+    )  # fmt: skip
+    rows = [[name, *(amount(n, side.get(n)) for n in ("frequency", "duty"))] for name, side in sides]
+    return [row for row in rows if any(row[1:])]
+
+
+def as_left_sentences(as_found: AsFound) -> list[str]:
+    """What was changed, and whether that did it."""
+    named = listed([changed(c) for c in as_found.changed])
+    if not named:
+        what = "No nominal differs from the record's."
+    elif any(c.is_taken for c in as_found.changed):
+        what = f"No nominal differs from the record's; taken as the change is its remedy {named}."
+    else:
+        what = f"Changed: {named}."
+    effects = {
+        "as predicted": "The change did it: as left is as predicted.",
+        "partly": "The change went the right way, but not to where it was predicted to go.",
+        "not by this change": "The change did not do what was predicted of it.",
+    }
+    unknown = "The record predicts nothing of such a change." if named else ""
+    effect = effects.get(as_found.effect or "", unknown)
+    return [what, effect] if effect else [what]
 
 
 def budget_rows(miss: Miss | None, most: int = 8) -> list[tuple[str, float, float | None]]:

@@ -73,7 +73,9 @@ def asked(monkeypatch: pytest.MonkeyPatch) -> Asked:
             raise CaptureError(f"{path}: there is no such file", path=str(path))
         return FakeCapture(str(path))
 
-    def explain(capture: Any = None, sheet: Sheet | None = None, *, captures: Any = ()) -> FakeFound:
+    def explain(
+        capture: Any = None, sheet: Sheet | None = None, *, captures: Any = (), as_found: Any = None
+    ) -> FakeFound:
         if asked.fault is not None:
             raise asked.fault
         every = list(captures) or [capture]

@@ -349,8 +349,8 @@ def test_overrides_alone_are_a_sheet():
 
 def test_a_bare_number_is_a_text_where_one_is_expected():
     """A channel may be called 1, with or without quotes, in the file and on the command line."""
-    sheet = Sheet.parse(f"title = 1999\n{AMPLIFIER}R = 1e3\n[channels]\ncapacitor = 1\noutput = {{ name = 2 }}\n"
-                        "[record]\nunit = 17\n")  # fmt: skip
+    channels = "[channels]\ncapacitor = 1\noutput = { name = 2 }\n"
+    sheet = Sheet.parse(f"title = 1999\n{AMPLIFIER}R = 1e3\n{channels}[record]\nunit = 17\n")
     assert (sheet.title, sheet.record["unit"]) == ("1999", "17")
     assert [sheet.channels[node].name for node in ("capacitor", "output")] == ["1", "2"]
     assert Sheet.parse(sheet.dump()).channels == sheet.channels

@@ -5,6 +5,7 @@ The numbers are made up, consistently enough to be drawn; nothing here checks ph
 
 from __future__ import annotations
 
+import dataclasses
 import math
 
 import numpy as np
@@ -13,8 +14,10 @@ from benchfit.capture.model import Capture, Channel
 from benchfit.cycle.constants import CycleConstants, PhaseFit
 from benchfit.errors import Remark
 from benchfit.explain.result import (
+    AsFound,
     Candidate,
     CaptureFacts,
+    Changed,
     Explanation,
     Miss,
     NextReading,
@@ -605,6 +608,35 @@ def extreme() -> Explanation:
     )
 
 
+def as_left() -> Explanation:
+    """The tray mister after another capacitor was fitted."""
+    return dataclasses.replace(
+        healthy(),
+        as_found=AsFound(
+            path="seed-tray-mister-04 as found.csv",
+            verdict="fail",
+            before={"frequency": q(39.17, 3e-4, "Hz"), "duty": Quantity(0.4869, 0.0012, "1")},
+            predicted={"frequency": q(47.9, 8e-3, "Hz"), "duty": Quantity(0.487, 0.0014, "1")},
+            obtained={"frequency": q(47.62, 3e-4, "Hz"), "duty": Quantity(0.4873, 0.0012, "1")},
+            is_lifted=True,
+            changed=(Changed("C", 270e-9, 220e-9, "F"), Changed("R_series", None, 1e3, "Ω")),
+            effect="as predicted",
+        ),
+    )
+
+
+def not_by_this_change() -> Explanation:
+    """The same, where the change named by the remedy did nothing."""
+    before = as_left().as_found
+    assert before is not None
+    taken = (Changed("C", 266.4e-9, 220e-9, "F", is_taken=True),)
+    obtained = {"frequency": q(39.18, 3e-4, "Hz")}
+    left = dataclasses.replace(
+        before, obtained=obtained, changed=taken, effect="not by this change", is_lifted=False
+    )
+    return dataclasses.replace(unsettled(), as_found=left)
+
+
 ALL = {
     f.__name__: f
     for f in (
@@ -620,6 +652,8 @@ ALL = {
         probe_loads,
         hostile,
         extreme,
+        as_left,
+        not_by_this_change,
     )
 }
 

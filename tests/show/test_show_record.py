@@ -101,7 +101,8 @@ def test_every_example_uses_only_the_schemas_names(name: str) -> None:
     """Nothing stands in a record that the interface does not name, and no top-level name is missing."""
     made = record(ALL[name]())
     extra = {"candidates"} if made["circuit"] is None else set()
-    assert set(made) - {"record"} == set(SCHEMA) | extra
+    assert set(made) - {"record", "as_found"} == set(SCHEMA) | extra
+    assert ("as_found" in made) == (ALL[name]().as_found is not None)
     names = set(made["parts"]).union(*(s["causes"] for s in made["suspects"]))
     for row, allowed in SCHEMA.items():
         assert keys(made[row], names) <= allowed, row
