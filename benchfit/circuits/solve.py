@@ -125,7 +125,7 @@ def settle(cycle: Cycle) -> Settled:
 # --------------------------------------------
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(10)
-_STEP = 1e-4
+_FLAT = 1e-4
 
 
 def _bend(ratio: Array) -> Array:
@@ -135,7 +135,7 @@ def _bend(ratio: Array) -> Array:
     i_n are modified spherical Bessel functions of the first kind. Newton from the small-y limit.
     """
     y = np.clip(-3 * ratio, -20, 20)
-    for _ in range(6):
+    for _ in range(4):
         tiny = np.abs(y) < 1e-3
         s = np.where(tiny, 1.0, y)
         coth = 1 / np.tanh(s)
@@ -149,36 +149,45 @@ def _bend(ratio: Array) -> Array:
 def _sampled(
     phases: Sequence[Phase], starts: Array, ends: Array, durations: Array
 ) -> tuple[Array, Array, Array]:
-    """Gauss's nodes over phases in a row: time u in [−1, 1], voltage (V), weight (they sum to 1)."""
+    """Gauss's nodes over phases in a row: time u in [−1, 1], voltage (V), weight (they sum to 1).
+
+    Of shape (nodes, rows) for phases of ``rows`` sets of parts.
+    """
     total = np.sum(durations, axis=0)
-    along = _NODES.reshape(-1, *[1] * total.ndim)
-    weights = _WEIGHTS.reshape(along.shape)
+    along = 0.5 * (1 + _NODES[:, None])
     before = np.zeros_like(total)
     u, v, w = [], [], []
     for phase, start, end, duration in zip(phases, starts, ends, durations, strict=True):
+        bent = np.any(np.asarray(phase.slope) != 0)
         # The variable is the time s that a constant capacitance would take: dt = (1 + β·v) ds, smooth in s.
-        constant = replace(phase, slope=0.0)
-        length = np.where(duration > 0, time_to(constant, start, end), 0.0)
-        volts = after(constant, start, length * (1 + along) / 2)
+        constant = replace(phase, slope=0.0) if bent else phase
+        length = np.where(duration > 0, time_to(constant, start, end), 0.0) if bent else duration
+        volts = after(constant, start, length * along)
+        weight = 0.5 * _WEIGHTS[:, None] * (length / total)
+        here = np.where(duration > 0, time_to(phase, start, volts), 0.0) if bent else length * along
         v.append(volts)
-        w.append(weights * length / 2 * (1 + phase.slope * volts) / total)
-        u.append(2 * (before + np.where(duration > 0, time_to(phase, start, volts), 0.0)) / total - 1)
+        w.append(weight * (1 + phase.slope * volts) if bent else weight)
+        u.append((before + here) * (2 / total) - 1)
         before = before + duration
     return np.concatenate(u), np.concatenate(v), np.concatenate(w)
 
 
-def _rise(u: Array, y: Array) -> Array:
-    """(1 − e^(−y·(1 + u)))/(1 − e^(−2y)): from 0 at u = −1 to 1 at u = 1, straight for y = 0."""
-    y = np.where(np.abs(y) < 1e-6, 1e-6, y)
-    return np.expm1(-y * (1 + u)) / np.expm1(-2 * y)
+def _rise(u: Array, y: Array) -> tuple[Array, Array]:
+    """f = (1 − e^(−y·(1 + u)))/(1 − e^(−2y)), from 0 at u = −1 to 1 at u = 1, and df/dy."""
+    y = np.where(np.abs(y) < _FLAT, _FLAT, y)
+    whole = -np.expm1(-2 * y)
+    gone = np.exp(-y * (1 + u))
+    f = (1 - gone) / whole
+    slope: Array = ((1 + u) * gone - f * (2 * (1 - whole))) / whole
+    return f, slope
 
 
-def _line(f: Array, v: Array, w: Array) -> tuple[Array, Array]:
-    """a and b of the weighted least-squares line v ≈ a + b·f."""
-    mean_f, mean_v = np.sum(w * f, axis=0), np.sum(w * v, axis=0)
-    away = f - mean_f
-    b = np.sum(w * away * v, axis=0) / np.sum(w * away * away, axis=0)
-    return mean_v - b * mean_f, b
+def _mean(w: Array, *factors: Array) -> Array:
+    product = w
+    for factor in factors[:-1]:
+        product = product * factor
+    mean: Array = np.einsum("nr,nr->r", product, factors[-1])
+    return mean
 
 
 def _stretch(
@@ -187,24 +196,31 @@ def _stretch(
     """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in
     a row.
 
-    Begun where the zeroth to second Legendre coefficients are the waveform's, then three steps of variable
+    Begun where the zeroth to second Legendre coefficients are the waveform's, then two steps of variable
     projection in the bend (Golub & Pereyra 1973, with Kaufman's Jacobian).
     """
     u, v, w = _sampled(phases, starts, ends, durations)
-    first = 3 * np.sum(w * v * u, axis=0)
-    second = 5 * np.sum(w * v * (3 * u * u - 1) / 2, axis=0)
-    y = _bend(second / first)
-    for _ in range(3):
-        f = _rise(u, y)
-        a, b = _line(f, v, w)
-        slope = b * (_rise(u, y + _STEP) - _rise(u, y - _STEP)) / (2 * _STEP)
-        base, tilt = _line(f, slope, w)
-        slope = slope - base - tilt * f
-        step = np.sum(w * slope * (v - a - b * f), axis=0) / np.sum(w * slope * slope, axis=0)
+    square = u * u
+    y = _bend(5 * _mean(w, v, 1.5 * square - 0.5) / (3 * _mean(w, v, u)))
+    mean_v = _mean(w, v)
+
+    def line(f: Array) -> tuple[Array, Array, Array, Array]:
+        mean_f = _mean(w, f)
+        variance = _mean(w, f, f) - mean_f**2
+        b = (_mean(w, f, v) - mean_f * mean_v) / variance
+        return mean_v - b * mean_f, b, mean_f, variance
+
+    for _ in range(2):
+        f, slope = _rise(u, y)
+        a, b, mean_f, variance = line(f)
+        mean_s, with_f = _mean(w, slope), _mean(w, slope, f)
+        # Of the slope, what neither a nor b can take up.
+        own = _mean(w, slope, slope) - mean_s**2 - (with_f - mean_s * mean_f) ** 2 / variance
+        step = (_mean(w, slope, v) - a * mean_s - b * with_f) / (b * own)
         y = y + np.clip(step, -1.0, 1.0)
-    f = _rise(u, y)
-    a, b = _line(f, v, w)
-    bow = 7 * np.sum(w * (v - a - b * f) * (5 * u**3 - 3 * u) / 2, axis=0)
+    f, _ = _rise(u, y)
+    a, b, _, _ = line(f)
+    bow = 7 * _mean(w, v - a - b * f, (2.5 * square - 1.5) * u)
     return a, a + b, 2 * y / np.sum(durations, axis=0), bow
 
 
@@ -250,17 +266,17 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
         total = np.sum(durations, axis=0)
         found[f"{word}_share"] = total / period
         shape = [starts[0], ends[0], phases[0].curvature + 0 * period, 0 * period]
-        bent = np.broadcast_to(
-            np.asarray(phases[0].slope) != 0 if len(index) == 1 else np.True_, period.shape
-        )
-        if np.any(bent):
-            # Only where one exponential is not the whole truth: this is the costly way.
-            fitted = _stretch(
-                [_only(p, bent) for p in phases], starts[:, bent], ends[:, bent], durations[:, bent]
-            )
+        bends = np.broadcast_to(np.asarray(phases[0].slope) != 0, period.shape)
+        # Only where one exponential is not the whole truth; those that bend by themselves cost the most.
+        for rows in (bends, ~bends) if len(index) > 1 else (bends,):
+            if not np.any(rows):
+                continue
             shape = [np.array(x, float) for x in shape]
+            parts = [_only(p, rows) for p in phases]
+            with np.errstate(all="ignore"):
+                fitted = _stretch(parts, starts[:, rows], ends[:, rows], durations[:, rows])
             for x, f in zip(shape, fitted, strict=True):
-                x[bent] = f
+                x[rows] = f
         start, end, curvature, bow = shape
         found[f"{word}_start"], found[f"{word}_end"] = start, end
         found[f"{word}_curvature"], found[f"{word}_bow"] = curvature, bow
