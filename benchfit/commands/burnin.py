@@ -6,6 +6,7 @@ Killed at any instant, the same command goes on in the same log. Ctrl-C ends it 
 from __future__ import annotations
 
 import argparse
+import os
 import shlex
 import signal
 import subprocess
@@ -75,6 +76,8 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(args: argparse.Namespace) -> int:
     """Measure until it is complete or told to end; 0."""
+    # Small matrices only, and the machine may have other work to do while it waits for captures.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     if args.json not in (None, "-"):
         streams.check_writable(args.json)
     sources = _sources(args)
@@ -197,6 +200,7 @@ def _measure(
     def explain(capture: Capture) -> dict[str, Any]:
         return pipeline.explain(capture, sheet).record()
 
+    _warm_up()
     opened = {name: _source(args, name, source, log, sheet) for name, source in sources.items()}
     stop = threading.Event()
     with _ended_by_signals(stop), _Output(args, plan, log, stop) as output:
@@ -206,6 +210,12 @@ def _measure(
         finally:
             for source in opened.values():
                 source.close()
+
+
+def _warm_up() -> None:
+    """Import what explaining takes before the schedule begins, so that the first slots are not late."""
+    import lmfit  # noqa: F401
+    import scipy.optimize  # noqa: F401
 
 
 def _source(args: argparse.Namespace, unit: str, source: str, log: LogWriter, sheet: Sheet | None) -> Source:

@@ -5,6 +5,7 @@ The log may be written meanwhile. Rates are per hour; nothing is interpolated ov
 from __future__ import annotations
 
 import argparse
+import os
 from collections.abc import Iterator, Sequence
 from typing import TYPE_CHECKING
 
@@ -44,6 +45,9 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(args: argparse.Namespace) -> int:
     """Print what the log says; 0."""
     args.report = None
+    # Hundreds of unknowns at most: on a busy machine the linear algebra's threads would only wait for each
+    # other.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     options.check_outputs(args)
     if args.upgrade is not None:
         return _upgrade(args)
