@@ -7,9 +7,11 @@ import pytest
 
 import benchfit
 from tools.bench import simulate
-from tools.bench.designs import DESIGNS, standard
-from tools.bench.faults import draw, least
+from tools.bench.builds import draw
+from tools.bench.designs import DESIGNS
+from tools.bench.faults import least
 from tools.bench.identify import judge
+from tools.bench.specs import standard
 
 
 @pytest.mark.parametrize("circuit", ["gas-lamp", "triangle"])

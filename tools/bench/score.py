@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from tools.bench.faults import Build
+from tools.bench.builds import Build
 
 SURE = 0.9
 # Two faults are needed where the best single cause misfits by this much more (chi-square).
