@@ -155,7 +155,8 @@ class Wire:
         except Exception as error:
             raise faults.translate(error, self.resource, command) from error
         if status == self._status.success_termination_character_read:
-            return data, stop
+            # So pyvisa-py calls a HiSLIP message's END too.
+            return data, stop or not self.is_stream
         # On a socket "success" only means that nothing more was there; elsewhere it is the bus's END.
         return data, status == self._status.success and not self.is_stream
 
