@@ -33,12 +33,9 @@ class Dialect:
 
     def cells(self, line: str) -> tuple[str, ...]:
         """Cells of a line without blanks and quotes around them."""
-        if self.bracketed:
-            line = (
-                line.translate(_NO_BRACKETS)
-                .strip()
-                .rstrip(",;" if self.delimiter not in ",;" else self.delimiter)
-            )
+        if self.bracketed and (bare := line.strip().rstrip(",; ")).startswith(("(", "[", "{")):
+            # Brackets around the row only: a header may have its units in some.
+            line = bare[1:-1] if bare.endswith((")", "]", "}")) else bare[1:]
         if self.quoted:
             line = _requoted(line, self.delimiter)
         if self.delimiter == " ":
@@ -80,9 +77,6 @@ class Dialect:
         ]
         extras = [", cells in quotes"] * self.quoted + [", rows in brackets"] * self.bracketed
         return name + "".join(extras)
-
-
-_NO_BRACKETS = str.maketrans("", "", _BRACKETS.decode())
 
 
 def _requoted(text: str, delimiter: str) -> str:
@@ -174,6 +168,7 @@ def _fraction_split(dialect: Dialect, lines: Sequence[str]) -> bool:
     A fraction shows itself by an exponent, by zeros in front with an even length, or by many digits behind
     whole numbers of few digits that go up and down.
     """
+    lines = lines[len(lines) // 2 :] if len(lines) > 16 else lines
     pairs = [cells for cells in map(dialect.cells, lines) if len(cells) == 2 and _WHOLE.fullmatch(cells[0])]
     pairs = [cells for cells in pairs if _FRACTION.fullmatch(cells[1])]
     if len(pairs) < max(8, 0.8 * len(lines)):

@@ -10,7 +10,7 @@ from benchfit.capture.dialect import MOST_COLUMNS, Dialect, decide
 
 COMMENT_MARKS = ("#", "%", "//", "!", "'", "*", "--")
 # Lines of the head that are looked at; the longest preambles met have some sixty.
-MOST_LINES = 1500
+MOST_LINES = 600
 _JUDGED = 250
 
 

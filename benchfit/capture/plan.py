@@ -95,6 +95,11 @@ class _Columns:
         values = self.finite(column)
         return values.size > 0 and _nearly_all(values == np.round(values))
 
+    def is_bare_whole(self, column: int) -> bool:
+        """Whether the values are written as whole numbers: without decimals, as counts are."""
+        cells = [cell for cell in self._page.column(column) if cell]
+        return bool(cells) and _nearly_all(np.array([cell.lstrip("+-").isdigit() for cell in cells]))
+
     def is_steady(self, column: int) -> bool:
         """Whether the values grow or fall by the same step in every row."""
         steps = np.diff(self.finite(column))
@@ -182,7 +187,7 @@ def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | Non
     if len(numeric) < 2:
         return None, "it has one column of numbers only"
     first = numeric[0]
-    if table.is_count(first) and len(numeric) > 2 and table.is_even(numeric[1]) and not table.is_whole(numeric[1]):
+    if table.is_count(first) and len(numeric) > 2 and table.is_even(numeric[1]) and not table.is_bare_whole(numeric[1]):
         first = numeric[1]
     if layout.time_is_first and table.is_rising(first):
         return first, "its place"
@@ -190,7 +195,7 @@ def _time_column(page: Page, layout: Layout, table: _Columns) -> tuple[int | Non
         step = table.step(first)
         if layout.interval is not None and abs(step / layout.interval - 1) < 0.01:
             return first, f"its steps, which are those of {layout.stated}"
-        if not table.is_whole(first):
+        if not table.is_bare_whole(first):
             return first, "its even steps"
         what = (
             "row numbers" if table.is_count(first) else f"whole numbers in steps of {step:g} without a unit"
@@ -209,7 +214,7 @@ def _with_time(plan: Plan, table: _Columns, time: int, layout: Layout, why: str)
     if measure is not None and measure.base and not measure.is_time:
         return replace(plan, why_no_time=f'"{name}" is in "{measure.text}", which is no unit of time')
     if measure is None or not measure.is_time:
-        whole = table.is_whole(time) and not why.startswith("its steps")
+        whole = table.is_bare_whole(time) and not why.startswith("its steps")
         if whole:
             what = "row numbers" if table.is_count(time) else "whole numbers without a unit"
             return replace(
@@ -370,7 +375,7 @@ def _wanted(
                 time_unit=known.unit.text if known.unit else "",
             )  # fmt: skip
             plan = replace(plan, precision=table.precision(column))
-            if known.unit is None and table.is_whole(column):
+            if known.unit is None and table.is_bare_whole(column):
                 plan = replace(
                     plan,
                     time=None,

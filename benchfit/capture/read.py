@@ -87,7 +87,9 @@ def _read_one(
         _check_fit(source, table, page)
         axis = make_axis(table, plan, interval, frame, source.refusal)
         channels = tuple(_channel(table, axis, column) for column in plan.channels)
-        remarks = plan.remarks + axis.remarks + _damage(source, table, claim) + _empty(channels)
+        remarks = plan.remarks + axis.remarks + _damage(source, table, claim)
+        if not (table.is_complete and axis.keeps_rows):
+            remarks += _empty(channels)
         notes = _notes(source, page, _Understood(family, claim, plan, axis, channels))
         return Capture(source.path, axis.interval, axis.start, channels, remarks, notes)
 

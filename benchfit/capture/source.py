@@ -139,9 +139,8 @@ class Source:
         with open(self.path, "rb") as file:
             for place in range(0, self.size, 16 * LONGEST_LINE):
                 file.seek(place)
-                piece = file.read(LONGEST_LINE)
-                if len(piece) == LONGEST_LINE and b"\n" not in piece:
-                    self._check_line(LONGEST_LINE + 1)
+                if b"\n" not in file.read(1 << 12) and b"\n" not in (piece := file.read(LONGEST_LINE)):
+                    self._check_line(len(piece) + 1)
 
     # ------------------------------------------------------------------------------------------------------
 

@@ -42,7 +42,8 @@ class Table:
     ``columns`` by column number, shape (rows,), NaN where there was no number; ``overloaded`` where an
     overload word or an infinity stood. ``left_out`` counts rows that were no rows of the table, ``unread``
     cells that were no numbers; ``example`` shows the first of either. ``breaks`` are lines of text between
-    rows: (row that follows, text). ``cut`` is true where the last row was not written to its end.
+    rows: (row that follows, text). ``cut`` is true where the last row was not written to its end,
+    ``is_complete`` where it is known that every cell is a number in range.
     """
 
     columns: dict[int, Floats]
@@ -52,6 +53,7 @@ class Table:
     example: str = ""
     breaks: tuple[tuple[int, str], ...] = ()
     cut: bool = False
+    is_complete: bool = False
 
     @property
     def rows(self) -> int:
@@ -112,7 +114,7 @@ def read_table(
     if source.is_plain and (source.size or 0) >= _WHOLE_FILE and not selected:
         whole = _whole(source, page, work)
         if whole is not None:
-            return _finished(work, whole)
+            return Table(dict(zip(wanted, whole, strict=True)), {}, cut=work.cut, is_complete=True)
     for block in source.blocks(source.head.offsets[page.first]):
         lines = block.count(b"\n")
         body, last = (block, b"") if block.endswith(b"\n") else _split_last(block)
@@ -147,17 +149,15 @@ def _finished(work: _Work, columns: list[Floats]) -> Table:
 
 def _out_of_range(values: Floats, column: int, overloaded: dict[int, NDArray[np.bool_]]) -> Floats:
     """Infinities and the numbers by which SCPI stands for them become NaN."""
+    if _is_sound(values):
+        return values
     with np.errstate(invalid="ignore", over="ignore"):
-        extreme = (
-            bool(values.size)
-            and max(abs(float(np.fmax.reduce(values))), abs(float(np.fmin.reduce(values)))) >= SCPI_INFINITY
-        )
-        if not extreme:
-            return values
         beyond = np.abs(values) >= SCPI_INFINITY
         nothing = np.isclose(np.abs(values), SCPI_NOT_A_NUMBER, rtol=1e-5)
     mask = overloaded.setdefault(column, np.zeros(values.size, dtype=bool))
     mask |= beyond & ~nothing
+    if not mask.any():
+        del overloaded[column]
     return np.where(beyond, np.nan, values)
 
 
@@ -179,7 +179,7 @@ def _whole(source: Source, page: Page, work: _Work) -> list[Floats] | None:
         return None
     source.check_values(frame.shape[0] * len(work.wanted))
     columns = _columns(frame, work)
-    if columns is None or any(_has_gaps(values) for values in columns):
+    if columns is None or not all(_is_sound(values) for values in columns):
         return None
     with open(source.path, "rb") as file:
         file.seek(max(0, (source.size or 0) - 4096))
@@ -199,9 +199,14 @@ def _columns(frame: object, work: _Work) -> list[Floats] | None:
     return [frame[column].to_numpy() for column in work.wanted]
 
 
-def _has_gaps(values: Floats) -> bool:
+def _is_sound(values: Floats) -> bool:
+    """Whether all values are finite and none is out of range, told in one pass from the sum of their squares."""
     with np.errstate(over="ignore", invalid="ignore"):
-        return not np.isfinite(np.sum(values)) and not bool(np.all(np.isfinite(values)))
+        return bool(np.dot(values, values) < (0.9 * SCPI_INFINITY) ** 2)
+
+
+def _has_gaps(values: Floats) -> bool:
+    return not _is_sound(values) and not bool(np.all(np.isfinite(values)))
 
 
 def _block(work: _Work, block: bytes, lines: int) -> None:

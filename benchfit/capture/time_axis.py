@@ -43,6 +43,11 @@ class Axis:
             column = step.values(column)
         return column
 
+    @property
+    def keeps_rows(self) -> bool:
+        """Whether samples are rows as they were, so that no sample lacks a value that the rows have."""
+        return all(isinstance(step, Keep) for step in self.steps)
+
     def frame(self, column: Floats) -> Floats:
         """A column of the table as the rows of its frame."""
         return self.steps[0].values(column) if self.steps else column

@@ -54,10 +54,10 @@ def test_compressed_files_are_known_by_their_bytes(packer: str, name: str, write
 @pytest.mark.parametrize("packer", ["gzip", "bzip2", "xz"])
 def test_a_damaged_archive_is_read_as_far_as_it_goes(packer: str, write: Write) -> None:
     rng = np.random.default_rng(1)
-    text = "Time (s),CH1 (V)\n" + "".join(f"{k * 1e-6:.6f},{v:.6f}\n" for k, v in enumerate(rng.random(100_000)))
+    text = "Time (s),CH1 (V)\n" + "".join(f"{k * 1e-6:.6f},{v:.6f}\n" for k, v in enumerate(rng.random(100_000 if packer == "bzip2" else 40_000)))
     packed = PACKERS[packer](text.encode())
     capture = read(write(packed[: len(packed) * 3 // 4]))
-    assert 1000 < capture.samples < 100_000
+    assert 1000 < capture.samples < text.count("\n") - 1
     assert "damaged" in {remark.code for remark in capture.warnings}
 
 
@@ -87,7 +87,7 @@ def test_a_bomb_of_one_line_stops_early(write: Write) -> None:
 
 
 def test_a_bomb_of_rows_stops_early(write: Write) -> None:
-    row = b"Time (s),CH1 (V)\n" + b"".join(b"%.6f,1.5\n" % (k * 1e-6) for k in range(1000)) + b"0.001,1.5\n" * (12 << 20)
+    row = b"Time (s),CH1 (V)\n" + b"".join(b"%.6f,1.5\n" % (k * 1e-6) for k in range(1000)) + (b"0.001," + b"0" * 1000 + b"\n") * 80_000
     with pytest.raises(CaptureError, match="unpacks to more than 100 times its size"):
         read(write(gzip.compress(row, 1)))
 
@@ -123,22 +123,28 @@ def test_blocks_hold_the_whole_text_in_whole_lines(write: Write) -> None:
 def test_a_long_record_is_read_to_the_same_values_by_either_way(packed: bool, write: Write) -> None:
     """Large plain files go to pandas in one call, others block by block."""
     rng = np.random.default_rng(3)
-    values = rng.integers(-128, 128, 250_000) * 0.04
-    text = "in s,C1 in V,C2 in V\n" + "".join(f"{k * 4e-9:.9e},{v:.5E},{-v:.5E}\n" for k, v in enumerate(values))
+    values = rng.integers(-128, 128, 60_000) * 0.04
+    text = "in s,C1 in V,C2 in V\n" + "".join(f"{k * 4e-9:.30e},{v:.25E},{-v:.25E}\n" for k, v in enumerate(values))
     capture = read(write(gzip.compress(text.encode(), 1) if packed else text))
-    assert capture.samples == 250_000
+    assert capture.samples == 60_000
     assert capture.interval == pytest.approx(4e-9, rel=1e-9)
     np.testing.assert_allclose(capture.channels[0].values, values, rtol=1e-6, atol=1e-12)
     np.testing.assert_array_equal(capture.channels[1].values, -capture.channels[0].values)
 
 
-@pytest.mark.parametrize("line", [100, 180_000, 249_990])
+# Wide rows, so that few of them make a file that goes to pandas in one call.
+LONG = [f"{k * 4e-9:.30e},{k % 100 * 0.04:.28f}" for k in range(80_000)]
+
+
+@pytest.mark.parametrize("line", [100, 60_000, 79_990])
 @pytest.mark.parametrize("spoilt", ["0.1,OL", "0.1", "text", "1e-3,1.0,2.0,3.0", ""])
 def test_a_long_record_with_one_odd_line(spoilt: str, line: int, write: Write) -> None:
-    rows = [f"{k * 4e-9:.9e},{k % 100 * 0.04:.2f}" for k in range(250_000)]
+    rows = list(LONG)
     rows[line] = rows[line].split(",")[0] + ",OL" if spoilt == "0.1,OL" else spoilt
-    capture = read(write("in s,C1 in V\n" + "\n".join(rows) + "\n"))
-    assert capture.samples == 250_000
+    path = write("in s,C1 in V\n" + "\n".join(rows) + "\n")
+    assert path.stat().st_size > 5 << 20
+    capture = read(path)
+    assert capture.samples == 80_000
     values = capture.channels[0].values
     assert np.flatnonzero(np.isnan(values)).tolist() == [line]
     assert values[line + 1] == pytest.approx((line + 1) % 100 * 0.04)
