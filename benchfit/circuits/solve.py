@@ -239,12 +239,10 @@ def _only(phase: Phase, rows: NDArray[np.bool_]) -> Phase:
     )
 
 
-def constants(cycle: Cycle, node: str) -> dict[str, Array]:
-    """The cycle constants that a capture of ``node`` would give, by the cycle stage's names (see there).
-
-    ``node`` times the phases that are called for; "" asks for the shares and the output's levels alone.
-    """
-    settled = settle(cycle)
+def shares(cycle: Cycle, node: str, settled: Settled | None = None) -> dict[str, Array]:
+    """The period (s) and the shares of it alone: what frequency and duty cycle take, at a fraction of the
+    cost."""
+    settled = settle(cycle) if settled is None else settled
     period = settled.period
     found: dict[str, Array] = {"period": period}
     if any(p.output for p in cycle.phases):
@@ -252,8 +250,22 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
             (d for p, d in zip(cycle.phases, settled.durations, strict=True) if p.output == "high"),
             0 * period,
         )
-        late = cycle.levels.get("rise_lag", 0.0)
-        found["high_share"] = (high - late) / period
+        found["high_share"] = (high - cycle.levels.get("rise_lag", 0.0)) / period
+    for rising, word in ((True, "charge"), (False, "discharge")):
+        index = [i for i, p in enumerate(cycle.phases) if p.node == node and p.rising == rising]
+        if index:
+            found[f"{word}_share"] = np.sum(settled.durations[index], axis=0) / period
+    return found
+
+
+def constants(cycle: Cycle, node: str) -> dict[str, Array]:
+    """The cycle constants that a capture of ``node`` would give, by the cycle stage's names (see there).
+
+    ``node`` times the phases that are called for; "" asks for the shares and the output's levels alone.
+    """
+    settled = settle(cycle)
+    found = shares(cycle, node, settled)
+    period = found["period"]
     found.update({n: level + 0 * period for n, level in cycle.levels.items() if n != "rise_lag"})
     if not node:
         return found
@@ -263,8 +275,6 @@ def constants(cycle: Cycle, node: str) -> dict[str, Array]:
             continue
         phases = [cycle.phases[i] for i in index]
         starts, ends, durations = settled.starts[index], settled.ends[index], settled.durations[index]
-        total = np.sum(durations, axis=0)
-        found[f"{word}_share"] = total / period
         shape = [starts[0], ends[0], phases[0].curvature + 0 * period, 0 * period]
         bends = np.broadcast_to(np.asarray(phases[0].slope) != 0, period.shape)
         # Only where one exponential is not the whole truth; those that bend by themselves cost the most.

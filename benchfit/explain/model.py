@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from benchfit.circuits.model import Circuit, Part
 from benchfit.circuits.solve import constants as circuit_constants
+from benchfit.circuits.solve import shares
 from benchfit.cycle.constants import CycleConstants
 
 Array = NDArray[np.float64]
@@ -227,22 +228,10 @@ class Model:
 
     def frequency_and_duty(self, state: Array, view: View) -> tuple[Array, Array]:
         """Frequency (Hz) and duty cycle of states (..., n) under ``view``."""
-        found = self.constants_of(view, self.values(state))
-        duty = found.get("high_share", found.get("charge_share"))
-        if duty is None:
-            duty = self.constants_of(
-                View(
-                    self.circuit.nodes[0].name,
-                    "timing",
-                    view.loads,
-                    view.swaps,
-                    view.added_C,
-                    view.added_R,
-                    view.capacitor,
-                ),
-                self.values(state),
-            )["charge_share"]
-        return 1 / found["period"], duty
+        node = view.timing or next((n.name for n in self.circuit.nodes if n.shape != "square"), "")
+        with np.errstate(all="ignore"):
+            found = shares(self.circuit.cycle(self.parts_of(view, self.values(state))), node)
+        return 1 / found["period"], found.get("high_share", found["charge_share"])
 
 
 def observe(
