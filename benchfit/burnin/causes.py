@@ -119,13 +119,13 @@ def fingerprint(base: Basis, names: Sequence[str], y: Array, period: Array, foun
     found : Drift
         The period's drift.
     """
-    c = base.shapes.index(found.shape)
+    column = base.rotated @ found.shape.over(base.blocks.time, base.blocks.width)
     share = (found.walk / found.sigma) ** 2 if found.sigma > 0 else 0.0
     w = 1 / (1 + share * base.power)
     rows = np.vstack([y, period])
     level = rows.mean(axis=1)
     z = ((rows - level[:, None]) @ base.rotated.T) * np.sqrt(w)
-    design = np.stack([base.one, base.columns[c]], axis=1) * np.sqrt(w)[:, None]
+    design = np.stack([base.one, column], axis=1) * np.sqrt(w)[:, None]
     inverse = np.linalg.inv(design.T @ design)
     solution = inverse @ design.T @ z.T
     rest = z - (design @ solution).T

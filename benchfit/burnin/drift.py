@@ -13,7 +13,7 @@ least squares with a local-level covariance: Harvey, Forecasting, Structural Tim
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -26,11 +26,14 @@ Law = Literal["none", "linear", "logarithmic", "settling", "step"]
 LAWS: tuple[Law, ...] = ("none", "linear", "logarithmic", "settling", "step")
 
 PRIOR = {"none": 0.5, "linear": 0.125, "logarithmic": 0.125, "settling": 0.125, "step": 0.125}
-DOUBT = 0.1
+DOUBT = 0.03
 """A drift is reported only where the probability of none is below this."""
+STILL = 0.1
+"""Prior probability that there is no random walk at all."""
 LEAST = 5
 """Fewer blocks than this tell no law."""
 _SIDE = 3
+_FINE = 81
 
 
 @dataclass(frozen=True)
@@ -172,10 +175,11 @@ def basis(blocks: Blocks, span: float) -> Basis:
     rotated = vectors.T * scaled
     shapes, share = _shapes(blocks, span)
     columns = np.stack([s.over(t, blocks.width) for s in shapes]) @ rotated.T
-    total = float(blocks.count.sum())
-    steepest = 1e3 * n / max(float(np.median(blocks.count)), 1.0)
-    walks = np.geomspace(0.1 / total, max(steepest, 1.0 / total), 24)
-    prior = np.concatenate([[0.5], np.full(walks.size, 0.5 / walks.size)])
+    # From where a walk moves a slope as much as white noise does, to where it rules every block.
+    weakest = 3 / float(blocks.count.sum())
+    strongest = 30 * n / max(float(np.median(blocks.count)), 1.0)
+    walks = np.geomspace(weakest, max(strongest, 10 * weakest), 20)
+    prior = np.concatenate([[STILL], np.full(walks.size, (1 - STILL) / walks.size)])
     return Basis(
         blocks, span, shapes, share, rotated, np.maximum(power, 0.0), columns, rotated @ np.ones(n),
         np.concatenate([[0.0], walks]), prior,
@@ -204,7 +208,7 @@ def _moments(blocks: Blocks) -> list[float]:
         # A step needs records on both sides to be told from a stray one.
         if before[i] < _SIDE or before[-1] - before[i] < _SIDE or min(i + 1, t.size - 1 - i) < 2:
             continue
-        if blocks.count[i] > 4 and i >= 2:
+        if blocks.count[i] > 1 and i >= 2:
             moments += [float(t[i] + f * blocks.width[i]) for f in (-0.4, -0.2, 0.0, 0.2, 0.4)]
         moments.append(float(0.5 * (t[i] + t[i + 1])))
     return moments
@@ -253,7 +257,36 @@ def analyse(base: Basis, y: Array) -> Drift:
     law = max(LAWS[1:], key=lambda k: found.probability[k])
     if found.probability["none"] >= DOUBT:
         law = "none"
-    return _summed(base, y, found, law)
+    fine = narrowed(base, found, law)
+    post = found if fine is base else replace(fit(fine, y), probability=found.probability)
+    return _summed(fine, y, post, law)
+
+
+def narrowed(base: Basis, found: Fitted, law: Law) -> Basis:
+    """The basis with a finer grid about the best time constant, age or moment; the same for other laws.
+
+    What is well measured needs it: between two points of the first grid a law may be off by many u.
+    """
+    own = [i for i, s in enumerate(base.shapes) if s.law == law]
+    if law not in ("settling", "logarithmic", "step") or len(own) < 2:
+        return base
+    at = int(np.argmax(found.weight[own].sum(axis=1)))
+    parameters = [base.shapes[i].parameter for i in own]
+    best = parameters[at]
+    if law == "step":
+        low, high = parameters[max(at - 2, 0)], parameters[min(at + 2, len(own) - 1)]
+        grid = np.linspace(low, high, _FINE)
+    else:
+        grid = best * (parameters[1] / parameters[0]) ** np.linspace(-2.5, 2.5, _FINE)
+    shapes = tuple(Shape(law, float(p), base.span) for p in grid)
+    columns = np.stack([s.over(base.blocks.time, base.blocks.width) for s in shapes]) @ base.rotated.T
+    linear = next(i for i, s in enumerate(base.shapes) if s.law == "linear")
+    return replace(
+        base,
+        shapes=(base.shapes[linear], *shapes),
+        share=np.concatenate([[1.0], np.full(_FINE, 1 / _FINE)]),
+        columns=np.vstack([base.columns[linear], columns]),
+    )
 
 
 def _summed(base: Basis, y: Array, found: Fitted, law: Law) -> Drift:
@@ -280,7 +313,7 @@ def _summed(base: Basis, y: Array, found: Fitted, law: Law) -> Drift:
     z = base.rotated @ y
     constant = float((base.one * w) @ (z - amplitude * column) / (base.one**2 @ w))
     sigma = float(found.sigma[c, k])
-    walk = sigma * math.sqrt(float(base.walk[k]))
+    walk = float((weight * found.sigma * np.sqrt(base.walk)).sum())
     return Drift(
         law, found.probability, change, u_change, rate, u_rate, rate_now, shape, u_parameter, constant,
         amplitude, u_amplitude, walk, sigma,

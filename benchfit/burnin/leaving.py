@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 
-from benchfit.burnin.drift import Array, Basis, Drift, Fitted, fit
+from benchfit.burnin.drift import Array, Basis, Drift, fit, narrowed
 from benchfit.burnin.result import Leaving
 
 REACH = 3.0
@@ -59,7 +59,8 @@ def leaving(base: Basis, y: Array, found: Drift, low: float, high: float) -> Lea
 
 def _crossings(base: Basis, y: Array, found: Drift, times: Array, limit: float) -> Array:
     """For each draw of the posterior the index of the first time beyond the limit (``times.size``: never)."""
-    post: Fitted = fit(base, y)
+    base = narrowed(base, fit(base, y), found.law)
+    post = fit(base, y)
     own = np.array([s.law == found.law for s in base.shapes])
     weight = np.where(own[:, None], post.weight, 0.0)
     rng = np.random.default_rng(20250101)
