@@ -36,38 +36,38 @@ class Dialect:
         if self.bracketed and (bare := line.strip().rstrip(",; ")).startswith(("(", "[", "{")):
             # Brackets around the row only: a header may have its units in some.
             line = bare[1:-1] if bare.endswith((")", "]", "}")) else bare[1:]
-        if self.quoted:
-            line = _requoted(line, self.delimiter)
+        if self._quotes_commas:
+            line = _unquoted(line, _INSIDE)
         if self.delimiter == " ":
             stripped = line.strip()
-            return (
-                tuple(cell.strip('"') for cell in _BLANKS.split(stripped)[:MOST_COLUMNS]) if stripped else ()
-            )
-        separator = ";" if self._comma_in_quotes else self.delimiter
-        return tuple(cell.strip().strip('"').strip() for cell in line.split(separator)[:MOST_COLUMNS])
+            return tuple(cell.strip('"') for cell in _BLANKS.split(stripped)[:MOST_COLUMNS]) if stripped else ()
+        cells = line.split(self.delimiter)[:MOST_COLUMNS]
+        return tuple(cell.replace(_INSIDE, ",").strip().strip('"').strip() for cell in cells)
 
     def plain(self, text: bytes) -> bytes:
         """A block of the file as the C engine of pandas reads it, with ``engine_delimiter``."""
         if self.bracketed:
             text = text.translate(None, _BRACKETS)
         if b'"' in text:
-            text = (
-                _requoted(text.decode("latin-1"), self.delimiter).encode("latin-1")
-                if self.quoted
-                else text.replace(b'"', b"")
-            )
+            if not self._quotes_commas:
+                return text.replace(b'"', b"")
+            inside = "." if self.decimal == "," else " "
+            return _unquoted(text.decode("latin-1"), inside).encode("latin-1")
         return text
 
     @property
-    def _comma_in_quotes(self) -> bool:
-        return self.quoted and self.delimiter == self.decimal == ","
+    def _quotes_commas(self) -> bool:
+        return self.quoted and self.delimiter == ","
 
     @property
     def engine_delimiter(self) -> str:
         """The ``sep`` with which the C engine of pandas splits what ``plain`` returns."""
-        if self.delimiter == " ":
-            return r"\s+"
-        return ";" if self._comma_in_quotes else self.delimiter
+        return r"\s+" if self.delimiter == " " else self.delimiter
+
+    @property
+    def engine_decimal(self) -> str:
+        """The ``decimal`` with which the C engine of pandas reads what ``plain`` returns."""
+        return "." if self._quotes_commas else self.decimal
 
     @property
     def says(self) -> str:
@@ -79,11 +79,14 @@ class Dialect:
         return name + "".join(extras)
 
 
-def _requoted(text: str, delimiter: str) -> str:
-    """``text`` without quotes; commas that separate quoted cells become semicolons, those inside stay."""
-    if delimiter == ",":
-        text = text.replace('","', '";"').replace(',"', ';"').replace('",', '";')
-    return text.replace('"', "")
+_QUOTED = re.compile(r'"([^"\n]*)"')
+# Stands for a comma inside quotes while the others part the cells.
+_INSIDE = "\x1f"
+
+
+def _unquoted(text: str, inside: str) -> str:
+    """``text`` without quotes, ``inside`` in place of the commas between them."""
+    return _QUOTED.sub(lambda found: found[1].replace(",", inside), text).replace('"', "")
 
 
 @dataclass(frozen=True)

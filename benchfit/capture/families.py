@@ -141,7 +141,9 @@ def _from_settings(found: Evidence, settled: Settings) -> tuple[Title, ...]:
     columns = numeric if len(names) == len(numeric) or len(numeric) == 1 else numeric[1:]
     for k, column in enumerate(columns):
         name = names[k] if k < len(names) else ""
-        measure = header.title(units[min(k, len(units) - 1)]).unit if units else None
+        # Whole numbers are the converter's codes, whatever unit the settings give for what they stand for.
+        codes = all(cell.lstrip("+-").isdigit() for cell in found.page.column(column) if cell)
+        measure = header.title(units[min(k, len(units) - 1)]).unit if units and not codes else None
         titles += [Title()] * (column + 1 - len(titles))
         titles[column] = Title(name, measure, name)
     return tuple(titles)

@@ -155,7 +155,7 @@ def _with_units_row(page: Page, above: Sequence[int], units: Sequence[str], coun
     names: tuple[str, ...] = ()
     if len(above) > 1:
         names = _cells(page.lines[above[-2]], page.dialect, len(page.numeric))
-        if not _could_name(names, units, page):
+        if not _could_name(names, above, units, page):
             names = ()
     width = max(len(names), len(measures))
     titles = []
@@ -189,7 +189,7 @@ def _cells(line: str, dialect: Dialect, wanted: int) -> tuple[str, ...]:
 
 def _is_units_row(cells: Sequence[str], decimal: str) -> bool:
     filled = [cell for cell in cells if cell and not is_number(cell, decimal)]
-    units = [cell for cell in filled if unit(cell) is not None]
+    units = [cell for cell in filled if (found := unit(cell)) is not None and found.base]
     # The cell over a sequence number names it, in place of a unit.
     others = [
         cell
@@ -199,12 +199,19 @@ def _is_units_row(cells: Sequence[str], decimal: str) -> bool:
     return bool(units) and not others
 
 
-def _could_name(names: Sequence[str], units: Sequence[str], page: Page) -> bool:
+def _could_name(names: Sequence[str], above: Sequence[int], units: Sequence[str], page: Page) -> bool:
+    """Whether the row above a row of units names columns rather than being a last setting."""
     filled = [name for name in names if name]
-    if not filled:
+    if not filled or any(re.search(r"\d[:\-/]\d\d", name) for name in filled):
         return False
-    settings = len(names) <= 2 < len(page.numeric) or any(re.search(r"\d[:\-/]\d\d", name) for name in filled)
-    return not settings and len(filled) >= min(len([u for u in units if u]) - 1, len(page.numeric) - 1)
+    if len(names) <= 2 < len(page.numeric):
+        return False
+    first = title(names[0])
+    if not (first.is_time or first.is_index or not names[0] or first.name.casefold() in ("source", "name", "channel")):
+        settings = sum(_is_setting(page.rows[k], page.decimal) for k in above[:-2] if page.rows[k])
+        if _is_setting(names, page.decimal) or settings:
+            return False
+    return len(filled) >= min(len([u for u in units if u]) - 1, len(page.numeric) - 1)
 
 
 def _is_names_row(page: Page, above: Sequence[int], cells: Sequence[str]) -> bool:
@@ -230,6 +237,8 @@ def _is_names_row(page: Page, above: Sequence[int], cells: Sequence[str]) -> boo
         return True
     if marks and (titles[0].is_time or titles[0].is_index or not cells[0] or marks >= columns):
         return not _is_setting(cells, page.decimal) or titles[0].is_time
+    if len(filled) < columns or (columns == 1 and not marks):
+        return False
     before = _cells(page.lines[above[-2]], page.dialect, columns) if page.dialect else ()
     return not _is_setting(cells, page.decimal) and len(before) != len(cells)
 

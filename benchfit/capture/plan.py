@@ -272,7 +272,7 @@ def _channel(column: int, named: Title, place: int, table: _Columns) -> Column:
         return Column(column, name, named.unit.base, named.unit.scale)
     values = table.finite(column)
     spread = float(np.ptp(values)) if values.size else 0.0
-    codes = table.is_whole(column) and (spread >= 32 or (spread == 1 and bool(np.min(values) == 0)))
+    codes = table.is_whole(column) and (spread >= 16 or set(np.unique(values)) <= {0.0, 1.0})
     return Column(column, name, "" if codes else "V", unit_is_assumed=True)
 
 

@@ -163,7 +163,7 @@ def _out_of_range(values: Floats, column: int, overloaded: dict[int, NDArray[np.
 
 def _engine(work: _Work) -> dict[str, object]:
     return {
-        "sep": work.dialect.engine_delimiter, "decimal": work.dialect.decimal, "header": None, "names": range(work.width),
+        "sep": work.dialect.engine_delimiter, "decimal": work.dialect.engine_decimal, "header": None, "names": range(work.width),
         "dtype": "float64", "engine": "c", "quoting": csv.QUOTE_NONE,
     }  # fmt: skip
 

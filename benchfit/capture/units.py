@@ -23,12 +23,12 @@ _SYMBOLS = {
 }
 _WORDS = {
     "V": "volt volts vdc vac vrms vpp volte volti voltios вольт в 伏",
-    "A": "amp amps ampere amperes ampère ampères amper amperios adc ампер",
+    "A": "amp amps ampere amperes ampère ampères amper amperios ампер",
     "s": "s sec secs second seconds sekunde sekunden sekund sek seconde secondes secondo secondi segundo segundos "
     "sekunda sekundy szekundum с сек секунда секунды 秒",
     "W": "watt watts", "Hz": "hertz", "Ω": "ohm ohms", "°C": "celsius degc °c", "K": "kelvin",
     "°": "deg degree degrees °", "dB": "db", "dBV": "dbv dbvrms", "dBm": "dbm", "%": "percent %",
-    "": "code codes count counts cnt lsb raw digit digits adu none n/a bit bits logic u",
+    "": "code codes count counts cnt lsb raw digit digits adu adc none n/a bit bits logic",
 }  # fmt: skip
 _BY_WORD = {word: base for base, words in _WORDS.items() for word in words.split()}
 _MINUTES = frozenset(("min", "mins", "minute", "minutes", "minuten"))
@@ -58,7 +58,7 @@ def unit(text: str) -> Unit | None:
     bracketed = bare != text.strip()
     if not bare or len(bare) > 16:
         return None
-    if found := _time(bare):
+    if found := _time(bare, bracketed):
         return found
     base = _BY_WORD.get(bare.casefold())
     if base is not None:
@@ -86,7 +86,7 @@ def unbracketed(text: str) -> str:
     return bare
 
 
-def _time(bare: str) -> Unit | None:
+def _time(bare: str, bracketed: bool) -> Unit | None:
     word = bare.casefold().rstrip(".")
     if _BY_WORD.get(word) == "s":
         return Unit("s", 1.0, bare)
@@ -97,9 +97,10 @@ def _time(bare: str) -> Unit | None:
     for prefix in _LONG:
         if word.startswith(prefix) and _BY_WORD.get(word.removeprefix(prefix)) == "s":
             return Unit("s", _PREFIXES[prefix], bare)
-    if word in _MINUTES:
+    # Without brackets "min" is the minimum.
+    if word in _MINUTES and (bracketed or len(word) > 4):
         return Unit("s", 60.0, bare)
-    if word in _HOURS and bare != "H":
+    if word in _HOURS and bare != "H" and (bracketed or len(word) > 3):
         return Unit("s", 3600.0, bare)
     return None
 
@@ -111,7 +112,7 @@ _QUANTITY = re.compile(
 
 def quantity(text: str) -> tuple[float, str] | None:
     """The number that begins ``text`` and what follows it: "500.0kSa/s" and "Analog:500.0kSa/s" too."""
-    found = _QUANTITY.fullmatch(text.rpartition(":")[2].strip().strip('"'))
+    found = _QUANTITY.fullmatch(re.sub(r"^\s*[^\W\d]\w*:", "", text).strip().strip('"'))
     if not found:
         return None
     return float(found["value"].replace(",", ".")), (found["unit"] or "").strip()
