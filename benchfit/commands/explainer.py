@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import signal
 import threading
+import time
 from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
@@ -16,17 +17,23 @@ from benchfit.errors import BenchfitError
 if TYPE_CHECKING:
     from benchfit.capture import Capture
     from benchfit.explain.result import Explanation
+    from benchfit.pipeline import Found
     from benchfit.sheet import Sheet
 
 _MOST_DEATHS = 3
+_DRAW_EVERY = 10.0
+"""Seconds after which a figure is drawn anew although captures wait to be explained."""
 
 
 @dataclass(frozen=True, eq=False)
 class Explained:
-    """What came of one explanation: of the capture acquired at ``stamp`` (``number`` in the run)."""
+    """What came of one explanation: of the capture acquired at ``stamp`` (``number`` in the run, from 1).
 
-    number: int
-    stamp: str
+    ``says``: what went wrong, in explaining or in drawing.
+    """
+
+    number: int = 0
+    stamp: str = ""
     explanation: Explanation | None = None
     says: str = ""
 
@@ -38,7 +45,7 @@ class Explainer:
     ----------
     sheet : Sheet or None
     plot, report : str or None
-        Files to write anew with each explanation.
+        Files to write anew as explanations come.
     when_done : callable
         Called (from another thread) when an explanation is ready to be fetched.
     """
@@ -55,6 +62,7 @@ class Explainer:
         self.latest: Explained | None = None
         self._when_done = when_done
         self._deaths = 0
+        self._drawn, self._drawn_at = 0, 0.0
         self._future: Future[Explained] | None = None
         self._waiting: tuple[int, str, Capture] | None = None
         self._executor = self._start_warm()
@@ -79,8 +87,8 @@ class Explainer:
 
     @property
     def is_busy(self) -> bool:
-        """Whether an explanation is being worked on, or a capture waits for one."""
-        return self._future is not None or self._waiting is not None
+        """Whether something is being worked on, waits for it, or is still to be drawn."""
+        return self._future is not None or self._waiting is not None or self._is_undrawn()
 
     def offer(self, number: int, stamp: str, capture: Capture) -> None:
         """Explain this capture next; one that waits already is passed over."""
@@ -88,7 +96,7 @@ class Explainer:
         self._go_on()
 
     def fetch(self) -> Explained | None:
-        """A newly finished explanation, kept as ``latest`` too; None where there is none."""
+        """What is newly finished: an explanation (kept as ``latest``), or what went wrong; None: nothing."""
         future = self._future
         if future is None or not future.done():
             return None
@@ -96,15 +104,11 @@ class Explainer:
         try:
             found = future.result()
         except (BrokenProcessPool, OSError) as error:
-            self._deaths += 1
-            self._executor.shutdown(wait=False, cancel_futures=True)
-            self._executor = self._start_warm()
-            found = Explained(
-                0, "", says=f"the process that explains died ({type(error).__name__}); started anew"
-            )
-        self._go_on()
+            self._start_anew()
+            found = Explained(says=f"the process that explains died ({type(error).__name__}); started anew")
         if found.explanation is not None:
             self.latest = found
+        self._go_on()
         return found
 
     def wait(self, timeout: float) -> bool:
@@ -122,45 +126,79 @@ class Explainer:
         for process in list(processes.values()):
             process.terminate()
 
+    def _is_undrawn(self) -> bool:
+        wanted = self.plot is not None or self.report is not None
+        return wanted and self.latest is not None and self.latest.number != self._drawn
+
     def _go_on(self) -> None:
-        if self._future is not None or self._waiting is None:
+        """Draw what was explained last, when nothing waits or the figure is old; else explain what waits."""
+        if self._future is not None:
             return
-        (number, stamp, capture), self._waiting = self._waiting, None
         try:
-            self._future = self._executor.submit(
-                explain_one, number, stamp, capture, self.sheet, self.plot, self.report
-            )
+            is_old = time.monotonic() - self._drawn_at > _DRAW_EVERY
+            if self._is_undrawn() and (self._waiting is None or is_old):
+                assert self.latest is not None
+                self._drawn, self._drawn_at = self.latest.number, time.monotonic()
+                self._future = self._executor.submit(draw_last, self.plot, self.report)
+            elif self._waiting is not None:
+                (number, stamp, capture), self._waiting = self._waiting, None
+                self._future = self._executor.submit(explain_one, number, stamp, capture, self.sheet)
+            else:
+                return
         except (BrokenProcessPool, RuntimeError):
-            self._deaths += 1
-            self._executor = self._start_warm()
+            self._start_anew()
             return
         self._future.add_done_callback(lambda _: self._when_done())
 
+    def _start_anew(self) -> None:
+        self._deaths += 1
+        self._executor.shutdown(wait=False, cancel_futures=True)
+        self._executor = self._start_warm()
 
-def explain_one(
-    number: int, stamp: str, capture: Capture, sheet: Sheet | None, plot: str | None, report: str | None
-) -> Explained:
-    """Explain one capture and draw what is wanted; an error becomes a sentence."""
+
+# The explanation that this process made last, for drawing it: it need not travel there and back.
+_last: list[Found] = []
+
+
+def explain_one(number: int, stamp: str, capture: Capture, sheet: Sheet | None) -> Explained:
+    """Explain one capture; an error becomes a sentence."""
     from benchfit import pipeline
-    from benchfit.commands.streams import replacing
 
     try:
         found = pipeline.explain(capture, sheet)
-        if plot is not None:
-            with replacing(plot) as scratch:
-                found.plot(str(scratch))
-        if report is not None:
-            from benchfit.show.report import report as write_report
-
-            with replacing(report) as scratch:
-                write_report(found.explanation, found.constants[0], found.captures[0], scratch)
     except BenchfitError as error:
         return Explained(number, stamp, says=error.says)
     except Exception as error:
-        from benchfit.commands.main import fault
-
-        return Explained(number, stamp, says=fault(error))
+        return Explained(number, stamp, says=_fault(error))
+    _last[:] = [found]
     return Explained(number, stamp, found.explanation)
+
+
+def draw_last(plot: str | None, report: str | None) -> Explained:
+    """Draw what this process explained last, each file replaced in one step; an error becomes a sentence."""
+    from benchfit.commands.streams import replacing
+
+    try:
+        for found in _last:
+            if plot is not None:
+                with replacing(plot) as scratch:
+                    found.plot(str(scratch))
+            if report is not None:
+                from benchfit.show.report import report as write_report
+
+                with replacing(report) as scratch:
+                    write_report(found.explanation, found.constants[0], found.captures[0], scratch)
+    except BenchfitError as error:
+        return Explained(says=error.says)
+    except Exception as error:
+        return Explained(says=_fault(error))
+    return Explained()
+
+
+def _fault(error: Exception) -> str:
+    from benchfit.commands.main import fault
+
+    return fault(error)
 
 
 def _warm_up() -> None:

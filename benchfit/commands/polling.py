@@ -235,9 +235,9 @@ class Polling:
             self._emit_pending()
 
     def _finish(self) -> None:
-        """The last record waits for its own explanation."""
+        """The last record waits for its own explanation, the end for the last figure."""
         deadline = time.monotonic() + _LAST_WAIT
-        while self._pending is not None and self._explainer.is_busy and time.monotonic() < deadline:
+        while self._explainer.is_busy and time.monotonic() < deadline:
             self._explainer.wait(_TICK)
             self._fetch()
             self._draw()
@@ -249,12 +249,17 @@ class Polling:
         self._was_interrupted = True
         deadline = time.monotonic() + _LEARN_WAIT
         try:
-            while self._explainer.latest is None and self._explainer.is_busy and time.monotonic() < deadline:
+            while self._is_worth_waiting() and time.monotonic() < deadline:
                 self._explainer.wait(_TICK)
                 self._fetch()
         except KeyboardInterrupt:
             pass
         self._emit_pending()
+
+    def _is_worth_waiting(self) -> bool:
+        """Whether nothing was explained yet, or not drawn, and that is under way."""
+        wants_figure = self.plan.plot is not None or self.plan.report is not None
+        return self._explainer.is_busy and (self._explainer.latest is None or wants_figure)
 
     # -- what goes out --------------------------------------------------------------------------------------
 

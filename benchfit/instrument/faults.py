@@ -57,8 +57,8 @@ def timed_out(link: Link, command: str, timeout: float, found: bytes) -> Instrum
         seen = "no reply"
     ends = f"line ends are {writes} out and {reads} in"
     says = (
-        f"{seen} within {timeout:g} s; {ends}; if the manual says otherwise, or the acquisition takes longer,"
-        " set write_termination, read_termination or timeout in the dialect file"
+        f"{seen} within {timeout:.3g} s; {ends}; if the manual says otherwise, or the acquisition takes"
+        " longer, set write_termination, read_termination or timeout in the dialect file"
     )
     return fault("timeout", link.resource, command, says)
 

@@ -176,7 +176,7 @@ def test_files_grow(
     paths = {name: tmp_path / f"run.{name}" for name in ("json", "csv", "png")}
     status = poll(
         scope.resource, "--build", SHEET, "--count", 6, "--json", paths["json"], "--csv", paths["csv"],
-        "--plot", paths["png"], "-q",
+        "--plot", paths["png"], "--report", tmp_path / "run.html", "-q",
     )  # fmt: skip
     assert status == 0
     assert capsys.readouterr().out.count("\n") > 5, "with -q the report alone"
@@ -196,6 +196,7 @@ def test_files_grow(
     assert any("error" in record for record in found)
     assert {"R", "R_u", "C", "frequency_miss", "suspect"} <= set(rows[0])
     assert paths["png"].read_bytes().startswith(b"\x89PNG")
+    assert "Tide gate pacer" in (tmp_path / "run.html").read_text(encoding="utf-8")
 
 
 def test_a_dialect_and_other_channels(
