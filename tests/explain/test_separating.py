@@ -67,7 +67,7 @@ def test_a_reading_of_R_settles_it(name, cause):
     assert {"R", "C"} in groups(seen)
 
 
-@pytest.mark.parametrize("cause", ["C", "R"])
+@pytest.mark.parametrize("cause", ["C", pytest.param("R", marks=pytest.mark.long)])
 def test_a_known_capacitor_across_separates_them(cause):
     """T goes by R·(C + 47n): the slope of T against the added capacitance is R's alone."""
     seen = jointly(cause)
