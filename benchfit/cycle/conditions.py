@@ -137,8 +137,9 @@ def _trend(x: Array) -> tuple[float, bool]:
     slope = float(k @ x / (k @ k))
     rest = x - x.mean() - slope * k
     # Neighbours may go together; their covariance belongs to the slope's error.
-    variance = float(rest @ rest) / (n - 2)
-    together = float(rest[1:] @ rest[:-1]) / max(float(rest @ rest), 1e-300)
+    squares = float(rest @ rest)
+    variance = squares / (n - 2)
+    together = float(rest[1:] @ rest[:-1]) / max(squares, 1e-300)
     factor = (1 + together) / (1 - together) if together > 2.0 / np.sqrt(n) else 1.0
     error = np.sqrt(variance * min(factor, n / 2.0) / (k @ k))
     return slope * (n - 1), abs(slope) > _SURE * student(n - 2) ** 1.5 * error

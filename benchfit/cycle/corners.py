@@ -44,8 +44,8 @@ def fit_corners(trace: Trace, turns: Turns) -> Met | None:
         if len(fitted.fits) < 2:
             return None
         met = meet(fitted, index)
-        moved = np.abs(np.where(np.isnan(met), 0.0, met - index))
-        index = np.where(np.isnan(met), index, met)
+        met = steadied(fitted, np.where(np.isnan(met), index, met), turns.top)
+        moved, index = np.abs(met - index), met
         if fitted.layout is not inner and (np.quantile(moved, 0.98) < 0.02 or _settled(moved, layout)):
             break
         layout = layout_from(index, turns.top, layout.first[0], layout.stop[-1])
@@ -53,6 +53,41 @@ def fit_corners(trace: Trace, turns: Turns) -> Met | None:
         layout = own_samples(fitted, layout, trace, trace.noise)
         fitted = fit_phases(trace, layout, begin=fitted)
     return Met(fitted, index, turns.top, {True: (0, 0), False: (0, 0)}) if len(fitted.fits) == 2 else None
+
+
+def steadied(fitted: Fitted, index: Array, top: Mask) -> Array:
+    """Turns moved towards even spacing as far as their scatter is the record's noise and not the oscillator's.
+
+    Only which samples belong to which phase is decided by them: a turn that follows its own samples' noise
+    would pick them by that noise.
+    """
+    size = index.size
+    if size < 16 or len(fitted.fits) < 2:
+        return index
+    number = np.arange(size) // 2
+    line = np.empty(size)
+    for side in (True, False):
+        mine = top == side
+        line[mine] = np.polynomial.polynomial.Polynomial.fit(number[mine], index[mine], 1)(number[mine])
+    scatter = float(np.mean((index - line) ** 2))
+    known = float(np.median(_turn_variance(fitted, index)))
+    if not 0 < scatter < 3.0 * known:
+        return index
+    own = max(scatter - known, 0.0) / scatter
+    return np.asarray(line + own * (index - line))
+
+
+def _turn_variance(fitted: Fitted, index: Array) -> Array:
+    """Variance of each turn (samples²) from the noise of the two phases that it parts."""
+    before = np.arange(index.size)
+    result = np.zeros(index.size)
+    (_, r0), (_, r1) = fitted.values_at(before, index), fitted.values_at(before + 1, index)
+    variance = sum(f.rss for f in fitted.fits.values()) / max(sum(f.freedom for f in fitted.fits.values()), 1)
+    for phase in (before, before + 1):
+        own = fitted.derivatives(phase, index)[0]
+        information = fitted.information[phase]
+        result += np.where(information > 0, own**2 * variance / np.where(information > 0, information, 1.0), np.inf)
+    return result / ((r0 - r1) * fitted.interval) ** 2
 
 
 def guard_corners(trace: Trace, met: Met) -> Met:
@@ -95,7 +130,7 @@ def _refit(trace: Trace, met: Met, guards: dict[bool, tuple[int, int]]) -> Met:
         before[0] = after[-1] = 0
         fitted = fit_phases(trace, guarded(layout, before, after), begin=fitted)
         found = meet(fitted, index)
-        index = np.where(np.isnan(found), index, found)
+        index = steadied(fitted, np.where(np.isnan(found), index, found), met.top)
     return Met(fitted, index, met.top, guards)
 
 

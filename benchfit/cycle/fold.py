@@ -9,13 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from benchfit.cycle.arrays import Array, Index, Mask
-from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_exponentials, fit_levels
+from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_levels
 from benchfit.cycle.trace import Trace
 
 POINTS = 40_000
 PART = 20_000
 _CHUNK = 400_000
-_FOLDED = 400
+_STEPS = 3
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,33 +85,48 @@ def _keep(bins: Bins, keep: Mask) -> Bins:
     return Bins(bins.t[keep], bins.v[keep], bins.n[keep], bins.spread[keep], bins.cycle[keep])
 
 
-def fold_phases(
+def fit_many(
     trace: Trace, first: Index, stop: Index, middle: Array, bins: int, model: PhaseModel
 ) -> tuple[ExponentialFit, Index]:
-    """Fit very many phases: each one's level with ``model`` held, then the shared part from all of them folded.
+    """Fit very many phases by Gauss-Newton steps from ``model``, their samples passed through in chunks.
 
-    A phase's own level enters linearly (its departure from the common level decays as the model says), so the
-    fold carries no bias of the noise's square; what the shared part moves by is then taken to every level.
+    Each phase's own level is projected out of its samples as in ``fit_exponentials``; only the sums go on.
     """
-    parts = _chunks(np.minimum(stop - first, bins))
-    half = 0.5 * float((stop - first).max()) * trace.interval
-    sums = np.zeros((5, _FOLDED))
+    for _ in range(_STEPS):
+        fit, seen, step = _pass(trace, first, stop, middle, bins, model)
+        moved = float(step @ np.linalg.solve(fit.shared, step)) / max(fit.variance, 1e-300)
+        model = fit.model
+        if moved < 1.0:
+            break
+    return fit, seen
+
+
+def _pass(
+    trace: Trace, first: Index, stop: Index, middle: Array, bins: int, model: PhaseModel
+) -> tuple[ExponentialFit, Index, Array]:
     levels, information, coupling, seen = [], [], [], []
     rss = points = 0.0
-    for part in parts:
+    normal, gradient = np.zeros((2, 2)), np.zeros(2)
+    for part in _chunks(np.minimum(stop - first, bins)):
         b = gather(trace, first[part], stop[part], middle[part], bins)
         here, cycle = np.unique(b.cycle, return_inverse=True)
-        own, see, joint, residual = fit_levels(model, b.t, b.v, cycle, b.n, b.spread)
-        levels.append(own)
-        information.append(see)
-        coupling.append(joint)
+        fitted = fit_levels(model, b.t, b.v, cycle, b.n, b.spread)
+        levels.append(fitted.levels)
+        information.append(fitted.information)
+        coupling.append(fitted.coupling)
         seen.append(here + part.start)
-        rss += float(np.sum(b.n * residual**2))
+        rss += float(np.sum(b.n * fitted.residual**2))
         points += b.t.size
-        place = np.clip(((b.t / half + 1.0) * (_FOLDED / 2)).astype(np.int64), 0, _FOLDED - 1)
-        for row, x in enumerate((b.n, b.n * b.t, b.n * (b.t**2 + b.spread), b.n * residual, b.n * b.n)):
-            sums[row] += np.bincount(place, x, _FOLDED)
-    return _from_fold(sums, model, rss, points, levels, information, coupling), np.concatenate(seen)
+        weighted = fitted.bare * b.n
+        normal += weighted @ fitted.bare.T
+        gradient += weighted @ fitted.residual
+    shared = np.linalg.inv(normal)
+    step = shared @ gradient
+    own, see, joint = np.concatenate(levels), np.concatenate(information), np.concatenate(coupling)
+    moved = PhaseModel(model.reference, model.slope + float(step[0]), model.curvature + float(step[1]))
+    rss = max(rss - float(gradient @ step), 0.0)
+    fit = ExponentialFit(moved, own + joint @ step, see, shared, joint, rss, int(points) - own.size - 2)
+    return fit, np.concatenate(seen), step
 
 
 def _chunks(points: Index) -> list[slice]:
@@ -119,34 +134,3 @@ def _chunks(points: Index) -> list[slice]:
     cuts = np.searchsorted(total, np.arange(_CHUNK, int(total[-1]), _CHUNK))
     edges = np.unique(np.concatenate([[0], cuts, [points.size]]))
     return [slice(int(a), int(b)) for a, b in pairwise(edges)]
-
-
-def _from_fold(
-    sums: Array,
-    model: PhaseModel,
-    rss: float,
-    points: float,
-    levels: list[Array],
-    information: list[Array],
-    coupling: list[Array],
-) -> ExponentialFit:
-    held = sums[0] > 0
-    n, t = sums[0][held], sums[1][held] / sums[0][held]
-    spread = np.maximum(sums[2][held] / n - t * t, 0.0)
-    own, see, joint = np.concatenate(levels), np.concatenate(information), np.concatenate(coupling)
-    common = float(np.average(own, weights=see))
-    v = model.value(t, np.array(common)) + sums[3][held] / n
-    # The curve's mean over a bin, not its value at the bin's mean time, is what the residual was taken from.
-    curve = model.value(t, np.array(common))
-    v = v + 0.5 * spread * model.curvature**2 * (curve - model.asymptote if model.curvature else 0.0 * curve)
-    fit = fit_exponentials(t, v, None, n, spread, curvature=model.curvature)
-    moved = _difference(fit.model, model)
-    return ExponentialFit(
-        fit.model, own + joint @ moved, see, fit.shared, joint, rss, int(points) - own.size - 2
-    )
-
-
-def _difference(new: PhaseModel, old: PhaseModel) -> Array:
-    """(slope, curvature) of ``new`` less those of ``old``, both about the reference of ``new``."""
-    slope = old.slope - old.curvature * (new.reference - old.reference)
-    return np.array([new.slope - slope, new.curvature - old.curvature])

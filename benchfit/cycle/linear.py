@@ -47,10 +47,10 @@ def phase_form(fitted: Fitted, phase: Index, index: Array, weight: Array) -> For
     return Form(total, by_kind)
 
 
-def curvature_form(fitted: Fitted, rising: bool) -> Form:
-    """The curvature of a kind itself."""
+def shared_form(fitted: Fitted, rising: bool, which: int) -> Form:
+    """The slope (0) or the curvature (1) of a kind itself."""
     shared = np.zeros((2, 2))
-    shared[int(rising), 1] = 1.0
+    shared[int(rising), which] = 1.0
     return Form(np.zeros(fitted.layout.size), shared)
 
 

@@ -6,13 +6,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.arrays import Array
+from benchfit.cycle.closure import close_cycle, constants_of
 from benchfit.cycle.conditions import irregularities
 from benchfit.cycle.constants import PhaseFit
 from benchfit.cycle.corners import Met, corner_forms, corners, extreme, fit_corners, guard_corners
 from benchfit.cycle.cycles import Cycles
 from benchfit.cycle.ends import started, with_ends
-from benchfit.cycle.linear import Form, covariance, curvature_form, phase_form, structure_covariance
+from benchfit.cycle.linear import Form, covariance, phase_form, shared_form, structure_covariance
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import PeriodFit, fit_period
 from benchfit.cycle.phases import Corners, Fitted
@@ -80,28 +81,25 @@ def _variances(fitted: Fitted, profiles: dict[bool, Profile]) -> dict[bool, floa
 def _constants(view: _View) -> Observed | None:
     """Cycle constants of the fitted phases."""
     fitted, corner = view.fitted, view.corner
-    names: list[str] = []
-    values: list[float] = []
-    forms: list[Form] = []
-
-    def add(name: str, value: float, form: Form) -> None:
-        names.append(name)
-        values.append(value)
-        forms.append(form)
-
     upper, lower = (_level_weights(view, top) for top in (True, False))
-    period, period_form = _period(view, float(upper @ corner.voltage), float(lower @ corner.voltage))
-    add("period", period.period, period_form)
-    share, share_form = _share(view, period.period, period_form)
-    add("charge_share", share, share_form)
-    for name, weight in (("upper", upper), ("lower", lower)):
-        add(name, float(weight @ corner.voltage), corner_forms(fitted, corner, 0.0 * weight, weight))
-    for name, rising in (("charge_curvature", True), ("discharge_curvature", False)):
-        add(name, fitted.model(rising).curvature, curvature_form(fitted, rising))
+    heights = [float(w @ corner.voltage) for w in (upper, lower)]
+    period, period_form = _period(view, *heights)
+    still = np.zeros(corner.index.size)
+    forms = [period_form, *(corner_forms(fitted, corner, still, w) for w in (upper, lower))]
+    seven = [period.period, *heights]
+    for rising in (True, False):
+        seven += [fitted.model(rising).slope, fitted.model(rising).curvature]
+        forms += [shared_form(fitted, rising, 0), shared_form(fitted, rising, 1)]
+    models = fitted.model(True), fitted.model(False)
     cov = covariance(fitted, forms, view.variance)
-    jitter, series = _scatter(view, cov, share, period.u)
-    cov = cov + jitter + structure_covariance(fitted, forms, view.profiles)
-    names, values_array, cov = _with_bows(view, names, np.array(values), cov)
+    slack = 2.0 * (2.0 * period.jitter[0] / fitted.layout.size) ** 2
+    x, closed_cov = close_cycle(np.array(seven), cov, slack, *models)
+    values, jacobian = constants_of(x, *models, cov)
+    cov = jacobian @ closed_cov @ jacobian.T
+    jitter, series = _scatter(view, cov, float(values[1]), period.u)
+    cov = cov + jitter + jacobian @ structure_covariance(fitted, forms, view.profiles) @ jacobian.T
+    names = ["period", "charge_share", "upper", "lower", "charge_curvature", "discharge_curvature"]
+    names, values_array, cov = _with_bows(view, names, values, cov)
     ends = {}
     for top, name in ((True, "upper"), (False, "lower")):
         i = names.index(name)
@@ -185,39 +183,6 @@ def _period(view: _View, upper: float, lower: float) -> tuple[PeriodFit, Form]:
         at, number = closed(at, rising, put_in_order(at, rising).odd)
     period = fit_period(at, number, rising.astype(int), spread)
     return period, phase_form(fitted, good, index, -period.weights / rate[good])
-
-
-def _share(view: _View, period: float, period_form: Form) -> tuple[float, Form]:
-    """Mean rising time over mean rising plus mean falling time, from neighbouring corners."""
-    corner, fitted = view.corner, view.fitted
-    neighbours = np.flatnonzero(
-        (np.diff(corner.before) == 1) & ~_padded(view.order.odd, corner.index.size - 1)
-    )
-    rises = neighbours[~corner.top[neighbours]]
-    falls = neighbours[corner.top[neighbours]]
-    lengths = np.diff(corner.index) * fitted.interval
-    weight = np.zeros(corner.index.size)
-
-    def mean_of(these: Array, factor: float) -> float:
-        np.add.at(weight, these + 1, factor / these.size)
-        np.add.at(weight, these, -factor / these.size)
-        return float(lengths[these].mean())
-
-    if rises.size and falls.size:
-        charge, discharge = float(lengths[rises].mean()), float(lengths[falls].mean())
-        total = charge + discharge
-        mean_of(rises, discharge / total**2)
-        mean_of(falls, -charge / total**2)
-        return charge / total, corner_forms(fitted, corner, weight, 0.0 * weight)
-    # Only one kind is seen whole: the other is what it leaves of the period.
-    sign = 1.0 if rises.size else -1.0
-    whole = mean_of(rises if rises.size else falls, sign / period)
-    form = corner_forms(fitted, corner, weight, 0.0 * weight) + period_form * (-sign * whole / period**2)
-    return (whole / period if rises.size else 1.0 - whole / period), form
-
-
-def _padded(odd: Mask, size: int) -> Mask:
-    return odd if odd.size == size else np.zeros(size, dtype=bool)
 
 
 def _with_bows(view: _View, names: list[str], values: Array, cov: Array) -> tuple[list[str], Array, Array]:

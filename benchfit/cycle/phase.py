@@ -193,16 +193,21 @@ def fit_exponentials(
     return problem.solve(begin)
 
 
-def fit_levels(
-    model: PhaseModel, t: Array, v: Array, cycle: Index, weight: Array, spread: Array
-) -> tuple[Array, Array, Array, Array]:
-    """Levels of many cycles with the shared part held.
-
-    Returns
-    -------
-    levels, information, coupling, residual : ndarray
-        The first three as in ExponentialFit, the residual of every bin (V).
+@dataclass(frozen=True, eq=False)
+class LevelFit:
+    """Levels of many cycles with the shared part held: as in ExponentialFit, and for every bin the ``residual`` (V)
+    and its derivatives by (slope, curvature), the levels projected out: ``bare``, shape (2, n).
     """
+
+    levels: Array
+    information: Array
+    coupling: Array
+    residual: Array
+    bare: Array
+
+
+def fit_levels(model: PhaseModel, t: Array, v: Array, cycle: Index, weight: Array, spread: Array) -> LevelFit:
+    """Fit each cycle's level with the shared part held."""
     count = int(cycle[-1]) + 1
     decay, ramp, bend = basis(t, spread, model.curvature)
     wd = weight * decay
@@ -210,8 +215,9 @@ def fit_levels(
     y = v - model.reference - model.slope * ramp
     own = np.bincount(cycle, wd * y, count) / see
     bent = model.slope * bend - own[cycle] * t * decay
-    coupling = np.stack([-np.bincount(cycle, wd * c, count) / see for c in (ramp, bent)], axis=1)
-    return model.reference + own, see, coupling, y - own[cycle] * decay
+    coupling = np.stack([-np.bincount(cycle, wd * c, count) / see for c in (ramp, bent)])
+    bare = np.stack([c + decay * k[cycle] for c, k in zip((ramp, bent), coupling, strict=True)])
+    return LevelFit(model.reference + own, see, coupling.T, y - own[cycle] * decay, bare)
 
 
 class _Problem:

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from benchfit.cycle.arrays import Array, Index, Mask
-from benchfit.cycle.fold import PART, POINTS, Bins, bins_per_phase, fold_phases, gather
+from benchfit.cycle.fold import PART, POINTS, Bins, bins_per_phase, fit_many, gather
 from benchfit.cycle.phase import ExponentialFit, PhaseModel, fit_exponentials
 from benchfit.cycle.trace import Trace
 
@@ -97,9 +97,8 @@ def fit_phases(
 ) -> Fitted:
     """Fit the phases of each kind: shared asymptote and κ, one level per phase.
 
-    Up to some hundred thousand bins all phases are fitted at once. Of more, an evenly spread part gives a first
-    model; then all are folded onto it, each by its own level, and the fold gives the shared part. An earlier fit
-    says where to ``begin``.
+    Some ten thousand bins are fitted at once. Of more, an evenly spread part gives a first model, from which
+    Gauss-Newton steps over all of them go on. An earlier fit says where to ``begin``.
     """
     size = layout.size
     middle = (layout.first + layout.stop - 1) / 2.0
@@ -138,7 +137,7 @@ def _fit_kind(
         if begun is None:
             return None
         model = begun[0].model
-    return fold_phases(trace, first, stop, middle, bins, model)
+    return fit_many(trace, first, stop, middle, bins, model)
 
 
 def _fit_at_once(bins: Bins, model: PhaseModel | None) -> tuple[ExponentialFit, Index] | None:

@@ -14,9 +14,9 @@ from benchfit.cycle.gaps import Gaps, Threshold, censored_mean, find_gaps, rough
 from benchfit.cycle.linear import (
     Form,
     covariance,
-    curvature_form,
     extra_form,
     phase_form,
+    shared_form,
     structure_covariance,
 )
 from benchfit.cycle.observed import Observed
@@ -142,7 +142,7 @@ def observe_ramps(trace: Trace, ramps: Ramps) -> Observed | None:
         extra_form(fitted, 1.0, -1.0) * (sign / period.period),
         end_form + extra_form(fitted, r_end, 0.0),
         start_form + extra_form(fitted, 0.0, r_start),
-        curvature_form(fitted, rising),
+        shared_form(fitted, rising, 1),
     ]
     names = ["period", "charge_share", *(("upper", "lower") if rising else ("lower", "upper"))]
     names.append("charge_curvature" if rising else "discharge_curvature")

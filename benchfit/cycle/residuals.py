@@ -57,7 +57,7 @@ def body_profile(trace: Trace, fitted: Fitted, kind: bool) -> Profile | None:
         return None
     cycle = np.unique(bins.cycle, return_inverse=True)[1]
     model = fitted.model(kind)
-    residual = fit_levels(model, bins.t, bins.v, cycle, bins.n, bins.spread)[3]
+    residual = fit_levels(model, bins.t, bins.v, cycle, bins.n, bins.spread).residual
     half = np.zeros(int(cycle[-1]) + 1)
     np.maximum.at(half, cycle, np.abs(bins.t) + 0.5 * bins.n * trace.interval)
     u = bins.t / half[cycle]

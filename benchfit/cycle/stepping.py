@@ -15,9 +15,9 @@ from benchfit.cycle.joints import Joints, clear_of, split
 from benchfit.cycle.linear import (
     Form,
     covariance,
-    curvature_form,
     extra_form,
     phase_form,
+    shared_form,
     structure_covariance,
 )
 from benchfit.cycle.observed import Observed
@@ -205,7 +205,7 @@ def constants(trace: Trace, found: Stepped) -> Observed | None:
             parts.append((name, value, form + extra_form(fitted, place[0] * slope, place[1] * slope)))
     for name, rising in (("charge_curvature", True), ("discharge_curvature", False)):
         if rising in real:
-            parts.append((name, fitted.model(rising).curvature, curvature_form(fitted, rising)))
+            parts.append((name, fitted.model(rising).curvature, shared_form(fitted, rising, 1)))
     names = tuple(p[0] for p in parts)
     cov = covariance(fitted, [p[2] for p in parts], variances, np.array([upper.variance, lower.variance]))
     cov[0, 0] = max(cov[0, 0], period.u**2)
