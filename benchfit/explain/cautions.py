@@ -60,11 +60,14 @@ def _stored(model: Model) -> str:
 
 
 def scope_checks(
-    sheet: Sheet, captures: Sequence[CycleConstants]
+    sheet: Sheet, captures: Sequence[CycleConstants], attenuation: bool = True
 ) -> tuple[list[CycleConstants], list[Remark]]:
-    """Volts that are ten times wrong are set right with a ``wrong-attenuation`` warning; a timing node whose
-    mean lies
-    where the circuit cannot put it is taken for a.c. coupled, with a warning."""
+    """The captures with their volts set right, and what is to be said of it.
+
+    Volts that are ten times wrong (``attenuation``), and a timing node whose mean lies where the circuit
+    cannot
+    put it, which is taken for a.c. coupled.
+    """
     from benchfit.explain.assemble import parameters_of, timing_node
 
     build = sheet.build()
@@ -72,101 +75,77 @@ def scope_checks(
     checked, notes = [], []
     for constants in captures:
         node = timing_node(build.circuit, constants)
-        view = View(node.name if node else "", node.shape if node else "timing", capacitor="C")
-        offered = {
-            k: float(np.ravel(v)[0]) for k, v in model.constants_of(view, model.values(model.nominal)).items()
-        }
-        factor, where = _attenuation(constants, offered)
-        if factor != 1.0:
-            constants = _scaled(constants, factor, where)
-            word = "ten times too small" if factor > 1 else "ten times too large"
-            notes.append(
-                Remark(
-                    "wrong-attenuation",
-                    f"the {where} voltages are {word} for this circuit while their ratios are right: "
-                    "the probe's attenuation setting is taken to be wrong and set right here; check it on "
-                    "the scope",
-                )
-            )
-        if (
-            node is not None
-            and constants.oscillates
-            and constants.coupling.get(node.name, "dc") == "dc"
-            and _centred(constants, offered)
-        ):
+        view = View(node.name if node else "", node.shape if node else "timing")
+        values = model.constants_of(view, model.values(model.nominal))
+        offered = {k: float(np.ravel(v)[0]) for k, v in values.items()}
+        if attenuation:
+            for where in ("output", "timing"):
+                factor = _attenuation(constants, offered, where)
+                if factor != 1.0:
+                    constants = _scaled(constants, factor, where)
+                    notes.append(
+                        Remark("wrong-attenuation", _WRONG.format(where=_WHERE[where], how=_HOW[factor]))
+                    )
+        if node is not None and _is_centred(constants, offered, node.name):
             constants = replace(constants, coupling={**constants.coupling, node.name: "ac"})
-            notes.append(
-                Remark(
-                    "ac-coupled",
-                    f"the {node.name} node's mean lies at 0 V, where this circuit cannot put it: the scope "
-                    "was a.c. coupled; voltages are used as differences only; capture it again d.c. coupled",
-                )
-            )
+            notes.append(Remark("ac-coupled", _COUPLED.format(node=node.name)))
         checked.append(constants)
     return checked, notes
 
 
-def _attenuation(constants: CycleConstants, offered: dict[str, float]) -> tuple[float, str]:
-    """10, 0.1 or 1: the factor that brings the swings onto what the sheet expects, and the node it holds
-    for."""
-    pairs = {"output": ("high", "low"), "timing": ("upper", "lower")}
-    for where, (top, bottom) in pairs.items():
-        if top in constants and bottom in constants and math.isfinite(offered.get(top, math.nan)):
-            seen = constants.value(top) - constants.value(bottom)
-            meant = offered[top] - offered[bottom]
-            if seen <= 0 or meant <= 0:
-                continue
-            for factor in (10.0, 0.1):
-                if abs(math.log(seen * factor / meant)) < 0.35 and abs(math.log(seen / meant)) > 1.8:
-                    return factor, "output's" if where == "output" else "timing node's"
-    return 1.0, ""
+_HOW = {10.0: "ten times too small", 0.1: "ten times too large"}
+_WHERE = {"output": "output's", "timing": "timing node's"}
+_WRONG = (
+    "the {where} voltages are {how} for this circuit while their ratios are right: the probe's "
+    "attenuation setting is taken to be wrong and set right here; check it on the scope"
+)
+_COUPLED = (
+    "the {node} node's mean lies at 0 V, where this circuit cannot put it: the scope was a.c. coupled; "
+    "voltages are used as differences only; capture it again d.c. coupled"
+)
+
+
+def _attenuation(constants: CycleConstants, offered: dict[str, float], where: str) -> float:
+    """10, 0.1 or 1: the factor that brings a node's swing onto what the sheet expects."""
+    top, bottom = ("high", "low") if where == "output" else ("upper", "lower")
+    if not (top in constants and bottom in constants and math.isfinite(offered.get(top, math.nan))):
+        return 1.0
+    seen = constants.value(top) - constants.value(bottom)
+    meant = offered[top] - offered[bottom]
+    if seen <= 0 or meant <= 0 or abs(math.log(seen / meant)) < 1.8:
+        return 1.0
+    return next((f for f in (10.0, 0.1) if abs(math.log(seen * f / meant)) < 0.35), 1.0)
 
 
 def _scaled(constants: CycleConstants, factor: float, where: str) -> CycleConstants:
-    names = (
-        ("high", "low")
-        if where.startswith("output")
-        else tuple(n for n in VOLTAGES if n not in ("high", "low"))
-    )
+    levels = ("high", "low")
+    names = levels if where == "output" else tuple(n for n in VOLTAGES if n not in levels)
     scale = np.array([factor if n in names else 1.0 for n in constants.names])
-    spans = {
-        n: ((a * factor, b * factor) if (n == "output") == where.startswith("output") else (a, b))
-        for n, (a, b) in constants.spans.items()
-    }
-    pick = None if where.startswith("output") else factor
-    highest = (
-        constants.highest
-        if pick is None or constants.highest is None
-        else (constants.highest[0] * pick, constants.highest[1] * pick)
-    )
-    lowest = (
-        constants.lowest
-        if pick is None or constants.lowest is None
-        else (constants.lowest[0] * pick, constants.lowest[1] * pick)
-    )
+    node = {n: (n == "output") == (where == "output") for n in constants.spans}
+
+    def times(pair: tuple[float, float] | None) -> tuple[float, float] | None:
+        return pair if pair is None or where == "output" else (pair[0] * factor, pair[1] * factor)
+
     return replace(
         constants,
         values=constants.values * scale,
         covariance=constants.covariance * np.outer(scale, scale),
-        spans=spans,
-        highest=highest,
-        lowest=lowest,
+        spans={n: (a * factor, b * factor) if node[n] else (a, b) for n, (a, b) in constants.spans.items()},
+        noise={n: x * factor if node.get(n) else x for n, x in constants.noise.items()},
+        highest=times(constants.highest),
+        lowest=times(constants.lowest),
     )
 
 
-def _centred(constants: CycleConstants, offered: dict[str, float]) -> bool:
-    """Whether the node's middle lies at 0 V although the circuit's own is far from it (more than half a
-    swing)."""
-    if "upper" not in constants or "lower" not in constants:
+def _is_centred(constants: CycleConstants, offered: dict[str, float], node: str) -> bool:
+    """Whether the node's middle lies at 0 V although the circuit's own is far from it."""
+    if not constants.oscillates or constants.coupling.get(node, "dc") != "dc":
         return False
     upper, lower = offered.get("upper", math.nan), offered.get("lower", math.nan)
-    if not (math.isfinite(upper) and math.isfinite(lower)):
+    if "upper" not in constants or "lower" not in constants or not math.isfinite(upper - lower):
         return False
     swing = constants.value("upper") - constants.value("lower")
     middle = 0.5 * (constants.value("upper") + constants.value("lower"))
     meant = 0.5 * (upper + lower)
-    return (
-        abs(middle) < 0.2 * swing
-        and abs(meant) > 0.45 * (upper - lower)
-        and abs(meant - middle) > 0.35 * swing
-    )
+    far = abs(meant) > 0.45 * (upper - lower) and abs(meant - middle) > 0.35 * swing
+    return abs(middle) < 0.2 * swing and far

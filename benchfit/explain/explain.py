@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
-from scipy.special import chdtrc
+from scipy.special import chdtrc, logsumexp
 
 from benchfit.circuits.solve import curve
 from benchfit.cycle.constants import CycleConstants
@@ -30,6 +30,8 @@ from benchfit.explain.weigh import Weighed, weigh
 from benchfit.sheet.model import Sheet
 
 POOR = 1e-4
+# How often a probe's attenuation setting is wrong, before anything was seen: three stars, but quickly found.
+WRONG_SETTING = 0.03
 
 
 def explain(
@@ -70,12 +72,31 @@ def explain(
             verdict=verdict,
             warnings=tuple(_unique(warnings + cautions(None, sheet, captures))),
         )
-    checked, notes = scope_checks(sheet, captures)
+    checked, notes = _attenuated(sheet, captures)
     model = assemble(sheet, checked)
     warnings += notes
     if not first.oscillates:
         return _explain_rest(model, first, sheet, base, warnings)
     return _explain_cycle(model, checked, sheet, base, warnings)
+
+
+def _attenuated(
+    sheet: Sheet, captures: Sequence[CycleConstants]
+) -> tuple[list[CycleConstants], list[Remark]]:
+    """Volts ten times off are a wrong probe setting, or a part that is a decade off: whichever explains
+    more."""
+    right, notes = scope_checks(sheet, captures)
+    if not any(n.code == "wrong-attenuation" for n in notes) or not captures[0].oscillates:
+        return right, notes
+    plain, others = scope_checks(sheet, captures, attenuation=False)
+    as_right, as_plain = (_support(weigh(assemble(sheet, c))) for c in (right, plain))
+    return (right, notes) if as_right + math.log(WRONG_SETTING) > as_plain else (plain, others)
+
+
+def _support(weighed: Sequence[Weighed]) -> float:
+    """ln of the evidence of all hypotheses together."""
+    logs = [w.log_evidence + math.log(w.prior) for w in weighed if np.isfinite(w.log_evidence)]
+    return float(logsumexp(logs)) if logs else -math.inf
 
 
 def _output_times(sheet: Sheet) -> bool:

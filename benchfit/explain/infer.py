@@ -39,6 +39,8 @@ class Batch:
         Its value and range in that gauge.
     moves : bool
         Own parameters are relaxed too (flat prior within the range); else they stay at ``t``.
+    spare : ndarray, shape (n,), or None
+        Where to begin, in prior standard deviations, for rows that do not oscillate at their prior means.
     """
 
     center: Array
@@ -49,6 +51,7 @@ class Batch:
     low: Array
     high: Array
     moves: bool = True
+    spare: Array | None = None
 
     def __len__(self) -> int:
         return int(self.center.shape[0])
@@ -136,6 +139,9 @@ def relax(model: Model, batch: Batch, steps: int = 5, white: Array | None = None
     z = np.zeros((len(batch), free.size))
     t = batch.t.copy()
     cost, residual, state = _cost(model, batch, white, observed, z, free, t)
+    if batch.spare is not None and not np.all(np.isfinite(cost)):
+        z = np.where(np.isfinite(cost)[:, None], z, batch.spare[free])
+        cost, residual, state = _cost(model, batch, white, observed, z, free, t)
     jacobian = np.zeros((len(batch), observed.size, free.size + owns))
     for _ in range(steps):
         jacobian = _jacobian(model, batch, white, state, residual, observed, free, t, owns)
@@ -219,6 +225,22 @@ def _jacobian(
 def _prior(held: int, owns: int) -> Array:
     """Precision of each column's own prior: 1 for what is held, next to nothing for what is free."""
     return np.concatenate([np.ones(held), np.full(owns, 1e-9)])
+
+
+def begin(model: Model, white: Array) -> Array | None:
+    """A place to begin, shape (n,) in prior standard deviations, where the prior means do not oscillate: the
+    best of
+    many draws from the prior (seeded). None where the means do, or where no draw does either."""
+    with np.errstate(all="ignore"):
+        if np.all(np.isfinite(model.predict(model.center))):
+            return None
+        z = np.random.default_rng(11).standard_normal((600, len(model.parameters)))
+        residual = (model.observed - model.predict(model.center + z * model.spread)) @ white.T
+    cost = np.sum(residual**2, axis=1) + np.sum(z**2, axis=1)
+    if not np.any(np.isfinite(cost)):
+        return None
+    best: Array = z[np.nanargmin(np.where(np.isfinite(cost), cost, np.inf))]
+    return best
 
 
 def _ridge(normal: Array) -> Array:

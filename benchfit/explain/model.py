@@ -264,7 +264,10 @@ def observe(
             floor = FLOOR_BEND + FLOOR_BEND_RELATIVE * abs(value)
         else:
             # Shares near 0 or 1 belong to a flyback; its own length is then known better than the floor.
-            floor = min(FLOOR_SHARE, 0.05 * min(x, 1 - x) + 1e-6)
+            short = min(x, 1 - x)
+            floor = min(FLOOR_SHARE, 0.05 * short + 1e-6)
+            if short * period < 3 * constants.interval:
+                floor = max(floor, 0.3 * constants.interval / period)
         scales.append(scale)
         values.append(value)
         floors.append(floor)

@@ -12,7 +12,7 @@ from scipy.special import chdtrc, logsumexp
 
 from benchfit.explain import odds
 from benchfit.explain.hypotheses import Freed, Hypothesis, freed_of, singles
-from benchfit.explain.infer import IDENTITY, Batch, Relaxed, relax, whitener
+from benchfit.explain.infer import IDENTITY, Batch, Relaxed, begin, relax, whitener
 from benchfit.explain.model import Array, Model
 
 STARTS = 9
@@ -56,8 +56,23 @@ class Weighed:
     probability: float = 0.0
 
 
-def _batch(model: Model, hypotheses: Sequence[Hypothesis], owns: int, moves: bool = True) -> Batch:
+@dataclass(frozen=True, eq=False)
+class _Case:
+    """A model with what all its hypotheses share: the whitener, and where to begin."""
+
+    model: Model
+    white: Array
+    spare: Array | None
+
+    @staticmethod
+    def of(model: Model) -> _Case:
+        white = whitener(model.covariance)
+        return _Case(model, white, begin(model, white))
+
+
+def _batch(case: _Case, hypotheses: Sequence[Hypothesis], owns: int, moves: bool = True) -> Batch:
     """One row a hypothesis, own parameters at the middle of their range."""
+    model = case.model
     rows = len(hypotheses)
     center = np.tile(model.center, (rows, 1))
     spread = np.tile(model.spread, (rows, 1))
@@ -72,7 +87,7 @@ def _batch(model: Model, hypotheses: Sequence[Hypothesis], owns: int, moves: boo
             low[r, k], high[r, k] = way.low, way.high
             t[r, k] = 0.5 * (way.low + way.high)
             spread[r, way.index] = 0.0
-    return Batch(center, spread, own, gauge, t, low, high, moves)
+    return Batch(center, spread, own, gauge, t, low, high, moves, case.spare)
 
 
 def _starts(way: Freed) -> Array:
@@ -91,16 +106,16 @@ def weigh(model: Model, pairs: bool = False) -> list[Weighed]:
 
     Two independent causes are tried where no single one explains the record, or where ``pairs`` asks for it.
     """
-    white = whitener(model.covariance)
+    case = _Case.of(model)
     hypotheses = singles(model)
     fixed = [h for h in hypotheses if not h.freed]
     free = [h for h in hypotheses if len(h.freed) == 1]
     families = [h for h in hypotheses if len(h.freed) == 2]
-    found = _weigh_fixed(model, fixed, white) + _weigh_free(model, free, white)
-    found += _weigh_families(model, families, white)
+    found = _weigh_fixed(case, fixed) + _weigh_free(case, free)
+    found += _weigh_families(case, families)
     merged = _merge(found)
     if pairs or not _explains(model, merged):
-        merged = _merge(found + _weigh_pairs(model, merged, white))
+        merged = _merge(found + _weigh_pairs(case, merged))
     return merged
 
 
@@ -122,8 +137,8 @@ def _strain(model: Model, w: Weighed) -> float:
     return float(np.max(away[held], initial=0.0))
 
 
-def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
-    done = relax(model, _batch(model, hypotheses, 0), 6, white)
+def _weigh_fixed(case: _Case, hypotheses: Sequence[Hypothesis]) -> list[Weighed]:
+    done = relax(case.model, _batch(case, hypotheses, 0), 6, case.white)
     return [
         Weighed(
             h.causes,
@@ -139,10 +154,10 @@ def _weigh_fixed(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -
     ]
 
 
-def _weigh_free(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
+def _weigh_free(case: _Case, hypotheses: Sequence[Hypothesis]) -> list[Weighed]:
     if not hypotheses:
         return []
-    best = _search(model, hypotheses, white)
+    best = _search(case, hypotheses)
     # A grid about the best value, cut where the tolerance begins: evidence is an integral, not a height.
     repeated: list[int] = []
     points: list[float] = []
@@ -160,9 +175,9 @@ def _weigh_free(model: Model, hypotheses: Sequence[Hypothesis], white: Array) ->
             gaps = np.diff(t)
             weights.extend(0.5 * (np.concatenate([[0.0], gaps]) + np.concatenate([gaps, [0.0]])))
     rows = np.array(repeated)
-    batch = _batch(model, hypotheses, 1, moves=False).take(rows)
+    batch = _batch(case, hypotheses, 1, moves=False).take(rows)
     batch = replace(batch, t=np.array(points)[:, None])
-    done = relax(model, batch, 4, white)
+    done = relax(case.model, batch, 4, case.white)
     found = []
     for r, h in enumerate(hypotheses):
         mine = np.flatnonzero(rows == r)
@@ -224,23 +239,24 @@ def _averaged(
     )
 
 
-def _search(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> Relaxed:
+def _search(case: _Case, hypotheses: Sequence[Hypothesis]) -> Relaxed:
     """The best state of each hypothesis with one freed parameter, from many starts."""
     begins = [_starts(h.freed[0]) for h in hypotheses]
     rows = np.repeat(np.arange(len(hypotheses)), [b.size for b in begins])
-    batch = _batch(model, hypotheses, 1).take(rows)
+    batch = _batch(case, hypotheses, 1).take(rows)
     batch = replace(batch, t=np.concatenate(begins)[:, None])
-    rough = relax(model, batch, 3, white)
+    rough = relax(case.model, batch, 3, case.white)
     keep = []
     for r in range(len(hypotheses)):
         mine = np.flatnonzero(rows == r)
         keep.append(mine[np.argmin(rough.cost[mine])])
     chosen = np.array(keep)
-    return relax(model, replace(batch.take(chosen), t=rough.t[chosen]), 8, white)
+    return relax(case.model, replace(batch.take(chosen), t=rough.t[chosen]), 8, case.white)
 
 
-def _weigh_pairs(model: Model, found: Sequence[Weighed], white: Array) -> list[Weighed]:
+def _weigh_pairs(case: _Case, found: Sequence[Weighed]) -> list[Weighed]:
     """Two causes at once: the best single ones with every other that the data can tell from it."""
+    model = case.model
     freed = freed_of(model)
     names = list(freed)
     alone = {w.causes[0]: w for w in found if len(w.causes) == 1 and np.isfinite(w.log_evidence)}
@@ -262,36 +278,35 @@ def _weigh_pairs(model: Model, found: Sequence[Weighed], white: Array) -> list[W
                     hypotheses.append(Hypothesis((first, second), prior, (), (a, b), 2))
                     along = np.linspace(b.low, b.high, 7)
                     begins.append([(x, float(y)) for y in along for x in (at, 0.5 * (a.low + a.high))])
-    return _weigh_double(model, hypotheses, begins, white)
+    return _weigh_double(case, hypotheses, begins)
 
 
-def _weigh_families(model: Model, hypotheses: Sequence[Hypothesis], white: Array) -> list[Weighed]:
+def _weigh_families(case: _Case, hypotheses: Sequence[Hypothesis]) -> list[Weighed]:
     """Two parts that one cause moves together."""
     begins = []
     for h in hypotheses:
         a, b = h.freed
         along = [np.linspace(w.low, w.high, 5) for w in (a, b)]
         begins.append([(float(x), float(y)) for x in along[0] for y in along[1]])
-    return _weigh_double(model, hypotheses, begins, white)
+    return _weigh_double(case, hypotheses, begins)
 
 
 def _weigh_double(
-    model: Model,
+    case: _Case,
     hypotheses: Sequence[Hypothesis],
     begins: Sequence[Sequence[tuple[float, float]]],
-    white: Array,
 ) -> list[Weighed]:
     """Hypotheses that free two parts: the best of many starts, weighed by Laplace's method."""
     if not hypotheses:
         return []
     rows = np.repeat(np.arange(len(hypotheses)), [len(b) for b in begins])
     starts = np.array([pair for b in begins for pair in b])
-    batch = replace(_batch(model, hypotheses, 2).take(rows), t=starts)
-    rough = relax(model, batch, 3, white)
+    batch = replace(_batch(case, hypotheses, 2).take(rows), t=starts)
+    rough = relax(case.model, batch, 3, case.white)
     keep = np.array(
         [(mine := np.flatnonzero(rows == g))[np.argmin(rough.cost[mine])] for g in range(len(hypotheses))]
     )
-    fine = relax(model, replace(batch.take(keep), t=rough.t[keep]), 8, white)
+    fine = relax(case.model, replace(batch.take(keep), t=rough.t[keep]), 8, case.white)
     return [_pair(h, fine, r) for r, h in enumerate(hypotheses)]
 
 
