@@ -11,7 +11,7 @@ from benchfit.sheet.model import Sheet
 from tests.explain.bench import shot
 from tests.explain.scenes import DESIGNS, TIMES_TEN_PROBE
 from tools.bench import simulate
-from tools.bench.faults import Build, draw
+from tools.bench.builds import Build, draw
 
 pytestmark = pytest.mark.long
 
