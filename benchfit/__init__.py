@@ -23,8 +23,10 @@ if TYPE_CHECKING:
         SheetError,
         UsageError,
     )
+    from benchfit.lot import explain_lot
     from benchfit.pipeline import explain, predict
     from benchfit.sheet import Sheet
+    from benchfit.show.lot import lot_of
 
     __version__: str
 
@@ -42,6 +44,8 @@ __all__ = [
     "__version__",
     "circuits",
     "explain",
+    "explain_lot",
+    "lot_of",
     "predict",
     "read",
 ]
@@ -51,6 +55,8 @@ _HOME = {
     "Channel": "benchfit.capture",
     "read": "benchfit.capture",
     "Sheet": "benchfit.sheet",
+    "explain_lot": "benchfit.lot",
+    "lot_of": "benchfit.show.lot",
     "predict": "benchfit.pipeline",
     **{name: "benchfit.errors" for name in __all__ if name.endswith("Error")},
 }

@@ -68,6 +68,12 @@ class LogError(BenchfitError):
     status = 5
 
 
+def fault(error: BaseException) -> str:
+    """The sentence for an error that should not have happened."""
+    what = f"{type(error).__name__}: {error}".strip(": ").replace("\n", " ")
+    return f"a fault in benchfit itself ({what}); please report it with the input that shows it (-v: where)"
+
+
 @dataclass(frozen=True)
 class Remark:
     """A warning that accompanies a result: a fixed ``code`` (contract, section 5) and a sentence."""

@@ -29,12 +29,14 @@ MAY_KNOW = {
     },
     "assignment": {"errors", "quantity", "capture", "cycle", "circuits", "sheet"},
     "pipeline": {"errors", "capture", "cycle", "circuits", "sheet", "explain", "show", "assignment"},
+    "workers": {"errors"},
+    "lot": {"errors", "capture", "sheet", "explain.result", "show", "pipeline", "workers"},
     "burnin": {"errors", "quantity", "capture", "instrument", "pipeline"},
     "commands": {
         "errors", "quantity", "capture", "instrument", "cycle", "circuits", "sheet", "explain.result",
-        "show", "pipeline", "burnin",
+        "show", "pipeline", "workers", "lot", "burnin",
     },
-    "__init__": {"errors", "capture", "circuits", "sheet", "pipeline"},
+    "__init__": {"errors", "capture", "circuits", "sheet", "pipeline", "lot", "show.lot"},
     "__main__": {"commands"},
 }  # fmt: skip
 FILES = sorted(PACKAGE.rglob("*.py"))

@@ -3,18 +3,16 @@
 from __future__ import annotations
 
 import argparse
-import sys
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from benchfit.commands import options, streams
+from benchfit.commands import options
 from benchfit.errors import UsageError
 
 if TYPE_CHECKING:
     from benchfit.commands.work import Outcome, Task
-    from benchfit.explain.result import Explanation
     from benchfit.sheet import Sheet
 
 # Between a capture and the files that belong to it, on the way through argparse.
@@ -90,16 +88,16 @@ def run(args: argparse.Namespace) -> int:
     captures = _found(args.captures)
     sheet = options.sheet_of(args)
     _check(args, captures, sheet)
+    from benchfit.commands.results import LotResults, Results
     from benchfit.commands.work import Task
 
     task = Task(captures=tuple(captures), sheet=sheet, layout=options.layout_of(args),
                 plot=args.plot, report=args.report, as_found=_as_found(args.as_found))  # fmt: skip
-    tasks = [task] if args.joint else [
-        replace(task, captures=(paths,), plot=_each(args.plot, number, captures),
-                report=_each(args.report, number, captures))
-        for number, paths in enumerate(captures)
-    ]  # fmt: skip
-    return _Results(args).take(_outcomes(args, tasks))
+    if args.joint or len(captures) == 1:
+        return Results(args).take(_outcomes(args, [task]))
+    one = replace(task, plot=None, report=None, is_brief=not args.verbose)
+    tasks = [replace(one, captures=(paths,)) for paths in captures]
+    return LotResults(args, sheet, len(tasks)).take(_outcomes(args, tasks))
 
 
 def _found(captures: Sequence[list[str]]) -> list[list[str]]:
@@ -121,7 +119,7 @@ def _found(captures: Sequence[list[str]]) -> list[list[str]]:
         if any(letter in path for letter in "*?["):
             import glob
 
-            matches = sorted(glob.glob(path))
+            matches = sorted(glob.glob(path, recursive=True))
             if not matches:
                 raise UsageError(f"{path}: no file has a name like this")
             found += [[match, *paths[1:]] for match in matches]
@@ -175,88 +173,14 @@ def _check(args: argparse.Namespace, captures: Sequence[Sequence[str]], sheet: S
         raise UsageError("standard input (-) can be read once only")
 
 
-def _each(path: str | None, number: int, captures: Sequence[Sequence[str]]) -> str | None:
-    """The name of one capture's own file: with several captures, the capture's name goes into it."""
-    if path is None or len(captures) == 1:
-        return path
-    name = Path(path)
-    stems = [Path(paths[0]).stem for paths in captures]
-    tail = f"-{number + 1}" if stems.count(stems[number]) > 1 else ""
-    return str(name.with_name(f"{name.stem}-{stems[number]}{tail}{name.suffix}"))
-
-
 def _outcomes(args: argparse.Namespace, tasks: Sequence[Task]) -> Iterator[Outcome]:
     """What came of each task, in order."""
-    from benchfit.commands.work import in_processes, on_cluster, work
+    from benchfit.commands.work import in_processes, on_cluster
 
     if args.cluster is not None:
         return on_cluster(args.cluster, tasks)
-    import os
+    from benchfit.workers import usual_jobs
 
-    usual = min(os.cpu_count() or 1, 8) if len(tasks) >= _MANY else 1
-    jobs = min(args.jobs or usual, len(tasks))
+    jobs = min(args.jobs or (usual_jobs() if len(tasks) >= _MANY else 1), len(tasks))
     is_piped = any(task.captures[0][0] == "-" for task in tasks)
-    return in_processes(jobs, tasks) if jobs > 1 and not is_piped else map(work, tasks)
-
-
-class _Results:
-    """Where the outcomes go, one after the other."""
-
-    def __init__(self, args: argparse.Namespace) -> None:
-        self.args = args
-        self.is_text = "-" not in (args.json, args.csv)
-        files = (args.json, args.csv, args.plot, args.report)
-        self.has_files = any(path not in (None, "-") for path in files) or args.csv == "-"
-        self.records: list[dict[str, Any]] = []
-        self.status = 0
-
-    def take(self, outcomes: Iterable[Outcome]) -> int:
-        is_checked_bad = False
-        is_read = True
-        for number, outcome in enumerate(outcomes):
-            self.records.append(outcome.record)
-            is_checked_bad |= outcome.record.get("verdict") in ("fail", "conditional")
-            if outcome.error is not None:
-                self.status = self.status or outcome.error.status
-                streams.say(outcome.error.says)
-            self.talk(outcome)
-            if self.args.json == "-":
-                is_read = is_read and streams.emit(_line(outcome.record))
-            elif outcome.explanation is not None and self.is_text:
-                is_read = is_read and self.show(outcome.explanation, is_first=number == 0)
-            if not is_read and not self.has_files:
-                break  # whoever read standard output has seen enough, and nothing else is wanted
-        self.write()
-        return self.status or int(is_checked_bad and self.args.check)
-
-    def show(self, explanation: Explanation, *, is_first: bool) -> bool:
-        from benchfit.show.text import render
-
-        text = render(explanation, width=streams.width(), colour=streams.colour())
-        return streams.emit(text if is_first else f"\n{text}")
-
-    def talk(self, outcome: Outcome) -> None:
-        if self.args.verbose and not self.args.quiet:
-            for path, notes in outcome.notes:
-                for key, value in notes.items():
-                    streams.say(f"{path}: {key}: {value}")
-            if outcome.trace:
-                print(outcome.trace, file=sys.stderr)
-
-    def write(self) -> None:
-        if self.args.json not in (None, "-"):
-            streams.write(self.args.json, "".join(f"{_line(record)}\n" for record in self.records))
-        if self.args.csv is not None:
-            from benchfit.commands.table import as_csv
-
-            table = as_csv(self.records)
-            if self.args.csv == "-":
-                streams.emit(table.removesuffix("\n"))
-            else:
-                streams.write(self.args.csv, table)
-
-
-def _line(record: dict[str, Any]) -> str:
-    from benchfit.show.record import dumps
-
-    return dumps(record)
+    return in_processes(1 if is_piped else jobs, tasks)

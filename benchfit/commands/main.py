@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from benchfit.commands import streams
 from benchfit.commands.options import Parser
 from benchfit.errors import BenchfitError
+from benchfit.errors import fault as fault
 
 COMMANDS = {
     "poll": ("benchfit.commands.poll", "the same, live, from an instrument over VISA"),
@@ -58,12 +59,6 @@ def main(argv: Sequence[str] | None = None) -> int:
             traceback.print_exc()
         streams.say(fault(error))
         return BenchfitError.status
-
-
-def fault(error: BaseException) -> str:
-    """The sentence for an error that should not have happened."""
-    what = f"{type(error).__name__}: {error}".strip(": ").replace("\n", " ")
-    return f"a fault in benchfit itself ({what}); please report it with the input that shows it (-v: where)"
 
 
 def _run(words: list[str]) -> int:

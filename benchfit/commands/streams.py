@@ -8,6 +8,7 @@ import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
+from typing import TextIO
 
 from benchfit.errors import UsageError
 
@@ -31,9 +32,10 @@ def width() -> int:
     return shutil.get_terminal_size().columns if sys.stdout.isatty() else UNWRAPPED
 
 
-def colour() -> bool:
+def colour(stream: TextIO | None = None) -> bool:
     """Only on a terminal that can, and never with NO_COLOR (no-color.org: present and not empty)."""
-    return sys.stdout.isatty() and not os.environ.get("NO_COLOR") and os.environ.get("TERM") != "dumb"
+    stream = sys.stdout if stream is None else stream
+    return stream.isatty() and not os.environ.get("NO_COLOR") and os.environ.get("TERM") != "dumb"
 
 
 def emit(text: str) -> bool:
@@ -92,7 +94,12 @@ def replacing(path: str) -> Iterator[Path]:
         scratch.unlink(missing_ok=True)
 
 
+def writing(path: Path) -> TextIO:
+    """A file opened for text: UTF-8 with plain line ends, whatever the text."""
+    return path.open("w", encoding="utf-8", newline="\n", errors="backslashreplace")
+
+
 def write(path: str, text: str) -> None:
-    """Write a text file in one step, as UTF-8 with plain line ends."""
-    with replacing(path) as scratch:
-        scratch.write_text(text, encoding="utf-8", newline="\n", errors="backslashreplace")
+    """Write a text file in one step."""
+    with replacing(path) as scratch, writing(scratch) as file:
+        file.write(text)

@@ -3,23 +3,37 @@
 from __future__ import annotations
 
 import csv
-import io
+import json
+import tempfile
 from collections.abc import Mapping, Sequence
-from typing import Any
+from typing import Any, TextIO
 
 
-def as_csv(records: Sequence[Mapping[str, Any]]) -> str:
+class Table:
     """A CSV table (RFC 4180 but for plain line ends) of result records; what a record lacks stays empty.
 
-    Numbers are in base SI units with a decimal point; ``X_u`` is the standard uncertainty of ``X``.
+    Numbers are in base SI units with a decimal point; ``X_u`` is the standard uncertainty of ``X``. The
+    columns are known when all rows are, until then they lie in a temporary file: a table may be long.
     """
-    rows = [row(record) for record in records]
-    columns = list(dict.fromkeys(name for one in rows for name in one))
-    text = io.StringIO()
-    writer = csv.DictWriter(text, columns, restval="", lineterminator="\n")
-    writer.writeheader()
-    writer.writerows(rows)
-    return text.getvalue()
+
+    def __init__(self) -> None:
+        self._columns: dict[str, None] = {}
+        # The file is gone with the object: there is no block of code that the table lives in.
+        self._rows = tempfile.TemporaryFile("w+", encoding="utf-8")  # noqa: SIM115
+
+    def add(self, record: Mapping[str, Any]) -> None:
+        """One more row."""
+        cells = row(record)
+        self._columns.update(dict.fromkeys(cells))
+        print(json.dumps(cells), file=self._rows)
+
+    def write(self, file: TextIO) -> None:
+        """Write the whole table."""
+        writer = csv.DictWriter(file, list(self._columns), restval="", lineterminator="\n")
+        writer.writeheader()
+        self._rows.seek(0)
+        writer.writerows(json.loads(line) for line in self._rows)
+        self._rows.close()
 
 
 def row(record: Mapping[str, Any]) -> dict[str, Any]:

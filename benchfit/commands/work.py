@@ -6,11 +6,10 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
+from benchfit import lot, workers
 from benchfit.errors import BenchfitError, CaptureError, UsageError
 
 if TYPE_CHECKING:
-    from concurrent.futures import Executor, Future
-
     from benchfit.explain.result import Explanation
     from benchfit.sheet import Sheet
 
@@ -20,7 +19,7 @@ class Task:
     """Captures to explain together (one, but for joint explanations), each with the files that belong to it.
 
     ``layout`` holds keywords of :func:`benchfit.read`; ``plot`` and ``report`` are files to write;
-    ``as_found`` is the record of before.
+    ``as_found`` is the record of before. ``is_brief``: its record alone is wanted, not the explanation.
     """
 
     captures: tuple[Sequence[str], ...]
@@ -29,6 +28,7 @@ class Task:
     plot: str | None = None
     report: str | None = None
     as_found: Mapping[str, Any] | None = None
+    is_brief: bool = False
 
     @property
     def name(self) -> str:
@@ -51,21 +51,10 @@ class Outcome:
 
 
 def work(task: Task) -> Outcome:
-    """Do a task. Nothing but an error of the operating system's own escapes it."""
-    try:
-        return _explained(task)
-    except BenchfitError as error:
-        return _failed(task, error)
-    except MemoryError:
-        says = f"{task.name}: too large for this machine's memory"
-        return _failed(task, CaptureError(says, path=task.name))
-    except Exception as error:
-        import traceback
-
-        from benchfit.commands.main import fault
-
-        says = f"{task.name}: {fault(error)}"
-        return _failed(task, CaptureError(says, path=task.name), traceback.format_exc())
+    """Do a task. Nothing but an interruption escapes it."""
+    return lot.guarded(
+        task.name, lambda: _explained(task), lambda error, trace: _failed(task, error, trace)
+    )
 
 
 def _explained(task: Task) -> Outcome:
@@ -84,7 +73,9 @@ def _explained(task: Task) -> Outcome:
         with replacing(task.report) as scratch:
             report(found.explanation, found.constants[0], found.captures[0], scratch)
     notes = tuple((capture.path, dict(capture.notes)) for capture in captures)
-    return Outcome(record=found.record(), explanation=found.explanation, notes=notes)
+    return Outcome(
+        record=found.record(), explanation=None if task.is_brief else found.explanation, notes=notes
+    )
 
 
 def _failed(task: Task, error: BenchfitError, trace: str = "") -> Outcome:
@@ -95,12 +86,9 @@ def _failed(task: Task, error: BenchfitError, trace: str = "") -> Outcome:
 
 def in_processes(jobs: int, tasks: Sequence[Task]) -> Iterator[Outcome]:
     """The outcomes in the tasks' order, from so many processes."""
-    import multiprocessing
-    from concurrent.futures import ProcessPoolExecutor
+    from benchfit import pipeline
 
-    # Started afresh everywhere, as Windows and macOS do: a forked one may inherit a lock that is held.
-    with ProcessPoolExecutor(jobs, mp_context=multiprocessing.get_context("spawn")) as executor:
-        yield from through(executor, tasks)
+    return workers.in_processes(work, tasks, jobs, pipeline.warm_up, _lost)
 
 
 def on_cluster(address: str, tasks: Sequence[Task]) -> Iterator[Outcome]:
@@ -120,24 +108,11 @@ def on_cluster(address: str, tasks: Sequence[Task]) -> Iterator[Outcome]:
         client: Any = Client(address, timeout="10 s")  # type: ignore[no-untyped-call]
     except (OSError, ValueError) as error:
         raise UsageError(f"--cluster {address}: no dask scheduler answers there ({error})") from None
-    with client, client.get_executor() as executor:
-        yield from through(executor, tasks)
+    with client, client.get_executor(pure=False) as executor:
+        ahead = max(16, 4 * sum(client.nthreads().values()))
+        yield from workers.through(work, tasks, executor, _lost, ahead)
 
 
-def through(executor: Executor, tasks: Sequence[Task]) -> Iterator[Outcome]:
-    """The outcomes in the tasks' order, from any executor; a worker that dies fails its own task."""
-    futures = [executor.submit(work, task) for task in tasks]
-    try:
-        for task, future in zip(tasks, futures, strict=True):
-            yield _outcome(task, future)
-    finally:
-        for future in futures:
-            future.cancel()
-
-
-def _outcome(task: Task, future: Future[Outcome]) -> Outcome:
-    try:
-        return future.result()
-    except Exception as error:
-        says = f"{task.name}: its worker died ({type(error).__name__}); try it alone, or with --jobs 1"
-        return _failed(task, CaptureError(says, path=task.name))
+def _lost(task: Task, error: BaseException) -> Outcome:
+    says = f"{task.name}: its worker died ({type(error).__name__}); try it alone, or with --jobs 1"
+    return _failed(task, CaptureError(says, path=task.name))

@@ -11,7 +11,7 @@ from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from statistics import NormalDist, fmean, median, stdev
-from typing import Any
+from typing import Any, Protocol
 
 from benchfit.explain.result import Explanation
 
@@ -116,6 +116,15 @@ class Lot:
     selections: tuple[tuple[Exchange, tuple[str, ...]], ...] = ()
     suits: tuple[Exchange, int] | None = None
 
+    def text(self, width: int = 80, colour: bool = False) -> str:
+        """The lot for people: one line for each unit, then what they have in common."""
+        from benchfit.show.lot_text import render_lot
+
+        return render_lot(self, width=width, colour=colour)
+
+    def __str__(self) -> str:
+        return self.text()
+
     @property
     def failures(self) -> tuple[Unit, ...]:
         """Captures that could not be explained."""
@@ -126,12 +135,18 @@ class Lot:
         return next((s for s in self.spreads if s.name == name), None)
 
 
-def lot_of(records: Iterable[Explanation | Mapping[str, Any]], *, title: str = "") -> Lot:
+class _HasRecord(Protocol):
+    """What came of a capture: it has the record of that."""
+
+    def record(self) -> Mapping[str, Any]: ...
+
+
+def lot_of(records: Iterable[Explanation | Mapping[str, Any] | _HasRecord], *, title: str = "") -> Lot:
     """The lot that explanations or result records make, read one after the other.
 
     Parameters
     ----------
-    records : iterable of Explanation or of result records (failed ones included)
+    records : iterable of Explanation, of what explain_lot yields, or of result records (failed ones included)
     title : str
         What the lot is called; an explanation's own title where it is not given.
     """
@@ -143,6 +158,9 @@ def lot_of(records: Iterable[Explanation | Mapping[str, Any]], *, title: str = "
         if isinstance(item, Explanation):
             title = title or item.title
             item = record(item)
+        elif not isinstance(item, Mapping):
+            title = title or getattr(getattr(item, "explanation", None), "title", "")
+            item = item.record()
         common.see(item)
         units.append(_unit(item))
     units = _named_apart(units)

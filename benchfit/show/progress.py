@@ -1,8 +1,10 @@
-"""How far a burn-in is, on a terminal: a bar with the time left below the records' lines."""
+"""How far a burn-in or a lot is, on a terminal: a bar with the time left below the lines."""
 
 from __future__ import annotations
 
 import math
+import sys
+import threading
 import time
 from typing import Any
 
@@ -75,3 +77,64 @@ class Progress:
 def _clock(seconds: float) -> str:
     whole = max(0, int(seconds))
     return f"{whole // 3600}:{whole % 3600 // 60:02d}:{whole % 60:02d}"
+
+
+class LotProgress:
+    """How many captures of a lot are done: a bar on standard error, shown only once the lot takes a while.
+
+    Parameters
+    ----------
+    total : int
+    colour : bool
+    after : float
+        Seconds before it is shown.
+    """
+
+    def __init__(self, total: int, colour: bool, after: float = 0.5) -> None:
+        self._total, self._colour, self._done = total, colour, 0
+        self._bars: Any = None
+        self._task: Any = None
+        self._lock = threading.Lock()
+        self._timer = threading.Timer(after, self._show)
+        self._timer.daemon = True
+        self._timer.start()
+
+    def step(self) -> None:
+        """One more is done."""
+        with self._lock:
+            self._done += 1
+            if self._bars is not None:
+                self._bars.update(self._task, completed=self._done)
+
+    def say(self, text: str) -> None:
+        """A line above the bar."""
+        with self._lock:
+            if self._bars is None:
+                print(text, file=sys.stderr, flush=True)
+            else:
+                self._bars.console.print(text, markup=False)
+
+    def stop(self) -> None:
+        """Take it away, or never show it."""
+        self._timer.cancel()
+        with self._lock:
+            self._done = self._total
+            if self._bars is not None:
+                self._bars.stop()
+                self._bars = None
+
+    def _show(self) -> None:
+        from rich.console import Console
+        from rich.progress import BarColumn, MofNCompleteColumn, TextColumn, TimeRemainingColumn
+        from rich.progress import Progress as Bars
+
+        with self._lock:
+            if self._done >= self._total:
+                return
+            console = Console(stderr=True, no_color=not self._colour, highlight=False, soft_wrap=True)
+            columns = (MofNCompleteColumn(), TextColumn("captures"), BarColumn(), TimeRemainingColumn(),
+                       TextColumn("left"))  # fmt: skip
+            self._bars = Bars(*columns, console=console, transient=True, refresh_per_second=4)
+            self._task = self._bars.add_task("lot", total=self._total)
+            self._bars.update(self._task, completed=self._done)
+            self._bars.start()

@@ -142,11 +142,10 @@ def test_joint(asked, capsys):
 
 
 def test_text_goes_to_standard_output(asked, capsys):
-    """One report after the other, plain where it is no terminal."""
-    assert main(["a.csv", "b.csv"]) == 0
+    """The report, plain where it is no terminal."""
+    assert main(["a.csv"]) == 0
     out, err = said(capsys)
     assert err == ""
-    assert out.index("a.csv") < out.index("b.csv")
     assert "\x1b" not in out
     assert "1.2345 ± 0.0010 kHz" in out
 
@@ -193,13 +192,6 @@ def test_files_are_written_in_one_step(asked, capsys):
     assert (cells["suspect"], cells["suspect_probability"], cells["verdict"]) == ("R", "0.95", "pass")
     assert sorted(path.name for path in Path().iterdir()) == ["p.svg", "r.json", "t.csv"]
     assert "a.csv" in said(capsys)[0]
-
-
-def test_each_capture_has_its_own_plot(asked, capsys):
-    """With several captures the capture's name goes into the file's; alike ones are counted."""
-    Path("lot").mkdir()
-    assert main(["a.csv", "b.csv", "lot/a.csv", "--plot", "p.png"]) == 0
-    assert sorted(path.name for path in Path().glob("*.png")) == ["p-a-1.png", "p-a-3.png", "p-b.png"]
 
 
 def test_a_table_of_good_and_bad(asked, capsys):
