@@ -178,7 +178,7 @@ def study_bound(repeats: int = 60) -> None:
     grid = [
         (Train(x, y, n + 0.4, per, noise), repeats if n < 500 else max(repeats // 4, 8))
         for x, y in ((1.2, 1.2), (1.5, 2.5), (2.0, 2.0), (3.0, 3.0), (5.0, 1.5))
-        for n, per in ((3, 400), (10, 200), (100, 60), (1000, 40))
+        for n, per in ((3, 400.3), (10, 200.3), (100, 60.21), (1000, 40.37))
         for noise in (0.001, 0.01, 0.03)
     ]
     rows: list[tuple[Train, dict[str, float]]] = []

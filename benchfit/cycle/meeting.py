@@ -175,14 +175,25 @@ def _period(view: _View, upper: float, lower: float) -> tuple[PeriodFit, Form]:
         sigma2[mine] = view.variance[kind]
     good = np.flatnonzero(np.isfinite(instants))
     index = instants[good] / fitted.interval
-    own, _ = fitted.derivatives(good, index)
+    own, shared = fitted.derivatives(good, index)
     spread = sigma2[good] * own**2 / fitted.information[good] / rate[good] ** 2
     rising = layout.rising[good]
     at, number = instants[good], (good + int(layout.rising[0])) // 2
     if np.all(rising[1:] != rising[:-1]):
         at, number = closed(at, rising, put_in_order(at, rising).odd)
-    period = fit_period(at, number, rising.astype(int), spread)
+    period = fit_period(at, number, rising.astype(int), spread, _common(view, rising, shared, rate[good]))
     return period, phase_form(fitted, good, index, -period.weights / rate[good])
+
+
+def _common(view: _View, rising: Mask, shared: Array, rate: Array) -> Array | None:
+    """Covariance (s²) of a few instants from what their curves share: a phase cut off by the edge feels it most."""
+    if rising.size > 64:
+        return None
+    result = np.zeros((rising.size, rising.size))
+    for kind, fit in view.fitted.fits.items():
+        row = np.where((rising == kind)[:, None], shared / rate[:, None], 0.0)
+        result += view.variance[kind] * (row @ fit.shared @ row.T)
+    return result
 
 
 def _with_bows(view: _View, names: list[str], values: Array, cov: Array) -> tuple[list[str], Array, Array]:

@@ -90,7 +90,9 @@ def fit_period(
     cycles = int(number[-1] - number[0])
     found = _average(evaluate, scale, float(variance.mean()), cycles, 2 if dense else 6)
     p = found.p / found.p.sum()
-    mean = float(p @ found.mean)
+    # The estimate itself need not be as cautious as its interval.
+    doubted = np.where(found.walk + found.white > 0, found.p * (_SLAB / _SLAB_FEW), found.p)
+    mean = float(np.average(found.mean, weights=doubted if cycles < _FEW else found.p))
     u = _u(found, mean, cycles)
     walk, white = float(p @ found.walk), float(p @ found.white)
     single = np.sqrt(found.walk + 2.0 * found.white)

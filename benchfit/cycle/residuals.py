@@ -64,13 +64,13 @@ def body_profile(trace: Trace, fitted: Fitted, kind: bool) -> Profile | None:
     place = np.clip(((u + 1.0) * 0.5 * _BODY).astype(int), 0, _BODY - 1)
     sigma, colour = _noise(bins, residual, cycle, place)
     n = np.bincount(place, bins.n, _BODY)
-    held = n > 0
+    held = n > 0.1 * n.max()
     mean = np.bincount(place, bins.n * residual, _BODY)[held] / n[held]
     error = sigma * np.sqrt(colour / n[held])
     degrees = float(np.maximum(np.count_nonzero(held) - 3, 1))
     chi2 = float(np.sum((mean / error) ** 2)) if np.all(error > 0) else 0.0
     found = bool(chi2 > degrees + _CLEAR * np.sqrt(2.0 * degrees) + 4.0)
-    structure = float(np.sqrt(max(float(np.mean(mean**2 - error**2)), 0.0))) if found else 0.0
+    structure = float(np.sqrt(max(float(np.average(mean**2 - error**2, weights=n[held])), 0.0))) if found else 0.0
     bow, bow_u = _bow(bins, residual, u, fitted, kind, sigma * np.sqrt(colour))
     return Profile(
         np.linspace(-1, 1, 2 * _BODY + 1)[1::2][held], mean, error, structure, sigma, colour, bow, bow_u
