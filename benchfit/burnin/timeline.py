@@ -24,7 +24,9 @@ def timeline(session: NDArray[np.int64], acquired: Array, steady: Array) -> Arra
         Unix time; the steady clock, NaN where the time is a file's own.
     """
     time = acquired.astype(float).copy()
-    starts = np.flatnonzero(np.diff(session, prepend=session[:1] - 1)) if session.size else np.empty(0, int)
+    if not time.size:
+        return time
+    starts = np.flatnonzero(np.diff(session, prepend=session[:1] - 1))
     ends = np.append(starts[1:], session.size)
     latest = -np.inf
     for a, b in zip(starts, ends, strict=True):
@@ -39,7 +41,7 @@ def timeline(session: NDArray[np.int64], acquired: Array, steady: Array) -> Arra
             latest = max(latest, float(time[a:b][known][-1]))
         else:
             latest = max(latest, float(time[a:b].max()))
-    return time - time.min() if time.size else time
+    return np.asarray(time - time.min())
 
 
 def stretches(time: Array, values: Array, tolerance: float = 0.3) -> tuple[list[Array], float | None]:

@@ -86,7 +86,8 @@ def _heading(page: Page, trend: Trend) -> None:
         page.prose(f"{_utc(trend.started)} to {_utc(trend.ended)}{open_}", style="dim")
     for note in trend.notes:
         page.prose(note, "note: ", "dim")
-    page.lines.append("")
+    if len(trend.units) == 1:
+        page.lines.append("")
 
 
 def _finding(page: Page, unit: UnitTrend, started: float) -> None:

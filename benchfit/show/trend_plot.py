@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from benchfit.burnin.result import Drawn, Trend, UnitTrend
+from benchfit.burnin.result import Drawn, QuantityTrend, Trend, UnitTrend
 from benchfit.show import words
 from benchfit.show.palette import LIGHT, legend_above, minus, nothing, plain, scale, settings
 
@@ -42,8 +42,12 @@ def plot(trend: Trend, path: str | os.PathLike[str] | None = None, axes: Any = N
 
     with mpl.rc_context(settings()):
         if axes is None:
-            figure: Figure = NewFigure(figsize=(8.6, 8.8), layout="constrained")
-            axes = figure.subplots(3, 1, height_ratios=(1.35, 1.0, 1.0))
+            has_middle = _has_middle(trend)
+            figure: Figure = NewFigure(figsize=(8.6, 8.8 if has_middle else 6.4), layout="constrained")
+            ratios = (1.35, 1.0, 1.0) if has_middle else (1.35, 1.0)
+            axes = list(figure.subplots(len(ratios), 1, height_ratios=ratios))
+            if not has_middle:
+                axes.insert(1, None)
             title = " · ".join(
                 t for t in (trend.title, trend.circuit or "", os.path.basename(trend.path)) if t
             )
@@ -54,14 +58,30 @@ def plot(trend: Trend, path: str | os.PathLike[str] | None = None, axes: Any = N
             figure = axes[0].figure
         if len(trend.units) == 1:
             _frequency(axes[0], trend, trend.units[0])
-            _moving(axes[1], trend.units[0])
         else:
             _units(axes[0], trend, "frequency")
+        if axes[1] is not None and len(trend.units) == 1:
+            _moving(axes[1], trend.units[0])
+        elif axes[1] is not None:
             _units(axes[1], trend, "duty")
         _stability(axes[2], trend)
         if path is not None:
             save(figure, path)
     return figure
+
+
+def _has_middle(trend: Trend) -> bool:
+    """Whether there is anything to draw between frequency and stability."""
+    if len(trend.units) > 1:
+        return any("duty" in unit.drawn for unit in trend.units)
+    return bool(_others(trend.units[0]))
+
+
+def _others(unit: UnitTrend) -> list[QuantityTrend]:
+    """What drifts besides the frequency and stands out from nothing, the largest change first."""
+    moving = [q for q in unit.quantities.values() if q.is_drifting and q.name in unit.drawn]
+    moving = [q for q in moving if q.name not in ("frequency", "period") and abs(q.mean) > 2 * q.u]
+    return sorted(moving, key=lambda q: -abs(q.change / q.mean))
 
 
 def _frequency(ax: Any, trend: Trend, unit: UnitTrend) -> None:
@@ -143,9 +163,7 @@ def _alarms(ax: Any, trend: Trend, unit: UnitTrend, factor: float, time: Any, ho
 
 def _moving(ax: Any, unit: UnitTrend) -> None:
     """What drifts besides the frequency, relative to its start."""
-    moving = [q for q in unit.quantities.values() if q.is_drifting and q.name in unit.drawn]
-    moving = [q for q in moving if q.name not in ("frequency", "period") and abs(q.mean) > 2 * q.u]
-    moving.sort(key=lambda q: -abs(q.change / q.mean))
+    moving = _others(unit)
     if not moving:
         nothing(ax, "nothing else drifts")
         return
@@ -178,7 +196,7 @@ def _units(ax: Any, trend: Trend, name: str) -> None:
         strong = unit.unit in departing
         label = f"{unit.unit} departs" if strong else unit.unit
         colour = LIGHT["charge"] if strong else LIGHT[_COLOURS[(i * 2) % 4] if not departing else "data"]
-        width, style = (1.6, "-") if strong else (0.9, _STYLES[i % len(_STYLES)])
+        width, style = (1.6, "-") if strong else (0.9, (0, (8, 1 + 2 * (i % 5))))
         ax.plot(time, relative, color=colour, lw=width, ls=style, label=plain(label))
     if not any_drawn:
         nothing(ax, f"{words.label(name)}: no unit's drifts" if name != "frequency" else "no frequency")

@@ -100,10 +100,16 @@ def test_it_ends_by_the_clock(log_at):
 def test_it_is_stopped(log_at):
     """The record in hand is finished, then it ends."""
     stop = threading.Event()
-    threading.Timer(0.2, stop.set).start()
-    why, logged, _ = run(log_at(), [12.0] * 10000, Plan(0.05, keep="none"), stop=stop)
-    assert why == "stopped"
-    assert logged
+    logged = []
+
+    def shown(entry):
+        logged.append(entry.seq)
+        if entry.seq == 3:
+            stop.set()
+
+    script = {"": Script([12.0] * 100)}
+    why = Burnin(Plan(0.01, keep="none"), script, log_at(), explain, shown, print, stop=stop).run()
+    assert (why, logged) == ("stopped", [1, 2, 3])
     before = time.monotonic()
     why, _, _ = run(log_at("b.db"), [12.0], Plan(3600.0, keep="none"), stop=stop)
     assert time.monotonic() - before < 1.0, "a stop cuts a wait short"
