@@ -448,6 +448,12 @@ SAMPLES = (
 
 def make(sample: Sample, folder: Path) -> None:
     """Write one capture and its build sheet."""
+    capture(sample, folder / f"{sample.name}.csv")
+    (folder / f"{sample.name}.toml").write_bytes(SHEETS[sample.name].encode())
+
+
+def capture(sample: Sample, path: Path) -> None:
+    """Write one capture alone."""
     waves = simulate(
         sample.circuit,
         sample.built,
@@ -469,8 +475,7 @@ def make(sample: Sample, folder: Path) -> None:
         seed=sample.seed + 1,
     )
     names = {node: name for node, (name, _) in sample.channels.items()}
-    write(folder / f"{sample.name}.csv", record, names, sample.layout)
-    (folder / f"{sample.name}.toml").write_bytes(SHEETS[sample.name].encode())
+    write(path, record, names, sample.layout)
 
 
 def main(folder: Path = ROOT / "sample_captures") -> None:
