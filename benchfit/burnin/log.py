@@ -15,6 +15,8 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from benchfit.burnin import packing, schema
 from benchfit.burnin.alarms import Cleared, Raised
 from benchfit.burnin.clock import now
@@ -246,10 +248,10 @@ class LogWriter:
         status = int((entry.record.get("error") or {}).get("status", 0))
         packed = packing.pack(found, self._quantities)
         plain = [found[name].value if name in found else None for name in ("frequency", "duty")]
-        crc = packing.checksum(seq, entry.acquired, status, packed)
+        (crc,) = packing.checksums(np.array([seq]), np.array([entry.acquired]), np.array([status]), [packed])
         db.execute(
             "INSERT INTO record VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-            (seq, unit, self._session, entry.acquired, entry.steady, status, *plain, packed, crc),
+            (seq, unit, self._session, entry.acquired, entry.steady, status, *plain, packed, int(crc)),
         )
         self._insert_body(seq, packing.plain_json(entry.record), is_model=status == 0)
         if entry.capture is not None:
@@ -342,7 +344,7 @@ def _examine(path: Path) -> None:
     """Refuse a damaged log before anything is written to it, by a reader that cannot write."""
     from benchfit.burnin.reader import LogReader
 
-    with LogReader.open(path, patience=0.4):
+    with LogReader.open(path, patience=0.25):
         pass
 
 

@@ -24,6 +24,7 @@ from benchfit.errors import Remark
 WIDTH = 16
 """Bytes per quantity."""
 _WINDOW = 32768
+_ODD = tuple(np.uint64(x) for x in (0x9E3779B97F4A7C15, 0xC2B2AE3D27D4EB4F, 0x165667B19E3779F9))
 
 
 @dataclass(frozen=True)
@@ -70,9 +71,20 @@ def unpack(rows: Sequence[bytes]) -> tuple[NDArray[np.float64], NDArray[np.float
     return values, u, noise
 
 
-def checksum(seq: int, acquired: float, status: int, packed: bytes) -> int:
-    """CRC-32 over what the trend is made of, so that a flipped bit does not pass for a drift."""
-    return zlib.crc32(packed, zlib.crc32(b"%d %s %d" % (seq, acquired.hex().encode(), status)))
+def checksums(
+    seq: NDArray[np.int64], acquired: NDArray[np.float64], status: NDArray[np.int64], rows: Sequence[bytes]
+) -> NDArray[np.int64]:
+    """CRC-32 of each row's packed scalars, mixed with its number, time and status; shape (rows,).
+
+    What the trend is made of is under it, so that a flipped bit does not pass for a drift.
+    """
+    plain = np.fromiter(map(zlib.crc32, rows), np.uint64, len(rows))
+    words = (seq.astype(np.uint64), np.ascontiguousarray(acquired).view(np.uint64), status.astype(np.uint64))
+    mixed = np.zeros(len(rows), np.uint64)
+    for word, factor in zip(words, _ODD, strict=True):
+        mixed = (mixed ^ word) * factor  # odd factors modulo 2^64: no bit of any word is lost
+        mixed ^= mixed >> np.uint64(32)
+    return ((mixed ^ plain) & np.uint64(0xFFFFFFFF)).astype(np.int64)
 
 
 def plain_json(record: Mapping[str, Any]) -> str:

@@ -34,7 +34,7 @@ class LogReader:
         self._copy = copy
 
     @classmethod
-    def open(cls, path: str | Path, patience: float = 2.0) -> LogReader:
+    def open(cls, path: str | Path, patience: float = 0.5) -> LogReader:
         """Open a log for reading.
 
         Parameters
@@ -254,12 +254,12 @@ class LogReader:
         if at + len(chunk) > stamps.shape[1]:
             raise schema.damaged(self.path, "it holds more records than their numbers allow")
         seq, session, status, acquired, steady, rows, crc = zip(*chunk, strict=True)
-        for s, a, state, packed, check in zip(seq, acquired, status, rows, crc, strict=True):
-            if packing.checksum(s, a, state, packed) != check:
-                raise schema.damaged(self.path, f"record {s} does not have its checksum")
         span = slice(at, at + len(chunk))
         stamps[:, span] = seq, session, status
         times[0, span], times[1, span] = acquired, np.array(steady, float)
+        wrong = packing.checksums(stamps[0, span], times[0, span], stamps[2, span], rows) != np.array(crc)
+        if wrong.any():
+            raise schema.damaged(self.path, f"record {seq[int(np.argmax(wrong))]} does not have its checksum")
         if stamps.shape[1] == 0:
             return
         lengths = np.fromiter(map(len, rows), np.int64, len(rows))

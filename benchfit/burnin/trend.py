@@ -35,7 +35,7 @@ def trend(
     *,
     limits: Sequence[str] = (),
     unit: str | None = None,
-    patience: float = 2.0,
+    patience: float = 0.5,
 ) -> Trend:
     """What the log at ``path`` says; it may be written meanwhile.
 
