@@ -56,32 +56,44 @@ def write(path: Path, rows: int) -> None:
         for begin in range(0, rows, 250_000):
             k = np.arange(begin, min(begin + 250_000, rows))
             output = np.round((4.98 * (k // 2000 % 2) + 0.03 * rng.standard_normal(k.size)) / 0.04) * 0.04
-            capacitor = np.round((1.5 + 0.002 * (k % 1000) + 0.01 * rng.standard_normal(k.size)) / 0.02) * 0.02
-            file.writelines("%.8e,%.5E,%.5E\n" % row for row in zip(k * 1e-8 - 0.02, output, capacitor, strict=True))
+            capacitor = (
+                np.round((1.5 + 0.002 * (k % 1000) + 0.01 * rng.standard_normal(k.size)) / 0.02) * 0.02
+            )
+            file.writelines(
+                "%.8e,%.5E,%.5E\n" % row for row in zip(k * 1e-8 - 0.02, output, capacitor, strict=True)
+            )
 
 
 def measure(code: str, path: Path) -> tuple[float, float]:
     """Time of the call (s) and peak memory of its process (bytes)."""
-    run = subprocess.run([sys.executable, "-c", code + _MEASURE, str(path)], check=True, capture_output=True, text=True)
+    run = subprocess.run(
+        [sys.executable, "-c", code + _MEASURE, str(path)], check=True, capture_output=True, text=True
+    )
     took, peak = run.stdout.split()
     return float(took), float(peak)
 
 
 def main(arguments: list[str] | None = None) -> int:
     """Run the benchmark and print its table."""
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("--rows", type=int, default=10_000_000)
     parser.add_argument("--repeats", type=int, default=7)
     options = parser.parse_args(arguments)
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "long.csv"
         write(path, options.rows)
-        print(f"{options.rows} rows, {path.stat().st_size / 2**20:.0f} MiB, {options.repeats} runs of each in turn")
+        print(
+            f"{options.rows} rows, {path.stat().st_size / 2**20:.0f} MiB, {options.repeats} runs of each in turn"
+        )
         results = [(measure(_BARE, path), measure(_BENCHFIT, path)) for _ in range(options.repeats)]
     bare, ours = ([run[side] for run in results] for side in (0, 1))
     for name, runs in (("pandas.read_csv", bare), ("benchfit.read", ours)):
         times, peaks = zip(*runs, strict=True)
-        print(f"{name:<16} median {statistics.median(times):6.2f} s  best {min(times):6.2f} s  peak {max(peaks) / 2**20:7.0f} MiB")
+        print(
+            f"{name:<16} median {statistics.median(times):6.2f} s  best {min(times):6.2f} s  peak {max(peaks) / 2**20:7.0f} MiB"
+        )
     time_ratio = statistics.median(b / a for (a, _), (b, _) in results)
     memory_ratio = statistics.median(b / a for (_, a), (_, b) in results)
     print(f"ratio of times   {time_ratio:.2f} (median of pairs; at most {TIME_TARGET})")

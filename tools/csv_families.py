@@ -87,7 +87,9 @@ Sketch = tuple[Rows, tuple[str, ...], tuple[str, ...], bool]
 Maker = Callable[[Wave, Style], Sketch]
 
 
-def relaxation(samples: int, channels: int = 2, seed: int = 0, interval: float = 2e-5, start: float = -1e-3) -> Wave:
+def relaxation(
+    samples: int, channels: int = 2, seed: int = 0, interval: float = 2e-5, start: float = -1e-3
+) -> Wave:
     """A capacitor charged and discharged between two thresholds, its output, and a little noise, in 8-bit steps."""
     rng = np.random.default_rng(seed)
     v, high = 2.0, True
@@ -97,7 +99,10 @@ def relaxation(samples: int, channels: int = 2, seed: int = 0, interval: float =
         high = (v < 6.0) if high else (v < 3.0)
         capacitor[k], output[k] = v, 8.9 if high else 0.1
     step = 10.0 / 256
-    both = [np.round((column + 0.02 * rng.standard_normal(samples)) / step) * step for column in (capacitor, output)]
+    both = [
+        np.round((column + 0.02 * rng.standard_normal(samples)) / step) * step
+        for column in (capacitor, output)
+    ]
     names = (("CH1", "V"), ("CH2", "V"), ("REF3", "V"), ("CH4", "A"))
     columns = [*both, np.full(samples, -5.12), 0.001 * both[1]]
     return Wave(start, interval, tuple((*names[k], columns[k]) for k in range(channels)))
@@ -151,14 +156,22 @@ def beside_mirrored(wave: Wave, style: Style) -> Sketch:
     """A: time and value first, the settings in columns 6 and 7 of the first rows."""
     rows = _table(wave, style)
     settings = _settings(wave, style)
-    made = [[*row, "", "", "", *settings[k]] if k < len(settings) else [*row, "", "", "", "", ""] for k, row in enumerate(rows)]
+    made = [
+        [*row, "", "", "", *settings[k]] if k < len(settings) else [*row, "", "", "", "", ""]
+        for k, row in enumerate(rows)
+    ]
     return made, ("CH1",), ("V",), False
 
 
 def above(wave: Wave, style: Style) -> Sketch:
     """B: settings above, a blank line among them, a header row."""
     settings: Rows = [[key, value, ""] for key, value in _settings(wave, style)]
-    return [*settings[:3], [], *settings[3:], ["TIME", *_names(wave)], *_table(wave, style)], _names(wave), ("V",) * 4, False
+    return (
+        [*settings[:3], [], *settings[3:], ["TIME", *_names(wave)], *_table(wave, style)],
+        _names(wave),
+        ("V",) * 4,
+        False,
+    )
 
 
 def above_without_header(wave: Wave, style: Style) -> Sketch:
@@ -193,14 +206,22 @@ def source_row(wave: Wave, style: Style) -> Sketch:
     """C: a row that begins with "Source", or has its first cell empty, above the row of units."""
     words = [_WORDS[unit] for unit in _units(wave)]
     first = "Source" if wave.samples % 2 else ""
-    return [[first, *_names(wave)], ["second", *words], *_table(wave, style)], _names(wave), _units(wave), False
+    return (
+        [[first, *_names(wave)], ["second", *words], *_table(wave, style)],
+        _names(wave),
+        _units(wave),
+        False,
+    )
 
 
 def start_and_increment(wave: Wave, style: Style) -> Sketch:
     """D: start and increment in the header, values only, a separator at the end."""
     words = [_WORDS[unit] for unit in _units(wave)]
     rows: Rows = [[*row, ""] for row in _values(wave, style)]
-    head = [[*_names(wave), "Start", "Increment", ""], [*words, style.number(wave.start), style.number(wave.interval)]]
+    head = [
+        [*_names(wave), "Start", "Increment", ""],
+        [*words, style.number(wave.start), style.number(wave.interval)],
+    ]
     return [*head, *rows], _names(wave), _units(wave), False
 
 
@@ -228,14 +249,25 @@ def units_in_brackets(wave: Wave, style: Style) -> Sketch:
 
 def comment_then_header(wave: Wave, style: Style) -> Sketch:
     """G: comments, a blank line, a header row; one comment is a user's note."""
-    notes = [["# Bench recorder, unit 12 °C"], ["#Date Time: 2025-11-07 16:43:23.169"], ["#Samples: " + str(wave.samples)], ["#2,4kHz"], []]
+    notes = [
+        ["# Bench recorder, unit 12 °C"],
+        ["#Date Time: 2025-11-07 16:43:23.169"],
+        ["#Samples: " + str(wave.samples)],
+        ["#2,4kHz"],
+        [],
+    ]
     names = [f"{name}({unit})" for name, unit in zip(_names(wave), _units(wave), strict=True)]
     return [*notes, ["Time(s)", *names], *_table(wave, style)], _names(wave), _units(wave), False
 
 
 def header_in_comment(wave: Wave, style: Style) -> Sketch:
     """G: the last comment is the header."""
-    return [["# recorded on the bench"], ["# time", *_names(wave)], *_table(wave, style)], _names(wave), ("V",) * 4, False
+    return (
+        [["# recorded on the bench"], ["# time", *_names(wave)], *_table(wave, style)],
+        _names(wave),
+        ("V",) * 4,
+        False,
+    )
 
 
 def index_first(wave: Wave, style: Style) -> Sketch:
@@ -261,7 +293,12 @@ def names_units_blank(wave: Wave, style: Style) -> Sketch:
     names = [f"Kanal {chr(65 + k)}" for k in range(len(wave.channels))]
     if style.delimiter == " ":
         names = [name.replace(" ", "") for name in names]
-    return [["Zeit", *names], ["(ms)", *units], [], *_table(wave, style, 1e-3)], tuple(names), _units(wave), False
+    return (
+        [["Zeit", *names], ["(ms)", *units], [], *_table(wave, style, 1e-3)],
+        tuple(names),
+        _units(wave),
+        False,
+    )
 
 
 def logger(wave: Wave, style: Style) -> Sketch:
@@ -318,11 +355,17 @@ def make(family: str, wave: Wave, style: Style) -> Made:
         wave = replace(wave, channels=wave.channels[:1])
     rows, names, units, ask = FAMILIES[family](wave, style)
     glue = "," + "\t" if style.delimiter == "mixed" else style.delimiter
-    text = style.line_end.join(glue.join(row) for row in rows) + (style.line_end if style.last_line_end else "")
+    text = style.line_end.join(glue.join(row) for row in rows) + (
+        style.line_end if style.last_line_end else ""
+    )
     count = len(wave.channels)
-    read_back = [np.array([_parsed(style.number(value)) for value in values]) for _, _, values in wave.channels]
+    read_back = [
+        np.array([_parsed(style.number(value)) for value in values]) for _, _, values in wave.channels
+    ]
     start = 0.0 if ask or family == "above_values_only" else wave.start
-    return Made(text.encode(style.encoding), start, wave.interval, names[:count], units[:count], tuple(read_back), ask)
+    return Made(
+        text.encode(style.encoding), start, wave.interval, names[:count], units[:count], tuple(read_back), ask
+    )
 
 
 def _parsed(text: str) -> float:

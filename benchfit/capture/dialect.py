@@ -40,7 +40,9 @@ class Dialect:
             line = _unquoted(line, _INSIDE)
         if self.delimiter == " ":
             stripped = line.strip()
-            return tuple(cell.strip('"') for cell in _BLANKS.split(stripped)[:MOST_COLUMNS]) if stripped else ()
+            return (
+                tuple(cell.strip('"') for cell in _BLANKS.split(stripped)[:MOST_COLUMNS]) if stripped else ()
+            )
         cells = line.split(self.delimiter)[:MOST_COLUMNS]
         return tuple(cell.replace(_INSIDE, ",").strip().strip('"').strip() for cell in cells)
 
@@ -133,7 +135,11 @@ def decide(lines: Sequence[str]) -> Dialect | None:
     best = max(votes, key=lambda candidate: votes[candidate].weight)
     if votes[best].weight == 0:
         return None
-    if votes[best].columns == 1 and best.delimiter == " " and not any(" " in line.strip() for line in lines[-8:]):
+    if (
+        votes[best].columns == 1
+        and best.delimiter == " "
+        and not any(" " in line.strip() for line in lines[-8:])
+    ):
         # One column needs no separator; that of the lines above it may be looked for.
         return Dialect("," if best.decimal == "." else ";", best.decimal, quoted, bracketed)
     return best
@@ -183,4 +189,8 @@ def _fraction_split(dialect: Dialect, lines: Sequence[str]) -> bool:
         return True
     wholes = [int(a) for a, _ in pairs]
     wander = any(b < a for a, b in pairwise(wholes)) and any(b > a for a, b in pairwise(wholes))
-    return wander and all(len(a.lstrip("+-")) <= 2 for a, _ in pairs) and sorted(map(len, fractions))[len(pairs) // 2] >= 4
+    return (
+        wander
+        and all(len(a.lstrip("+-")) <= 2 for a, _ in pairs)
+        and sorted(map(len, fractions))[len(pairs) // 2] >= 4
+    )

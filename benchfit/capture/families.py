@@ -112,7 +112,9 @@ def _bare(found: Evidence) -> Claim | None:
 
 def _has_time(found: Evidence) -> bool:
     titles = found.header.titles
-    return any(titles[k].is_time and not titles[k].is_axis_letter for k in found.page.numeric if k < len(titles))
+    return any(
+        titles[k].is_time and not titles[k].is_axis_letter for k in found.page.numeric if k < len(titles)
+    )
 
 
 def _stated(found: Evidence, settled: Settings) -> Layout:

@@ -207,7 +207,12 @@ def _could_name(names: Sequence[str], above: Sequence[int], units: Sequence[str]
     if len(names) <= 2 < len(page.numeric):
         return False
     first = title(names[0])
-    if not (first.is_time or first.is_index or not names[0] or first.name.casefold() in ("source", "name", "channel")):
+    if not (
+        first.is_time
+        or first.is_index
+        or not names[0]
+        or first.name.casefold() in ("source", "name", "channel")
+    ):
         settings = sum(_is_setting(page.rows[k], page.decimal) for k in above[:-2] if page.rows[k])
         if _is_setting(names, page.decimal) or settings:
             return False

@@ -14,6 +14,8 @@ def tell(page: Page) -> tuple[Family, Claim, Evidence]:
     No file is left over: without a table one of the refusals claims it, with a table the last family does.
     """
     found = gather(page)
-    claims = [(family, claim) for family in (*REFUSALS, *FAMILIES) if (claim := family.judge(found)) is not None]
+    claims = [
+        (family, claim) for family in (*REFUSALS, *FAMILIES) if (claim := family.judge(found)) is not None
+    ]
     family, claim = max(claims, key=lambda pair: pair[1].strength)
     return family, claim, found

@@ -166,7 +166,11 @@ def _with_spoilt_rows(rows: Sequence[Sequence[str]], lines: Sequence[str], first
     width = len(rows[first])
     for _ in range(2):
         above = next((k for k in range(first - 1, -1, -1) if lines[k].strip()), -1)
-        if above < 0 or len(rows[above]) != width or not all(is_mostly_digits(cell) for cell in rows[above] if cell):
+        if (
+            above < 0
+            or len(rows[above]) != width
+            or not all(is_mostly_digits(cell) for cell in rows[above] if cell)
+        ):
             break
         first = above
     return first

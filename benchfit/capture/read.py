@@ -125,7 +125,9 @@ def _channel(table: Table, axis: Axis, column: Column) -> Channel:
     if axis.is_envelope and np.isfinite(recorded).any():
         ends = column.scale * float(np.nanmin(recorded)), column.scale * float(np.nanmax(recorded))
         extremes = (min(ends), max(ends))
-    return Channel(column.name, column.unit, values, step, axis.mask(mask) if mask is not None else None, extremes)
+    return Channel(
+        column.name, column.unit, values, step, axis.mask(mask) if mask is not None else None, extremes
+    )
 
 
 def _damage(source: Source, table: Table, claim: Claim) -> tuple[Remark, ...]:
@@ -231,4 +233,3 @@ def _notes(source: Source, page: Page, what: _Understood) -> dict[str, str]:
 
 def _in(unit: str) -> str:
     return f" in {unit}" if unit else ""
-

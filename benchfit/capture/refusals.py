@@ -19,15 +19,21 @@ _MARKUP = (
     ("<!doctype html", "a web page"), ("<html", "a web page"), ("<?xml", "an XML file"), ("<svg", "a drawing"),
     ("{", "a JSON file"), ("[{", "a JSON file"), ("%!ps", "a PostScript file"), ("{\\rtf", "a text document"),
 )  # fmt: skip
-_SPECTRUM = re.compile(r"\b(spectrum|spectra|spektrum|bins|fft|bode|frequency response|network analy[sz]er)\b", re.IGNORECASE)
+_SPECTRUM = re.compile(
+    r"\b(spectrum|spectra|spektrum|bins|fft|bode|frequency response|network analy[sz]er)\b", re.IGNORECASE
+)
 _LABELLED = re.compile(r"(?<!\w)[^\W\d]\w*(\s?\([^)]*\))?\s*[:=]\s*[+-]?[\d.]")
 _SETTING = re.compile(r"\s*[#%]?\s*[^\W\d][\w .()/%°-]*\s*[:=,;\t]")
 _WITH_UNIT = re.compile(r"[+-]?\d+([.,]\d+)?([eE][+-]?\d+)?\s*[pnuµμmkM]?(s|sec|V|A|Hz)\b")
 # More rows than anyone types in by hand.
 _MOST_BY_HAND = 60
 
-_SETTINGS_PAGE = "holds settings (names and values) but no samples; the samples are in another file of the same export"
-_LABELS = "has a label in every cell, as a text log from a serial port has; write bare numbers, one row a sample"
+_SETTINGS_PAGE = (
+    "holds settings (names and values) but no samples; the samples are in another file of the same export"
+)
+_LABELS = (
+    "has a label in every cell, as a text log from a serial port has; write bare numbers, one row a sample"
+)
 
 
 def _no_text(found: Evidence) -> Claim | None:
@@ -86,19 +92,30 @@ def _spectrum(found: Evidence) -> Claim | None:
     if any(named.unit is not None and named.unit.is_time for named in titles):
         return None
     if any(named.unit is not None and named.unit.base.startswith("dB") for named in titles):
-        return _refused("holds levels in dB: it is a spectrum or a frequency response, not a waveform over time")
-    horizontal = found.above.first("horizontal units", "x units") or found.beside.first("horizontal units", "x units")
+        return _refused(
+            "holds levels in dB: it is a spectrum or a frequency response, not a waveform over time"
+        )
+    horizontal = found.above.first("horizontal units", "x units") or found.beside.first(
+        "horizontal units", "x units"
+    )
     if any(named.is_frequency for named in titles[:2]) or horizontal.casefold() in ("hz", "hertz"):
         what = _kind_of_spectrum(_numbers(found, found.page.numeric[0]), found)
         return _refused(f"is {what}: its first column is a frequency, not a time; export the waveform itself")
     said = [line for line in found.page.above if is_comment(line) and _SPECTRUM.search(line)]
     if said and not _has_time(titles):
-        return _refused(f'is a spectrum by its own preamble ("{said[0].strip()[:60]}"); export the waveform over time')
+        return _refused(
+            f'is a spectrum by its own preamble ("{said[0].strip()[:60]}"); export the waveform over time'
+        )
     return None
 
 
 def _kind_of_spectrum(column: Floats, found: Evidence) -> str:
-    if found.page.whole and column.size < _MOST_BY_HAND and _looks_chosen(column) and not _is_logarithmic(column):
+    if (
+        found.page.whole
+        and column.size < _MOST_BY_HAND
+        and _looks_chosen(column)
+        and not _is_logarithmic(column)
+    ):
         return "a hand-made table"
     return "a frequency response" if _is_logarithmic(column) else "a spectrum"
 
@@ -107,7 +124,9 @@ def _log_grid(found: Evidence) -> Claim | None:
     """The first column grows by a constant ratio."""
     if len(found.page.numeric) < 2 or not _is_logarithmic(_numbers(found, found.page.numeric[0])):
         return None
-    return _refused("has a first column that grows by a constant ratio: a frequency response, not a waveform over time")
+    return _refused(
+        "has a first column that grows by a constant ratio: a frequency response, not a waveform over time"
+    )
 
 
 def _hand_made(found: Evidence) -> Claim | None:
@@ -136,7 +155,10 @@ def _titles(found: Evidence) -> list[Title]:
 
 def _has_time(titles: Sequence[Title]) -> bool:
     """Whether a column is named as time; a lone letter is only in the first place."""
-    return any((named.is_time or named.is_increment) and (k == 0 or len(named.name) != 1) for k, named in enumerate(titles))
+    return any(
+        (named.is_time or named.is_increment) and (k == 0 or len(named.name) != 1)
+        for k, named in enumerate(titles)
+    )
 
 
 def _looks_chosen(column: Floats) -> bool:
@@ -147,7 +169,9 @@ def _looks_chosen(column: Floats) -> bool:
 
 
 def _numbers(found: Evidence, column: int) -> Floats:
-    values = np.array([number(cell, found.page.decimal) for cell in found.page.column(column)], dtype=np.float64)
+    values = np.array(
+        [number(cell, found.page.decimal) for cell in found.page.column(column)], dtype=np.float64
+    )
     return np.asarray(values[np.isfinite(values)])
 
 
@@ -155,7 +179,9 @@ def _is_logarithmic(column: Floats) -> bool:
     if column.size < 6 or not np.all(column > 0):
         return False
     ratios = np.diff(np.log(column))
-    return bool(np.mean(ratios) > 0.01 and np.ptp(ratios) < 0.2 * np.mean(ratios) and column[-1] > 5 * column[0])
+    return bool(
+        np.mean(ratios) > 0.01 and np.ptp(ratios) < 0.2 * np.mean(ratios) and column[-1] > 5 * column[0]
+    )
 
 
 def _all_units(line: str) -> bool:

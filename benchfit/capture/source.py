@@ -106,7 +106,12 @@ class Source:
     @property
     def is_plain(self) -> bool:
         """Whether the bytes on disk are the text itself, so that another reader can be given the path."""
-        plain = not self.compression and not self._is_list and self.encoding in ("utf-8", "ascii") and self.line_end != "CR"
+        plain = (
+            not self.compression
+            and not self._is_list
+            and self.encoding in ("utf-8", "ascii")
+            and self.line_end != "CR"
+        )
         return self.path != "-" and self.size is not None and plain
 
     def refusal(self, says: str, **facts: object) -> CaptureError:

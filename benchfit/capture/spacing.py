@@ -106,7 +106,9 @@ def mended(stamps: Floats, step: float, quantum: float) -> tuple[Floats, tuple[R
         if at in (0, places.size):
             near = int(places[0] if at == 0 else places[-1])
             place = float(stamps[near] + step * (row - near))
-            spoilt = _is_off_grid(float(stamps[row] - stamps[near]) * (1 if row > near else -1), step, tolerance, stamps.size)
+            spoilt = _is_off_grid(
+                float(stamps[row] - stamps[near]) * (1 if row > near else -1), step, tolerance, stamps.size
+            )
         else:
             a, b = int(places[at - 1]), int(places[at])
             if abs(stamps[b] - stamps[a] - step * (b - a)) > tolerance + 0.01 * step * (b - a):
@@ -133,7 +135,9 @@ def _gapped(stamps: Floats, step: float, quantum: float) -> Spacing | None:
     jumps = np.diff(stamps)
     counts = np.round(jumps / step)
     off = np.abs(jumps - counts * step)
-    if not (np.all(counts >= 1) and np.all(off <= max(2 * quantum, 0.15 * step) * np.maximum(1, 0.01 * counts))):
+    if not (
+        np.all(counts >= 1) and np.all(off <= max(2 * quantum, 0.15 * step) * np.maximum(1, 0.01 * counts))
+    ):
         return None
     total = int(counts.sum())
     if total == jumps.size or total > 4 * stamps.size:

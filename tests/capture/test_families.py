@@ -14,7 +14,6 @@ from benchfit.capture import read
 from tools.csv_families import FAMILIES, NUMBER_FORMS, Style, Wave, is_possible, make, relaxation, styles
 
 
-
 def _check(family: str, wave: Wave, style: Style, folder: Path) -> None:
     made = make(family, wave, style)
     path = folder / "made.csv"
@@ -46,7 +45,9 @@ def test_read_back_what_was_written(family: str, data: st.DataObject) -> None:
     style = data.draw(st.sampled_from([style for style in styles() if is_possible(family, style)]))
     wave = data.draw(waves())
     # Fixed decimals cannot hold nanoseconds.
-    form = data.draw(st.sampled_from([form for form in NUMBER_FORMS if form != "fixed" or wave.interval >= 1e-6]))
+    form = data.draw(
+        st.sampled_from([form for form in NUMBER_FORMS if form != "fixed" or wave.interval >= 1e-6])
+    )
     last = data.draw(st.booleans())
     style = Style(style.delimiter, style.decimal, style.line_end, style.encoding, form, last)
     with tempfile.TemporaryDirectory() as folder:
@@ -60,7 +61,12 @@ def test_every_combination(family: str, tmp_path: Path) -> None:
         if is_possible(family, style):
             for form in NUMBER_FORMS:
                 wave = relaxation(60 + k % 2, 1 + k % 3, k)
-                _check(family, wave, Style(style.delimiter, style.decimal, style.line_end, style.encoding, form), tmp_path)
+                _check(
+                    family,
+                    wave,
+                    Style(style.delimiter, style.decimal, style.line_end, style.encoding, form),
+                    tmp_path,
+                )
 
 
 def test_combinations_that_cannot_exist_are_few() -> None:

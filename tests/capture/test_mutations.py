@@ -21,7 +21,7 @@ LONGEST = 10.0
 def _flip(data: bytes, rng: random.Random, other: bytes) -> bytes:
     spoilt = bytearray(data)
     for _ in range(rng.choice((1, 1, 2, 5, 20, 200))):
-        spoilt[rng.randrange(len(spoilt))] = rng.choice((rng.randrange(256), *b",;\t .-+eE0\n\r\"#(\0"))
+        spoilt[rng.randrange(len(spoilt))] = rng.choice((rng.randrange(256), *b',;\t .-+eE0\n\r"#(\0'))
     return bytes(spoilt)
 
 
@@ -40,11 +40,32 @@ def _shuffle(data: bytes, rng: random.Random, other: bytes) -> bytes:
 
 def _join(data: bytes, rng: random.Random, other: bytes) -> bytes:
     place = rng.randrange(len(data) + 1)
-    return rng.choice((data + other, data + data, data[:place] + other, data[:place] + other + data[place:], other + b"\n" + data))
+    return rng.choice(
+        (
+            data + other,
+            data + data,
+            data[:place] + other,
+            data[:place] + other + data[place:],
+            other + b"\n" + data,
+        )
+    )
 
 
 def _cells(data: bytes, rng: random.Random, other: bytes) -> bytes:
-    words = (b"", b"OL", b"nan", b"inf", b"1e400", b"-1e-400", b"9.91e37", b"0x1F", b"1e308", b"\xff", b"a" * 300, b"999999999999999999999")
+    words = (
+        b"",
+        b"OL",
+        b"nan",
+        b"inf",
+        b"1e400",
+        b"-1e-400",
+        b"9.91e37",
+        b"0x1F",
+        b"1e308",
+        b"\xff",
+        b"a" * 300,
+        b"999999999999999999999",
+    )
     lines = data.split(b"\n")
     for _ in range(rng.choice((1, 3, 30))):
         place = rng.randrange(len(lines))
@@ -57,22 +78,48 @@ def _cells(data: bytes, rng: random.Random, other: bytes) -> bytes:
 def _columns(data: bytes, rng: random.Random, other: bytes) -> bytes:
     lines = data.split(b"\n")
     first = rng.randrange(len(lines) + 1)
-    change = rng.choice((lambda cells: cells[1:], lambda cells: cells[::-1], lambda cells: cells * 2, lambda cells: [*cells, b""]))
+    change = rng.choice(
+        (
+            lambda cells: cells[1:],
+            lambda cells: cells[::-1],
+            lambda cells: cells * 2,
+            lambda cells: [*cells, b""],
+        )
+    )
     return b"\n".join(lines[:first] + [b",".join(change(line.split(b","))) for line in lines[first:]])
 
 
-MUTATIONS: tuple[Callable[[bytes, random.Random, bytes], bytes], ...] = (_flip, _cut, _shuffle, _join, _cells, _columns)
+MUTATIONS: tuple[Callable[[bytes, random.Random, bytes], bytes], ...] = (
+    _flip,
+    _cut,
+    _shuffle,
+    _join,
+    _cells,
+    _columns,
+)
 
 
 def _originals() -> list[bytes]:
     every = [(family, style) for family in FAMILIES for style in styles() if is_possible(family, style)]
     chosen = random.Random(5).sample(every, 160) + [(family, Style()) for family in FAMILIES]
-    return [make(family, relaxation(40 + k % 30, 1 + k % 3, k), style).data for k, (family, style) in enumerate(chosen)]
+    return [
+        make(family, relaxation(40 + k % 30, 1 + k % 3, k), style).data
+        for k, (family, style) in enumerate(chosen)
+    ]
 
 
 def _try(path: Path, data: bytes, rng: random.Random) -> Capture | CaptureError:
     path.write_bytes(data)
-    options = rng.choice(({}, {}, {"interval": 1e-6}, {"frame": 2}, {"columns": {"time": 0, "CH1": 1}}, {"columns": {"increment": 0, "CH1": 1}}))
+    options = rng.choice(
+        (
+            {},
+            {},
+            {"interval": 1e-6},
+            {"frame": 2},
+            {"columns": {"time": 0, "CH1": 1}},
+            {"columns": {"increment": 0, "CH1": 1}},
+        )
+    )
     try:
         return read(path, **options)
     except CaptureError as error:

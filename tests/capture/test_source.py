@@ -17,11 +17,15 @@ from benchfit.capture.source import Source
 from benchfit.errors import CaptureError
 
 Write = Callable[..., Path]
-TEXT = "# Prüfstand, 23 °C\nTime (µs);Gerät (V)\n" + "".join(f"{k * 0.5:.2f};{k % 9 / 4:.2f}\n" for k in range(400))
+TEXT = "# Prüfstand, 23 °C\nTime (µs);Gerät (V)\n" + "".join(
+    f"{k * 0.5:.2f};{k % 9 / 4:.2f}\n" for k in range(400)
+)
 
 
 @pytest.mark.parametrize("end", ["\n", "\r\n", "\r"])
-@pytest.mark.parametrize("encoding", ["utf-8", "utf-8-sig", "utf-16", "utf-16-le", "utf-16-be", "utf-32", "latin-1", "cp1252"])
+@pytest.mark.parametrize(
+    "encoding", ["utf-8", "utf-8-sig", "utf-16", "utf-16-le", "utf-16-be", "utf-32", "latin-1", "cp1252"]
+)
 def test_encodings_and_line_ends(encoding: str, end: str, write: Write) -> None:
     capture = read(write(TEXT.replace("\n", end).encode(encoding)))
     assert capture.channels[0].name == "Gerät"
@@ -31,7 +35,12 @@ def test_encodings_and_line_ends(encoding: str, end: str, write: Write) -> None:
 
 
 def test_garbage_glued_to_the_header(write: Write) -> None:
-    capture = read(write(b"\x00\x01\xff\xfe\x03Time (s),CH1 (V)\n" + "".join(f"{k * 1e-3:.3f},{k % 7}\n" for k in range(99)).encode()))
+    capture = read(
+        write(
+            b"\x00\x01\xff\xfe\x03Time (s),CH1 (V)\n"
+            + "".join(f"{k * 1e-3:.3f},{k % 7}\n" for k in range(99)).encode()
+        )
+    )
     assert capture.samples == 99
     assert capture.interval == pytest.approx(1e-3)
 
@@ -54,7 +63,10 @@ def test_compressed_files_are_known_by_their_bytes(packer: str, name: str, write
 @pytest.mark.parametrize("packer", ["gzip", "bzip2", "xz"])
 def test_a_damaged_archive_is_read_as_far_as_it_goes(packer: str, write: Write) -> None:
     rng = np.random.default_rng(1)
-    text = "Time (s),CH1 (V)\n" + "".join(f"{k * 1e-6:.6f},{v:.6f}\n" for k, v in enumerate(rng.random(100_000 if packer == "bzip2" else 40_000)))
+    text = "Time (s),CH1 (V)\n" + "".join(
+        f"{k * 1e-6:.6f},{v:.6f}\n"
+        for k, v in enumerate(rng.random(100_000 if packer == "bzip2" else 40_000))
+    )
     packed = PACKERS[packer](text.encode())
     capture = read(write(packed[: len(packed) * 3 // 4]))
     assert 1000 < capture.samples < text.count("\n") - 1
@@ -87,7 +99,11 @@ def test_a_bomb_of_one_line_stops_early(write: Write) -> None:
 
 
 def test_a_bomb_of_rows_stops_early(write: Write) -> None:
-    row = b"Time (s),CH1 (V)\n" + b"".join(b"%.6f,1.5\n" % (k * 1e-6) for k in range(1000)) + (b"0.001," + b"0" * 1000 + b"\n") * 80_000
+    row = (
+        b"Time (s),CH1 (V)\n"
+        + b"".join(b"%.6f,1.5\n" % (k * 1e-6) for k in range(1000))
+        + (b"0.001," + b"0" * 1000 + b"\n") * 80_000
+    )
     with pytest.raises(CaptureError, match="unpacks to more than 100 times its size"):
         read(write(gzip.compress(row, 1)))
 
@@ -124,7 +140,9 @@ def test_a_long_record_is_read_to_the_same_values_by_either_way(packed: bool, wr
     """Large plain files go to pandas in one call, others block by block."""
     rng = np.random.default_rng(3)
     values = rng.integers(-128, 128, 60_000) * 0.04
-    text = "in s,C1 in V,C2 in V\n" + "".join(f"{k * 4e-9:.30e},{v:.25E},{-v:.25E}\n" for k, v in enumerate(values))
+    text = "in s,C1 in V,C2 in V\n" + "".join(
+        f"{k * 4e-9:.30e},{v:.25E},{-v:.25E}\n" for k, v in enumerate(values)
+    )
     capture = read(write(gzip.compress(text.encode(), 1) if packed else text))
     assert capture.samples == 60_000
     assert capture.interval == pytest.approx(4e-9, rel=1e-9)

@@ -26,7 +26,9 @@ def ramp(k: np.ndarray | int) -> np.ndarray:
     return np.round(1.0 + 0.01 * np.mod(7 * np.asarray(k), 97), 4)
 
 
-def rows(stamps: Sequence[str | float], values: Sequence[float] | None = None, header: str = "Time (s),CH1 (V)\n") -> str:
+def rows(
+    stamps: Sequence[str | float], values: Sequence[float] | None = None, header: str = "Time (s),CH1 (V)\n"
+) -> str:
     given = ramp(np.arange(len(stamps))) if values is None else values
     return header + "".join(f"{t},{v}\n" for t, v in zip(stamps, given, strict=True))
 
@@ -155,7 +157,9 @@ def test_a_frame_that_is_not_there(write: Write) -> None:
         read(write(rows([f"{k * 1e-6:.7f}" for k in range(300)])), frame=2)
 
 
-@pytest.mark.parametrize("between", ["Step Information: R=10k (Run: 2/3)\n", "Time (s),CH1 (V)\n", "\n\nrun\n"])
+@pytest.mark.parametrize(
+    "between", ["Step Information: R=10k (Run: 2/3)\n", "Time (s),CH1 (V)\n", "\n\nrun\n"]
+)
 def test_runs_parted_by_text_are_refused_and_offered_one_by_one(between: str, write: Write) -> None:
     path = write(frames([100, 100, 100], between))
     with pytest.raises(CaptureError, match="3 runs.*--frame 1"):
@@ -185,7 +189,9 @@ def test_missing_rows_leave_samples_without_a_value(write: Write) -> None:
     assert {"gaps", "empty-cells"} <= codes(capture)
 
 
-@given(st.lists(st.integers(2, 197), min_size=1, max_size=3, unique=True), st.sampled_from([1e6, -50.0, 0.77]))
+@given(
+    st.lists(st.integers(2, 197), min_size=1, max_size=3, unique=True), st.sampled_from([1e6, -50.0, 0.77])
+)
 def test_a_few_spoilt_stamps_are_put_in_line(places: list[int], wrong: float) -> None:
     stamps = np.arange(200) * 1e-3
     if np.any(np.diff(sorted(places)) < 3):
@@ -212,7 +218,9 @@ def test_a_spoilt_stamp_begins_no_frame(wrong: str, write: Write) -> None:
 @given(
     st.integers(20, 400), st.floats(-1e3, 1e3), st.integers(-9, 0), st.integers(0, 6),
 )  # fmt: skip
-def test_even_stamps_rounded_to_any_digit_give_their_interval(count: int, start: float, power: int, digits: int) -> None:
+def test_even_stamps_rounded_to_any_digit_give_their_interval(
+    count: int, start: float, power: int, digits: int
+) -> None:
     """(last - first)/(n - 1) is off by at most one printed digit over n - 1."""
     interval = 1.7 * 10.0**power
     quantum = interval * 10.0 ** (1 - digits)
@@ -237,8 +245,16 @@ def test_jitter_of_a_logger_is_straightened(write: Write) -> None:
 
 
 def test_steps_that_a_simulator_chose_are_brought_onto_an_even_axis(write: Write) -> None:
-    stamps = np.cumsum(np.concatenate([np.full(200, 1e-6), np.full(100, 2e-5), np.full(200, 1e-6), np.full(100, 3e-5)]))
-    capture = read(write(rows([f"{t:.12e}" for t in stamps], list(1 - np.exp(-stamps / 1e-3)), "time\tV(c)\n").replace(",", "\t")))
+    stamps = np.cumsum(
+        np.concatenate([np.full(200, 1e-6), np.full(100, 2e-5), np.full(200, 1e-6), np.full(100, 3e-5)])
+    )
+    capture = read(
+        write(
+            rows([f"{t:.12e}" for t in stamps], list(1 - np.exp(-stamps / 1e-3)), "time\tV(c)\n").replace(
+                ",", "\t"
+            )
+        )
+    )
     np.testing.assert_allclose(capture.channels[0].values, 1 - np.exp(-capture.time / 1e-3), atol=2e-4)
     assert "uneven-time" in codes(capture)
 
@@ -249,7 +265,9 @@ def test_a_log_of_changes_is_held_between_its_rows(write: Write) -> None:
     for k in range(60):
         stamps.append(stamps[-1] + (high if state[-1] else low))
         state.append(1 - state[-1])
-    text = "Time [s],Channel 0,Channel 1\n" + "".join(f"{t:.9f},{s},0\n" for t, s in zip(stamps, state, strict=True))
+    text = "Time [s],Channel 0,Channel 1\n" + "".join(
+        f"{t:.9f},{s},0\n" for t, s in zip(stamps, state, strict=True)
+    )
     capture = read(write(text))
     assert "changes" in codes(capture)
     assert capture.start == pytest.approx(34.0)
@@ -275,8 +293,11 @@ def test_increments_that_are_not_named_so_are_not_guessed(write: Write) -> None:
 @pytest.mark.parametrize(
     "text",
     [
-        "".join(f"{4.47 + 0.001 * (k % 5):.4f};{2 + 0.001 * k + 0.0003 * (k % 3):.4f}\n" for k in range(200)),  # a slow ramp
-        "Parameter,Value\n" + "".join(f"{20 * k},{ramp(k)}\n" for k in range(200)),  # whole numbers without a unit
+        "".join(
+            f"{4.47 + 0.001 * (k % 5):.4f};{2 + 0.001 * k + 0.0003 * (k % 3):.4f}\n" for k in range(200)
+        ),  # a slow ramp
+        "Parameter,Value\n"
+        + "".join(f"{20 * k},{ramp(k)}\n" for k in range(200)),  # whole numbers without a unit
         "Time,Value\n" + "".join(f"{k},{ramp(k)}\n" for k in range(200)),  # a row number called time
         "".join(f"{k},{ramp(k)}\n" for k in range(1, 200)),  # a row number
         "Sample,CH1(V)\n" + "".join(f"{k},{ramp(k)}\n" for k in range(200)),
@@ -284,7 +305,16 @@ def test_increments_that_are_not_named_so_are_not_guessed(write: Write) -> None:
         "CH1 (V)\n" + "".join(f"{ramp(k)}\n" for k in range(200)),
         "clock,CH1 (V)\n" + "".join(f"14:07:{k % 60:02d},{ramp(k)}\n" for k in range(200)),
     ],
-    ids=["ramp", "whole numbers", "row number called time", "row number", "samples", "one column", "one named column", "clock"],
+    ids=[
+        "ramp",
+        "whole numbers",
+        "row number called time",
+        "row number",
+        "samples",
+        "one column",
+        "one named column",
+        "clock",
+    ],
 )
 def test_time_is_asked_for_and_never_invented(text: str, write: Write) -> None:
     path = write(text)

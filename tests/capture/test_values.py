@@ -77,7 +77,9 @@ def test_times_without_values_at_the_ends(begin: int, end: int, write: Write) ->
 
 
 def test_a_channel_that_is_out_of_range_from_the_first_row_on(write: Write) -> None:
-    rows = [row if k > 150 else row.split(",")[0] + ",OL," + row.split(",")[2] for k, row in enumerate(lines())]
+    rows = [
+        row if k > 150 else row.split(",")[0] + ",OL," + row.split(",")[2] for k, row in enumerate(lines())
+    ]
     capture = read(write(HEAD + "\n".join(rows) + "\n"))
     assert [channel.name for channel in capture.channels] == ["CH1", "CH2"]
     assert capture.channels[0].overloaded is not None
@@ -115,7 +117,14 @@ def test_damage_near_the_top_is_no_header(place: int, write: Write) -> None:
 
 @pytest.mark.parametrize(
     ("last", "kept"),
-    [("0.01", 199), ("0.01990,1.", 199), ("0.01990,1.460,0.1", 199), ("0.01990,1.460,0.10", 200), ("0.01990,1.460,", 199), ("0.0199", 199)],
+    [
+        ("0.01", 199),
+        ("0.01990,1.", 199),
+        ("0.01990,1.460,0.1", 199),
+        ("0.01990,1.460,0.10", 200),
+        ("0.01990,1.460,", 199),
+        ("0.0199", 199),
+    ],
 )
 def test_a_last_row_cut_in_the_middle(last: str, kept: int, write: Write) -> None:
     capture = read(write(HEAD + "\n".join([*lines()[:-1], last])))
@@ -156,13 +165,18 @@ def test_a_tail_of_zero_bytes_is_left_out(write: Write) -> None:
 
 
 def test_decimal_commas_without_quotes_on_some_rows_are_refused(write: Write) -> None:
-    rows = [f"{k * 1e-4:.5f},{k % 9}" if k % 3 else f"{k * 1e-4:.5f}".replace(".", ",") + f",{k % 9},5" for k in range(200)]
+    rows = [
+        f"{k * 1e-4:.5f},{k % 9}" if k % 3 else f"{k * 1e-4:.5f}".replace(".", ",") + f",{k % 9},5"
+        for k in range(200)
+    ]
     with pytest.raises(CaptureError, match="decimal commas"):
         read(write("Time (s),CH1 (V)\n" + "\n".join(rows) + "\n"))
 
 
 def test_units_are_brought_to_base_units(write: Write) -> None:
-    text = "Time (ms),U (mV),I (uA),T (°C),N (dB?)\n" + "".join(f"{k},{100 + k},{-3 * k},{20 + k % 3},{k % 5}\n" for k in range(50))
+    text = "Time (ms),U (mV),I (uA),T (°C),N (dB?)\n" + "".join(
+        f"{k},{100 + k},{-3 * k},{20 + k % 3},{k % 5}\n" for k in range(50)
+    )
     capture = read(write(text))
     assert [(c.name, c.unit) for c in capture.channels] == [("U", "V"), ("I", "A"), ("T", "°C"), ("N", "dB?")]
     assert capture["U"].values[1] == pytest.approx(0.101)
@@ -205,7 +219,12 @@ def test_a_constant_has_no_step() -> None:
 
 
 def test_constant_channel(write: Write) -> None:
-    capture = read(write("x-axis,1,REF1\nsecond,Volt,Volt\n" + "".join(f"{k * 1e-4:.5f},{k % 9},-5.12\n" for k in range(99))))
+    capture = read(
+        write(
+            "x-axis,1,REF1\nsecond,Volt,Volt\n"
+            + "".join(f"{k * 1e-4:.5f},{k % 9},-5.12\n" for k in range(99))
+        )
+    )
     reference = capture["REF1"]
     assert reference.minimum == reference.maximum == -5.12
     assert reference.resolution == 0.0
@@ -215,7 +234,9 @@ def test_constant_channel(write: Write) -> None:
 
 
 def test_describe_says_how_the_file_was_understood(write: Write) -> None:
-    text = "Zeit;Kanal A;Kanal B\n(ms);(V);(A)\n\n" + "".join(f"{k / 10:.3f};{k % 9 / 4:.2f};{k % 5:.2f}\n" for k in range(99)).replace(".", ",")
+    text = "Zeit;Kanal A;Kanal B\n(ms);(V);(A)\n\n" + "".join(
+        f"{k / 10:.3f};{k % 9 / 4:.2f};{k % 5:.2f}\n" for k in range(99)
+    ).replace(".", ",")
     said = "\n".join(describe(read(write(text.encode("utf-8-sig")))))
     for part in ("UTF-8 with byte order mark", "LF", "semicolon", "decimal comma", "Zeit in ms", "Kanal A from column 2", "Kanal B in A",
                  "0.0001 s from time column", "Kanal A 0.25 V", "99"):  # fmt: skip

@@ -48,7 +48,10 @@ def test_real_file(file: dict[str, Any]) -> None:
     capture = read(WILD / name, **OPTIONS.get(name, {}))
     assert capture.samples in _allowed(expected, "data_rows")
     assert tuple(channel.name for channel in capture.channels) == NAMES[name]
-    assert any(capture.interval == pytest.approx(value, rel=1e-3) for value in _allowed(expected, "sample_interval_s"))
+    assert any(
+        capture.interval == pytest.approx(value, rel=1e-3)
+        for value in _allowed(expected, "sample_interval_s")
+    )
     if expected["first_time_s"] is not None:
         assert capture.start == pytest.approx(expected["first_time_s"], abs=1e-3 * capture.interval)
         end = capture.start + (capture.samples - 1) * capture.interval
