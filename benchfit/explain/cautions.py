@@ -32,19 +32,23 @@ def cautions(model: Model | None, sheet: Sheet, captures: Sequence[CycleConstant
 
 
 def _voltage(sheet: Sheet, captures: Sequence[CycleConstants]) -> str:
+    """The first voltage that the sheet or a capture shows above the limits; "" where there is none."""
     for name, value in sheet.parts.items():
         if value.unit == "V" and abs(value.nominal) > DC:
             return f"{name} is {value.nominal:g} V, above {DC:g} V d.c."
-    for constants in captures:
-        for node, (low, high) in constants.spans.items():
-            if max(abs(low), abs(high)) > DC:
-                return f"the {node} node reaches {max(abs(low), abs(high)):.0f} V, above {DC:g} V"
-            swing = high - low
-            if swing / 2 > PEAK:
-                return f"the {node} node swings by {swing:.0f} V, more than {PEAK:g} V peak"
-            # A square of peak a has an r.m.s. of a; anything else less.
-            if node == "output" and swing / 2 > RMS:
-                return f"the output swings by {swing:.0f} V, more than {RMS:g} V r.m.s."
+    circuit = sheet.circuit
+    levels = [v.nominal for n, v in sheet.parts.items() if circuit and circuit.part(n).kind == "level"]
+    spans = [("output", (min(levels), max(levels)))] if len(levels) > 1 else []
+    spans += [span for constants in captures for span in constants.spans.items()]
+    for node, (low, high) in spans:
+        if max(abs(low), abs(high)) > DC:
+            return f"the {node} node reaches {max(abs(low), abs(high)):.0f} V, above {DC:g} V"
+        swing = high - low
+        if swing / 2 > PEAK:
+            return f"the {node} node swings by {swing:.0f} V, more than {PEAK:g} V peak"
+        # A square of peak a has an r.m.s. of a; anything else less.
+        if node == "output" and swing / 2 > RMS:
+            return f"the output swings by {swing:.0f} V, more than {RMS:g} V r.m.s."
     return ""
 
 

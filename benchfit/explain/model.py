@@ -38,6 +38,9 @@ FLOOR_BEND = 0.004
 FLOOR_BEND_RELATIVE = 0.004
 FLOOR_EDGE = 0.05
 
+# The corner of an a.c. coupled input lies at 2 to 10 Hz (common practice).
+COUPLING_CORNER = 10.0
+
 
 @dataclass(frozen=True)
 class Parameter:
@@ -248,6 +251,7 @@ def observe(
     raw = constants.covariance[np.ix_(rows, rows)]
     period = constants.value("period")
     swing = _swing(constants)
+    droop = _droop(constants)
     scales, values, floors = [], [], []
     for name in names:
         x = constants.value(name)
@@ -256,12 +260,16 @@ def observe(
             scale, value = 1 / x, float(np.log(x))
             floor = FLOOR_PERIOD if name == "period" else FLOOR_EDGE
         elif name in VOLTAGES:
-            floor = FLOOR_VOLTS * swing
+            floor = math.hypot(
+                FLOOR_VOLTS * swing, droop["output" if name in OUTPUT else "timing"] * swing / 2
+            )
         elif name.endswith("curvature"):
             share = constants.value("charge_share") if "charge_share" in constants else 0.5
             scale = period * (share if name.startswith("charge") else 1 - share)
             value = x * scale
-            floor = FLOOR_BEND + FLOOR_BEND_RELATIVE * abs(value)
+            floor = math.hypot(
+                FLOOR_BEND + FLOOR_BEND_RELATIVE * abs(value), droop["timing"] * (1 + abs(value))
+            )
         else:
             # Shares near 0 or 1 belong to a flyback; its own length is then known better than the floor.
             short = min(x, 1 - x)
@@ -304,6 +312,20 @@ def _no_jumps(constants: CycleConstants, predicted: Sequence[str], swing: float)
 
 def _is_output(node: str) -> bool:
     return node == "output" or node.startswith("collector")
+
+
+def _droop(constants: CycleConstants) -> dict[str, float]:
+    """Standard uncertainty of what an a.c. coupled input does to half a cycle, as a share of the swing.
+
+    Its high-pass takes 2π·f_c·t of a level in the time t; f_c is anything up to COUPLING_CORNER (a
+    rectangle).
+    """
+    taken = min(2 * math.pi * COUPLING_CORNER * constants.value("period") / 2, 1.0) / math.sqrt(3.0)
+    found = {"timing": 0.0, "output": 0.0}
+    for node, coupling in constants.coupling.items():
+        if coupling == "ac":
+            found["output" if _is_output(node) else "timing"] = taken
+    return found
 
 
 def _swing(constants: CycleConstants) -> float:
