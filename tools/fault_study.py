@@ -17,6 +17,7 @@ import sys
 import time
 from collections.abc import Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
@@ -168,6 +169,7 @@ def main(words: Sequence[str] | None = None) -> int:
         "--cache", default=str(Path.home() / ".cache" / "bench-judgements"), help="folder, or none"
     )
     ask.add_argument("--failures", type=Path, default=Path("fault_study_failures.csv"))
+    ask.add_argument("--outcomes", type=Path, help="every build's score, one JSON object a line")
     options = ask.parse_args(words)
     todo = tasks(options)
     began = time.perf_counter()
@@ -178,6 +180,8 @@ def main(words: Sequence[str] | None = None) -> int:
         outcomes = [one(task) for task in todo]
     print(report(outcomes))
     write_failures(outcomes, options.failures)
+    if options.outcomes:
+        options.outcomes.write_text("".join(json.dumps(asdict(o)) + "\n" for o in outcomes), encoding="utf-8")
     print(f"\n{len(outcomes)} builds in {time.perf_counter() - began:.0f} s")
     print(f"failures listed in {options.failures}")
     return 0

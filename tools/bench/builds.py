@@ -46,6 +46,8 @@ class Build:
     duty: float
     lifted: float
     restored: float
+    nominal: float
+    alone: float
     readings: Mapping[str, tuple[float, float]] = field(default_factory=dict)
     gains: Mapping[str, float] = field(default_factory=dict)
     offsets: Mapping[str, float] = field(default_factory=dict)
@@ -163,6 +165,8 @@ def _built(
         duty=ideal.high_share,
         lifted=_frequency(design, true, {}),
         restored=_frequency(design, restored(fault, design, true), probe),
+        nominal=_frequency(design, design.nominal(), probe),
+        alone=_frequency(design, {**design.nominal(), **fault.values}, probe),
         readings=readings,
         gains={n: i.gain for n, i in inputs.items()},
         offsets={n: i.offset for n, i in inputs.items()},

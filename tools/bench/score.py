@@ -42,7 +42,7 @@ class Outcome:
     excess: float | None
     parts: tuple[tuple[str, str, float, float | None], ...]
     probe: float | None
-    share: tuple[float, float] | None
+    share: tuple[float, float, float] | None
     seconds: float
     error: str
 
@@ -58,8 +58,14 @@ class Outcome:
 
     @property
     def settled_wrong(self) -> bool:
-        """Whether it was called settled, and is not so."""
-        return bool(self.settled) and not self.first_right
+        """Whether it was called settled, and is not so.
+
+        The one of two faults that shows is no wrong answer.
+        """
+        if not self.settled or self.first_right:
+            return False
+        hidden = self.kind == "two" and (self.excess is None or self.excess < PAIRED)
+        return not (hidden and self.suspects[0][0] and set(self.suspects[0][0]) < set(self.causes))
 
     @property
     def failures(self) -> list[str]:
@@ -149,7 +155,7 @@ def _probe(build: Build, record: Mapping[str, Any] | None) -> float | None:
     return None if q.get("value") is None or not q.get("u") else float((q["value"] - build.lifted) / q["u"])
 
 
-def _share(build: Build, record: Mapping[str, Any] | None) -> tuple[float, float] | None:
+def _share(build: Build, record: Mapping[str, Any] | None) -> tuple[float, float, float] | None:
     miss = ((record or {}).get("miss") or {}).get("frequency")
     if not miss or not miss.get("shares") or _kind(build) != "single":
         return None
@@ -158,7 +164,9 @@ def _share(build: Build, record: Mapping[str, Any] | None) -> tuple[float, float
     said = sum(
         s["share"] for s in miss["shares"] if s["cause"] in build.fault.causes and s["share"] is not None
     )
-    return float(said), (build.frequency - build.restored) / build.target
+    back = (build.frequency - build.restored) / build.target
+    alone = (build.alone - build.nominal) / build.target
+    return float(said), back, 0.5 * (back + alone) if np.isfinite(alone) else back
 
 
 def _rate(hits: Sequence[bool]) -> str:
@@ -187,6 +195,8 @@ def _judged_lines(outcomes: Sequence[Outcome]) -> list[str]:
         f"  truth within the first three         {_rate([o.in_three for o in open_])}",
         f"healthy builds accused                 {_rate([not o.first_right for o in healthy])}",
         f"settled on a wrong answer, of all      {_rate([o.settled_wrong for o in outcomes])}",
+        f"  or on one of two, the other hidden   "
+        f"{_rate([bool(o.settled) and not o.first_right for o in outcomes])}",
         f"two faults that no single cause explains {len(needed)} of {len(two)}",
         f"  both named in one of three           {_rate([o.in_three for o in needed])}",
         f"  first right                          {_rate([o.first_right for o in needed])}",
@@ -206,7 +216,8 @@ def _number_lines(outcomes: Sequence[Outcome]) -> list[str]:
     seen_widths = np.array([p[3] for o in clear for p in o.parts if p[3] is not None and p[1] == "capture"])
     probes = np.array([abs(o.probe) for o in runs if o.probe is not None])
     shares = [o.share for o in clear if o.share is not None]
-    good = [abs(a - b) <= max(0.1 * abs(b), 0.005) for a, b in shares]
+    good = [abs(a - b) <= max(0.1 * abs(b), 0.005) for a, b, _ in shares]
+    fair = [abs(a - b) <= max(0.1 * abs(b), 0.005) for a, _, b in shares]
     seconds = np.array([o.seconds for o in outcomes])
     return [
         f"parts within 2 u                       {_rate(list(z <= 2))}",
@@ -214,6 +225,7 @@ def _number_lines(outcomes: Sequence[Outcome]) -> list[str]:
         f"  u over the bench's u, mean (median)  {_mean(widths)}; from the capture {_mean(seen_widths)}",
         f"without the probe within 2 u           {_rate(list(probes <= 2))}",
         f"fault's share within 10 % or 0.005     {_rate(good)}",
+        f"  of the mean over both orders         {_rate(fair)}",
         f"seconds an explanation                 mean {seconds.mean():.3f}, median {np.median(seconds):.3f}, "
         f"95 % {np.percentile(seconds, 95):.3f}",
     ]
