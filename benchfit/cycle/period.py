@@ -25,8 +25,9 @@ _POINTS = 14
 
 # Prior weight of an e-fold of a variance against that of its absence. A record of many cycles shows whether there
 # is jitter, and where it shows none the interval must not be widened for it; few cycles cannot show it.
-_SLAB = 0.04
-_SLAB_FEW = 0.25
+_SLAB = 0.1
+_SLAB_FEW = 0.5
+_SLAB_MEAN = 0.04
 
 
 @dataclass(frozen=True, eq=False)
@@ -91,8 +92,9 @@ def fit_period(
     found = _average(evaluate, scale, float(variance.mean()), cycles, 2 if dense else 6)
     p = found.p / found.p.sum()
     # The estimate itself need not be as cautious as its interval.
-    doubted = np.where(found.walk + found.white > 0, found.p * (_SLAB / _SLAB_FEW), found.p)
-    mean = float(np.average(found.mean, weights=doubted if cycles < _FEW else found.p))
+    slab = _SLAB_FEW if cycles < _FEW else _SLAB
+    doubted = np.where(found.walk + found.white > 0, found.p * (_SLAB_MEAN / slab), found.p)
+    mean = float(np.average(found.mean, weights=doubted))
     u = _u(found, mean, cycles)
     walk, white = float(p @ found.walk), float(p @ found.white)
     single = np.sqrt(found.walk + 2.0 * found.white)
