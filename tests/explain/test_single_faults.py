@@ -150,9 +150,7 @@ def test_no_warning_that_is_not_earned():
     assert codes(found("healthy gas-lamp")) == {"hazard"}
 
 
-@pytest.mark.xfail(
-    raises=RuntimeWarning, reason="an edge's slope of next to nothing is squared before it is left out"
-)
+@pytest.mark.xfail(raises=RuntimeWarning, reason="an edge's slope of next to nothing is squared")
 def test_slow_edges_raise_no_warning_of_numpy():
     """A comparator that takes a tenth of the period to cross, recorded clean: nothing but the result is said."""
     from benchfit import cycle
