@@ -152,7 +152,7 @@ def test_no_warning_that_is_not_earned():
 
 @pytest.mark.xfail(raises=RuntimeWarning, reason="an edge's slope of next to nothing is squared")
 def test_slow_edges_raise_no_warning_of_numpy():
-    """A comparator that takes a tenth of the period to cross, recorded clean: nothing but the result is said."""
+    """A comparator that takes a tenth of the period to cross, recorded clean: nothing else is said."""
     from benchfit import cycle
     from benchfit.pipeline import assign
     from benchfit.sheet.model import Sheet
