@@ -53,7 +53,10 @@ def find_edges(trace: Trace, states: States) -> Edges:
     at = np.where(wide, fitted, at)
     # An edge between two samples may lie anywhere between them.
     sharp = passed.after - passed.before == 1
-    variance = np.where(wide, error, (trace.noise / slope) ** 2 / 2 + np.where(sharp, 1.0 / 12.0, 0.0))
+    # Between two samples that do not rise it may lie anywhere in the passage.
+    unknown = (passed.after - passed.before) ** 2 / 12.0
+    crossing = np.where(slope > 0, (trace.noise / np.where(slope > 0, slope, 1.0)) ** 2 / 2, unknown)
+    variance = np.where(wide, error, crossing + np.where(sharp, 1.0 / 12.0, 0.0))
     return Edges(at, passed.rising, variance)
 
 
@@ -69,7 +72,7 @@ def _interpolate(
     v0, v1 = trace.values[last], trace.values[np.minimum(last + 1, trace.size - 1)]
     rise = (v1 - v0) * sign
     rise = np.where(rise > 0, rise, np.inf)
-    return last + np.clip((middle - v0) * sign / rise, 0.0, 1.0), np.where(np.isfinite(rise), rise, 1e-300)
+    return last + np.clip((middle - v0) * sign / rise, 0.0, 1.0), np.where(np.isfinite(rise), rise, 0.0)
 
 
 def _regress(
