@@ -234,7 +234,48 @@ def _table(title: str, rows: list[tuple[Train, dict[str, float]]]) -> None:
     print(f"  {title:12s} " + "  ".join(cells))
 
 
-STUDIES: dict[str, Callable[[], None]] = {"bound": study_bound}
+COVERED = (
+    "period", "charge_share", "upper", "lower", "charge_curvature", "discharge_curvature", "charge_slope",
+    "discharge_slope",
+)
+
+
+def study_coverage(repeats: int = 2000) -> None:
+    """Coverage of 95 % intervals from the record's own u on white noise, then with jitter, 8 bits, scope errors."""
+    rng = np.random.default_rng(5)
+    rows = []
+    for k in range(repeats):
+        x, y = rng.uniform(1.2, 5.0, 2)
+        cycles = float(np.exp(rng.uniform(np.log(2.2), np.log(60.0))))
+        train = Train(x, y, cycles, float(rng.uniform(40, 300)), float(10 ** rng.uniform(-3, -1.52)))
+        phase = float(rng.random())
+        found = measure(train.capture(phase, 50_000 + k), NODE)
+        truth = train.truth()
+        limit = bound(train, phase) if k % 10 == 0 else {}
+        row = {}
+        for name in COVERED[:6]:
+            z = (found.value(name) - truth[name]) / found.u(name)
+            row[name] = (z, found.u(name) / limit[name] if name in limit else np.nan, cycles)
+        rows.append(row)
+    print(f"white noise, {repeats} captures of 2 to 60 cycles: share of 95 % intervals (u_noise) that hold the truth")
+    _coverage_table(rows)
+    print("the same, by number of cycles")
+    for low, high in ((2, 4), (4, 8), (8, 20), (20, 60)):
+        _coverage_table([r for r in rows if low <= r["period"][2] < high], f"{low} to {high} cycles")
+
+
+def _coverage_table(rows: list[dict[str, tuple[float, float, float]]], title: str = "all") -> None:
+    cells, every = [], []
+    for name in COVERED[:6]:
+        z = np.array([r[name][0] for r in rows])
+        width = np.array([r[name][1] for r in rows])
+        every.append(np.abs(z) < 1.96)
+        sharp = np.nanmean(width) if np.isfinite(width).any() else np.nan
+        cells.append(f"{name} {100 * np.mean(every[-1]):.1f} % (u/bound {sharp:.2f})")
+    print(f"  {title:16s} all together {100 * np.mean(every):.1f} %;  " + ", ".join(cells))
+
+
+STUDIES: dict[str, Callable[[], None]] = {"bound": study_bound, "coverage": study_coverage}
 
 
 def main(words: list[str]) -> None:
