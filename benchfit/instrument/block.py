@@ -13,6 +13,7 @@ not-a-number.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 from typing import Final
 
 import numpy as np
@@ -95,6 +96,7 @@ def excerpt(raw: bytes | bytearray, limit: int = 24) -> str:
     return f"'{text}'" + (" …" if len(raw) > limit else "")
 
 
+@cache
 def dtype_of(encoding: str, byte_order: str) -> np.dtype[np.generic]:
     """The numpy type of one sample in one of ENCODINGS but "ascii"; ``byte_order`` is little or big."""
     return np.dtype(encoding).newbyteorder("<" if byte_order == "little" else ">")
@@ -111,7 +113,8 @@ def decode_binary(raw: bytes | bytearray, encoding: str, byte_order: str) -> NDA
             "wrong-length",
             f"a block of {len(raw):,} bytes is no whole number of {dtype.itemsize}-byte samples ({encoding})",
         )
-    return np.frombuffer(raw, dtype).astype(dtype.newbyteorder("="), copy=False)
+    numbers = np.frombuffer(raw, dtype)
+    return numbers if dtype.isnative else numbers.astype(dtype.newbyteorder("="))
 
 
 def decode_ascii(raw: bytes | bytearray) -> NDArray[np.float64]:

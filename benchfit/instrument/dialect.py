@@ -197,9 +197,7 @@ class _Reader:
             self._refuse(key, f'is {value!r}; give "\\n", "\\r\\n", "\\r" or ""')
         return value
 
-    def _choice(
-        self, table: Mapping[str, object], key: str, accepted: Sequence[str], *, required: bool = False
-    ) -> str:
+    def _choice(self, table: Mapping[str, object], key: str, accepted: Sequence[str], *, required: bool = False) -> str:
         """One of the accepted words; left out, it is the first, or refused where it is required."""
         value = table.get(key, None if required else accepted[0])
         if value is None:

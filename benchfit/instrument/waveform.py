@@ -116,9 +116,7 @@ def to_capture(
     )
 
 
-def _channel(
-    numbers: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, float], name: str
-) -> Channel:
+def _channel(numbers: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, float], name: str) -> Channel:
     overloaded = None
     if numbers.dtype.kind in "iu":
         volts, step = _volts(numbers, dialect, fields), _smallest_code_step(numbers)
@@ -148,13 +146,14 @@ def _volts(raw: NDArray[np.generic], dialect: Dialect, fields: Mapping[str, floa
 def _smallest_code_step(codes: NDArray[np.generic]) -> float:
     """The smallest step between different integers; 0 where there is only one.
 
-    Of a long record every so many samples are looked at, 32,768 at least: they hold every level that counts.
+    Of a long record every so many samples are looked at, 8,192 at least: they hold every level that counts.
     """
-    codes = codes[:: max(1, codes.size // 32768)]
+    codes = codes[:: max(1, codes.size // 8192)]
     if codes.dtype.itemsize > 1:
         levels = np.unique(codes).astype(np.int64)
     else:
-        levels = np.bincount(codes.astype(np.int16) + (128 if codes.dtype.kind == "i" else 0)).nonzero()[0]
+        from_zero = codes if codes.dtype.kind == "u" else codes.view(np.uint8) ^ np.uint8(128)
+        levels = np.bincount(from_zero).nonzero()[0]
     return float((levels[1:] - levels[:-1]).min()) if levels.size > 1 else 0.0
 
 
@@ -188,10 +187,11 @@ def _expected_bytes(wire: Questions, dialect: Dialect, channel: str, points: flo
 
 def _number(wire: Questions, command: str, name: str, cell: str) -> float:
     try:
-        value = float(cell.strip())
+        value = float(cell)
     except ValueError:
         value = math.nan
-    if not math.isfinite(value) or abs(value) >= 9e37:
+    # Not-a-number compares false, and SCPI's stand-ins for the infinities lie beyond.
+    if not -9e37 < value < 9e37:
         raise _unreadable(wire, command, name, cell)
     return value
 
