@@ -33,6 +33,8 @@ FLOOR = 0.004
 """What the closed forms leave out of a real circuit's change, as a share of it."""
 LIVE = 0.03
 """Probability from which a part counts as one that may have drifted."""
+AWAY = 0.15
+"""How far off the model may be in a quantity whose changes it is asked about (of the swing; in ln)."""
 PAIR = 0.02
 """Prior odds of two drifting parts against one."""
 ALIKE = 0.999
@@ -78,12 +80,14 @@ class Build(Protocol):
 class Fingerprint:
     """Changes over the run with their covariance: of voltages in V, of everything else as Δ ln.
 
-    ``frequency`` is Δ ln f, ``swing`` (V) the size that voltages are of.
+    ``level`` is what they are in the middle of it, ``frequency`` is Δ ln f, ``swing`` (V) the size that
+    voltages are of.
     """
 
     names: tuple[str, ...]
     change: Array
     covariance: Array
+    level: Array
     frequency: float
     swing: float
 
@@ -147,7 +151,7 @@ def fingerprint(base: Basis, names: Sequence[str], y: Array, period: Array, foun
     by_name = dict(zip(names, level, strict=False))
     swing = abs(by_name.get("upper", 0.0) - by_name.get("lower", 0.0))
     swing = swing or abs(by_name.get("high", 1.0) - by_name.get("low", 0.0))
-    return Fingerprint(tuple(names), change[:-1], covariance[:-1, :-1], -float(change[-1]), swing)
+    return Fingerprint(tuple(names), change[:-1], covariance[:-1, :-1], middle[:-1], -float(change[-1]), swing)
 
 
 def blame(build: Build, found: Fingerprint, parts: Mapping[str, float]) -> Blamed:
@@ -164,7 +168,7 @@ def blame(build: Build, found: Fingerprint, parts: Mapping[str, float]) -> Blame
     here = {k: float(v[0]) for k, v in build.measured(middle[None, :]).items()}
     if not math.isfinite(here.get("frequency", math.nan)):
         return Blamed(why="the build sheet's circuit does not run with the parts found")
-    use = [i for i, n in enumerate(found.names) if math.isfinite(here.get(n, math.nan))]
+    use = [i for i, n in enumerate(found.names) if _is_spoken_of(found, i, here.get(n, math.nan))]
     if not use:
         return Blamed(why="nothing was measured that the circuit speaks of")
     names = [found.names[i] for i in use]
@@ -191,6 +195,15 @@ def _with_floor(found: Fingerprint, use: list[int]) -> Array:
     scale = np.array([found.swing if _is_voltage(found.names[i]) else 1.0 for i in use])
     floor = FLOOR * (np.abs(found.change[use]) + abs(found.frequency) * scale)
     return found.covariance[np.ix_(use, use)] + np.diag(floor**2)
+
+
+def _is_spoken_of(found: Fingerprint, i: int, expected: float) -> bool:
+    """Whether the model has a quantity, and puts it where it was measured: what it misses (a flyback shorter
+    than a sample, a node that something holds) it cannot explain the changes of."""
+    level = float(found.level[i])
+    if _is_voltage(found.names[i]):
+        return abs(expected - level) < AWAY * found.swing
+    return expected > 0 and level > 0 and abs(math.log(expected / level)) < AWAY
 
 
 def _is_voltage(name: str) -> bool:
@@ -275,9 +288,7 @@ def _weighed(build: Build, columns: Array, ln_f: Array, seen: Array) -> list[_Hy
     return found
 
 
-def _hypothesis(
-    parts: tuple[int, ...], columns: Array, scale: Array, seen: Array, prior: float
-) -> _Hypothesis:
+def _hypothesis(parts: tuple[int, ...], columns: Array, scale: Array, seen: Array, prior: float) -> _Hypothesis:
     """Evidence and amplitudes of parts with N(0, scale²) priors under unit noise: conjugate normal model."""
     own = columns[:, parts] * scale[list(parts)]
     precision = np.eye(len(parts)) + own.T @ own
@@ -291,9 +302,7 @@ def _cosine(a: Array, b: Array) -> float:
     return abs(float(a @ b)) / math.sqrt(float(a @ a) * float(b @ b))
 
 
-def _shared(
-    build: Build, hypotheses: list[_Hypothesis], ln_f: Array, found: Fingerprint, middle: Array
-) -> Blamed:
+def _shared(build: Build, hypotheses: list[_Hypothesis], ln_f: Array, found: Fingerprint, middle: Array) -> Blamed:
     """Shares averaged over the hypotheses."""
     odds = np.array([h.log_odds for h in hypotheses])
     probability = np.exp(odds - odds.max())
@@ -308,9 +317,7 @@ def _shared(
             moved[j] += p * amplitude
     live = [j for j in np.argsort(-np.abs(mean)) if abs(mean[j]) >= SHOWN]
     # Parts that would each do alone: no capture of this run tells one from the other.
-    rivals = {
-        h.parts[0] for p, h in zip(probability, hypotheses, strict=True) if len(h.parts) == 1 and p > LIVE
-    }
+    rivals = {h.parts[0] for p, h in zip(probability, hypotheses, strict=True) if len(h.parts) == 1 and p > LIVE}
     causes = []
     for j in live:
         chance = float(sum(p for p, h in zip(probability, hypotheses, strict=True) if j in h.parts))

@@ -72,9 +72,13 @@ class Expected:
         duty = found.get("high_share", found.get("charge_share"))
         if duty is not None:
             out["duty"] = duty
-        for name in ("upper", "lower", "high", "low", "rise_time", "fall_time"):
+        for name in ("high", "low", "rise_time", "fall_time"):
             if name in found:
                 out[name] = found[name]
+        ends = [found[f"{word}_{end}"] for word in ("charge", "discharge") for end in ("start", "end")
+                if f"{word}_{end}" in found]  # fmt: skip
+        if ends and self._view.shape != "holding":  # a held node rests elsewhere between its phases
+            out["upper"], out["lower"] = np.max(ends, axis=0), np.min(ends, axis=0)
         with np.errstate(all="ignore"):
             for word in ("charge", "discharge"):
                 if f"{word}_curvature" in found:
@@ -94,9 +98,7 @@ def expected(sheet: Sheet, nodes: Sequence[str]) -> Expected:
     timing = next((n for n in model.circuit.nodes if n.name in nodes and n.shape != "square"), None)
     bare = model.views[0]
     loads = {node: load for node, load in bare.loads.items() if node in nodes}
-    view = View(
-        timing.name if timing else "", timing.shape if timing else "timing", loads, capacitor=bare.capacitor
-    )
+    view = View(timing.name if timing else "", timing.shape if timing else "timing", loads, capacitor=bare.capacitor)
     parts = [p for p in model.parameters if p.part is not None]
     kinds = tuple(p.part.kind for p in parts if p.part is not None)
     return Expected(

@@ -35,16 +35,16 @@ class Progress:
         from rich.progress import Progress as Bars
         from rich.text import Text
 
+        begun = time.monotonic()
+
         class Left(ProgressColumn):
             """Time left of a run that ends by the clock."""
 
             def render(self, task: Any) -> Text:
-                return Text(
-                    _clock(math.ceil((task.total or 0.0) - task.completed)), style="progress.remaining"
-                )
+                task.completed = min(task.total, spent + time.monotonic() - begun)
+                return Text(_clock(math.ceil(task.total - task.completed)), style="progress.remaining")
 
-        self._count, self._span, self._spent = count, span, spent
-        self._begun = time.monotonic()
+        self._count = count
         self._console = Console(no_color=not colour, highlight=False, soft_wrap=True)
         by_time = count is None and span is not None
         end: list[Any] = [BarColumn(), Left() if by_time else TimeRemainingColumn(), TextColumn("left")]
@@ -64,8 +64,6 @@ class Progress:
         self._console.print(text, markup=False)
         if self._count is not None and done is not None:
             self._bars.update(self._task, completed=done, description=f"{done} of {self._count} records")
-        elif self._span is not None:
-            self._bars.update(self._task, completed=self._spent + time.monotonic() - self._begun)
         elif done is not None:
             self._bars.update(self._task, description=f"{done} records")
 

@@ -42,9 +42,7 @@ def capture(seed: int = 0, samples: int = 300) -> Capture:
     volts[3] = np.nan
     over = np.zeros(samples, bool)
     over[5] = True
-    return Capture(
-        "a b.csv", 1e-4, -0.5, (Channel("CH1", "V", volts, 0.04, over), Channel("CH2", "V", volts * 2))
-    )
+    return Capture("a b.csv", 1e-4, -0.5, (Channel("CH1", "V", volts, 0.04, over), Channel("CH2", "V", volts * 2)))
 
 
 @pytest.fixture

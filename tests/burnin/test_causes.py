@@ -45,9 +45,7 @@ def test_the_part_is_named(build, part):
     assert sum(c.share for c in found.causes) + found.unexplained == pytest.approx(1.0, abs=1e-12)
 
 
-@pytest.mark.parametrize(
-    ("build", "part", "alike"), [("op-amp", "C", "R"), ("schmitt, output only", "R", "C")]
-)
+@pytest.mark.parametrize(("build", "part", "alike"), [("op-amp", "C", "R"), ("schmitt, output only", "R", "C")])
 def test_what_cannot_be_told_apart_is_said(build, part, alike):
     """R or C of one time constant: both are named, and each says that the other would do as well."""
     found = drifted(build, part)
@@ -116,7 +114,7 @@ def test_a_build_that_does_not_run():
         def measured(self, states):
             return {"frequency": np.full(len(states), np.nan)}
 
-    seen = causes.Fingerprint(("charge_time",), np.array([0.1]), np.eye(1) * 1e-6, -0.1, 1.0)
+    seen = causes.Fingerprint(("charge_time",), np.array([0.1]), np.eye(1) * 1e-6, np.ones(1), -0.1, 1.0)
     assert "does not run" in causes.blame(Dead(), seen, {}).why
 
 

@@ -70,11 +70,7 @@ def test_the_drift_s_u_is_one():
         z = []
         for _ in range(200):
             n = 60
-            y = (
-                20 * np.linspace(0, 1, n)
-                + rng.normal(size=n)
-                + walk * np.cumsum(rng.normal(size=n)) / math.sqrt(n)
-            )
+            y = 20 * np.linspace(0, 1, n) + rng.normal(size=n) + walk * np.cumsum(rng.normal(size=n)) / math.sqrt(n)
             found = analysed(y)[2]
             z.append((found.rate - 20 / (EVERY * (n - 1))) / found.u_rate)
         assert least < np.std(z) < most

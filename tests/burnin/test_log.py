@@ -115,9 +115,7 @@ def test_a_lock_left_by_a_dead_process_does_not_stand_in_the_way(log_at):
     assert log_at("other.db").seq == 0
 
 
-@pytest.mark.parametrize(
-    "content", [b"seq,acquired\n1,2\n", b"\x00" * 4096, b"SQLite format 3\x00" + b"\x01" * 20]
-)
+@pytest.mark.parametrize("content", [b"seq,acquired\n1,2\n", b"\x00" * 4096, b"SQLite format 3\x00" + b"\x01" * 20])
 def test_foreign_files_are_left_alone(tmp_path, content):
     """Text, zeros, a cut-off database header: refused by writer and reader, not a byte changed."""
     path = tmp_path / "notes.txt"
@@ -166,9 +164,7 @@ def test_another_version_is_refused(log_at, newer):
     content[60:64] = struct.pack(">I", schema.version() + (1 if newer else -1))
     path.write_bytes(content)
     for open_ in (lambda: log_at(), lambda: LogReader.open(path)):
-        with pytest.raises(
-            LogError, match="version .*" + ("program that wrote it" if newer else "--upgrade")
-        ):
+        with pytest.raises(LogError, match="version .*" + ("program that wrote it" if newer else "--upgrade")):
             open_()
     assert path.read_bytes() == bytes(content)
 
@@ -177,9 +173,7 @@ def test_an_older_log_is_upgraded_as_a_copy(log_at, tmp_path, monkeypatch):
     """A migration is applied to the copy; the old log stays what it was."""
     path = closed_log(log_at, 3)
     before = path.read_bytes()
-    monkeypatch.setattr(
-        schema, "MIGRATIONS", (*schema.MIGRATIONS, "CREATE TABLE later (x); CREATE TABLE more (y)")
-    )
+    monkeypatch.setattr(schema, "MIGRATIONS", (*schema.MIGRATIONS, "CREATE TABLE later (x); CREATE TABLE more (y)"))
     with pytest.raises(LogError, match="--upgrade"):
         LogReader.open(path)
     new = tmp_path / "new.db"
@@ -206,9 +200,7 @@ def test_a_log_cut_short_is_refused(log_at):
 @pytest.mark.parametrize("place", [0.5, 0.7, 0.9])
 def test_garbage_inside_is_noticed(log_at, place):
     """A stretch of the file overwritten: refused at the latest when the records are read, never altered."""
-    path = closed_log(
-        log_at, 3000
-    )  # in a short log most of the room belongs to tables that are all but empty
+    path = closed_log(log_at, 3000)  # in a short log most of the room belongs to tables that are all but empty
     at = int(path.stat().st_size * place) // 16384 * 16384
     with path.open("r+b") as file:
         file.seek(at)
@@ -254,9 +246,7 @@ def test_a_log_that_vanishes_is_noticed(log_at):
     assert caught.value.status == 5
 
 
-@pytest.mark.skipif(
-    not hasattr(os, "geteuid") or os.geteuid() != 0, reason="needs root, to become somebody else"
-)
+@pytest.mark.skipif(not hasattr(os, "geteuid") or os.geteuid() != 0, reason="needs root, to become somebody else")
 def test_a_read_only_folder(tmp_path, log_at):
     """A folder that may not be written: a sentence for the writer; the trend's reader works there."""
     path = closed_log(log_at, 5)

@@ -141,9 +141,7 @@ def test_alarms_and_what_is_kept(log_at):
         (alarm,) = reader.alarms()
     assert kept == [3, 4, 5, 6, 7, 8]
     assert (alarm.seq, alarm.cleared, alarm.value, alarm.high) == (3, 8, 10.5, pytest.approx(10.2))
-    why, logged, _ = run(
-        log_at("b.db"), [10.0, 11.0, 10.0], Plan(0.0, limits=(TWO,), is_stopping=True, keep="none")
-    )
+    why, logged, _ = run(log_at("b.db"), [10.0, 11.0, 10.0], Plan(0.0, limits=(TWO,), is_stopping=True, keep="none"))
     assert (why, len(logged)) == ("alarm", 2)
     assert isinstance(logged[1].alarms[0], Raised)
 
@@ -205,9 +203,7 @@ def test_a_set_clock_and_a_changed_sheet_are_noticed(log_at, monkeypatch):
 
     monkeypatch.setattr(loop, "now", skewed)
     log = log_at()
-    _, _, said = run(
-        log, [12.0] * 8, Plan(0.0, count=8, keep="none"), changed=lambda: "the sheet was changed"
-    )
+    _, _, said = run(log, [12.0] * 8, Plan(0.0, count=8, keep="none"), changed=lambda: "the sheet was changed")
     with LogReader.open(log.path) as reader:
         events = {event.code: event for event in reader.events()}
     assert events["clock-step"].size == pytest.approx(3600, abs=5)
@@ -324,9 +320,7 @@ def test_a_file_counts_when_it_is_complete(tmp_path):
 def test_what_lay_there_before_comes_oldest_first(tmp_path):
     """With the files' own times; other files are none of ours; a settings page beside its data neither."""
     clock = Clock()
-    for i, name in enumerate(
-        ("c.CSV", "a.csv", "b.tsv", "notes.md", "a.txt", ".hidden.csv", "run.db", "x.csv~")
-    ):
+    for i, name in enumerate(("c.CSV", "a.csv", "b.tsv", "notes.md", "a.txt", ".hidden.csv", "run.db", "x.csv~")):
         (tmp_path / name).write_text("1")
         os.utime(tmp_path / name, (1e9 + i, 1e9 + i))
     source = folder_source(tmp_path, clock)

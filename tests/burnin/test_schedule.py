@@ -24,9 +24,7 @@ def test_slots_stay_on_the_grid_and_are_never_made_up_for(start, every, last, la
     assert slot.number > last
     assert slot.skipped == slot.number - last - 1
     assert slot.due >= now - 0.051 * every - 1e-6, "a slot long past is taken"
-    assert slot.due <= max(now, start + (last + 1) * every) + every, (
-        "a slot is waited for that could be sooner"
-    )
+    assert slot.due <= max(now, start + (last + 1) * every) + every, "a slot is waited for that could be sooner"
 
 
 def test_a_punctual_schedule_does_not_drift():

@@ -220,12 +220,10 @@ def test_one_line_a_record():
     """When, number, frequency, how far off the first, duty; a failure's reason; alarms."""
     shown = {"seq": 7, "acquired": "2025-06-15T15:06:40.000000Z", **one(12.06)}
     text = record_line(shown, ["ALARM: frequency beyond 2 %"], 12.0)
-    assert re.search(
-        r"2025-06-1\d \d\d:\d\d:40  #7  12.0600 ± 0.0020 Hz  \+0.5 % since the first  \[ALARM", text
+    assert re.search(r"2025-06-1\d \d\d:\d\d:40  #7  12.0600 ± 0.0020 Hz  \+0.5 % since the first  \[ALARM", text)
+    assert record_line({"seq": 8, "acquired": shown["acquired"], **failed("no\x1b reply")}, [], 12.0).endswith(
+        "failed: no\\x1b reply"
     )
-    assert record_line(
-        {"seq": 8, "acquired": shown["acquired"], **failed("no\x1b reply")}, [], 12.0
-    ).endswith("failed: no\\x1b reply")
 
 
 # --- several units ------------------------------------------------------------------------------------
