@@ -122,7 +122,8 @@ def main() -> None:
                     key = (jobs, pattern)
                     best[key] = min(best.get(key, one), one, key=lambda r: r.seconds)
     load = os.getloadavg()[0] if hasattr(os, "getloadavg") else float("nan")
-    print(f"{args.captures} captures, {args.distinct} distinct, {args.circuit}; load of this machine {load:.1f}")
+    what = f"{args.captures} captures, {args.distinct} distinct, {args.circuit}"
+    print(f"{what}; load of this machine {load:.1f}")
     print(f"{'jobs':>4} {'captures':>8} {'s':>8} {'ms each':>8} {'processor s':>11} {'peak MB':>8}")
     for (jobs, _), found in best.items():
         count = found.records.count(b"\n")

@@ -8,7 +8,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from benchfit.commands import options
+from benchfit.commands import completion, options
 from benchfit.errors import UsageError
 
 if TYPE_CHECKING:
@@ -45,6 +45,11 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     group.add_argument("--jobs", metavar="N", type=int, help="processes to work on many captures with")
     group.add_argument("--cluster", metavar="ADDRESS", help="dask scheduler to work on many captures with")
     options.add_talk(parser)
+    group = parser.add_argument_group("shell")
+    group.add_argument(
+        "--completion", metavar="SHELL", action=completion.Action, choices=completion.SHELLS,
+        help='script that completes command lines in bash or zsh: eval "$(benchfit --completion bash)"',
+    )  # fmt: skip
 
 
 def arrange(parser: argparse.ArgumentParser, words: Sequence[str]) -> list[str]:

@@ -20,7 +20,9 @@ COMMANDS = {
     "circuits": ("benchfit.commands.circuits", "the circuits, their parts, nodes, equations, defaults"),
     "sheet": ("benchfit.commands.sheet", "a commented starter build sheet"),
 }
-_MAIN = "benchfit.commands.explain"
+MAIN = "benchfit.commands.explain"
+FLAGS = ("-v", "-vv", "-q", "--verbose", "--quiet")
+"""Options that may stand before a command's name."""
 _ABOUT = """\
 Says why a relaxation oscillator misses its target: which part is to blame, how sure that is,
 what to read next, what to change. Reads a capture, measures it, fits the circuit, explains."""
@@ -62,8 +64,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 
 
 def _run(words: list[str]) -> int:
-    flags = [word for word in words if word in ("-v", "-vv", "-q", "--verbose", "--quiet")]
-    first = next((word for word in words if word not in flags), None)
+    first = next((word for word in words if word not in FLAGS), None)
     if first in COMMANDS:
         name = str(first)
         words.remove(name)
@@ -72,7 +73,7 @@ def _run(words: list[str]) -> int:
         module.add_arguments(parser)
     else:
         name = ""
-        module = importlib.import_module(_MAIN)
+        module = importlib.import_module(MAIN)
         parser = Parser(
             prog="benchfit", usage=_usage(), description=_ABOUT, epilog=_CLOSING, formatter_class=_Formatter
         )
