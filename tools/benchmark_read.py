@@ -25,7 +25,8 @@ MEMORY_TARGET = 1.6
 _BARE = """
 import pandas
 def call(path):
-    return pandas.read_csv(path, skiprows=1, header=None, names=["t", "a", "b"], sep=",", decimal=".", dtype="float64", engine="c")
+    layout = {"skiprows": 1, "header": None, "names": ["t", "a", "b"], "sep": ",", "decimal": "."}
+    return pandas.read_csv(path, dtype="float64", engine="c", **layout)
 """
 _BENCHFIT = """
 import pandas, benchfit
@@ -60,7 +61,7 @@ def write(path: Path, rows: int) -> None:
                 np.round((1.5 + 0.002 * (k % 1000) + 0.01 * rng.standard_normal(k.size)) / 0.02) * 0.02
             )
             file.writelines(
-                "%.8e,%.5E,%.5E\n" % row for row in zip(k * 1e-8 - 0.02, output, capacitor, strict=True)
+                f"{t:.8e},{a:.5E},{b:.5E}\n" for t, a, b in zip(k * 1e-8 - 0.02, output, capacitor, strict=True)
             )
 
 
@@ -84,16 +85,14 @@ def main(arguments: list[str] | None = None) -> int:
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "long.csv"
         write(path, options.rows)
-        print(
-            f"{options.rows} rows, {path.stat().st_size / 2**20:.0f} MiB, {options.repeats} runs of each in turn"
-        )
+        size = f"{path.stat().st_size / 2**20:.0f} MiB"
+        print(f"{options.rows} rows, {size}, {options.repeats} runs of each in turn")
         results = [(measure(_BARE, path), measure(_BENCHFIT, path)) for _ in range(options.repeats)]
     bare, ours = ([run[side] for run in results] for side in (0, 1))
     for name, runs in (("pandas.read_csv", bare), ("benchfit.read", ours)):
         times, peaks = zip(*runs, strict=True)
-        print(
-            f"{name:<16} median {statistics.median(times):6.2f} s  best {min(times):6.2f} s  peak {max(peaks) / 2**20:7.0f} MiB"
-        )
+        took = f"median {statistics.median(times):6.2f} s  best {min(times):6.2f} s"
+        print(f"{name:<16} {took}  peak {max(peaks) / 2**20:7.0f} MiB")
     time_ratio = statistics.median(b / a for (a, _), (b, _) in results)
     memory_ratio = statistics.median(b / a for (_, a), (_, b) in results)
     print(f"ratio of times   {time_ratio:.2f} (median of pairs; at most {TIME_TARGET})")

@@ -6,9 +6,8 @@ their own, start and increment in the header, …); the waveforms, names and set
 
 from __future__ import annotations
 
-import io
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from itertools import product
 
@@ -70,7 +69,7 @@ class Wave:
 
 @dataclass(frozen=True)
 class Made:
-    """A file's bytes and what must be read from it; ``interval`` to be given by the user where ``ask`` is true."""
+    """A file's bytes and what must be read from it; the user must give the interval where ``ask`` is true."""
 
     data: bytes
     start: float
@@ -90,7 +89,7 @@ Maker = Callable[[Wave, Style], Sketch]
 def relaxation(
     samples: int, channels: int = 2, seed: int = 0, interval: float = 2e-5, start: float = -1e-3
 ) -> Wave:
-    """A capacitor charged and discharged between two thresholds, its output, and a little noise, in 8-bit steps."""
+    """A capacitor between two thresholds, its output, a stored reference, with a little noise in 8-bit steps."""
     rng = np.random.default_rng(seed)
     v, high = 2.0, True
     capacitor, output = np.empty(samples), np.empty(samples)
@@ -130,9 +129,9 @@ def _values(wave: Wave, style: Style) -> Rows:
 
 
 _SETTINGS = (
-    ("Record Length", "{samples}"), ("Sample Interval", "{interval}"), ("Trigger Point", "5"), ("Source", "CH1"),
-    ("Vertical Units", "V"), ("Vertical Scale", "2"), ("Horizontal Units", "s"), ("Horizontal Scale", "0.001"),
-    ("Probe Atten", "10"), ("Note", "bench no. 4"),
+    ("Record Length", "{samples}"), ("Sample Interval", "{interval}"), ("Trigger Point", "5"),
+    ("Source", "CH1"), ("Vertical Units", "V"), ("Vertical Scale", "2"), ("Horizontal Units", "s"),
+    ("Horizontal Scale", "0.001"), ("Probe Atten", "10"), ("Note", "bench no. 4"),
 )  # fmt: skip
 
 
@@ -243,8 +242,8 @@ def units_in_words(wave: Wave, style: Style) -> Sketch:
 def units_in_brackets(wave: Wave, style: Style) -> Sketch:
     """E: "[s]", "CH2[V]"; milliseconds when the record is even in length."""
     unit, scale = ("ms", 1e-3) if wave.samples % 2 == 0 else ("s", 1.0)
-    return [[f"[{unit}]", *(f"{name}[{unit}]" for name, unit in zip(_names(wave), _units(wave), strict=True))],
-            *_table(wave, style, scale)], _names(wave), _units(wave), False  # fmt: skip
+    names = [f"{name}[{unit}]" for name, unit in zip(_names(wave), _units(wave), strict=True)]
+    return [[f"[{unit}]", *names], *_table(wave, style, scale)], _names(wave), _units(wave), False
 
 
 def comment_then_header(wave: Wave, style: Style) -> Sketch:
@@ -323,8 +322,8 @@ def letters(wave: Wave, style: Style) -> Sketch:
 FAMILIES: dict[str, Maker] = {
     maker.__name__: maker
     for maker in (
-        beside, beside_mirrored, above, above_without_header, above_values_only, names_and_units, units_only, source_row,
-        start_and_increment, sequence_and_increment, units_in_words, units_in_brackets, comment_then_header,
+        beside, beside_mirrored, above, above_without_header, above_values_only, names_and_units, units_only,
+        source_row, start_and_increment, sequence_and_increment, units_in_words, units_in_brackets, comment_then_header,
         header_in_comment, index_first, bare, bare_values, names_units_blank, logger, tuples, letters,
     )
 }  # fmt: skip
@@ -332,8 +331,8 @@ FAMILIES: dict[str, Maker] = {
 SINGLE = frozenset(("beside", "beside_mirrored", "above_without_header", "above_values_only"))
 # Blanks as separators leave no empty cells and no blanks inside a cell.
 _NO_BLANKS = frozenset(
-    ("beside", "beside_mirrored", "above", "above_without_header", "above_values_only", "source_row", "units_in_words",
-     "start_and_increment", "sequence_and_increment", "letters", "tuples")
+    ("beside", "beside_mirrored", "above", "above_without_header", "above_values_only", "source_row",
+     "units_in_words", "start_and_increment", "sequence_and_increment", "letters", "tuples")
 )  # fmt: skip
 
 
@@ -354,8 +353,7 @@ def make(family: str, wave: Wave, style: Style) -> Made:
     if family in SINGLE:
         wave = replace(wave, channels=wave.channels[:1])
     rows, names, units, ask = FAMILIES[family](wave, style)
-    glue = "," + "\t" if style.delimiter == "mixed" else style.delimiter
-    text = style.line_end.join(glue.join(row) for row in rows) + (
+    text = style.line_end.join(style.delimiter.join(row) for row in rows) + (
         style.line_end if style.last_line_end else ""
     )
     count = len(wave.channels)
@@ -370,11 +368,3 @@ def make(family: str, wave: Wave, style: Style) -> Made:
 
 def _parsed(text: str) -> float:
     return float(text.replace(",", "."))
-
-
-def save(rows: Sequence[Sequence[str]], style: Style) -> bytes:
-    """Rows of cells as the bytes of a file."""
-    stream = io.StringIO()
-    for row in rows:
-        stream.write(style.delimiter.join(row) + style.line_end)
-    return stream.getvalue().encode(style.encoding)

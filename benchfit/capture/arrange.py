@@ -57,7 +57,7 @@ class Place:
     count: int
 
     def values(self, column: Floats) -> Floats:
-        result = np.full(self.count, np.nan)
+        result = np.full(self.count, np.nan, dtype=np.float64)
         result[self.places] = column
         return result
 
@@ -76,13 +76,13 @@ class Blend:
     count: int
 
     def _times(self) -> Floats:
-        return self.stamps[0] + self.interval * np.arange(self.count)
+        return self.stamps[0] + self.interval * np.arange(self.count, dtype=np.float64)
 
     def values(self, column: Floats) -> Floats:
         known = np.isfinite(column)
         if not known.any():
-            return np.full(self.count, np.nan)
-        return np.interp(self._times(), self.stamps[known], column[known])
+            return np.full(self.count, np.nan, dtype=np.float64)
+        return np.asarray(np.interp(self._times(), self.stamps[known], column[known]), dtype=np.float64)
 
     def mask(self, column: Mask) -> Mask:
         return np.interp(self._times(), self.stamps, column.astype(np.float64)) > 0.0
@@ -97,10 +97,10 @@ class Hold:
     count: int
 
     def _rows(self) -> NDArray[np.intp]:
-        times = self.stamps[0] + self.interval * np.arange(self.count)
+        times = self.stamps[0] + self.interval * np.arange(self.count, dtype=np.float64)
         # A time that rounding puts just before a change belongs to it.
         rows = np.searchsorted(self.stamps, times + 1e-6 * self.interval, side="right") - 1
-        return np.clip(rows, 0, self.stamps.size - 1)
+        return np.asarray(np.clip(rows, 0, self.stamps.size - 1), dtype=np.intp)
 
     def values(self, column: Floats) -> Floats:
         return column[self._rows()]

@@ -128,7 +128,7 @@ def kind(cell: str, decimal: str) -> str:
 
 @dataclass(frozen=True)
 class Precision:
-    """How finely a column is printed: with a ``fixed`` last digit, or (0) with so many significant ``digits``."""
+    """How finely a column is printed: with a ``fixed`` last digit, or (0) with so many ``digits`` in all."""
 
     fixed: float = 0.0
     digits: int = 17

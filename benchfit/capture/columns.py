@@ -15,7 +15,9 @@ from benchfit.capture.page import Page
 from benchfit.capture.spacing import robust_step
 
 Floats = NDArray[np.float64]
-_COMPANION = re.compile(r"(?P<of>.*?)[\s_-]*(peak[\s_-]*detect|envelope|min(imum)?|max(imum)?)", re.IGNORECASE)
+_COMPANION = re.compile(
+    r"(?P<of>.*?)[\s_-]*(peak[\s_-]*detect|envelope|min(imum)?|max(imum)?)", re.IGNORECASE
+)
 # Seconds since 1970 in this century: a clock beside the data, not a voltage.
 _EPOCH = (9e8, 5e9)
 NUMBERS_THE_ROWS = "it numbers the rows"
@@ -40,8 +42,8 @@ class Columns:
     def values(self, column: int) -> Floats:
         """Values by row, NaN where a cell holds no number."""
         if column not in self._values:
-            cells = self._page.column(column)
-            self._values[column] = np.array([number(cell, self._page.decimal) for cell in cells], dtype=np.float64)
+            numbers = [number(cell, self._page.decimal) for cell in self._page.column(column)]
+            self._values[column] = np.array(numbers, dtype=np.float64)
         return self._values[column]
 
     def finite(self, column: int) -> Floats:

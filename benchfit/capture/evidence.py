@@ -45,7 +45,7 @@ class Layout:
 
 @dataclass(frozen=True)
 class Claim:
-    """A family's claim on a file: how strong (0 to 1), why, and the layout or the sentence that refuses it."""
+    """A family's claim on a file: how strong (0 to 1), why, and the layout or the sentence of refusal."""
 
     strength: float
     reasons: tuple[str, ...] = ()

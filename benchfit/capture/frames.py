@@ -12,7 +12,7 @@ from benchfit.capture.table import Table
 
 @dataclass(frozen=True)
 class Frame:
-    """Rows ``start`` to ``stop`` (past the end) of a table, its ``number`` from 1, the ``text`` line above it."""
+    """Rows ``start`` to ``stop`` (past the end) of a table; its ``number`` from 1, the ``text`` above it."""
 
     number: int
     start: int

@@ -13,13 +13,15 @@ from benchfit.capture.units import Unit, unit
 
 _TIME = re.compile(
     r"(rel(ative)?[ ._-]*|elapsed[ ._-]*|abs(olute)?[ ._-]*)?"
-    r"(time|t|times|timestamps?|time[ ._-]?stamps?|elapsed|zeit|zeitstempel|temps|tempo|tiempo|tijd|tid|aika|czas|čas|cas|"
-    r"idő|ido|zaman|vrijeme|timp|время|час|时间|時間|x[ ._-]?axis|x)([ ._-]*(axis|base|stamp|values?|data|ch\w*))?",
+    r"(time|t|times|timestamps?|time[ ._-]?stamps?|elapsed|"
+    r"zeit|zeitstempel|temps|tempo|tiempo|tijd|tid|aika|czas|"
+    r"čas|cas|idő|ido|zaman|vrijeme|timp|время|час|时间|時間|x[ ._-]?axis|x)"
+    r"([ ._-]*(axis|base|stamp|values?|data|ch\w*))?",
     re.IGNORECASE,
 )
 _INDEX = re.compile(
-    r"samples?|sample[ ._-]?(no|nr|num|number|index|id|#)?\.?|index|idx|no\.?|nr\.?|n|#|points?|sequence|seq|row|rows|num|"
-    r"number|i|counter|count|record|id",
+    r"samples?|sample[ ._-]?(no|nr|num|number|index|id|#)?\.?|index|idx|no\.?|nr\.?|n|#|points?|sequence|seq|"
+    r"row|rows|num|number|i|counter|count|record|id",
     re.IGNORECASE,
 )
 _FREQUENCY = re.compile(
@@ -40,7 +42,7 @@ _CHANNEL_AND_UNIT = re.compile(r"(?P<name>CH\d+)(?P<unit>[mu]?[VA])")
 
 @dataclass(frozen=True)
 class Title:
-    """What a header says of one column: ``name`` ("" for none), ``unit`` (None where none is given), ``text``."""
+    """What a header says of one column: ``name`` ("" for none), ``unit`` (None for none), ``text``."""
 
     name: str = ""
     unit: Unit | None = None
@@ -53,7 +55,7 @@ class Title:
 
     @property
     def is_axis_letter(self) -> bool:
-        """Whether it is a bare "X", which names the time in some exports and a number of the row in others."""
+        """Whether it is a bare "X", which names the time in some exports, the number of the row in others."""
         return self.unit is None and self.name.casefold() == "x"
 
     @property
@@ -81,8 +83,8 @@ def title(text: str) -> Title:
     if alone := unit(text):
         return Title("" if alone.base else text, alone, text)
     if found := _NODE.fullmatch(text):
-        base, inside = ("V" if found["base"] in "vV" else "A"), unit(f"({found['node']})")
-        if inside is None or inside.base != base:
+        base, within = ("V" if found["base"] in "vV" else "A"), unit(f"({found['node']})")
+        if within is None or within.base != base:
             return Title(text, unit(base), text)
     if found := _CHANNEL_AND_UNIT.fullmatch(text):
         return Title(found["name"], unit(found["unit"]), text)
@@ -102,7 +104,7 @@ def title(text: str) -> Title:
 
 
 def _named(cell: str) -> Title:
-    """Title of a cell in a row of names, where a lone letter is a name: a spreadsheet's column, not ampere."""
+    """Title of a cell in a row of names; a lone letter is a name there: column A, not ampere."""
     return Title(cell, None, cell) if cell in ("A", "C", "F", "W") else title(cell)
 
 
@@ -169,7 +171,8 @@ def _with_units_row(page: Page, above: Sequence[int], units: Sequence[str], coun
     rows = tuple(above[-2:]) if names else (above[-1],)
     return Header(
         _aligned(titles, page, count), rows, has_names=any(t.name for t in titles), has_units_row=True,
-        in_comment=is_comment(page.lines[above[-1]]), plain=(names, tuple(units)) if names else (tuple(units),),
+        in_comment=is_comment(page.lines[above[-1]]),
+        plain=(names, tuple(units)) if names else (tuple(units),),
     )  # fmt: skip
 
 

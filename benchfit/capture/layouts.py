@@ -1,4 +1,4 @@
-"""Telling a layout: every family judges the evidence, the strongest claim wins. A new family is one new entry."""
+"""Telling a layout: each family judges the evidence, the strongest claim wins; a new family is one new entry."""
 
 from __future__ import annotations
 

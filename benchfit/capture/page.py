@@ -117,9 +117,8 @@ def _columns(
         numbers, words = met.count(NUMBER) + met.count(OVERLOAD), met.count(TEXT)
         if words > 0.2 * len(met) or words > numbers:
             textual.append(column)
-        elif numbers > 0.1 * len(met) and NUMBER in met + [row[column] for row in kinds if column < len(row)]:
-            if not _beside_a_key(body, column, numbers):
-                numeric.append(column)
+        elif numbers > 0.1 * len(met) and not _beside_a_key(body, column, numbers):
+            numeric += [column] * any(column < len(row) and row[column] == NUMBER for row in kinds)
     return tuple(numeric), tuple(textual)
 
 

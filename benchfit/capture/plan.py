@@ -213,7 +213,8 @@ def _wanted(
         measure = asked.unit or table.title(column).unit
         if asked.is_time or asked.is_increment:
             has_time = True
-            plan = _with_time(plan, _Retitled(page, layout, column, replace(asked, unit=measure)), column, layout, "you")
+            retitled = _Retitled(page, layout, column, replace(asked, unit=measure))
+            plan = _with_time(plan, retitled, column, layout, "you")
             continue
         # A name that is also a unit, "V" or "A", is a name here.
         name = asked.name or key

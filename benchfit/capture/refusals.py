@@ -1,4 +1,4 @@
-"""Files that look like captures and are none: spectra, responses, settings pages, hand-made tables, text logs."""
+"""Files that look like captures and are none: spectra, responses, settings pages, hand-made tables, logs."""
 
 from __future__ import annotations
 
@@ -16,8 +16,9 @@ from benchfit.capture.units import unit
 
 Floats = NDArray[np.float64]
 _MARKUP = (
-    ("<!doctype html", "a web page"), ("<html", "a web page"), ("<?xml", "an XML file"), ("<svg", "a drawing"),
-    ("{", "a JSON file"), ("[{", "a JSON file"), ("%!ps", "a PostScript file"), ("{\\rtf", "a text document"),
+    ("<!doctype html", "a web page"), ("<html", "a web page"), ("<?xml", "an XML file"),
+    ("<svg", "a drawing"), ("{", "a JSON file"), ("[{", "a JSON file"), ("%!ps", "a PostScript file"),
+    ("{\\rtf", "a text document"),
 )  # fmt: skip
 _SPECTRUM = re.compile(
     r"\b(spectrum|spectra|spektrum|bins|fft|bode|frequency response|network analy[sz]er)\b", re.IGNORECASE
@@ -69,7 +70,8 @@ def _no_table(found: Evidence) -> Claim | None:
     if sum(_WITH_UNIT.search(line) is not None for line in filled) > len(filled) // 2:
         return _refused("has units in every cell instead of in a header; write bare numbers")
     return _refused(
-        f"has no table of numbers in its first {len(page.lines)} lines; what is wanted is a row of numbers for each sample"
+        f"has no table of numbers in its first {len(page.lines)} lines; what is wanted is a row of numbers "
+        "for each sample"
     )
 
 

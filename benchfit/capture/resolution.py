@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -15,7 +17,8 @@ def resolution(values: NDArray[np.float64]) -> float:
 
     Exports carry noise of single-precision arithmetic in the last digits, and one cell may be damaged, so
     that the smallest difference of all need be no step of the converter: near-equal values count as one, and
-    the step is the mean of those differences that are about as small as the smallest few. Of a long record a part at its begin, middle and end is looked at.
+    the step is the mean of those differences that are about as small as the smallest few. Of a long record a
+    part at its begin, middle and end is looked at.
     """
     if values.size > _MOST:
         part = _MOST // 4
@@ -31,7 +34,7 @@ def resolution(values: NDArray[np.float64]) -> float:
     # Middle of each cluster of near-equal values.
     bounds = np.concatenate([[0], np.flatnonzero(apart) + 1, [levels.size]])
     middles = (
-        np.array([levels[a:b].mean() for a, b in zip(bounds[:-1], bounds[1:], strict=True)])
+        np.array([levels[a:b].mean() for a, b in pairwise(bounds)])
         if levels.size < 20_000
         else levels
     )

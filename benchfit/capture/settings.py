@@ -9,24 +9,28 @@ from dataclasses import dataclass
 from benchfit.capture.cells import is_number, kind
 from benchfit.capture.units import interval_of, quantity, rate_of, unit
 
+# Between the words of a key stand blanks, underscores, dots or hyphens, or nothing.
+_S = r"[ _.-]*"
 _INTERVAL_KEYS = re.compile(
-    r"(sampl\w*|horizontal|time|record|acquisition)?[ _.-]*(interval|increment|resolution|step|period|spacing)"
-    r"|(sampl\w*)[ _.-]*(interval|period|time|step|spacing)|x[ _.-]*(incr?\w*|interval|step|inc)|incr?|increment|interval"
-    r"|[dδ∆][ _.-]?[tx]|delta[ _.-]?[tx]|time[ _.-]*(delta|per[ _.-]*(sample|point))|(seconds|s)[ _./-]*(per[ _.-]*)?(sample|point)"
-    r"|h(orizontal)?[ _.-]*res(olution)?|abtastintervall|zeitintervall",
+    rf"(sampl\w*|horizontal|time|record|acquisition)?{_S}(interval|increment|resolution|step|period|spacing)"
+    rf"|x{_S}(incr?\w*|interval|step|inc)|incr?|[dδ∆]{_S}[tx]|delta{_S}[tx]|abtastintervall|zeitintervall"
+    rf"|(sampl\w*){_S}time|time{_S}(delta|per{_S}(sample|point))|(seconds|s)[ _./-]*(per{_S})?(sample|point)"
+    rf"|h(orizontal)?{_S}res(olution)?",
     re.IGNORECASE,
 )
 _RATE_KEYS = re.compile(
-    r"(sampl\w*|acquisition|acq\w*|daq|adc|data)?[ _.-]*(rate|freq(uency)?)|fs|f_s|sps|samples?[ _./-]*(per[ _.-]*)?s(ec(ond)?)?"
-    r"|abtastrate|abtastfrequenz",
+    rf"(sampl\w*|acquisition|acq\w*|daq|adc|data)?{_S}(rate|freq(uency)?)|fs|f_s|sps|abtastrate|abtastfrequenz"
+    rf"|samples?[ _./-]*(per{_S})?s(ec(ond)?)?",
     re.IGNORECASE,
 )
 _START_KEYS = re.compile(
-    r"x[ _.-]*(zero|origin|start|offset)|(start|first)[ _.-]*(time|stamp)|time[ _.-]*(zero|origin|start|of first sample)|t0|start",
+    rf"x{_S}(zero|origin|start|offset)|(start|first){_S}(time|stamp)|t0|start"
+    rf"|time{_S}(zero|origin|start|of first sample)",
     re.IGNORECASE,
 )
 _COUNT_KEYS = re.compile(
-    r"record[ _.-]*length|(number|no|num)[ _.-]*(of)?[ _.-]*(samples|points|rows)|samples|points|memory[ _.-]*length|nr?_?pt?s?|data[ _.-]*points",
+    rf"(record|memory){_S}length|(number|no|num){_S}(of)?{_S}(samples|points|rows)|samples|points|data{_S}points"
+    r"|nr?_?pt?s?",
     re.IGNORECASE,
 )
 _PAIR = re.compile(r"\s*(?P<key>[^:=\t,;]*[^\W\d][^:=\t,;]*?)\s*[:=]\s*(?P<value>\S.*?)?\s*$")
@@ -63,11 +67,10 @@ def from_lines(lines: Iterable[str], rows: Iterable[Sequence[str]]) -> Settings:
     for line, row in zip(lines, rows, strict=True):
         row = _setting_cells(line, row)
         filled = [cell for cell in row if cell]
-        if found := _PAIR.match(line.strip().strip(",;")):
-            if not _is_clock(line):
-                pairs.append((found["key"], (found["value"] or "",)))
-                continue
-        if len(filled) > 1 and row[0] and not is_number(row[0], "."):
+        found = _PAIR.match(line.strip().strip(",;"))
+        if found and not _is_clock(line):
+            pairs.append((found["key"], (found["value"] or "",)))
+        elif len(filled) > 1 and row[0] and not is_number(row[0], "."):
             pairs.append((row[0], tuple(row[1:])))
     return _settled(pairs)
 

@@ -138,7 +138,7 @@ class Source:
         self._stream.check_values(count)
 
     def check_lines(self) -> None:
-        """Raise CaptureError where a plain file passes the limit or has a line without end, from samples of it."""
+        """Raise CaptureError where a plain file passes the limit or, in samples of it, has a line without end."""
         assert self.size is not None
         self._stream.check_size(self.size)
         with open(self.path, "rb") as file:
@@ -218,16 +218,15 @@ class Source:
             raise self.refusal(
                 "holds zero bytes only: the space was reserved but never written; save the capture again"
             )
-        odd = len(text) - len(text.translate(None, _CONTROLS))
-        if (
-            odd > max(8, 0.02 * len(text))
-            and not text[: len(text) // 8].translate(None, _CONTROLS) == text[: len(text) // 8]
-        ):
+        begin = text[: len(text) // 8]
+        # Garbage further down, or a tail of zero bytes, leaves a begin that can be read.
+        is_odd = len(text) - len(text.translate(None, _CONTROLS)) > max(8, 0.02 * len(text))
+        if is_odd and len(begin.translate(None, _CONTROLS)) < len(begin):
             raise self.refusal("is a binary file, not text; export the capture as CSV")
 
 
 def _encoding(first: bytes) -> tuple[str, int]:
-    """Encoding of a text and the length of its byte order mark; a text that is no UTF-8 is taken for Latin-1."""
+    """Encoding of a text and the length of its byte order mark; what is no UTF-8 is taken for Latin-1."""
     for mark, name in _BOMS:
         if first.startswith(mark):
             return name, len(mark)

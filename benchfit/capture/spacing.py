@@ -39,11 +39,14 @@ def even(stamps: Floats, quantum: float) -> Spacing | None:
     tolerance = max(1.01 * quantum, 0.02 * interval, 2e-7 * float(max(abs(stamps[0]), abs(stamps[-1]))))
     if not np.isfinite(interval) or _farthest(stamps, interval, tolerance) > tolerance:
         return None
-    remarks = ()
     usual = float(np.median(np.diff(stamps[: min(n, _CHUNK)])))
+    remarks: tuple[Remark, ...] = ()
     if abs(usual / interval - 1) > 0.02:
-        remarks = (Remark("rounded-time", f"The time stamps are rounded (usual step {usual:.4g} s); the interval is (last - first)/(n - 1) = "
-                          f"{interval:.6g} s."),)  # fmt: skip
+        says = (
+            f"The time stamps are rounded (usual step {usual:.4g} s); the interval is (last - first)/(n - 1) "
+            f"= {interval:.6g} s."
+        )
+        remarks = (Remark("rounded-time", says),)
     return Spacing(float(stamps[0]), interval, (), remarks)
 
 
@@ -147,14 +150,15 @@ def _gapped(stamps: Floats, step: float, quantum: float) -> Spacing | None:
     if np.any(np.diff(places) < 1):
         return None
     missing = total + 1 - stamps.size
-    says = f"{missing} samples are missing in {int(np.count_nonzero(counts > 1))} gaps of the time column; they are left without a value."
+    gaps = int(np.count_nonzero(counts > 1))
+    says = f"{missing} samples are missing in {gaps} gaps of the time column and left without a value."
     return Spacing(float(stamps[0]), interval, (Place(places, total + 1),), (Remark("gaps", says),))
 
 
 def _uneven(
     stamps: Floats, step: float, columns: Sequence[Floats], refusal: Callable[[str], CaptureError]
 ) -> Spacing:
-    """Stamps without a grid, brought onto one: values held in a log of changes, else joined by straight lines."""
+    """Stamps without a grid, brought onto one: values of a log of changes are held, others joined by lines."""
     jumps = np.diff(stamps)
     if np.any(jumps < 0) or not np.all(np.isfinite(jumps)):
         raise refusal("the time column does not run forwards; give the time between samples with --interval")
@@ -164,8 +168,10 @@ def _uneven(
     start = float(stamps[0])
     if columns and _is_log_of_changes(columns):
         interval = max(smallest / 10, span / 1_000_000)
-        says = (f"One row per change: each value is held until the next change, on an even axis of {interval:.3g} s, which is the "
-                "resolution of every edge.")  # fmt: skip
+        says = (
+            "One row per change: each value is held until the next change, on an even axis of "
+            f"{interval:.3g} s, which is the resolution of every edge."
+        )
         return Spacing(
             start,
             interval,
@@ -183,8 +189,10 @@ def _uneven(
         )
     ragged = largest > 4 * mean
     interval = mean if not ragged else max(float(np.median(jumps[jumps > 0])), span / (4 * stamps.size))
-    says = (f"The steps of time vary from {smallest:.3g} s to {largest:.3g} s; the values were put onto an even axis of {interval:.4g} s by "
-            "straight lines between the rows.")  # fmt: skip
+    says = (
+        f"The steps of time vary from {smallest:.3g} s to {largest:.3g} s; the values were put onto an even "
+        f"axis of {interval:.4g} s by straight lines between the rows."
+    )
     count = int(span / interval * (1 + 1e-9)) + 1
     return Spacing(start, interval, (Blend(stamps, interval, count),), (Remark("uneven-time", says),))
 

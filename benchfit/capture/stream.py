@@ -18,6 +18,7 @@ DEFAULT_LIMIT = 1 << 31
 _BOMB_RATIO = 100
 _BOMB_SIZE = 1 << 26
 
+_RAISE = "read a shorter record or raise the limit with --limit-bytes"
 _COMPRESSIONS = (
     (b"\x1f\x8b", "gzip"),
     (b"BZh", "bzip2"),
@@ -64,17 +65,14 @@ class Stream:
     def check_values(self, count: int) -> None:
         """Raise CaptureError where ``count`` values of eight bytes would take more memory than the limit."""
         if 8 * count > self._limit:
-            raise self._refusal(
-                f"holds more than {count} values, whose memory passes the limit of {self._limit / 2**20:.0f} MiB; "
-                "read a shorter record or raise the limit with --limit-bytes"
-            )
+            limit = f"the limit of {self._limit / 2**20:.0f} MiB"
+            raise self._refusal(f"holds {count} values or more, whose memory passes {limit}; {_RAISE}")
 
     def check_size(self, size: int) -> None:
         """Raise CaptureError where ``size`` bytes of text pass the limit."""
         if size > self._limit:
             raise self._refusal(
-                f"holds more than {self._limit / 2**20:.0f} MiB of text, which is the limit; read a shorter record or "
-                "raise the limit with --limit-bytes"
+                f"holds more than {self._limit / 2**20:.0f} MiB of text, which is the limit; {_RAISE}"
             )
 
     def _piece(self, stream: _Readable, size: int) -> bytes:
@@ -83,7 +81,7 @@ class Stream:
         except (EOFError, OSError, zlib.error, lzma.LZMAError, ValueError, RuntimeError) as fault:
             self.fault = str(fault).rstrip(".") or type(fault).__name__
         except Exception as fault:
-            # The zstandard package has an error class of its own, which must not be imported for its name alone.
+            # The zstandard package has an error class of its own; it is not imported for that alone.
             if type(fault).__module__.partition(".")[0] not in ("zstd", "zstandard", "compression"):
                 raise
             self.fault = str(fault)
@@ -92,10 +90,9 @@ class Stream:
     def _check(self) -> None:
         self.check_size(self._taken)
         if self.compression and self._bomb is not None and self._taken > self._bomb:
-            raise self._refusal(
-                f"unpacks to more than {_BOMB_RATIO} times its size ({self._taken / 2**20:.0f} MiB so far), which no capture "
-                "does; raise the limit with --limit-bytes if it is one all the same"
-            )
+            so_far = f"{_BOMB_RATIO} times its size ({self._taken / 2**20:.0f} MiB so far)"
+            says = f"unpacks to more than {so_far}, which no capture does"
+            raise self._refusal(f"{says}; raise the limit with --limit-bytes if it is one all the same")
 
 
 class _Rejoined(io.RawIOBase):
@@ -121,9 +118,9 @@ class _Rejoined(io.RawIOBase):
 
 def _decompressed(raw: _Rejoined, compression: str, refusal: Refusal) -> _Readable:
     if compression == "gzip":
-        return gzip.GzipFile(fileobj=raw, mode="rb")  # type: ignore[arg-type]
+        return gzip.GzipFile(fileobj=raw, mode="rb")
     if compression == "bzip2":
-        return bz2.BZ2File(raw, "rb")  # type: ignore[arg-type]
+        return bz2.BZ2File(raw, "rb")
     if compression == "xz":
         return lzma.LZMAFile(raw, "rb")  # type: ignore[arg-type]
     if compression == "zstd":

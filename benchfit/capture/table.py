@@ -163,13 +163,13 @@ def _out_of_range(values: Floats, column: int, overloaded: dict[int, NDArray[np.
 
 def _engine(work: _Work) -> dict[str, object]:
     return {
-        "sep": work.dialect.engine_delimiter, "decimal": work.dialect.engine_decimal, "header": None, "names": range(work.width),
-        "dtype": "float64", "engine": "c", "quoting": csv.QUOTE_NONE,
+        "sep": work.dialect.engine_delimiter, "decimal": work.dialect.engine_decimal, "header": None,
+        "names": range(work.width), "dtype": "float64", "engine": "c", "quoting": csv.QUOTE_NONE,
     }  # fmt: skip
 
 
 def _whole(source: Source, page: Page, work: _Work) -> list[Floats] | None:
-    """All columns of a plain file in one call, which pandas spreads over its threads; None where it cannot."""
+    """All columns of a plain file in one call, which pandas spreads over threads; None where it cannot."""
     import pandas
 
     source.check_lines()
@@ -200,7 +200,7 @@ def _columns(frame: object, work: _Work) -> list[Floats] | None:
 
 
 def _is_sound(values: Floats) -> bool:
-    """Whether all values are finite and none is out of range, told in one pass from the sum of their squares."""
+    """Whether all values are finite and in range, told in one pass from the sum of their squares."""
     with np.errstate(over="ignore", invalid="ignore"):
         return bool(np.dot(values, values) < (0.9 * SCPI_INFINITY) ** 2)
 

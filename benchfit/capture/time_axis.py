@@ -9,9 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from benchfit.capture.arrange import Keep, Pairs, Step
+from benchfit.capture.envelope import is_envelope, pairs_begin
 from benchfit.capture.frames import Frame, split
 from benchfit.capture.plan import Plan
-from benchfit.capture.spacing import Spacing, even, mended, robust_step, settle
+from benchfit.capture.spacing import even, mended, robust_step, settle
 from benchfit.capture.table import Table
 from benchfit.errors import CaptureError, Remark
 
@@ -60,28 +61,26 @@ class Axis:
 
 
 def make_axis(table: Table, plan: Plan, interval: float | None, frame: int | None, refusal: Refusal) -> Axis:
-    """The time axis of a table; ``interval`` (s) and ``frame`` (from 1) are the user's. Raises CaptureError."""
+    """The time axis of a table; ``interval`` (s) and ``frame`` (from 1) are the user's.
+
+    Raises CaptureError where the file cannot tell its time, and says which option does.
+    """
     if interval is not None and not (np.isfinite(interval) and interval > 0):
         raise refusal(f"the interval must be a positive time, got {interval:g} s")
     if table.rows < FEWEST:
         raise refusal(f"has {table.rows} rows of numbers only, too few for a waveform")
-    if plan.time is None:
+    if plan.time is None or (plan.is_increment and interval is not None):
         return _without_stamps(table, plan, interval, frame, refusal)
     stamps = table.columns[plan.time]
     if plan.time_scale != 1.0:
         stamps = stamps * plan.time_scale
     quantum = plan.time_scale * plan.precision.quantum(_largest(stamps) / plan.time_scale)
     if plan.is_increment:
-        return _from_increments(table, plan, stamps, quantum, interval, refusal)
+        return _from_increments(table, plan, stamps, quantum, refusal)
     spacing = even(stamps, quantum)
-    if spacing is not None and not table.breaks and frame is None and _paired(stamps[:1024]) is None:
-        return _chosen(
-            Axis(float(stamps[0]), spacing.interval, "time column", (), spacing.remarks),
-            plan,
-            interval,
-            quantum,
-            table.rows,
-        )
+    if spacing is not None and not table.breaks and frame is None and pairs_begin(stamps[:1024]) is None:
+        axis = Axis(spacing.start, spacing.interval, "time column", (), spacing.remarks)
+        return _chosen(axis, plan, interval, quantum, table.rows)
     return _from_stamps(table, plan, stamps, quantum, interval, frame, refusal)
 
 
@@ -92,42 +91,29 @@ def _largest(stamps: Floats) -> float:
     return float(np.quantile(sizes, 0.97)) if sizes.size else 0.0
 
 
-def _without_stamps(
-    table: Table, plan: Plan, interval: float | None, frame: int | None, refusal: Refusal
-) -> Axis:
+def _without_stamps(table: Table, plan: Plan, interval: float | None, frame: int | None, refusal: Refusal) -> Axis:
     step = interval if interval is not None else plan.interval
     if step is None:
         why = f" ({plan.why_no_time})" if plan.why_no_time else ""
         raise refusal(f"does not tell the time between samples{why}; {_HOW}")
-    frames = split(None, table, 0.0, 0.0)
-    kept, remarks = _one_frame(frames, frame, plan, refusal)
+    kept, remarks = _one_frame(split(None, table, 0.0, 0.0), frame, refusal)
     if len(plan.channels) == 1 and plan.why_no_time.startswith("it has one column") and not plan.stated:
-        remarks = (
-            *remarks,
-            Remark(
-                "layout-guessed", "One column of numbers and no time axis: taken for samples of a waveform."
-            ),
-        )
+        says = "One column of numbers and no time axis: taken for samples of a waveform."
+        remarks = (*remarks, Remark("layout-guessed", says))
     origin = "--interval" if interval is not None else plan.stated
     start = plan.start if plan.start is not None else 0.0
     return Axis(start, step, origin, (Keep(kept.start, kept.stop),), remarks)
 
 
-def _from_increments(
-    table: Table, plan: Plan, steps: Floats, quantum: float, interval: float | None, refusal: Refusal
-) -> Axis:
-    if np.any(steps < 0) or not np.any(steps > 0):
-        raise refusal(
-            f'the increments in "{plan.time_name}" are not all positive, so they give no time axis; {_HOW}'
-        )
-    stamps = np.cumsum(steps)
-    spacing = settle(stamps, quantum, refusal)
-    says = Remark(
-        "increments", f"{plan.time_name} holds the time since the row before; its values were added up."
-    )
-    axis = Axis(float(stamps[0]), spacing.interval, f"sum of the increments in {plan.time_name}", spacing.steps,
-                (says, *spacing.remarks))  # fmt: skip
-    return _chosen(axis, plan, interval, quantum, table.rows)
+def _from_increments(table: Table, plan: Plan, steps: Floats, quantum: float, refusal: Refusal) -> Axis:
+    name = plan.time_name
+    if not (np.all(steps >= 0) and np.any(steps > 0)):
+        raise refusal(f'the increments in "{name}" are not all positive, so they give no time axis; {_HOW}')
+    spacing = settle(np.cumsum(steps), quantum, refusal)
+    says = Remark("increments", f"{name} holds the time since the row before; its values were added up.")
+    origin = f"sum of the increments in {name}"
+    axis = Axis(spacing.start, spacing.interval, origin, spacing.steps, (says, *spacing.remarks))
+    return _chosen(axis, plan, None, quantum, table.rows)
 
 
 def _from_stamps(
@@ -142,122 +128,95 @@ def _from_stamps(
     step = robust_step(stamps)
     # A spoilt stamp must be put in line first: it would pass for the begin of a frame.
     stamps, damage = mended(stamps, step, quantum)
-    _refuse_no_stamps(stamps, quantum, plan, refusal)
-    kept, remarks = _one_frame(split(stamps, table, step, quantum), frame, plan, refusal)
-    remarks += damage
+    if fault := _no_stamps(stamps, quantum):
+        if interval is not None:
+            axis = _without_stamps(table, plan, interval, frame, refusal)
+            says = f'The time column "{plan.time_name}" {fault}; it was not used.'
+            return replace(axis, remarks=(*axis.remarks, Remark("interval-given", says)))
+        raise refusal(f'the time column "{plan.time_name}" {fault}; {_hint(stamps, plan)}{_HOW}')
+    kept, remarks = _one_frame(split(stamps, table, step, quantum), frame, refusal)
     stamps = stamps[kept.start : kept.stop]
-    steps: tuple[Step, ...] = (Keep(kept.start, kept.stop),)
     if stamps.size < FEWEST:
-        raise refusal(
-            f"frame {kept.number} has {stamps.size} rows only, too few for a waveform; choose another with --frame"
-        )
-    origin = "time column"
-    offset = _paired(stamps)
-    values = [table.columns[c.index][kept.start : kept.stop] for c in plan.channels]
-    if offset is not None and (_pair_step(stamps, offset) >= 4 * quantum or _is_zigzag(values, offset)):
-        count = (stamps.size - offset) // 2 * 2
-        steps += (Keep(offset, offset + count), Pairs())
-        stamps = stamps[offset : offset + count : 2]
-        remarks += (Remark("envelope", "Every time stamp stands on two rows, the minimum and the maximum of one interval: read as an "
-                           f"envelope of {stamps.size} intervals, each with its mid-point as its value."),)  # fmt: skip
-        origin = "distance between different stamps"
-    spacing = settle(stamps, quantum, refusal, values if offset is None else ())
-    axis = Axis(float(stamps[0]), spacing.interval, origin, steps + spacing.steps, remarks + spacing.remarks,
-                is_envelope=Pairs() in steps)  # fmt: skip
-    return _chosen(replace(axis, start=spacing.start), plan, interval, quantum, stamps.size)
+        few = f"frame {kept.number} has {stamps.size} rows only, too few for a waveform"
+        raise refusal(f"{few}; choose another with --frame")
+    remarks += damage
+    steps: tuple[Step, ...] = (Keep(kept.start, kept.stop),)
+    values = [table.columns[channel.index][kept.start : kept.stop] for channel in plan.channels]
+    begin = pairs_begin(stamps)
+    doubled = begin is not None and is_envelope(stamps, values, begin, quantum)
+    if begin is not None and doubled:
+        count = (stamps.size - begin) // 2 * 2
+        steps += (Keep(begin, begin + count), Pairs())
+        stamps = stamps[begin : begin + count : 2]
+        remarks = (*remarks, Remark("envelope", _ENVELOPE.format(count=stamps.size)))
+    origin = "distance between different stamps" if doubled else "time column"
+    if interval is not None:
+        axis = Axis(float(stamps[0]), robust_step(stamps), origin, steps, remarks, doubled)
+    else:
+        spacing = settle(stamps, quantum, refusal, () if doubled else values)
+        steps, remarks = steps + spacing.steps, remarks + spacing.remarks
+        axis = Axis(spacing.start, spacing.interval, origin, steps, remarks, doubled)
+    return _chosen(axis, plan, interval, quantum, stamps.size)
 
 
-def _refuse_no_stamps(stamps: Floats, quantum: float, plan: Plan, refusal: Refusal) -> None:
-    """A column whose values go up and down, or stand still, holds no time stamps."""
+_ENVELOPE = (
+    "Every time stamp stands on two rows, the minimum and the maximum of one interval: read as an envelope of "
+    "{count} intervals, each with its mid-point as its value."
+)
+
+
+def _no_stamps(stamps: Floats, quantum: float) -> str:
+    """Why a column holds no time stamps: it stands still, or goes up and down; "" where it may hold some."""
     steps = np.diff(stamps)
     forward, back = int(np.count_nonzero(steps > quantum)), int(np.count_nonzero(steps < -quantum))
     up = int(np.count_nonzero(steps > 0))
-    if up == 0 or (back > 0 and (up < 0.5 * steps.size or 8 * back > forward)):
-        what = "stands still" if not back else "does not run forwards"
-        hint = (
-            f"if it holds the time since the row before, say so with --columns increment={plan.time},…; else "
-            if np.all(stamps >= 0)
-            else ""
-        )
-        raise refusal(f'the time column "{plan.time_name}" {what}; {hint}{_HOW}')
+    if up and not (back and (up < 0.5 * steps.size or 8 * back > forward)):
+        return ""
+    return "does not run forwards" if back else "stands still"
+
+
+def _hint(stamps: Floats, plan: Plan) -> str:
+    if not np.all(stamps >= 0):
+        return ""
+    return f"if it holds the time since the row before, say so with --columns increment={plan.time},…; else "
 
 
 def _one_frame(
-    frames: Sequence[Frame], frame: int | None, plan: Plan, refusal: Refusal
+    frames: Sequence[Frame], frame: int | None, refusal: Refusal
 ) -> tuple[Frame, tuple[Remark, ...]]:
+    """The frame that was asked for, else the first, with a remark where there are several."""
     if frame is not None and not 1 <= frame <= len(frames):
         many = f"{len(frames)} frames" if len(frames) > 1 else "one frame only"
         raise refusal(f"has {many}, there is no frame {frame}")
     chosen = frames[(frame or 1) - 1]
     if len(frames) == 1:
         return chosen, ()
-    lengths = ", ".join(str(f.stop - f.start) for f in frames[:6]) + (", …" if len(frames) > 6 else "")
     text = next((f.text for f in frames if f.text), "")
     if text and frame is None:
-        raise refusal(f'holds {len(frames)} runs, one below the other ("{text[:40]}" stands between them); choose one with --frame 1 '
-                      f"to --frame {len(frames)}")  # fmt: skip
-    says = f"Time starts anew {len(frames) - 1} times: the file holds {len(frames)} frames of {lengths} rows, never joined; frame "
-    return chosen, (Remark("frames", f"{says}{chosen.number} is read (--frame N chooses)."),)
-
-
-def _paired(stamps: Floats) -> int | None:
-    """0 or 1, the row at which pairs of equal stamps begin; None where stamps do not come in pairs."""
-    steps = np.diff(stamps)
-    for offset in (0, 1):
-        inside, between = steps[offset::2], steps[offset + 1 :: 2]
-        if inside.size > 2 and between.size and np.mean(inside == 0) > 0.98 and np.all(between > 0):
-            return offset if np.all(inside == 0) else None
-    return None
-
-
-def _pair_step(stamps: Floats, offset: int) -> float:
-    """Usual distance of the different stamps; one of many printed digits is no product of rounding."""
-    return float(np.median(np.diff(stamps[offset::2])))
-
-
-def _is_zigzag(columns: Sequence[Floats], offset: int) -> bool:
-    """Whether values go up within pairs of equal stamps and down between them, in all columns.
-
-    Stamps rounded to half the sample rate come in pairs too; their values have no such order.
-    """
-    for values in columns:
-        count = (values.size - offset) // 2 * 2
-        first, second = values[offset : offset + count : 2], values[offset + 1 : offset + count : 2]
-        with np.errstate(invalid="ignore"):
-            moving = (second[:-1] != first[:-1]) & np.isfinite(second[:-1] - first[:-1])
-            zigzag = (second[:-1] > first[:-1]) & (first[1:] < second[:-1])
-        if moving.any() and np.mean(zigzag[moving]) < 0.8:
-            return False
-    return True
+        runs = f'holds {len(frames)} runs, one below the other ("{text[:40]}" stands between them)'
+        raise refusal(f"{runs}; choose one with --frame 1 to --frame {len(frames)}")
+    lengths = ", ".join(str(f.stop - f.start) for f in frames[:6]) + (", …" if len(frames) > 6 else "")
+    says = f"Time starts anew in the file: it holds {len(frames)} frames, of {lengths} rows, which are not joined"
+    return chosen, (Remark("frames", f"{says}; frame {chosen.number} is read (--frame N chooses)."),)
 
 
 def _chosen(axis: Axis, plan: Plan, interval: float | None, quantum: float, rows: int) -> Axis:
-    """The axis with the interval that counts: the user's, else the stated one where the stamps agree, else theirs."""
+    """The axis with the interval that counts: the user's, else the stated one if confirmed, else the stamps'."""
     if interval is not None:
-        off = abs(axis.interval / interval - 1)
-        said = Remark(
-            "interval-given",
-            f"The interval is the {interval:g} s that was given; the {axis.origin} says {axis.interval:.6g} s.",
-        )
         kept = tuple(step for step in axis.steps if isinstance(step, Keep | Pairs))
-        return replace(
-            axis,
-            interval=interval,
-            origin="--interval",
-            steps=kept,
-            remarks=axis.remarks + ((said,) if off > 1e-3 else ()),
-        )
+        remarks = axis.remarks
+        if not abs(axis.interval / interval - 1) <= 1e-3:
+            says = f"The interval is the {interval:g} s given; the {axis.origin} says {axis.interval:.6g} s."
+            remarks = (*remarks, Remark("interval-given", says))
+        return replace(axis, interval=interval, origin="--interval", steps=kept, remarks=remarks)
     if plan.interval is None:
         return axis
     off = abs(axis.interval / plan.interval - 1)
     if off <= 2 * quantum / (axis.interval * max(rows - 1, 1)) + 1e-5:
-        return replace(
-            axis, interval=plan.interval, origin=f"{plan.stated}, which the {axis.origin} confirms"
-        )
+        origin = f"{plan.stated}, which the {axis.origin} confirms"
+        return replace(axis, interval=plan.interval, origin=origin)
     if off <= 1e-3:
         return replace(axis, origin=f"{axis.origin}, {plan.stated} agrees")
-    says = f"The {axis.origin} gives {axis.interval:.6g} s between samples, {plan.stated} {plan.interval:.6g} s; the former is used."
+    ours, theirs = f"The {axis.origin} gives {axis.interval:.6g} s", f"{plan.stated} {plan.interval:.6g} s"
+    says = f"{ours} between samples, {theirs}; the former is used."
     return replace(axis, remarks=(*axis.remarks, Remark("interval-differs", says)))
-
-
-__all__ = ["FEWEST", "Axis", "Spacing", "make_axis"]

@@ -6,9 +6,9 @@ import re
 from dataclasses import dataclass
 
 _PREFIXES = {
-    "f": 1e-15, "p": 1e-12, "n": 1e-9, "u": 1e-6, "µ": 1e-6, "μ": 1e-6, "m": 1e-3, "": 1.0, "k": 1e3, "M": 1e6, "G": 1e9,
-    "femto": 1e-15, "pico": 1e-12, "nano": 1e-9, "micro": 1e-6, "mikro": 1e-6, "milli": 1e-3, "kilo": 1e3, "mega": 1e6,
-    "giga": 1e9,
+    "f": 1e-15, "p": 1e-12, "n": 1e-9, "u": 1e-6, "µ": 1e-6, "μ": 1e-6, "m": 1e-3, "": 1.0, "k": 1e3,
+    "M": 1e6, "G": 1e9, "femto": 1e-15, "pico": 1e-12, "nano": 1e-9, "micro": 1e-6, "mikro": 1e-6, "milli": 1e-3,
+    "kilo": 1e3, "mega": 1e6, "giga": 1e9,
 }  # fmt: skip
 _LONG = tuple(sorted((prefix for prefix in _PREFIXES if len(prefix) > 1), key=len, reverse=True))
 _SYMBOLS = {
@@ -24,8 +24,8 @@ _SYMBOLS = {
 _WORDS = {
     "V": "volt volts vdc vac vrms vpp volte volti voltios вольт в 伏",
     "A": "amp amps ampere amperes ampère ampères amper amperios ампер",
-    "s": "s sec secs second seconds sekunde sekunden sekund sek seconde secondes secondo secondi segundo segundos "
-    "sekunda sekundy szekundum с сек секунда секунды 秒",
+    "s": "s sec secs second seconds sekunde sekunden sekund sek seconde secondes secondo secondi segundo "
+    "segundos sekunda sekundy szekundum с сек секунда секунды 秒",
     "W": "watt watts", "Hz": "hertz", "Ω": "ohm ohms", "°C": "celsius degc °c", "K": "kelvin",
     "°": "deg degree degrees °", "dB": "db", "dBV": "dbv dbvrms", "dBm": "dbm", "%": "percent %",
     "": "code codes count counts cnt lsb raw digit digits adu adc none n/a bit bits logic",
@@ -124,7 +124,10 @@ _RATE = re.compile(
 
 
 def interval_of(text: str, default: str = "") -> float | None:
-    """Seconds from "2.0e-6", "1us", "0.5 ms"; None where ``text`` is no time. ``default``: the unit of a bare number."""
+    """Seconds from "2.0e-6", "1us", "0.5 ms"; None where ``text`` is no time.
+
+    ``default`` is the unit of a bare number ("" for seconds).
+    """
     found = quantity(text)
     if found is None:
         return None

@@ -162,7 +162,7 @@ def test_a_frame_that_is_not_there(write: Write) -> None:
 )
 def test_runs_parted_by_text_are_refused_and_offered_one_by_one(between: str, write: Write) -> None:
     path = write(frames([100, 100, 100], between))
-    with pytest.raises(CaptureError, match="3 runs.*--frame 1"):
+    with pytest.raises(CaptureError, match=r"3 runs.*--frame 1"):
         read(path)
     np.testing.assert_allclose(read(path, frame=2).channels[0].values, 1 + ramp(np.arange(100)))
 
@@ -262,7 +262,7 @@ def test_steps_that_a_simulator_chose_are_brought_onto_an_even_axis(write: Write
 def test_a_log_of_changes_is_held_between_its_rows(write: Write) -> None:
     high, low = 3.1e-3, 1.7e-3
     stamps, state = [34.0], [0]
-    for k in range(60):
+    for _ in range(60):
         stamps.append(stamps[-1] + (high if state[-1] else low))
         state.append(1 - state[-1])
     text = "Time [s],Channel 0,Channel 1\n" + "".join(
@@ -285,6 +285,11 @@ def test_increments_that_are_not_named_so_are_not_guessed(write: Write) -> None:
         read(path)
     capture = read(path, columns={"increment": 0, "uc": 1})
     assert capture.time[-1] == pytest.approx(sum(steps) * 1e-6, rel=1e-2)
+    # Told the interval, the reader needs neither.
+    capture = read(path, interval=175.2e-6)
+    assert capture.samples == len(steps)
+    assert [channel.name for channel in capture.channels] == ["uc"]
+    assert "interval-given" in codes(capture)
 
 
 # -- no time at all ------------------------------------------------------------------------------------------
