@@ -44,8 +44,9 @@ def _voltage(sheet: Sheet, captures: Sequence[CycleConstants]) -> str:
         if max(abs(low), abs(high)) > DC:
             return f"the {node} node reaches {max(abs(low), abs(high)):.0f} V, above {DC:g} V"
         swing = high - low
-        if swing / 2 > PEAK:
-            return f"the {node} node swings by {swing:.0f} V, more than {PEAK:g} V peak"
+        peak = max(abs(low), abs(high))
+        if peak > PEAK and swing > 0.1 * peak:
+            return f"the {node} node alternates up to {peak:.0f} V, more than {PEAK:g} V peak"
         # A square of peak a has an r.m.s. of a; anything else less.
         if node == "output" and swing / 2 > RMS:
             return f"the output swings by {swing:.0f} V, more than {RMS:g} V r.m.s."
