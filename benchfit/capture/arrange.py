@@ -76,7 +76,7 @@ class Blend:
     count: int
 
     def _times(self) -> Floats:
-        return self.stamps[0] + self.interval * np.arange(self.count, dtype=np.float64)
+        return float(self.stamps[0]) + self.interval * np.arange(self.count, dtype=np.float64)
 
     def values(self, column: Floats) -> Floats:
         known = np.isfinite(column)

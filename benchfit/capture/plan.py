@@ -95,8 +95,11 @@ def _time_column(page: Page, layout: Layout, table: Columns) -> tuple[int | None
         return first, "its place"
     if not table.is_even(first):
         return None, ""
-    if layout.interval is not None and abs(table.step(first) / layout.interval - 1) < 0.01:
-        return first, f"its steps, which are those of {layout.stated}"
+    if layout.interval is not None:
+        if abs(table.step(first) / layout.interval - 1) < 0.01:
+            return first, f"its steps, which are those of {layout.stated}"
+        # An even rise that is not the stated one is a ramp.
+        return None, ""
     if not table.is_written_whole(first):
         return first, "its even steps"
     return None, f"its first column holds {_whole_numbers(first, table)}"

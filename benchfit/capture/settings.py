@@ -11,16 +11,18 @@ from benchfit.capture.units import interval_of, quantity, rate_of, unit
 
 # Between the words of a key stand blanks, underscores, dots or hyphens, or nothing.
 _S = r"[ _.-]*"
+# "Period", "Frequency" or "Step" alone are of the signal, not of the sampling.
 _INTERVAL_KEYS = re.compile(
-    rf"(sampl\w*|horizontal|time|record|acquisition)?{_S}(interval|increment|resolution|step|period|spacing)"
-    rf"|x{_S}(incr?\w*|interval|step|inc)|incr?|[dδ∆]{_S}[tx]|delta{_S}[tx]|abtastintervall|zeitintervall"
-    rf"|(sampl\w*){_S}time|time{_S}(delta|per{_S}(sample|point))|(seconds|s)[ _./-]*(per{_S})?(sample|point)"
+    rf"sampl\w*{_S}(interval|increment|resolution|step|period|spacing)|interval|incr?|increment"
+    rf"|(horizontal|time|record|acquisition){_S}(interval|increment|resolution|step|spacing)"
+    rf"|x{_S}(incr?\w*|interval|step|inc)|[dδ∆]{_S}[tx]|delta{_S}[tx]|abtastintervall|zeitintervall"
+    rf"|time{_S}(delta|per{_S}(sample|point))|(seconds|s)[ _./-]*(per{_S})?(sample|point)"
     rf"|h(orizontal)?{_S}res(olution)?",
     re.IGNORECASE,
 )
 _RATE_KEYS = re.compile(
-    rf"(sampl\w*|acquisition|acq\w*|daq|adc|data)?{_S}(rate|freq(uency)?)|fs|f_s|sps|abtastrate|abtastfrequenz"
-    rf"|samples?[ _./-]*(per{_S})?s(ec(ond)?)?",
+    rf"(sampl\w*|acquisition|acq\w*|daq|adc|data)?{_S}rate|(sampl\w*|acq\w*|daq|adc){_S}freq(uency)?|fs|f_s|sps"
+    rf"|abtastrate|abtastfrequenz|samples?[ _./-]*(per{_S})?s(ec(ond)?)?",
     re.IGNORECASE,
 )
 _START_KEYS = re.compile(
@@ -30,7 +32,7 @@ _START_KEYS = re.compile(
 )
 _COUNT_KEYS = re.compile(
     rf"(record|memory){_S}length|(number|no|num){_S}(of)?{_S}(samples|points|rows)|samples|points|data{_S}points"
-    r"|nr?_?pt?s?",
+    r"|nr?_?pts?",
     re.IGNORECASE,
 )
 _PAIR = re.compile(r"\s*(?P<key>[^:=\t,;]*[^\W\d][^:=\t,;]*?)\s*[:=]\s*(?P<value>\S.*?)?\s*$")

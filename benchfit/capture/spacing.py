@@ -36,7 +36,7 @@ def even(stamps: Floats, quantum: float) -> Spacing | None:
     if n < 2 or not np.isfinite(stamps[0]) or not stamps[-1] > stamps[0]:
         return None
     interval = float((stamps[-1] - stamps[0]) / (n - 1))
-    tolerance = max(1.01 * quantum, 0.02 * interval, 2e-7 * float(max(abs(stamps[0]), abs(stamps[-1]))))
+    tolerance = max(1.01 * quantum, 0.02 * interval)
     if not np.isfinite(interval) or _farthest(stamps, interval, tolerance) > tolerance:
         return None
     usual = float(np.median(np.diff(stamps[: min(n, _CHUNK)])))

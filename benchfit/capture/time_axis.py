@@ -78,6 +78,9 @@ def make_axis(table: Table, plan: Plan, interval: float | None, frame: int | Non
     if plan.is_increment:
         return _from_increments(table, plan, stamps, quantum, refusal)
     spacing = even(stamps, quantum)
+    if spacing is None:
+        quantum = max(quantum, _single_precision(stamps, quantum))
+        spacing = even(stamps, quantum)
     if spacing is not None and not table.breaks and frame is None and pairs_begin(stamps[:1024]) is None:
         axis = Axis(spacing.start, spacing.interval, "time column", (), spacing.remarks)
         return _chosen(axis, plan, interval, quantum, table.rows)
@@ -89,6 +92,17 @@ def _largest(stamps: Floats) -> float:
     sizes = np.abs(stamps[:: max(1, stamps.size // 4096)])
     sizes = sizes[np.isfinite(sizes)]
     return float(np.quantile(sizes, 0.97)) if sizes.size else 0.0
+
+
+def _single_precision(stamps: Floats, quantum: float) -> float:
+    """The step of single-precision numbers at the size of the stamps, where all stamps are such; else 0.
+
+    Many instruments reckon their stamps in single precision and print more digits than that has.
+    """
+    single = stamps.astype(np.float32)
+    if not np.all(np.abs(stamps - single) <= 0.51 * quantum + 1e-15 * np.abs(stamps)):
+        return 0.0
+    return float(np.spacing(np.float32(_largest(stamps))))
 
 
 def _without_stamps(table: Table, plan: Plan, interval: float | None, frame: int | None, refusal: Refusal) -> Axis:
@@ -136,9 +150,6 @@ def _from_stamps(
         raise refusal(f'the time column "{plan.time_name}" {fault}; {_hint(stamps, plan)}{_HOW}')
     kept, remarks = _one_frame(split(stamps, table, step, quantum), frame, refusal)
     stamps = stamps[kept.start : kept.stop]
-    if stamps.size < FEWEST:
-        few = f"frame {kept.number} has {stamps.size} rows only, too few for a waveform"
-        raise refusal(f"{few}; choose another with --frame")
     remarks += damage
     steps: tuple[Step, ...] = (Keep(kept.start, kept.stop),)
     values = [table.columns[channel.index][kept.start : kept.stop] for channel in plan.channels]
@@ -195,6 +206,9 @@ def _one_frame(
     if text and frame is None:
         runs = f'holds {len(frames)} runs, one below the other ("{text[:40]}" stands between them)'
         raise refusal(f"{runs}; choose one with --frame 1 to --frame {len(frames)}")
+    if chosen.stop - chosen.start < FEWEST:
+        few = f"frame {chosen.number} has {chosen.stop - chosen.start} rows only, too few for a waveform"
+        raise refusal(f"{few}; choose another with --frame")
     lengths = ", ".join(str(f.stop - f.start) for f in frames[:6]) + (", …" if len(frames) > 6 else "")
     says = f"Time starts anew in the file: it holds {len(frames)} frames, of {lengths} rows, which are not joined"
     return chosen, (Remark("frames", f"{says}; frame {chosen.number} is read (--frame N chooses)."),)

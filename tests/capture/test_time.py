@@ -60,6 +60,36 @@ def test_rounded_stamps_give_the_true_interval(true: float, form: str, count: in
     assert ("rounded-time" in codes(capture)) == (abs(np.median(steps) / true - 1) > 0.02)
 
 
+@pytest.mark.parametrize("offset", [0.0, 5.0, 34.0])
+def test_stamps_reckoned_in_single_precision(offset: float, write: Write) -> None:
+    """At 34 s single precision has steps of 3.8 us: a tenth of a step of time and more."""
+    stamps = (offset + 1e-5 * np.arange(2000)).astype(np.float32)
+    capture = read(write(rows([f"{t:.9f}" for t in stamps])))
+    assert capture.samples == 2000
+    assert capture.interval == pytest.approx(1e-5, rel=1e-3)
+    np.testing.assert_array_equal(capture.channels[0].values, ramp(np.arange(2000)))
+
+
+def test_one_missing_row_is_seen_at_any_distance_from_the_trigger(write: Write) -> None:
+    keep = [k for k in range(1000) if k != 500]
+    capture = read(write(rows([f"{20 + k * 1e-6:.9f}" for k in keep], list(ramp(np.array(keep))))))
+    assert capture.samples == 1000
+    assert np.flatnonzero(np.isnan(capture.channels[0].values)).tolist() == [500]
+
+
+@pytest.mark.parametrize("line", ["Frequency: 450 Hz", "Period: 2.22ms", "Resolution: 8 bits", "Time Base: 500us", "Step,4"])
+def test_settings_of_the_signal_are_no_interval(line: str, write: Write) -> None:
+    with pytest.raises(CaptureError, match="--interval"):
+        read(write(f"Model: B4\n{line}\nSource: CH1\n" + "".join(f"{ramp(k)}\n" for k in range(200))))
+
+
+def test_a_ramp_beside_a_stated_interval_is_a_channel(write: Write) -> None:
+    text = "Model: B4\nSampling rate: 10 kHz\n\n" + "".join(f"{0.5 + 0.01 * k:.4f},{ramp(k)}\n" for k in range(200))
+    capture = read(write(text))
+    assert capture.interval == pytest.approx(1e-4)
+    assert len(capture.channels) == 2
+
+
 def test_two_rows_on_one_rounded_stamp_are_two_samples(write: Write) -> None:
     """Pairs by rounding alone are no envelope: their values have no order."""
     capture = read(write(rows([f"{k * 0.5e-6 + 1e-9:.6f}" for k in range(1000)])))
