@@ -199,6 +199,13 @@ def blame_sentence(explanation: Explanation) -> str:
     named = [f"{accused(s)} ({chance(s.probability)})" for s in live]
     if len(live) == 1:
         return f"Most likely, but not settled: {named[0]}.{_best_reading(explanation)}"
+    if not first.causes:
+        others = listed(named[1:], "and")
+        verb = "is" if len(named) == 2 else "are"
+        return (
+            f"Most likely nothing is off beyond its tolerance ({chance(first.probability)}), but {others} {verb} "
+            f"not ruled out.{_best_reading(explanation)}"
+        )
     word = "To blame" if _is_off(explanation) else "Off"
     return f"{word} is {listed(named, 'or')}: this capture cannot tell which.{_best_reading(explanation)}"
 
