@@ -23,8 +23,12 @@ def run(args: argparse.Namespace) -> int:
     from benchfit import circuits
 
     if args.name is None:
-        width = max(len(name) for name in circuits.names())
-        streams.emit("\n".join(f"{name:<{width}}  {circuits.get(name).title}" for name in circuits.names()))
+        from benchfit.show.layout import wrapped
+
+        names = max(len(name) for name in circuits.names())
+        for name in circuits.names():
+            lines = wrapped(circuits.get(name).title, streams.width(), f"{name:<{names}}  ")
+            streams.emit("\n".join(lines))
         return 0
     from benchfit.show.design import render_circuit
 
