@@ -37,7 +37,7 @@ from tools.bench.identify import judge  # noqa: E402
 from tools.bench.score import Outcome, report, score  # noqa: E402
 
 # Raise it whenever the draws or the judgement change: what is in the cache is of no use then.
-JUDGEMENT = 2
+JUDGEMENT = 3
 
 Task = tuple[str, int, str, bool, str | None, str | None]
 
@@ -49,9 +49,7 @@ def capture_of(build: Build) -> Any:
     channels = []
     for node, volts in build.record.channels.items():
         seen = np.unique(volts)
-        channels.append(
-            Channel(build.names[node], "V", volts, float(np.diff(seen).min()) if seen.size > 1 else 0.0)
-        )
+        channels.append(Channel(build.names[node], "V", volts, float(np.diff(seen).min()) if seen.size > 1 else 0.0))
     return Capture(f"draw {build.seed}", build.record.interval, build.record.start, tuple(channels))
 
 
@@ -102,7 +100,7 @@ def tasks(options: argparse.Namespace) -> list[Task]:
     named = {"five": list(FIVE), "all": list(DESIGNS)}
     circuits = named.get(options.circuits) or options.circuits.split(",")
     kind = None if options.kind == "any" else options.kind
-    cache = None if options.cache == "none" else options.cache
+    cache = "skip" if options.quick else None if options.cache == "none" else options.cache
     return [
         (
             circuits[i % len(circuits)],
@@ -118,6 +116,7 @@ def tasks(options: argparse.Namespace) -> list[Task]:
 
 def write_failures(outcomes: Sequence[Outcome], path: Path) -> None:
     """One line for each build of which something wrong was said."""
+    path.parent.mkdir(parents=True, exist_ok=True)
     with path.open("w", newline="", encoding="utf-8") as file:
         out = csv.writer(file)
         out.writerow(
@@ -162,13 +161,12 @@ def main(words: Sequence[str] | None = None) -> int:
     ask.add_argument("--circuits", default="five", help="five, all, or names separated by commas")
     ask.add_argument("--seed", type=int, default=1)
     ask.add_argument("--jobs", type=int, default=1)
-    ask.add_argument("--mix", choices=["rectangular", "gaussian"], default="rectangular")
+    ask.add_argument("--mix", choices=["rectangular", "gaussian", "prior"], default="rectangular")
     ask.add_argument("--kind", choices=["any", "healthy", "single", "two"], default="any")
     ask.add_argument("--rough", action="store_true", help="devices less simple than their models")
-    ask.add_argument(
-        "--cache", default=str(Path.home() / ".cache" / "bench-judgements"), help="folder, or none"
-    )
-    ask.add_argument("--failures", type=Path, default=Path("fault_study_failures.csv"))
+    ask.add_argument("--quick", action="store_true", help="without judging what could be decided")
+    ask.add_argument("--cache", default=str(Path.home() / ".cache" / "bench-judgements"), help="folder, or none")
+    ask.add_argument("--failures", type=Path, default=ROOT / "build" / "fault_study_failures.csv")
     ask.add_argument("--outcomes", type=Path, help="every build's score, one JSON object a line")
     options = ask.parse_args(words)
     todo = tasks(options)

@@ -6,12 +6,15 @@ import numpy as np
 import pytest
 
 import benchfit
+from benchfit.explain import odds
 from tools.bench import simulate
 from tools.bench.builds import draw
 from tools.bench.designs import DESIGNS
 from tools.bench.faults import least
 from tools.bench.identify import judge
+from tools.bench.prior import draw_prior
 from tools.bench.specs import standard
+from tools.fault_study import main
 
 
 @pytest.mark.parametrize("circuit", ["gas-lamp", "triangle"])
@@ -49,14 +52,10 @@ def test_a_single_fault_is_alone(circuit: str):
 
 
 def test_restored_and_lifted_are_what_the_bench_says():
-    build = next(
-        b for s in range(20) if (b := draw("timer-555", s, kind="single")).fault.how == "value" and b.probe
-    )
+    build = next(b for s in range(20) if (b := draw("timer-555", s, kind="single")).fault.how == "value" and b.probe)
     (cause,) = build.fault.causes
     mended = {**build.true, cause: build.design.spec(cause).nominal}
-    assert build.restored == pytest.approx(
-        1 / simulate("timer-555", mended, probe=build.probe).period, rel=1e-9
-    )
+    assert build.restored == pytest.approx(1 / simulate("timer-555", mended, probe=build.probe).period, rel=1e-9)
     assert build.lifted == pytest.approx(1 / simulate("timer-555", build.true).period, rel=1e-9)
 
 
@@ -78,3 +77,28 @@ def test_judgement_knows_a_look_alike():
 def test_judgement_of_a_healthy_build_is_not_a_fault():
     found = judge(draw("schmitt-inverter", 3, kind="healthy"))
     assert found.misfit[()] < 12
+
+
+def test_the_study_runs_and_lists_its_failures(tmp_path, capsys):
+    """Two builds through the public face: figures on standard output, a line for each failure in a file."""
+    failures = tmp_path / "failures.csv"
+    words = ["--builds", "2", "--circuits", "triangle,schmitt-inverter", "--kind", "healthy", "--quick"]
+    assert main([*words, "--failures", str(failures)]) == 0
+    printed = capsys.readouterr().out
+    assert "settled on a wrong answer, of all" in printed
+    assert "no answer at all                         0.0 %  (0 of 2)" in printed
+    assert failures.read_text(encoding="utf-8").startswith("failure,circuit,seed,nodes")
+
+
+def test_the_prior_mix_follows_the_table():
+    """Of builds drawn from the program's own table, as many are healthy as it says (binomial, three sigma)."""
+    rng = np.random.default_rng(5)
+    design = DESIGNS["timer-555"](rng)
+    drawn = [draw_prior(rng, design, 1e-3) for _ in range(600)]
+    healthy = sum(not f.causes for f in drawn)
+    assert abs(healthy - 600 * odds.HEALTHY) < 3 * np.sqrt(600 * odds.HEALTHY * (1 - odds.HEALTHY))
+    for fault in drawn:
+        for name in fault.causes:
+            if fault.how == "value":
+                spec = design.spec(name)
+                assert not spec.low <= fault.values[name] <= spec.high

@@ -16,6 +16,7 @@ import numpy as np
 from tools.bench.chain import Input, Record, measure
 from tools.bench.designs import DESIGNS, Rng
 from tools.bench.faults import Fault, draw_fault, matters, restored, sensible, within
+from tools.bench.prior import draw_prior
 from tools.bench.simulate import Waves, simulate
 from tools.bench.specs import Design, written
 
@@ -63,8 +64,8 @@ def _frequency(
 def draw(
     circuit: str, seed: int, *, mix: str = "rectangular", kind: str | None = None, rough: bool = False
 ) -> Build:
-    """One build of a circuit. ``rough``: devices that are not as simple as their models (bends, soft
-    clamps)."""
+    """One build of a circuit. ``mix``: "rectangular", "gaussian", or "prior" (the program's own table).
+    ``rough``: devices that are not as simple as their models (bends, soft clamps)."""
     rng = np.random.default_rng([seed, sorted(DESIGNS).index(circuit)])
     kind = kind or str(rng.choice(["healthy", "single", "two"], p=[0.25, 0.6, 0.15]))
     for _ in range(500):
@@ -72,7 +73,11 @@ def draw(
         meant = simulate(circuit, design.nominal())
         if not meant.oscillates:
             continue
-        fault = draw_fault(rng, design, meant.period, kind)
+        fault = (
+            draw_prior(rng, design, meant.period)
+            if mix == "prior"
+            else draw_fault(rng, design, meant.period, kind)
+        )
         true = {**within(rng, design, mix, fault.values), **fault.values}
         if not sensible(design, true):
             continue
@@ -84,7 +89,7 @@ def draw(
         if runs and not trial.period > 1e-3 * meant.period:
             continue
         parts = {k: v for k, v in true.items() if design.nominal().get(k) is not None}
-        if runs and not matters(design, parts, fault):
+        if runs and mix != "prior" and not matters(design, parts, fault):
             continue
         return _built(rng, seed, design, meant, fault, true, nodes, probe, rough)
     raise ValueError(f"{circuit}: no build could be drawn with seed {seed}")

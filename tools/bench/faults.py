@@ -193,25 +193,25 @@ def draw_fault(rng: Rng, design: Design, period: float, kind: str) -> Fault:
 
 
 def sensible(design: Design, values: Mapping[str, float]) -> bool:
-    """Whether the levels are in an order in which a circuit could be built at all."""
+    """Whether the levels are in an order, and as far apart, as a circuit could be built with at all."""
     v = values
-    lowest = min(v[s.name] for s in design.specs if s.log)
-    if lowest <= 0:
+    if min(v[s.name] for s in design.specs if s.log) <= 0:
         return False
     if design.circuit == "schmitt-inverter":
-        return v["V_low"] < v["V_lower"] < v["V_upper"] < v["V_high"]
+        return v["V_low"] < v["V_lower"] < v["V_upper"] - 0.06 * v["V_high"] and v["V_upper"] < v["V_high"]
     if design.circuit == "timer-555":
-        return v["k_lower"] < v["k_upper"] < 1
+        return v["k_lower"] < v["k_upper"] - 0.08 and v["k_upper"] < 1
     if design.circuit == "gas-lamp":
-        return v["V_maintain"] < v["V_extinguish"] < v["V_strike"]
+        return v["V_maintain"] < v["V_extinguish"] < v["V_strike"] - 5
     if design.circuit == "unijunction":
-        return v["V_floor"] < v["V_valley"] < v["eta"] * v["supply"] and v["eta"] < 0.95
+        return v["V_floor"] < v["V_valley"] < v["eta"] * v["supply"] - 1 and v["eta"] < 0.95
     if design.circuit == "programmable-unijunction":
-        return v["V_floor"] < v["V_valley"]
+        gate = v["supply"] * v["RG1"] / (v["RG1"] + v["RG2"])
+        return v["V_floor"] < v["V_valley"] < gate - 0.5
     if design.circuit == "trigger-diode":
-        return v["V_breakback"] > 0 and v["V_floor"] < v["V_breakover"] - v["V_breakback"]
+        return 1 < v["V_breakback"] < v["V_breakover"] - v["V_floor"]
     if design.circuit == "current-ramp":
-        return v["V_lower"] < v["V_upper"]
+        return v["V_lower"] < v["V_upper"] - 0.3
     if design.circuit in ("op-amp", "triangle"):
         return v["V_low"] < v["V_high"] - 0.5
     return v.get("V_on", 0.0) <= v.get("V_BE", 1.0)

@@ -91,7 +91,7 @@ class Outcome:
 def _kind(build: Build) -> str:
     if not build.fault.causes:
         return "healthy"
-    return "single" if len(build.fault.causes) == 1 or build.fault.how == "swap" else "two"
+    return "single" if len(build.fault.causes) == 1 or build.fault.how in ("swap", "family") else "two"
 
 
 def score(
