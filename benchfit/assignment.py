@@ -40,8 +40,7 @@ def _named(capture: Capture, circuit: Circuit | None) -> tuple[Assignment, ...]:
 
 
 def _placed(a: Assignment, circuit: Circuit | None) -> Assignment:
-    """A guessed node as the circuit knows it: its own name and shape; a circuit without an output has
-    none."""
+    """A guessed node as the circuit knows it: its own name and shape; a circuit without an output has none."""
     if circuit is None:
         return a
     try:

@@ -1,5 +1,4 @@
-"""The way through the house: a capture and a sheet in, what was found out. Commands and the burn-in use this
-face."""
+"""The way through the house: a capture and a sheet in, what was found out. Commands and the burn-in use this face."""
 
 from __future__ import annotations
 
@@ -24,8 +23,7 @@ if TYPE_CHECKING:
 class Found:
     """What was found: the explanation, and the capture and cycle constants that it rests on.
 
-    ``print(found)`` is what the command line prints; :meth:`record` the result record; ``parts`` and
-    ``suspects``
+    ``print(found)`` is what the command line prints; :meth:`record` the result record; ``parts`` and ``suspects``
     tables for a notebook.
     """
 
@@ -50,8 +48,7 @@ class Found:
 
     @property
     def parts(self) -> pd.DataFrame:
-        """One row a part, indexed by name: value, u, unit, nominal, low, high, deviation, within,
-        known_from."""
+        """One row a part, indexed by name: value, u, unit, nominal, low, high, deviation, within, known_from."""
         import pandas as pd
 
         rows = [
@@ -95,8 +92,7 @@ class Found:
         return pd.DataFrame(rows, columns=["causes", "probability", "change", "says"])
 
     def plot(self, path: str | None = None, axes: Any = None, kind: str = "capture") -> Figure:
-        """Draw the capture with its fit (or another ``kind``); into a file by its ending, or into given
-        axes."""
+        """Draw the capture with its fit (or another ``kind``); into a file by its ending, or into given axes."""
         from benchfit.show.plot import plot
 
         return plot(self.explanation, self.constants[0], self.captures[0], path=path, axes=axes, kind=kind)  # type: ignore[arg-type]

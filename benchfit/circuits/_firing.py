@@ -1,5 +1,4 @@
-"""What the three firing devices share: charge to a firing voltage, empty through the device towards its
-floor."""
+"""What the three firing devices share: charge to a firing voltage, empty through the device towards its floor."""
 
 from __future__ import annotations
 
@@ -10,10 +9,9 @@ from benchfit.circuits.model import Array, Condition, Cycle, Parts
 def firing_cycle(p: Parts, peak: Array, valley: Array) -> Cycle:
     """Cycle of a device that fires at ``peak`` (V) and lets go at ``valley`` (V).
 
-    The charge is R·C towards the supply; the discharge goes through r_discharge towards V_floor with R still
-    feeding.
-    With ``I_peak`` and ``I_valley`` given, it fires only if R can supply the one and lets go only if R cannot
-    supply the other: (supply − valley)/I_valley < R < (supply − peak)/I_peak.
+    The charge is R·C towards the supply; the discharge goes through r_discharge towards V_floor with R still feeding.
+    With ``I_peak`` and ``I_valley`` given, it fires only if R can supply the one and lets go only if R cannot supply
+    the other: (supply − valley)/I_valley < R < (supply − peak)/I_peak.
     """
     feed = (1 / p["R"], p["supply"])
     up = lag(p, feed)

@@ -1,5 +1,4 @@
-"""Gas-lamp oscillator: a capacitor charges until the lamp strikes and is emptied by it until the lamp goes
-out."""
+"""Gas-lamp oscillator: a capacitor charges until the lamp strikes and is emptied by it until the lamp goes out."""
 
 from __future__ import annotations
 

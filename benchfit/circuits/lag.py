@@ -27,8 +27,8 @@ class Lag:
     capacitance : Array
         Total capacitance with the node at 0 V (F).
     esr : Array
-        The leg's share of the node's current times its series resistance: what the node is off the plates by,
-        per ampere (Ω).
+        The leg's share of the node's current times its series resistance: what the node is off the plates by, per
+        ampere (Ω).
     slope : Array
         Relative change of the whole capacitance per volt of the node (1/V).
     """
@@ -68,8 +68,8 @@ def lag(
     add to what the circuit itself connects (Thevenin; Millman's theorem). ``foot`` is the voltage of the
     capacitor's other plate: C_slope goes by the voltage across it, C·(1 + C_slope·(v − foot)).
 
-    Stray and probe capacitance sit beside the leg with the ESR: once they have settled (ESR·C_stray, short
-    against τ) the leg takes C/(C + C_stray + C_probe) of the node's current, and so much of ESR counts.
+    Stray and probe capacitance sit beside the leg with the ESR: once they have settled (ESR·C_stray, short against τ)
+    the leg takes C/(C + C_stray + C_probe) of the node's current, and so much of ESR counts.
     """
     supply = p.get("supply", p.get("V_high", np.float64(0.0)))
     to_supply = 1 / p.get("R_leak_supply", np.float64(np.inf))
@@ -98,8 +98,9 @@ def phase(
 ) -> Phase:
     """A phase in which ``now`` drives the node; ``before`` drove it until then.
 
-    With a series resistance in the capacitor's leg the node steps as the current changes: the capacitor's own
-    voltage v_C = v·(1 + ESR·G) − ESR·I is what stays, but for a ``jump`` (V) of its other plate.
+    ``jump`` (V) is by how much the capacitor's far end steps as the phase begins. With a series resistance in the
+    capacitor's leg the node steps as the current changes: the capacitor's own voltage v_C = v·(1 + ESR·G) − ESR·I is
+    what stays, but for a ``jump`` (V) of its other plate.
     """
     gain: Array | float = 1.0
     if before is not None:

@@ -1,7 +1,6 @@
 """Soft yes-or-no questions about a waveform, for the circuits' ``likeness``.
 
-Each answers with 1 where it holds, a little where it does not, and a neutral middle where the waveform does
-not say.
+Each answers with 1 where it holds, a little where it does not, and a neutral middle where the waveform does not say.
 """
 
 from __future__ import annotations

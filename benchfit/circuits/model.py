@@ -34,17 +34,14 @@ class Part:
         The scale in which it is fitted: ln x; x where zero or a sign is possible; 1/x for parts that are
         absent at infinity (a leak resistance, a slew rate).
     nominal : str or None
-        Default nominal with tolerance as text, None where the sheet must give one. ``"absent"`` for
-        parasitics.
+        Default nominal with tolerance as text, None where the sheet must give one. ``"absent"`` for parasitics.
     base : callable or None
-        For a default that follows other parts (V_maintain = V_extinguish − 5 V): parts → value. ``nominal``
-        then
+        For a default that follows other parts (V_maintain = V_extinguish − 5 V): parts → value. ``nominal`` then
         holds the spread about it ("± 3 V" or "± 10 %") alone.
     tolerance : str
         Tolerance taken when the sheet gives a nominal without one.
     kind : str
-        "resistor", "capacitor", "supply", "level", "threshold", "ratio", "device", "time", "current" or
-        "parasitic":
+        "resistor", "capacitor", "supply", "level", "threshold", "ratio", "device", "time", "current" or "parasitic":
         what sort of thing it is at the bench. Prior odds and next readings go by it.
     optional : bool
         The sheet may say "none", or leave it out without a default taking its place.
@@ -87,8 +84,7 @@ class Phase:
     gain, jump : Array
         The phase starts at gain·v + jump (V), v being where the phase before it ended: a step at the corner.
     slope : Array
-        Relative change of the capacitance per volt (1/V): C = C_0·(1 + slope·v), κ and drive being those of
-        C_0.
+        Relative change of the capacitance per volt (1/V): C = C_0·(1 + slope·v), κ and drive being those of C_0.
     output : "high", "low" or ""
         State of the output meanwhile; "" where the circuit has none.
     """
@@ -110,11 +106,9 @@ class Phase:
 class Condition:
     """Something that must hold for the circuit to oscillate: ``margin`` > 0 (in volts or amperes).
 
-    ``says`` is what the built circuit is seen to do where it fails; ``code`` is "never-reaches",
-    "never-fires",
-    "latched" or "stuck"; ``part`` the part whose change most simply makes it run; ``rests`` the voltage at
-    which
-    the timing node is then found.
+    ``says`` is what the built circuit is seen to do where it fails; ``code`` is "never-reaches", "never-fires",
+    "latched" or "stuck"; ``part`` the part whose change most simply makes it run; ``rests`` the voltage at which the
+    timing node is then found.
     """
 
     code: str
@@ -128,14 +122,11 @@ class Condition:
 class Cycle:
     """The phases of one cycle in order, the output's levels, and the conditions under which it runs.
 
-    ``levels`` maps "high", "low" (V) and "rise_time", "fall_time" (s, 10 % to 90 %) to what the parts say of
-    the
-    output; what they do not say is left out. "rise_lag" (s) is how much later the output crosses its middle
-    rising
-    than it is driven, where that is slow (a collector that charges a capacitor). ``rests`` maps a node to the
-    level at which it is held while
-    another node's phase lasts. ``remarks`` are sentences (code, mask, says) about a regime that the closed
-    form enters, shown where the mask holds.
+    ``levels`` maps "high", "low" (V) and "rise_time", "fall_time" (s, 10 % to 90 %) to what the parts say of the
+    output; what they do not say is left out. "rise_lag" (s) is how much later the output crosses its middle rising
+    than it is driven, where that is slow (a collector that charges a capacitor). ``rests`` maps a node to the level
+    at which it is held while another node's phase lasts. ``remarks`` are sentences (code, mask, says) about a regime
+    that the closed form enters, shown where the mask holds.
     """
 
     phases: tuple[Phase, ...]
@@ -147,8 +138,7 @@ class Cycle:
 
 @dataclass(frozen=True)
 class Features:
-    """What a waveform tells of its circuit, None where it does not: voltages (V), shares of the period, bends
-    κ·t of
+    """What a waveform tells of its circuit, None where it does not: voltages (V), shares of the period, bends κ·t of
     each phase (0: straight), asymptotes (V), time constants (s), and whether the node jumps or is held."""
 
     upper: float | None = None
@@ -171,8 +161,8 @@ class Features:
 class Node:
     """A place where a probe can be clipped.
 
-    ``shape`` as in the cycle stage's Assignment: "timing", "jumping", "holding" or "square".
-    ``loads`` is true where a probe there loads the circuit (a timing node that is not a low-impedance one).
+    ``shape`` as in the cycle stage's Assignment: "timing", "jumping", "holding" or "square". ``loads`` is true where
+    a probe there loads the circuit (a timing node that is not a low-impedance one).
     """
 
     name: str
@@ -190,13 +180,11 @@ class Circuit:
     name, title : str
         As in the sheet; one line for people.
     parts : tuple of Part
-        Parasitics included. The names that ``cycle`` receives are those that the build has; an optional part
-        that
-        it has not is missing from the mapping, a parasitic never is.
+        Parasitics included. The names that ``cycle`` receives are those that the build has; an optional part that it
+        has not is missing from the mapping, a parasitic never is.
     nodes : tuple of Node
     cycle : callable
-        parts → Cycle. Besides the parts it receives the probe's ``G_probe:NODE`` (S) and ``C_probe:NODE`` (F)
-        for
+        parts → Cycle. Besides the parts it receives the probe's ``G_probe:NODE`` (S) and ``C_probe:NODE`` (F) for
         each node that a probe can load (left out where there is none).
     swaps : tuple of pairs
         Parts that are easily exchanged for each other when a board is stuffed.

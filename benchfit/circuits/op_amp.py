@@ -20,8 +20,7 @@ def _divider(p: Parts) -> tuple[Array, Array]:
 
 
 def _high(p: Parts, r: Array, drop: Array) -> tuple[tuple[Array, Array], Array]:
-    """What drives the timing node while the output is high (conductance S, voltage V), and the upper
-    threshold.
+    """What drives the timing node while the output is high (conductance S, voltage V), and the upper threshold.
 
     An open-collector output is at α + γ·v, for its pull-up feeds the timing resistor and the divider at once
     (Kirchhoff at the output's node); the node meets the + input where v = a + b·(α + γ·v).
@@ -89,8 +88,7 @@ def _cycle(p: Parts) -> Cycle:
 
 
 def _likeness(seen: Features) -> float:
-    """Bipolar output, node between its levels, one time constant both ways, asymptotes at the output's
-    levels."""
+    """Bipolar output, node between its levels, one time constant both ways, asymptotes at the output's levels."""
     bipolar = None if seen.low is None or seen.high is None else seen.low < -0.3 * seen.high
     about_zero = None if seen.lower is None or seen.upper is None else seen.lower < 0 < seen.upper
     return (

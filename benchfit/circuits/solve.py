@@ -71,9 +71,8 @@ def _advanced(phase: Phase, start: Array, stiff: Array, time: Array | float) -> 
 class Settled:
     """The settled cycle, one array of shape (phases, …) each.
 
-    ``durations`` (s) include the dead times; ``starts`` and ``ends`` (V) are where each phase begins and is
-    left.
-    A phase that the node is already beyond has duration 0. NaN: that set of parts does not oscillate.
+    ``durations`` (s) include the dead times; ``starts`` and ``ends`` (V) are where each phase begins and is left. A
+    phase that the node is already beyond has duration 0. NaN: that set of parts does not oscillate.
     """
 
     durations: Array
@@ -88,8 +87,7 @@ class Settled:
 
 
 def settle(cycle: Cycle) -> Settled:
-    """Follow the phases round until they repeat: twice suffices, since each ends at a threshold of its
-    own."""
+    """Follow the phases round until they repeat: twice suffices, since each ends at a threshold of its own."""
     nodes = {phase.node for phase in cycle.phases}
     last = {node: [p for p in cycle.phases if p.node == node][-1] for node in nodes}
     at = {node: after(p, np.asarray(p.threshold, float), p.delay) for node, p in last.items()}
@@ -193,8 +191,7 @@ def _mean(w: Array, *factors: Array) -> Array:
 def _stretch(
     phases: Sequence[Phase], starts: Array, ends: Array, durations: Array
 ) -> tuple[Array, Array, Array, Array]:
-    """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in
-    a row.
+    """Start, end (V), κ (1/s) and bow (V) of the exponential that least squares finds over several phases in a row.
 
     Begun where the zeroth to second Legendre coefficients are the waveform's, then two steps of variable
     projection in the bend (Golub & Pereyra 1973, with Kaufman's Jacobian).
@@ -240,8 +237,7 @@ def _only(phase: Phase, rows: NDArray[np.bool_]) -> Phase:
 
 
 def shares(cycle: Cycle, node: str, settled: Settled | None = None) -> dict[str, Array]:
-    """The period (s) and the shares of it alone: what frequency and duty cycle take, at a fraction of the
-    cost."""
+    """The period (s) and the shares of it alone: what frequency and duty cycle take, at a fraction of the cost."""
     settled = settle(cycle) if settled is None else settled
     period = settled.period
     found: dict[str, Array] = {"period": period}

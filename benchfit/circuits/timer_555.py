@@ -47,8 +47,8 @@ def _cycle(p: Parts) -> Cycle:
 
 
 def _likeness(seen: Features) -> float:
-    """The lower level half of the upper one, the charge slower than the discharge by (RA + RB)/RB, duty above
-    a half."""
+    """The lower level half of the upper one, the charge slower than the discharge by (RA + RB)/RB, duty above a
+    half."""
     unipolar = None if seen.low is None or seen.high is None else seen.low > -0.2 * seen.high
     halves = ratio(seen.lower, seen.upper)
     return (

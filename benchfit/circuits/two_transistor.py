@@ -1,5 +1,4 @@
-"""Two-transistor (collector-coupled) astable: each half is timed by the base resistor and its coupling
-capacitor."""
+"""Two-transistor (collector-coupled) astable: each half is timed by the base resistor and its coupling capacitor."""
 
 from __future__ import annotations
 
@@ -28,8 +27,8 @@ from benchfit.circuits.solve import after, time_to
 class _Side:
     """A base with its resistor and capacitor.
 
-    ``collector`` names what recovers while it is off: the load, and the capacitor that hangs on it.
-    ``plates``: the base less its capacitor's resistive drop, as its transistor turns on (V).
+    ``collector`` names what recovers while it is off: the load, and the capacitor that hangs on it. ``plates``: the
+    base less its capacitor's resistive drop, as its transistor turns on (V).
     """
 
     base: str
@@ -70,8 +69,8 @@ def _half(p: Parts, side: _Side, kick: Array) -> tuple[Phase, Array]:
 def _head_start(p: Parts, other: _Side) -> Array:
     """How far a collector is up as soon as its transistor turns off (V).
 
-    Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there
-    from where that base began to conduct.
+    Its capacitor's other plate is held at V_BE by the base that has just turned on, which it pulled up there from
+    where that base began to conduct.
     """
     return np.maximum(p["V_BE"] - other.plates, 0.0)
 

@@ -148,8 +148,8 @@ def _predicted(
 def _effect(before: Quantity | None, predicted: Quantity, obtained: Quantity | None) -> str:
     """Whether it came out as predicted, went there in part, or did not do it.
 
-    A move that the readings would show must have been seen, else a prediction that is known poorly would be
-    borne out by a build that has not changed.
+    A move that the readings would show must have been seen, else a prediction that is known poorly would be borne out
+    by a build that has not changed.
     """
     if obtained is None:
         return "not by this change"

@@ -54,8 +54,7 @@ def _parameter(part: Part, build: Build) -> Parameter:
 
 
 def _follower(part: Part, value: Toleranced) -> Parameter:
-    """A default that follows other parts: its coordinate is the ratio to, or the difference from, its
-    base."""
+    """A default that follows other parts: its coordinate is the ratio to, or the difference from, its base."""
     if part.coordinate == "log":
         low, high = math.log(value.low / value.nominal), math.log(value.high / value.nominal)
     else:
@@ -224,8 +223,7 @@ def assemble_bare(sheet: Sheet) -> Model:
 
 
 def _one_share(wanted: list[str], constants: CycleConstants) -> list[str]:
-    """Where the output's edges and the timing node's turns give one and the same share, the sharper one is
-    taken."""
+    """Where the output's edges and the timing node's turns give one and the same share, the sharper one is taken."""
     if abs(constants.value("high_share") - constants.value("charge_share")) > 0.02:
         return wanted
     worse = "charge_share" if constants.u("high_share") <= constants.u("charge_share") else "high_share"
@@ -273,8 +271,7 @@ def _kind(sheet: Sheet, node: str) -> str:
 
 
 def _readings(sheet: Sheet, build: Build, model: Model) -> tuple[list[Observation], list[float]]:
-    """Readings as observations: of a part in its own coordinate, of frequency (ln) or duty as a counter has
-    them."""
+    """Readings as observations: of a part in its own coordinate, of frequency (ln) or duty as a counter has them."""
     found, variances = [], []
     names = {p.name: p for p in model.parameters}
     for name, value in sheet.readings.items():

@@ -1,9 +1,7 @@
 """Why it misses: the miss split into shares that add up to it.
 
-From the nominal parts to the effective ones on a straight line in the state, each coordinate's partial
-derivative
-of f/target is integrated along it (Aumann & Shapley 1974): the shares add up to the whole change, whatever
-its size, and
+From the nominal parts to the effective ones on a straight line in the state, each coordinate's partial derivative of
+f/target is integrated along it (Aumann & Shapley 1974): the shares add up to the whole change, whatever its size, and
 depend on no order. The probe goes the same way, from lifted to as given.
 """
 
@@ -76,8 +74,7 @@ def path_shares(model: Model, view: View, which: str, effective: Array) -> tuple
 
 
 def miss_of(model: Model, averaged: Averaged, which: str, target: Toleranced, built: float | None) -> Miss:
-    """The miss budget of frequency or duty, averaged over the live hypotheses with the spread between
-    them."""
+    """The miss budget of frequency or duty, averaged over the live hypotheses with the spread between them."""
     goal = target.nominal
     limits = (target.low / goal - 1, target.high / goal - 1) if target.stated else None
     with np.errstate(all="ignore"):
@@ -111,8 +108,7 @@ def miss_of(model: Model, averaged: Averaged, which: str, target: Toleranced, bu
 
 
 def _within(model: Model, covariance: Array, mean: Array, shares: Array) -> Array:
-    """Variance of each share within one hypothesis: the share per unit of its own coordinate, times that
-    u."""
+    """Variance of each share within one hypothesis: the share per unit of its own coordinate, times that u."""
     move = mean - model.nominal
     u = np.sqrt(np.maximum(np.diag(covariance), 0.0))
     with np.errstate(all="ignore"):

@@ -25,8 +25,7 @@ HAZARD = (
 
 
 def cautions(model: Model | None, sheet: Sheet, captures: Sequence[CycleConstants]) -> list[Remark]:
-    """The ``hazard`` warning where the sheet or a capture shows a voltage that may hurt, or a charge that
-    may."""
+    """The ``hazard`` warning where the sheet or a capture shows a voltage that may hurt, or a charge that may."""
     why = _voltage(sheet, captures) or (_stored(model) if model is not None else "")
     return [Remark("hazard", f"{why}: {HAZARD}")] if why else []
 
@@ -69,9 +68,8 @@ def scope_checks(
 ) -> tuple[list[CycleConstants], list[Remark]]:
     """The captures with their volts set right, and what is to be said of it.
 
-    Volts that are ten times wrong (``attenuation``), and a timing node whose mean lies where the circuit
-    cannot
-    put it, which is taken for a.c. coupled.
+    Volts that are ten times wrong (``attenuation``), and a timing node whose mean lies where the circuit cannot put
+    it, which is taken for a.c. coupled.
     """
     from benchfit.explain.assemble import parameters_of, timing_node
 

@@ -18,9 +18,8 @@ from benchfit.sheet.model import Sheet
 class Expected:
     """A build's parts → the quantities of a record's ``measured`` section, probe and all.
 
-    A state is a vector of coordinates, one a part: its ln, the part itself where zero or a sign is possible,
-    1/x of a resistance that is absent at infinity, a part that follows another by its ratio to or distance
-    from it.
+    A state is a vector of coordinates, one a part: its ln, the part itself where zero or a sign is possible, 1/x of a
+    resistance that is absent at infinity, a part that follows another by its ratio to or distance from it.
 
     Attributes
     ----------
@@ -29,8 +28,7 @@ class Expected:
     weights : tuple of float
         How often each is the one that is off, relative to each other (judgement).
     sizes : tuple of float
-        The size, in its coordinate, at which a part that is absent matters; 0 where it cannot, inf for the
-        others.
+        The size, in its coordinate, at which a part that is absent matters; 0 where it cannot, inf for the others.
     """
 
     names: tuple[str, ...]

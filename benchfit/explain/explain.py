@@ -83,8 +83,7 @@ def explain(
 def _attenuated(
     sheet: Sheet, captures: Sequence[CycleConstants]
 ) -> tuple[list[CycleConstants], list[Remark]]:
-    """Volts ten times off are a wrong probe setting, or a part that is a decade off: whichever explains
-    more."""
+    """Volts ten times off are a wrong probe setting, or a part that is a decade off: whichever explains more."""
     right, notes = scope_checks(sheet, captures)
     if not any(n.code == "wrong-attenuation" for n in notes) or not captures[0].oscillates:
         return right, notes
@@ -233,9 +232,8 @@ def _probe_warning(built: Mapping[str, Quantity], bare: Mapping[str, Quantity] |
 def _widened(model: Model, weighed: Sequence[Weighed]) -> tuple[Model, list[Weighed], list[Remark]]:
     """Where nothing explains the record, the record is believed less until something does, and that is said.
 
-    The observations' covariance grows by what the best hypothesis leaves over what it should (Birge 1932);
-    the
-    answer is then the least bad account with honest widths, and is never settled.
+    The observations' covariance grows by what the best hypothesis leaves over what it should (Birge 1932); the answer
+    is then the least bad account with honest widths, and is never settled.
     """
     size = max(len(model.observations), 1)
     found = list(weighed)
@@ -278,8 +276,7 @@ def _cancelling(model: Model, weighed: Sequence[Weighed], misses: Mapping[str, M
 def _explain_rest(
     model: Model, constants: CycleConstants, sheet: Sheet, base: Explanation, warnings: list[Remark]
 ) -> Explanation:
-    """No oscillation is a finding too: which condition fails, by which cause, and the limits that would mend
-    it."""
+    """No oscillation is a finding too: which condition fails, by which cause, and the limits that would mend it."""
     weighed = weigh_rest(model, constants)
     alive = any(w.probability > 0 for w in weighed)
     warnings = warnings + cautions(model, sheet, [constants])

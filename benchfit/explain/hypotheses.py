@@ -22,9 +22,8 @@ TWO = math.log(2.0)
 class Freed:
     """One parameter that a hypothesis frees over a range, in its gauge.
 
-    ``hole`` is the stretch within tolerance, which belongs to "nothing off". ``log_scale``: the range is
-    measured
-    in ln of the value, so that the prior density is uniform in the gauge; else it is uniform in the value.
+    ``hole`` is the stretch within tolerance, which belongs to "nothing off". ``log_scale``: the range is measured in
+    ln of the value, so that the prior density is uniform in the gauge; else it is uniform in the value.
     """
 
     index: int
@@ -56,8 +55,7 @@ class Freed:
 class Hypothesis:
     """One way in which the build may be.
 
-    ``causes`` empty: nothing off. ``weight``: prior probability. ``shifts`` maps parameter index → new prior
-    center.
+    ``causes`` empty: nothing off. ``weight``: prior probability. ``shifts`` maps parameter index → new prior center.
     ``freed``: parameters of its own. ``order``: how many independent causes it takes (a swap is one).
     """
 

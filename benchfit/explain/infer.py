@@ -79,10 +79,8 @@ class Relaxed:
     state : ndarray, shape (rows, n)
     t : ndarray, shape (rows, owns)
     cost : ndarray, shape (rows,)
-        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed, what lies
-        beyond its limits added; inf where
-        the
-        state does not oscillate.
+        −2 ln of the unnormalised posterior: whitened residuals and prior pulls squared and summed, what lies beyond
+        its limits added; inf where the state does not oscillate.
     log_weight : ndarray, shape (rows,)
         ln of ∫ likelihood × prior over the held parameters, up to one common constant.
     misfit : ndarray, shape (rows,)
@@ -200,8 +198,7 @@ def _jacobian(
     t: Array,
     owns: int,
 ) -> Array:
-    """d(prediction)/d(z, t), whitened: shape (rows, m, free + owns). Forward differences, one call for
-    all."""
+    """d(prediction)/d(z, t), whitened: shape (rows, m, free + owns). Forward differences, one call for all."""
     rows = state.shape[0]
     shifted = np.repeat(state[:, None, :], free.size + owns, axis=1)
     column = np.arange(free.size)
@@ -228,8 +225,7 @@ def _prior(held: int, owns: int) -> Array:
 
 
 def begin(model: Model, white: Array) -> Array | None:
-    """A place to begin, shape (n,) in prior standard deviations, where the prior means do not oscillate: the
-    best of
+    """A place to begin, shape (n,) in prior standard deviations, where the prior means do not oscillate: the best of
     many draws from the prior (seeded). None where the means do, or where no draw does either."""
     with np.errstate(all="ignore"):
         if np.all(np.isfinite(model.predict(model.center))):
@@ -265,8 +261,7 @@ def _normal(jacobian: Array, residual: Array, z: Array, owns: int) -> tuple[Arra
 def _beyond(batch: Batch, state: Array, free: NDArray[np.int64]) -> Array:
     """ln of what a held parameter loses where it lies beyond its limits: a tolerance is a pair of limits.
 
-    The prior that carries the fit is a Gaussian of the rectangle's mean and standard deviation, whose limits
-    lie at
+    The prior that carries the fit is a Gaussian of the rectangle's mean and standard deviation, whose limits lie at
     √3; a state that needs a part well beyond them is hardly "within tolerance", though limits are not walls.
     """
     spread = batch.spread[:, free]

@@ -75,10 +75,8 @@ def _derived(
 def measured(constants: CycleConstants, scope: Scope, output_times: bool) -> dict[str, Quantity | None]:
     """Every quantity of the contract's ``measured`` section; None where the record does not give it.
 
-    ``u_noise`` is type A; ``u`` adds the timebase to times and each channel's gain and offset to voltages
-    (type B,
-    rectangles: JCGM 100, 4.3.7). ``output_times``: the output's high and low times are those of charge and
-    discharge.
+    ``u_noise`` is type A; ``u`` adds the timebase to times and each channel's gain and offset to voltages (type B,
+    rectangles: JCGM 100, 4.3.7). ``output_times``: the output's high and low times are those of charge and discharge.
     """
     found: dict[str, Quantity | None] = dict.fromkeys(NAMES)
     if not constants.oscillates:

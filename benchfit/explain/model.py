@@ -1,7 +1,6 @@
 """The forward model: from parts, probe and scope to the constants that the captures would give.
 
-A state is a vector of coordinates, one a parameter: ln of a part, the part itself where zero or a sign is
-possible,
+A state is a vector of coordinates, one a parameter: ln of a part, the part itself where zero or a sign is possible,
 1/x of a resistance that is absent at infinity; and the scope's nuisances. Many states are evaluated at once.
 """
 
@@ -27,10 +26,8 @@ EDGES = ("rise_time", "fall_time")
 DIFFERENCES = ("charge_bow", "discharge_bow", "charge_jump", "discharge_jump")
 OUTPUT = ("high", "low")
 
-# What a closed form leaves out of a real circuit, as a share of the swing, of the period, of a phase's bend.
-# It
-# bounds how hard a capture may argue, however quiet it is. Ours (judgement): a tenth of a scope's own
-# accuracy.
+# What a closed form leaves out of a real circuit, as a share of the swing, of the period, of a phase's bend. It
+# bounds how hard a capture may argue, however quiet it is. Ours (judgement): a tenth of a scope's own accuracy.
 FLOOR_VOLTS = 0.0015
 FLOOR_PERIOD = 5e-4
 FLOOR_SHARE = 4e-4
@@ -47,10 +44,8 @@ class Parameter:
     """One coordinate of the state with its Gaussian prior.
 
     ``center`` and ``spread`` are the prior's mean and standard deviation in the coordinate, ``nominal`` and
-    ``limits``
-    the sheet's. A part whose default follows others has the coordinate of its difference from (linear) or
-    ratio to
-    (log) that base.
+    ``limits`` the sheet's. A part whose default follows others has the coordinate of its difference from (linear) or
+    ratio to (log) that base.
     """
 
     name: str
@@ -67,9 +62,9 @@ class Parameter:
 class View:
     """The conditions under which one capture was taken.
 
-    ``timing`` names the timing node that was probed ("" where none was), ``shape`` its kind; ``loads`` maps
-    node → (conductance S, capacitance F) of the probes that load it. ``swaps`` maps a part's name to the
-    parameter that takes its place in this capture; ``added_C`` and ``added_R`` name parameters.
+    ``timing`` names the timing node that was probed ("" where none was), ``shape`` its kind; ``loads`` maps node →
+    (conductance S, capacitance F) of the probes that load it. ``swaps`` maps a part's name to the parameter that
+    takes its place in this capture; ``added_C`` and ``added_R`` name parameters.
     """
 
     timing: str
@@ -89,10 +84,8 @@ class View:
 class Observation:
     """One number that was measured: ``name`` of the cycle's vocabulary in capture ``view``, or a reading.
 
-    ``kind``: "constant", "reading" (of the parameter ``name``) or "counter" (frequency or duty of the first
-    capture).
-    ``value`` and its place in the covariance are in the transformed scale (ln for times; bend per phase for
-    κ).
+    ``kind``: "constant", "reading" (of the parameter ``name``) or "counter" (frequency or duty of the first capture).
+    ``value`` and its place in the covariance are in the transformed scale (ln for times; bend per phase for κ).
     """
 
     view: int
@@ -218,8 +211,7 @@ class Model:
         return out
 
     def unexplained_edges(self, state: Array) -> Array:
-        """ln of the density with which edges of no stated cause have just these durations, against
-        FLOOR_EDGE's bell.
+        """ln of the density with which edges of no stated cause have just these durations, against FLOOR_EDGE's bell.
 
         A slew rate explains resolved edges; without one they may be anything over four decades. Shape (...).
         """
@@ -242,8 +234,7 @@ def observe(
 ) -> tuple[list[Observation], Array]:
     """Observations of one capture with their covariance, floors included.
 
-    Only what both the record and the circuit speak of is taken. Times go in as logarithms, curvatures as bend
-    over
+    Only what both the record and the circuit speak of is taken. Times go in as logarithms, curvatures as bend over
     their phase (κ·t), so that every floor is a plain share.
     """
     names = [n for n in constants.names if n in predicted and np.isfinite(constants.value(n))]
@@ -297,8 +288,7 @@ def observe(
 
 
 def _no_jumps(constants: CycleConstants, predicted: Sequence[str], swing: float) -> dict[str, float]:
-    """Corners at which no step was seen, with the u of that "none": a series resistance would have made
-    one."""
+    """Corners at which no step was seen, with the u of that "none": a series resistance would have made one."""
     if "charge_jump" not in predicted or "charge_start" in constants or "discharge_start" in constants:
         return {}
     if not all(n in constants for n in ("upper", "lower", "charge_share")):
@@ -317,8 +307,7 @@ def _is_output(node: str) -> bool:
 def _droop(constants: CycleConstants) -> dict[str, float]:
     """Standard uncertainty of what an a.c. coupled input does to half a cycle, as a share of the swing.
 
-    Its high-pass takes 2π·f_c·t of a level in the time t; f_c is anything up to COUPLING_CORNER (a
-    rectangle).
+    Its high-pass takes 2π·f_c·t of a level in the time t; f_c is anything up to COUPLING_CORNER (a rectangle).
     """
     taken = min(2 * math.pi * COUPLING_CORNER * constants.value("period") / 2, 1.0) / math.sqrt(3.0)
     found = {"timing": 0.0, "output": 0.0}

@@ -1,10 +1,8 @@
 """Prior odds: how often each sort of part is the one that is off, before anything was measured.
 
-The numbers are relative weights. They come from a reading of bench reports (three stars: many independent
-reports,
-two: several, one: few or a data sheet alone), set down as judgement, not as a statistic; a tie in the data is
-ranked by
-them and is never settled by them (see :mod:`benchfit.explain.suspects`).
+The numbers are relative weights. They come from a reading of bench reports (three stars: many independent reports,
+two: several, one: few or a data sheet alone), set down as judgement, not as a statistic; a tie in the data is ranked
+by them and is never settled by them (see :mod:`benchfit.explain.suspects`).
 """
 
 from __future__ import annotations

@@ -112,8 +112,7 @@ def _limits(model: Model, i: int) -> tuple[float, float] | None:
 
 
 def _source(model: Model, i: int, covariance: Array, readings: Sequence[str]) -> str:
-    """Which source carries most of the information (1/u²) on a part: the capture, its reading, or the
-    sheet."""
+    """Which source carries most of the information (1/u²) on a part: the capture, its reading, or the sheet."""
     p: Parameter = model.parameters[i]
     sheet = 0.0 if p.spread == 0 else 1 / p.spread**2
     total = 1 / covariance[i, i] if covariance[i, i] > 0 else math.inf
@@ -134,9 +133,8 @@ def unseparated(model: Model, state: Array) -> tuple[tuple[str, ...], ...]:
     """Parts that the captures fix only together, priors left out: columns of the whitened Jacobian that are
     collinear.
 
-    Unit columns; two of them are collinear where the smaller singular value is under 1e-2 of the larger, that
-    is where
-    tan(angle/2) is. The scope's nuisances are projected out first: they belong to the instrument.
+    Unit columns; two of them are collinear where the smaller singular value is under 1e-2 of the larger, that is
+    where tan(angle/2) is. The scope's nuisances are projected out first: they belong to the instrument.
     """
     rows = [j for j, o in enumerate(model.observations) if o.kind != "reading"]
     if not rows:

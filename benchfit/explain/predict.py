@@ -1,5 +1,4 @@
-"""What a build should do before power is applied: closed form at the nominals, bands over the tolerances,
-advice."""
+"""What a build should do before power is applied: closed form at the nominals, bands over the tolerances, advice."""
 
 from __future__ import annotations
 
@@ -83,8 +82,7 @@ def _predicted(model: Model, view: View, node: Node, states: Array) -> dict[str,
 
 
 def _bands(model: Model, view: View) -> tuple[dict[str, Any], dict[str, Any], dict[str, Any]]:
-    """Worst case over the tolerance limits, root-sum-square (± 2 u), Monte Carlo (JCGM 101: 95 %
-    interval)."""
+    """Worst case over the tolerance limits, root-sum-square (± 2 u), Monte Carlo (JCGM 101: 95 % interval)."""
     worst: dict[str, Any] = {}
     square: dict[str, Any] = {}
     carlo: dict[str, Any] = {}
@@ -181,8 +179,7 @@ def _variance_shares(model: Model, view: View, slot: int) -> list[dict[str, Any]
 
 
 def _contributions(model: Model, view: View) -> list[dict[str, Any]]:
-    """What each tolerance moves the frequency by, from limit to limit, everything else nominal (fractions of
-    f)."""
+    """What each tolerance moves the frequency by, from limit to limit, everything else nominal (fractions of f)."""
     wide = [i for i, p in enumerate(model.parameters) if p.part is not None and p.limits[1] > p.limits[0]]
     state = np.tile(model.nominal, (2 * len(wide) + 1, 1))
     rows = np.arange(len(wide))

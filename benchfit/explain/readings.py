@@ -1,8 +1,7 @@
 """What to read next: for each reading that a bench can give, how far it should raise the first probability.
 
-Under the present posterior each live hypothesis predicts the reading with a spread; readings are drawn from
-the mixture
-and the first probability that each would leave is averaged (preposterior analysis; Lindley 1956).
+Under the present posterior each live hypothesis predicts the reading with a spread; readings are drawn from the
+mixture and the first probability that each would leave is averaged (preposterior analysis; Lindley 1956).
 """
 
 from __future__ import annotations
@@ -110,8 +109,7 @@ def _vector(model: Model, view: View, states: Array, period_only: bool) -> Array
 
 
 def _noise(size: int) -> Array:
-    """Typical spread of what a second capture gives: 5e-4 in ln T, 0.1 % share, 1 % of the swing, 2 %
-    bend."""
+    """Typical spread of what a second capture gives: 5e-4 in ln T, 0.1 % share, 1 % of the swing, 2 % bend."""
     typical = [5e-4, 1e-3, 1e-3, 0.01, 0.01, 0.02, 0.02]
     return np.diag(np.square(typical[:size] if size == 1 else (typical + [0.02] * size)[:size]))
 

@@ -1,5 +1,4 @@
-"""Least squares in lmfit: the likeliest hypothesis' parts, with every tolerance, reading and nuisance as a
-prior."""
+"""Least squares in lmfit: the likeliest hypothesis' parts, with every tolerance, reading and nuisance as a prior."""
 
 from __future__ import annotations
 
@@ -67,9 +66,8 @@ class _Problem:
 def refine(model: Model, first: Weighed) -> Weighed:
     """Mode and covariance of a hypothesis by least squares, its freed parts without a prior.
 
-    The posterior from the grid is kept where the two disagree (a one-sided parasitic has no Gaussian mode),
-    and
-    where lmfit gives no covariance.
+    The posterior from the grid is kept where the two disagree (a one-sided parasitic has no Gaussian mode), and where
+    lmfit gives no covariance.
     """
     import lmfit
 

@@ -1,5 +1,4 @@
-"""What to change: standard values (IEC 60063) that bring the build onto its target, and what it should then
-do."""
+"""What to change: standard values (IEC 60063) that bring the build onto its target, and what it should then do."""
 
 from __future__ import annotations
 
@@ -81,8 +80,7 @@ def _nearest(model: Model, i: int, wanted: float) -> tuple[float, str]:
 
 
 def _solve(model: Model, averaged: Averaged, i: int, goal: float, extra: Mapping[int, float]) -> float | None:
-    """ln of the part that brings the mean frequency onto the goal, by a fine scan and linear
-    interpolation."""
+    """ln of the part that brings the mean frequency onto the goal, by a fine scan and linear interpolation."""
     view = model.views[0].without_probe()
     grid = np.linspace(-2.5, 2.5, 201) + averaged.live[0].mean[i]
     mixed = np.zeros(grid.size)

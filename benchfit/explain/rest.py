@@ -1,8 +1,7 @@
 """A build that does not oscillate: which cause parks the node where it was seen, and what would make it run.
 
-Here a hypothesis predicts a resting voltage, not a cycle, and half of its prior may oscillate after all. So
-evidence is
-an average over draws from the prior (simple Monte Carlo), with the freed part on a grid.
+Here a hypothesis predicts a resting voltage, not a cycle, and half of its prior may oscillate after all. So evidence
+is an average over draws from the prior (simple Monte Carlo), with the freed part on a grid.
 """
 
 from __future__ import annotations
@@ -27,8 +26,7 @@ GRID = 41
 
 @dataclass(frozen=True)
 class RestFinding:
-    """Which condition fails in the likeliest build (its sentence), and the range of R in which it would
-    run."""
+    """Which condition fails in the likeliest build (its sentence), and the range of R in which it would run."""
 
     code: str
     says: str
@@ -194,8 +192,7 @@ def limits_of(model: Model, state: Array, part: str) -> str:
 
 
 def running_range(model: Model, state: Array, part: str) -> tuple[float | None, float | None, str] | None:
-    """(lowest, highest, unit) of one part for which every condition holds; None ends are beyond four
-    decades."""
+    """(lowest, highest, unit) of one part for which every condition holds; None ends are beyond four decades."""
     if part not in model.index:
         return None
     i = model.index[part]

@@ -11,8 +11,7 @@ from benchfit.errors import Remark
 
 @dataclass(frozen=True)
 class Quantity:
-    """A value with its standard uncertainty (k = 1) and unit; ``u_noise`` is the record's own share (type
-    A)."""
+    """A value with its standard uncertainty (k = 1) and unit; ``u_noise`` is the record's own share (type A)."""
 
     value: float
     u: float | None
@@ -24,8 +23,8 @@ class Quantity:
 class PartFound:
     """A part as the build turns out to have it.
 
-    ``nominal`` and ``limits`` as the sheet states them (None for an absent parasitic); ``deviation`` =
-    value/nominal − 1; ``within``: inside its limits; ``known_from``: "capture", "reading" or "build sheet".
+    ``nominal`` and ``limits`` as the sheet states them (None for an absent parasitic); ``deviation`` = value/nominal
+    − 1; ``within``: inside its limits; ``known_from``: "capture", "reading" or "build sheet".
     """
 
     name: str

@@ -1,5 +1,5 @@
-"""Suspects as a bench hears them: probabilities that share between look-alikes, what is settled, what is
-ruled out."""
+"""Suspects as a bench hears them: probabilities that share between look-alikes, what is settled, what is ruled
+out."""
 
 from __future__ import annotations
 
@@ -101,9 +101,8 @@ def lookalikes(w: Weighed, weighed: Sequence[Weighed]) -> list[Weighed]:
 def settled(model: Model, weighed: Sequence[Weighed]) -> bool:
     """Whether the first is at 0.9, by its prior odds and with equal prior odds among its look-alikes.
 
-    A look-alike of "nothing off" counts only where it would matter: a parasitic too small to move the
-    frequency by
-    3 % is as good as none.
+    A look-alike of "nothing off" counts only where it would matter: a parasitic too small to move the frequency by 3
+    % is as good as none.
     """
     first = weighed[0]
     if first.probability < SURE:

@@ -21,8 +21,7 @@ from benchfit.explain.result import PartFound, Quantity, Rest, Turn
 from benchfit.sheet.model import Sheet
 
 TIGHT = 0.25
-"""An estimate is tight enough when its U is at most this share of the limit (common practice: four to
-one)."""
+"""An estimate is tight enough when its U is at most this share of the limit (common practice: four to one)."""
 
 USUAL_LIMIT = 0.01
 """Limit that is taken where the target states none (ours)."""

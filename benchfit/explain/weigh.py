@@ -1,5 +1,4 @@
-"""Weigh every hypothesis against the data: evidence of single causes on grids, of pairs by Laplace's
-method."""
+"""Weigh every hypothesis against the data: evidence of single causes on grids, of pairs by Laplace's method."""
 
 from __future__ import annotations
 
@@ -120,9 +119,8 @@ def weigh(model: Model, pairs: bool = False) -> list[Weighed]:
 
 
 def _explains(model: Model, found: Sequence[Weighed]) -> bool:
-    """Whether one of the live hypotheses fits the record as well as its noise and floors allow, with every
-    part
-    that it holds within its limits."""
+    """Whether one of the live hypotheses fits the record as well as its noise and floors allow, with every part that
+    it holds within its limits."""
     live = [w for w in found[:4] if w.probability > 0.02]
     best = min((w.misfit for w in live), default=np.inf)
     size = sum(not o.name.endswith("_jump") for o in model.observations)
@@ -130,8 +128,7 @@ def _explains(model: Model, found: Sequence[Weighed]) -> bool:
 
 
 def _strain(model: Model, w: Weighed) -> float:
-    """How far, in its prior's standard deviations, the most stretched of the held parts lies from its
-    middle."""
+    """How far, in its prior's standard deviations, the most stretched of the held parts lies from its middle."""
     away = np.abs(w.mode - model.center) / np.where(model.spread > 0, model.spread, np.inf)
     held = [i for i, p in enumerate(model.parameters) if p.part is not None and p.name not in w.causes]
     return float(np.max(away[held], initial=0.0))
