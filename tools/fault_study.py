@@ -38,6 +38,7 @@ from tools.bench.score import Outcome, report, score  # noqa: E402
 
 # Raise it whenever the draws or the judgement change: what is in the cache is of no use then.
 JUDGEMENT = 3
+SKIP = "skip"
 
 Task = tuple[str, int, str, bool, str | None, str | None]
 
@@ -100,7 +101,7 @@ def tasks(options: argparse.Namespace) -> list[Task]:
     named = {"five": list(FIVE), "all": list(DESIGNS)}
     circuits = named.get(options.circuits) or options.circuits.split(",")
     kind = None if options.kind == "any" else options.kind
-    cache = "skip" if options.quick else None if options.cache == "none" else options.cache
+    cache = SKIP if options.quick else None if options.cache == "none" else options.cache
     return [
         (
             circuits[i % len(circuits)],
