@@ -358,6 +358,7 @@ def start_process(scope: LoopbackScope, *words: object) -> subprocess.Popen[str]
     )
 
 
+@pytest.mark.long
 @pytest.mark.skipif(os.name == "nt", reason="Windows has no SIGINT to send to one process")
 def test_interrupted_it_keeps_what_it_learned(bench: Callable[..., LoopbackScope]) -> None:
     """The real thing: a process of its own explains, Ctrl-C goes to the whole group as from a terminal."""
