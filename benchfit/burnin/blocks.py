@@ -35,6 +35,8 @@ class Blocks:
         Scatter of single records within blocks or between neighbours; 0 where they are all alike.
     left_out : int
         Records far off their neighbours (more than 6 robust standard deviations), left out of the means.
+    place : ndarray of int, shape (n,)
+        Between which borders each block lies; blocks of two quantities at one place are of one time.
     """
 
     time: Array
@@ -43,6 +45,13 @@ class Blocks:
     mean: Array
     scatter: float
     left_out: int
+    place: NDArray[np.int64]
+
+    def at(self, places: NDArray[np.int64]) -> Blocks:
+        """The blocks at those places alone, which it must have."""
+        i = np.searchsorted(self.place, places)
+        time, width, count, mean = self.time[i], self.width[i], self.count[i], self.mean[i]
+        return Blocks(time, width, count, mean, self.scatter, self.left_out, places)
 
 
 def edges(time: Array) -> Array:
@@ -76,7 +85,8 @@ def block(time: Array, values: Array, borders: Array) -> Blocks:
     filled = np.flatnonzero(ends > starts)
     starts, ends = starts[filled], ends[filled]
     if not filled.size:
-        return Blocks(np.empty(0), np.empty(0), np.empty(0), np.empty(0), 0.0, 0)
+        none = np.empty(0)
+        return Blocks(none, none, none, none, 0.0, 0, filled)
     kept = np.add.reduceat(keep.astype(float), starts) if left_out else (ends - starts).astype(float)
     total = np.add.reduceat(np.where(keep, values, 0.0) if left_out else values, starts)
     full = kept > 0.5
@@ -84,7 +94,8 @@ def block(time: Array, values: Array, borders: Array) -> Blocks:
     count = (ends - starts)[full].astype(float)
     when = np.add.reduceat(time, starts)[full] / count
     scatter = _scatter(values[keep] if left_out else values)
-    return Blocks(when, _widths(time, starts, ends)[full], count, total[full] / kept[full], scatter, left_out)
+    width, mean = _widths(time, starts, ends)[full], total[full] / kept[full]
+    return Blocks(when, width, count, mean, scatter, left_out, filled[full])
 
 
 def _widths(time: Array, starts: NDArray[np.int64], ends: NDArray[np.int64]) -> Array:

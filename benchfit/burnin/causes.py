@@ -324,8 +324,11 @@ def _shared(build: Build, hypotheses: list[_Hypothesis], ln_f: Array, found: Fin
         change, unit = _own_change(build, middle, j, moved[j] / chance)
         either = tuple(build.names[k] for k in live if k != j and {j, k} <= rivals)
         u = math.sqrt(max(square[j] - mean[j] ** 2, 0.0))
-        causes.append(Cause(build.names[j], mean[j], u, mean[j] * found.frequency, change, unit, either))
-    return Blamed(tuple(causes), 1 - float(sum(c.share for c in causes)))
+        share = float(mean[j])
+        causes.append(Cause(build.names[j], share, u, share * found.frequency, change, unit, either))
+    if not causes:
+        return Blamed(why="no part's drift, nor any pair's, explains what was measured")
+    return Blamed(tuple(causes), 1 - sum(c.share for c in causes))
 
 
 def _own_change(build: Build, middle: Array, part: int, amplitude: float) -> tuple[float, str]:

@@ -325,9 +325,7 @@ def _moment(weight: Array, mean: Array, variance: Array, n: int) -> tuple[float,
     nu = max(n - 2, 1)
     factor = nu / (nu - 2) if nu > 2 else 3.0
     center = float((weight * mean).sum())
-    spread = float(
-        (weight * (factor * np.where(np.isfinite(variance), variance, 0.0) + (mean - center) ** 2)).sum()
-    )
+    spread = float((weight * (factor * np.where(np.isfinite(variance), variance, 0.0) + (mean - center) ** 2)).sum())
     return center, math.sqrt(max(spread, 0.0))
 
 

@@ -208,11 +208,7 @@ class LogWriter:
         if row is None or row[1] == identity.sheet_hash:
             return
         if not row[0] or not identity.sheet:
-            how = (
-                "without a build sheet"
-                if not row[0]
-                else "with a build sheet (give the same one with --build)"
-            )
+            how = "without a build sheet" if not row[0] else "with a build sheet (give the same one with --build)"
             raise SheetError(f"{self.path}: this log was begun {how}; go on likewise, or start a new log.")
         raise SheetError(
             f"{self.path}: the build sheet is not the one that this log was begun with: "
@@ -280,8 +276,7 @@ class LogWriter:
     def _insert_alarm(self, seq: int, unit: int, alarm: Raised | Cleared) -> None:
         if isinstance(alarm, Raised):
             self._db.execute(
-                "INSERT INTO alarm (seq, unit, quantity, value, low, high, text) "
-                "VALUES (?, ?, ?, ?, ?, ?, ?)",
+                "INSERT INTO alarm (seq, unit, quantity, value, low, high, text) VALUES (?, ?, ?, ?, ?, ?, ?)",
                 (seq, unit, alarm.quantity, alarm.value, alarm.low, alarm.high, alarm.text),
             )
         else:
@@ -368,8 +363,7 @@ def _failing(path: Path) -> Iterator[None]:
         else:
             says = f"the log cannot be written: {fault}"
         raise LogError(
-            f"{path}: {says}. Everything up to the last printed record is kept; the same command goes on "
-            "from there.",
+            f"{path}: {says}. Everything up to the last printed record is kept; the same command goes on from there.",
             path=str(path),
         ) from None
 

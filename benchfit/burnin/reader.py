@@ -89,8 +89,7 @@ class LogReader:
         """Every process that wrote, in order."""
         with self._reading() as db:
             rows = db.execute(
-                "SELECT id, started, steady, ended, how, holder, program, every, first_seq FROM session "
-                "ORDER BY id"
+                "SELECT id, started, steady, ended, how, holder, program, every, first_seq FROM session ORDER BY id"
             )
             return [Session(*row) for row in rows]
 
@@ -157,18 +156,14 @@ class LogReader:
         """
         with self._reading() as db:
             row = db.execute("SELECT capture FROM raw WHERE seq = ?", (seq,)).fetchone()
-            kept = (
-                [s for (s,) in db.execute("SELECT seq FROM raw ORDER BY seq LIMIT 6")] if row is None else []
-            )
+            kept = [s for (s,) in db.execute("SELECT seq FROM raw ORDER BY seq LIMIT 6")] if row is None else []
         if row is None:
             which = (
                 f"there are those of {', '.join(map(str, kept[:5]))}{' …' if len(kept) > 5 else ''}"
                 if kept
                 else "none is"
             )
-            raise LogError(
-                f"{self.path}: no raw capture was kept of record {seq}; {which}.", path=str(self.path)
-            )
+            raise LogError(f"{self.path}: no raw capture was kept of record {seq}; {which}.", path=str(self.path))
         try:
             return packing.unpack_capture(row[0])
         except (zlib.error, ValueError, KeyError) as fault:
@@ -186,8 +181,7 @@ class LogReader:
             values = np.full((len(listed), size), np.nan)
             sums = np.zeros((4, len(listed)))
             rows = db.execute(
-                "SELECT seq, session, status, acquired, steady, scalars, crc FROM record WHERE unit = ? "
-                "ORDER BY seq",
+                "SELECT seq, session, status, acquired, steady, scalars, crc FROM record WHERE unit = ? ORDER BY seq",
                 (key,),
             )
             at = 0
@@ -197,9 +191,7 @@ class LogReader:
         with np.errstate(invalid="ignore", divide="ignore"):
             u, noise = sums[0] / sums[1], sums[2] / sums[3]
         names, units, kinds = zip(*listed, strict=True) if listed else ((), (), ())
-        return Series(
-            unit, names, units, kinds, stamps[0], stamps[1], times[0], times[1], stamps[2], values, u, noise
-        )
+        return Series(unit, names, units, kinds, stamps[0], stamps[1], times[0], times[1], stamps[2], values, u, noise)
 
     def quantities(self) -> list[str]:
         """The names of all quantities that any record has."""
@@ -314,9 +306,7 @@ def _open(path: Path) -> tuple[sqlite3.Connection, str | None]:
     mode = "ro" if path.with_name(path.name + "-wal").exists() else "rw"
     for how in (f"mode={mode}", "mode=ro"):
         try:
-            db = sqlite3.connect(
-                f"{path.absolute().as_uri()}?{how}", uri=True, isolation_level=None, timeout=10
-            )
+            db = sqlite3.connect(f"{path.absolute().as_uri()}?{how}", uri=True, isolation_level=None, timeout=10)
             db.execute("PRAGMA query_only = 1")
             db.execute("SELECT count(*) FROM sqlite_master").fetchone()
             return db, None

@@ -106,11 +106,7 @@ def inspect(path: Path) -> None:
             path=where,
         )
     if found != version():
-        cure = (
-            "benchfit trend --upgrade NEWFILE copies it"
-            if found < version()
-            else "use the program that wrote it"
-        )
+        cure = "benchfit trend --upgrade NEWFILE copies it" if found < version() else "use the program that wrote it"
         raise LogError(
             f"{where}: the log has version {found} and this program works on version {version()}; it is left "
             f"as it is ({cure}).",
@@ -124,8 +120,7 @@ def inspect(path: Path) -> None:
 def damaged(path: Path, how: object) -> LogError:
     """The error for a log whose inside is broken."""
     return LogError(
-        f"{path}: the log is damaged ({how}); it is left as it is. Take a backup copy of it, or start a new "
-        "log.",
+        f"{path}: the log is damaged ({how}); it is left as it is. Take a backup copy of it, or start a new log.",
         path=str(path),
     )
 

@@ -52,19 +52,14 @@ def departures(quantity: str, series: Mapping[str, tuple[Array, Array]]) -> list
     return _compared(quantity, list(series), level, relative, counts, when)
 
 
-def _table(
-    series: Mapping[str, tuple[Array, Array]], borders: Array, zero: float
-) -> tuple[Array, Array, Array]:
+def _table(series: Mapping[str, tuple[Array, Array]], borders: Array, zero: float) -> tuple[Array, Array, Array]:
     """Block means of all units on common borders (units, blocks), NaN where empty; counts; mean times."""
     size = borders.size - 1
     table, counts, times = (np.full((len(series), size), np.nan) for _ in range(3))
     for row, (t, values) in enumerate(series.values()):
         known = np.isfinite(values)
-        where = np.searchsorted(borders[1:-1], t[known] - zero, side="right")
         found = block(t[known] - zero, values[known], borders)
-        full = np.unique(where)
-        if found.mean.size != full.size:  # a block all of whose records are stray
-            full = np.searchsorted(borders[1:-1], found.time, side="right")
+        full = found.place
         table[row, full], counts[row, full], times[row, full] = found.mean, found.count, found.time
     with np.errstate(invalid="ignore"):
         return table, counts, times.mean(axis=0)
@@ -81,15 +76,13 @@ def _compared(
         y = relative[i] - np.median(relative[others], axis=0)
         # The median of n siblings adds about 1/n of one unit's variance to the difference.
         weight = counts[i] / (1 + 1.25 / len(others))
-        blocks = Blocks(when - when[0], np.zeros(when.size), weight, y, 0.0, 0)
+        blocks = Blocks(when - when[0], np.zeros(when.size), weight, y, 0.0, 0, np.arange(when.size))
         found.append(drift.analyse(drift.basis(blocks, span), y))
         distance.append(level[i] / float(np.median(level[others])) - 1)
     return [_departure(quantity, names, i, found, np.array(distance)) for i in range(len(names))]
 
 
-def _departure(
-    quantity: str, names: list[str], i: int, found: list[drift.Drift], distance: Array
-) -> Departure:
+def _departure(quantity: str, names: list[str], i: int, found: list[drift.Drift], distance: Array) -> Departure:
     own = found[i]
     others = [j for j in range(len(names)) if j != i]
     spread = _spread(np.array([found[j].change for j in others]))

@@ -62,9 +62,7 @@ def trend(
         run = log.run()
         names = log.units()
         if unit is not None and unit not in names:
-            raise UsageError(
-                f"{path}: there is no unit {unit}; there is {', '.join(n or '(unnamed)' for n in names)}"
-            )
+            raise UsageError(f"{path}: there is no unit {unit}; there is {', '.join(n or '(unnamed)' for n in names)}")
         chosen = [unit] if unit is not None else names
         model = _build(log, run.sheet, build_of)
         alarms = [_seen(alarm) for alarm in log.alarms() if alarm.unit in chosen]
@@ -101,9 +99,7 @@ def trend(
 # --- one unit -------------------------------------------------------------------------------------
 
 
-def unit_trend(
-    series: Series, time: Array, bounds: Mapping[str, Limit], model: causes.Build | str | None
-) -> UnitTrend:
+def unit_trend(series: Series, time: Array, bounds: Mapping[str, Limit], model: causes.Build | str | None) -> UnitTrend:
     """What one unit's records say.
 
     Parameters
@@ -206,9 +202,7 @@ def _quantity(
     return _judged(plain, found, systematic, leaves), found
 
 
-def _judged(
-    plain: QuantityTrend, found: drift.Drift, systematic: float, leaves: Leaving | None
-) -> QuantityTrend:
+def _judged(plain: QuantityTrend, found: drift.Drift, systematic: float, leaves: Leaving | None) -> QuantityTrend:
     """The plain facts with the drift that was found."""
     ranked = sorted(((p, law) for law, p in found.probability.items() if law != found.law), reverse=True)
     has_parameter = found.law in ("settling", "logarithmic", "step")
@@ -246,9 +240,7 @@ def _frequency(
     leaves = None
     if limit is not None and limit[0] > 0:
         leaves = leaving(base, period, found, 1 / limit[1], 1 / limit[0])
-        leaves = replace(
-            leaves, low=limit[0], high=limit[1], limit=None if leaves.limit is None else 1 / leaves.limit
-        )
+        leaves = replace(leaves, low=limit[0], high=limit[1], limit=None if leaves.limit is None else 1 / leaves.limit)
     f = plain.mean
     at = {"none": f, "step": f}.get(found.law) or 1 / float(found.curve(np.array([base.span]))[0])
     change = -found.change * f**2
@@ -315,24 +307,24 @@ def _with_causes(unit: UnitTrend, bases: _Bases, model: causes.Build | str | Non
     if model is None or isinstance(model, str):
         return replace(unit, why_no_cause=model or "")
     own = bases.means["frequency"]
+    listed = [n for n in causes.quantities(list(unit.quantities)) if _covers(bases.means[n], own)]
+    common = own.place
+    for name in listed:
+        common = np.intersect1d(common, bases.means[name].place)
+    own = own.at(common)
     base = bases.basis(own)
-    listed = [n for n in causes.quantities(list(unit.quantities)) if _is_like(bases.means[n], own)]
     if base is None or not listed:
         return replace(unit, why_no_cause="too little was measured together with the frequency")
-    y = np.stack([bases.means[n].mean for n in listed])
+    y = np.stack([bases.means[n].at(common).mean for n in listed])
     seen = causes.fingerprint(base, listed, y, 1 / own.mean, bases.drifts["period of frequency"])
-    parts = {
-        n: q.mean
-        for n, q in unit.quantities.items()
-        if q.kind == "part" and q.records > 0.5 * frequency.records
-    }
+    parts = {n: q.mean for n, q in unit.quantities.items() if q.kind == "part" and q.records > 0.5 * frequency.records}
     blamed = causes.blame(model, seen, parts)
     return replace(unit, causes=blamed.causes, unexplained=blamed.unexplained, why_no_cause=blamed.why)
 
 
-def _is_like(one: Blocks, other: Blocks) -> bool:
-    """Known in (almost) all records of the other, block by block."""
-    return one.time.size == other.time.size and float(one.count.sum()) > 0.9 * float(other.count.sum())
+def _covers(one: Blocks, other: Blocks, enough: float = 0.7) -> bool:
+    """Known in most of the other's records and blocks."""
+    return one.place.size >= enough * other.place.size and one.count.sum() >= enough * other.count.sum()
 
 
 # --- limits and alarms ----------------------------------------------------------------------------
