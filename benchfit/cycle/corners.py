@@ -20,17 +20,33 @@ _TESTED = 300
 
 
 @dataclass(frozen=True, eq=False)
+class Guards:
+    """Samples left out at the start and at the end of the falling (False) and of the rising (True) phases."""
+
+    left_out: dict[bool, tuple[int, int]]
+    rings: bool = False
+
+    @property
+    def needed(self) -> bool:
+        """Whether any are."""
+        return any(a or b for a, b in self.left_out.values())
+
+
+_NONE = Guards({True: (0, 0), False: (0, 0)})
+
+
+@dataclass(frozen=True, eq=False)
 class Met:
     """Fitted phases, the turns between them, and the samples left out at the start and the end of each kind."""
 
     fitted: Fitted
     index: Array
     top: Mask
-    guards: dict[bool, tuple[int, int]]
+    guards: Guards = _NONE
 
     def rounded(self, top: bool) -> bool:
         """Whether samples were left out about the upper (or lower) turns."""
-        return self.guards[top][1] > 0 or self.guards[not top][0] > 0
+        return self.guards.left_out[top][1] > 0 or self.guards.left_out[not top][0] > 0
 
 
 def fit_corners(trace: Trace, turns: Turns) -> Met | None:
@@ -52,7 +68,7 @@ def fit_corners(trace: Trace, turns: Turns) -> Met | None:
         layout = extend_ends(fitted, layout, trace, index, turns.top)
         layout = own_samples(fitted, layout, trace, trace.noise)
         fitted = fit_phases(trace, layout, begin=fitted)
-    return Met(fitted, index, turns.top, {True: (0, 0), False: (0, 0)}) if len(fitted.fits) == 2 else None
+    return Met(fitted, index, turns.top) if len(fitted.fits) == 2 else None
 
 
 def steadied(fitted: Fitted, index: Array, top: Mask) -> Array:
@@ -92,25 +108,29 @@ def _turn_variance(fitted: Fitted, index: Array) -> Array:
 
 def guard_corners(trace: Trace, met: Met) -> Met:
     """Leave samples out about the turns where, and only where, the residuals there ask for it."""
-    whole = _some(met.fitted.layout)
+    guards = turn_guards(trace, met.fitted)
+    return _refit(trace, met, guards) if guards.needed else met
+
+
+def turn_guards(trace: Trace, fitted: Fitted) -> Guards:
+    """Samples to leave out at the start and at the end of each kind of phase: 0 where its curve holds throughout."""
+    whole = _some(fitted.layout)
     guards = {True: (0, 0), False: (0, 0)}
-    open_kinds = {True, False}
+    open_kinds, rings = {True, False}, False
     for zone in _ZONES:
-        inner = fit_phases(
-            trace, guarded(whole, *(2 * [np.maximum(zone * whole.length, 1)])), begin=met.fitted
-        )
+        depth = np.maximum(zone * whole.length, 1)
+        inner = fit_phases(trace, guarded(whole, depth, depth), begin=fitted)
         for kind in sorted(open_kinds):
             if kind not in inner.fits:
                 continue
-            before, after, through = end_guards(trace, inner, whole, kind, zone)
-            if not through:
-                guards[kind] = (before, after)
+            ends = end_guards(trace, inner, whole, kind, zone)
+            if not ends.through:
+                guards[kind] = (ends.before, ends.after)
+                rings |= ends.rings
                 open_kinds.discard(kind)
         if not open_kinds:
             break
-    if not any(a or b for a, b in guards.values()):
-        return met
-    return _refit(trace, met, guards)
+    return Guards(guards, rings)
 
 
 def _some(layout: Layout) -> Layout:
@@ -121,12 +141,12 @@ def _some(layout: Layout) -> Layout:
     return Layout(layout.first[mine], layout.stop[mine], layout.rising[mine], layout.whole[mine])
 
 
-def _refit(trace: Trace, met: Met, guards: dict[bool, tuple[int, int]]) -> Met:
+def _refit(trace: Trace, met: Met, guards: Guards) -> Met:
     fitted, index = met.fitted, met.index
     for _ in range(2):
         layout = layout_from(index, met.top, fitted.layout.first[0], fitted.layout.stop[-1])
-        before = np.where(layout.rising, guards[True][0], guards[False][0])
-        after = np.where(layout.rising, guards[True][1], guards[False][1])
+        before = np.where(layout.rising, guards.left_out[True][0], guards.left_out[False][0])
+        after = np.where(layout.rising, guards.left_out[True][1], guards.left_out[False][1])
         before[0] = after[-1] = 0
         fitted = fit_phases(trace, guarded(layout, before, after), begin=fitted)
         found = meet(fitted, index)
@@ -175,7 +195,7 @@ def extreme(trace: Trace, met: Met, corner: Corners, top: bool, noise: float) ->
     mine = np.flatnonzero(corner.top == top)
     if mine.size > _TESTED:
         mine = mine[np.linspace(0, mine.size - 1, _TESTED).astype(int)]
-    reach = int(1.5 * max(met.guards[top][1], met.guards[not top][0])) + 3
+    reach = int(1.5 * max(met.guards.left_out[top][1], met.guards.left_out[not top][0])) + 3
     offsets = np.arange(-reach, reach + 1)
     index = np.round(corner.index[mine]).astype(np.int64)[:, None] + offsets
     inside = ((index >= 0) & (index < trace.size)).all(axis=1)

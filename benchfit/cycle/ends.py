@@ -7,10 +7,11 @@ import numpy as np
 from benchfit.cycle.arrays import Array, Mask
 from benchfit.cycle.phases import Corners, Fitted, Layout
 from benchfit.cycle.trace import Trace
-from benchfit.cycle.turns import Turns, block_means
+from benchfit.cycle.turns import Turns, block_means, running_median
 from benchfit.errors import Remark
 
 _BLOCKS = 100
+_CALM = 7
 
 
 def with_ends(trace: Trace, turns: Turns) -> Turns:
@@ -24,8 +25,8 @@ def with_ends(trace: Trace, turns: Turns) -> Turns:
         float(abs(np.median(heights[top]) - np.median(heights[~top]))) if top.any() and (~top).any() else 0.0
     )
     margin = max(6.0 * noise, 0.05 * swing)
-    head = values[: int(inside[0])] * (-1.0 if top[0] else 1.0)
-    tail = values[int(np.ceil(inside[-1])) + 1 :] * (-1.0 if top[-1] else 1.0)
+    head = running_median(values[: int(inside[0])], _CALM) * (-1.0 if top[0] else 1.0)
+    tail = running_median(values[int(np.ceil(inside[-1])) + 1 :], _CALM) * (-1.0 if top[-1] else 1.0)
     if head.size > 2 and head.max() - head[0] > margin:
         index = np.concatenate([[(int(head.argmax()) + 0.5) * turns.block - 0.5], index])
         top = np.concatenate([[not top[0]], top])
@@ -95,6 +96,8 @@ def follows(
     limit = 5.0 * trace.noise / np.sqrt(end - begin) + 0.01 * swing
     good = np.abs(means - curve) < limit
     run = count if good.all() else int(np.argmin(good))
+    # Where the curve is left, the last block or two that passed may be past the place already.
+    run = run if run == count else run - 2
     gone = abs(float(curve[max(run - 1, 0)] - curve[0]))
     return int(cuts[run]) if run >= 2 and gone >= (max(least * swing, 6.0 * trace.noise) if least else 0.0) else at
 

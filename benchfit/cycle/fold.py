@@ -107,7 +107,7 @@ def _pass(
     levels, information, coupling, seen = [], [], [], []
     rss = points = 0.0
     normal, gradient = np.zeros((2, 2)), np.zeros(2)
-    for part in _chunks(np.minimum(stop - first, bins)):
+    for part in chunks(np.minimum(stop - first, bins)):
         b = gather(trace, first[part], stop[part], middle[part], bins)
         here, cycle = np.unique(b.cycle, return_inverse=True)
         fitted = fit_levels(model, b.t, b.v, cycle, b.n, b.spread)
@@ -129,7 +129,8 @@ def _pass(
     return fit, np.concatenate(seen), step
 
 
-def _chunks(points: Index) -> list[slice]:
+def chunks(points: Index) -> list[slice]:
+    """Slices of phases that hold a bounded number of points each."""
     total = np.cumsum(points)
     cuts = np.searchsorted(total, np.arange(_CHUNK, int(total[-1]), _CHUNK))
     edges = np.unique(np.concatenate([[0], cuts, [points.size]]))

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from benchfit.cycle.arrays import Array
+from benchfit.cycle.arrays import Array, Mask
 from benchfit.cycle.closure import close_cycle, constants_of
 from benchfit.cycle.conditions import irregularities
 from benchfit.cycle.constants import PhaseFit
@@ -20,6 +20,7 @@ from benchfit.cycle.phases import Corners, Fitted
 from benchfit.cycle.residuals import Profile, body_profile, poor_fit
 from benchfit.cycle.scatter import correlation, mean_scatter, student
 from benchfit.cycle.sequence import Sequence, closed, put_in_order
+from benchfit.cycle.spikes import without_spikes
 from benchfit.cycle.stepping import steps_instead
 from benchfit.cycle.trace import Trace
 from benchfit.cycle.turns import Turns
@@ -40,6 +41,7 @@ class _View:
     order: Sequence
     profiles: dict[bool, Profile]
     variance: dict[bool, float]
+    spikes: int = 0
 
     @property
     def fitted(self) -> Fitted:
@@ -51,9 +53,10 @@ def observe_meeting(trace: Trace, turns: Turns) -> Observed | None:
     met = fit_corners(trace, with_ends(trace, turns))
     if met is None:
         return None
+    trace, met, spikes = without_spikes(trace, met)
     plain = met
     met = guard_corners(trace, met)
-    if any(any(g) for g in met.guards.values()) and (stepped := steps_instead(trace, plain)) is not None:
+    if met.guards.needed and (stepped := steps_instead(trace, plain)) is not None:
         return stepped
     corner = corners(met.fitted, met.index)
     if (
@@ -63,7 +66,7 @@ def observe_meeting(trace: Trace, turns: Turns) -> Observed | None:
         return None
     profiles = {k: p for k in met.fitted.fits if (p := body_profile(trace, met.fitted, k)) is not None}
     order = put_in_order(corner.index, ~corner.top)
-    return _constants(_View(trace, met, corner, order, profiles, _variances(met.fitted, profiles)))
+    return _constants(_View(trace, met, corner, order, profiles, _variances(met.fitted, profiles), spikes))
 
 
 def noise_variance(fitted: Fitted) -> float:
@@ -131,7 +134,14 @@ def _sample_noise(view: _View) -> float:
 
 def _irregular(view: _View) -> tuple[Remark, ...]:
     node = view.trace.node
-    return tuple(irregularities(node, view.order) + started(view.trace, view.fitted, view.corner))
+    remarks = irregularities(node, view.order) + started(view.trace, view.fitted, view.corner)
+    if view.spikes:
+        remarks.append(Remark("glitches", f"{node}: {view.spikes} samples stand out as spikes; they are left out"))
+    if view.met.guards.rings:
+        longest = max(max(g) for g in view.met.guards.left_out.values()) * view.trace.interval
+        says = f"{node} rings after its turns: up to {longest:.2g} s are left out of the fit; use a shorter ground lead"
+        remarks.append(Remark("ringing", says))
+    return tuple(remarks)
 
 
 def _level_weights(view: _View, top: bool) -> Array:

@@ -153,21 +153,32 @@ def poor_fit(profiles: dict[bool, Profile], swing: float) -> tuple[Remark, ...]:
     return (Remark("poor-fit", "; ".join(says)),) if says else ()
 
 
-def end_guards(
-    trace: Trace, fitted: Fitted, layout: Layout, kind: bool, zone: float
-) -> tuple[int, int, bool]:
+@dataclass(frozen=True)
+class Ends:
     """Samples at the start and at the end of a kind's phases that do not follow the exponential between them.
 
+    ``through``: the departure does not stop within the zone looked at, so that it is no matter of the ends;
+    ``rings``: it goes to both sides.
+    """
+
+    before: int
+    after: int
+    through: bool
+    rings: bool
+
+
+def end_guards(trace: Trace, fitted: Fitted, layout: Layout, kind: bool, zone: float) -> Ends:
+    """What departs from the exponential at the ends of a kind's phases.
+
     ``fitted`` is a fit that left a share ``zone`` of each phase out at both ends; ``layout`` has the whole phases.
-    The third value says that the departure does not stop within the zone: it is no matter of the ends.
     """
     mine = np.flatnonzero((layout.rising == kind) & fitted.sound & layout.whole & (layout.length >= 8))
     if mine.size == 0:
-        return 0, 0, False
+        return Ends(0, 0, False, False)
     if mine.size > _PHASES:
         mine = mine[np.linspace(0, mine.size - 1, _PHASES).astype(int)]
     depth = np.maximum((zone * layout.length[mine]).astype(np.int64), 1)
-    guards, through = [], False
+    guards, through, rings = [], False, False
     for at_start in (True, False):
         first = layout.first[mine] if at_start else layout.stop[mine] - depth
         stop = first + depth
@@ -175,16 +186,19 @@ def end_guards(
         origin = layout.first[mine] if at_start else layout.stop[mine] - 1
         index = fitted.middle[mine][bins.cycle] + bins.t / trace.interval
         distance = np.abs(index - origin[bins.cycle])
-        guard, deep = _reach(fitted, mine, bins, index, distance, int(depth.min()))
+        guard, deep, both = _reach(fitted, mine, bins, index, distance, int(depth.min()))
         guards.append(guard)
         through |= deep
-    return guards[0], guards[1], through
+        rings |= both
+    return Ends(guards[0], guards[1], through, rings)
 
 
 def _reach(
     fitted: Fitted, mine: Index, bins: Bins, index: Array, distance: Array, depth: int
-) -> tuple[int, bool]:
-    """How far from the turn the residuals are more than noise and the fit's own error."""
+) -> tuple[int, bool, bool]:
+    """How far from the turn the residuals are more than noise and the fit's own error, whether to the zone's end,
+    and whether to both sides.
+    """
     edges = np.unique(np.concatenate([[0], np.geomspace(1, max(depth, 2), 12).astype(int)]))
     place = np.clip(np.searchsorted(edges, distance + 0.5, side="right") - 1, 0, edges.size - 2)
     curve, _ = fitted.values_at(mine[bins.cycle], index)
@@ -203,7 +217,10 @@ def _reach(
     )
     clear = np.abs(mean) > _CLEAR * np.sqrt(variance)
     if not clear.any():
-        return 0, False
+        return 0, False, False
     last = int(np.flatnonzero(clear)[-1])
-    reach = int(np.ceil(1.25 * edges[held[last] + 1])) + 1
-    return reach, last == held.size - 1 and held.size > 1 and bool(clear[-2:].all())
+    # What dies out goes on below what can be told from noise.
+    reach = int(np.ceil(1.7 * edges[held[last] + 1])) + 2
+    both = bool(np.any(mean[clear] > 0) and np.any(mean[clear] < 0))
+    deep = bool(last == held.size - 1 and held.size > 1 and clear[-2:].all())
+    return reach, deep, both

@@ -9,6 +9,7 @@ import numpy as np
 from benchfit.cycle.arrays import Array, Index, Mask
 
 _GLITCH = 0.25
+_INSTANT = 0.05
 _LONG = 1.5
 _SHORT = 0.6
 
@@ -38,6 +39,15 @@ class Sequence:
     missing: int
     doubled: int
 
+    @property
+    def disturbance(self) -> int:
+        """How many glitches and irregular intervals there are."""
+        return self.glitches + self.missing + self.doubled + int(self.leading < 1.0)
+
+    @property
+    def disturbed(self) -> bool:
+        return self.disturbance > 0
+
 
 def put_in_order(at: Array, up: Mask) -> Sequence:
     """Tell regular from irregular intervals by their likes' median.
@@ -54,18 +64,22 @@ def put_in_order(at: Array, up: Mask) -> Sequence:
     while keep.size >= 6:
         gap = np.diff(at[keep])
         like = _like(gap, up[keep][:-1])
-        # A glitch splits one interval into three: the middle one short, all three together as long as one.
+        # A glitch splits one interval into three: the middle one short, all three together as long as one; several
+        # split it into more, and then its shortness alone must do.
         whole = gap[:-2] + gap[1:-1] + gap[2:]
-        hit = (gap[1:-1] < _GLITCH * like[1:-1]) & (np.abs(whole / like[:-2] - 1.0) < 0.35)
-        if not hit.any():
-            break
-        i = int(np.flatnonzero(hit)[0])
-        # All that do not touch each other at once.
+        inner = gap[1:-1] / like[1:-1]
+        hit = (inner < _INSTANT) | ((inner < _GLITCH) & (np.abs(whole / like[:-2] - 1.0) < 0.35))
         places = np.flatnonzero(hit)
-        places = places[np.concatenate([[True], np.diff(places) > 2])] if places.size > 1 else np.array([i])
-        drop = np.concatenate([places + 1, places + 2])
-        keep = np.delete(keep, drop)
-        glitches += places.size
+        if places.size == 0:
+            break
+        # All that do not touch each other at once.
+        apart = [places[0]]
+        for p in places[1:]:
+            if p - apart[-1] > 2:
+                apart.append(p)
+        drop = np.array(apart)
+        keep = np.delete(keep, np.concatenate([drop + 1, drop + 2]))
+        glitches += drop.size
     gap = np.diff(at[keep])
     if gap.size < 3:
         return Sequence(keep, np.zeros(gap.size, dtype=bool), glitches, 1.0, 0, 0)

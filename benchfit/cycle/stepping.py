@@ -8,7 +8,7 @@ import numpy as np
 
 from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.constants import PhaseFit
-from benchfit.cycle.corners import Met
+from benchfit.cycle.corners import Met, turn_guards
 from benchfit.cycle.ends import with_ends
 from benchfit.cycle.gaps import Threshold, censored_mean
 from benchfit.cycle.joints import Joints, clear_of, split
@@ -57,8 +57,9 @@ def observe_steps(trace: Trace, passages: Crossings) -> Observed | None:
 def steps_instead(trace: Trace, met: Met) -> Observed | None:
     """The constants with a step at every turn, where that explains the samples far better than corners do.
 
-    Resistance in the capacitor's leg makes such steps. They must go inwards at both turns, and the sum of squares
-    must fall by more than the freedom to choose the turns takes anyway.
+    Resistance in the capacitor's leg makes such steps. They must go inwards at both turns, the sum of squares
+    must fall by more than the freedom to choose the turns takes anyway, and nothing may be left about the
+    turns, as ringing leaves it.
     """
     found = fit_steps(trace, met.index, met.top, None)
     if found is None or len(found.fitted.fits) < 2:
@@ -67,6 +68,8 @@ def steps_instead(trace: Trace, met: Met) -> Observed | None:
     new = sum(f.rss for f in found.fitted.fits.values())
     sigma2 = new / max(sum(f.freedom for f in found.fitted.fits.values()), 1)
     if old - new < sigma2 * (30.0 + 9.0 * met.index.size):
+        return None
+    if turn_guards(trace, found.fitted).needed:
         return None
     seen = constants(trace, found)
     if seen is None or "charge_start" not in seen.names:

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
+from benchfit.cycle.arrays import Array
 from benchfit.cycle.edges import Edges
 from benchfit.cycle.meeting import observe_meeting
 from benchfit.cycle.observed import Observed
@@ -12,7 +15,7 @@ from benchfit.cycle.ramps import fast_direction, fit_ramps, observe_ramps
 from benchfit.cycle.sequence import put_in_order, regular
 from benchfit.cycle.stepping import observe_held, observe_steps
 from benchfit.cycle.trace import Trace
-from benchfit.cycle.turns import Turns, crossings, find_band, find_turns
+from benchfit.cycle.turns import Band, Crossings, Turns, crossings, find_band, find_turns, running_median
 
 
 def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed | None:
@@ -23,15 +26,10 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
     band = find_band(trace)
     if band is None:
         return None
-    passages = crossings(trace.values, *band.limits)
-    if passages.size < 2:
+    found_passages = _passages(trace, band)
+    if found_passages is None:
         return None
-    at = (passages.before + passages.after) / 2.0
-    if band.half < 4.5 * trace.noise and not regular(at, passages.rising):
-        return None
-    passages = passages.take(put_in_order(at, passages.rising).keep)
-    if passages.size < 2:
-        return None
+    calm, passages = found_passages
     shape = trace.assignment.shape
     if shape == "jumping" and (stepped := observe_steps(trace, passages)) is not None:
         return stepped
@@ -42,8 +40,35 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
         found = fit_ramps(trace, passages, fast)
         if found is not None and not found.resolved:
             return observe_ramps(trace, found)
-    turns = find_turns(trace, passages)
+    turns = find_turns(calm, passages)
     return observe_meeting(trace, from_edges(turns, output.edges) if output is not None else turns)
+
+
+def _passages(trace: Trace, band: Band) -> tuple[Trace, Crossings] | None:
+    """Passages through the band in order, glitches dropped, and the record they were found in.
+
+    Where they are out of order in a finely sampled record, the median of neighbours is looked at instead: spikes
+    of a few samples are gone from it, and the cycle is not.
+    """
+    passages = crossings(trace.values, *band.limits)
+    if passages.size < 2:
+        return None
+    order = put_in_order(_at(passages), passages.rising)
+    if band.half < 4.5 * trace.noise and not regular(_at(passages), passages.rising):
+        return None
+    if order.disturbed and (passages.after[-1] - passages.before[0]) > 20 * passages.size:
+        calm = replace(trace, values=running_median(trace.values))
+        others = crossings(calm.values, *band.limits)
+        if others.size >= 2:
+            again = put_in_order(_at(others), others.rising)
+            if again.disturbance < order.disturbance:
+                trace, passages, order = calm, others, again
+    passages = passages.take(order.keep)
+    return (trace, passages) if passages.size >= 2 else None
+
+
+def _at(passages: Crossings) -> Array:
+    return (passages.before + passages.after) / 2.0
 
 
 def from_edges(turns: Turns, edges: Edges) -> Turns:

@@ -101,16 +101,21 @@ def _best_band(windows: list[Array], noise: float) -> tuple[int, Band | None]:
         return 0, None
     levels = np.linspace(low + half, high - half, _LEVELS)
     counts = np.array([sum(crossings(w, x - half, x + half).size for w in windows) for x in levels])
-    most = int(counts.max())
-    if most < 2:
-        return most, None
-    # The outermost levels that nearly all cycles pass are the swing; its middle is the best place to look.
-    good = np.flatnonzero(counts >= 0.8 * most)
-    runs = np.split(good, np.flatnonzero(np.diff(good) > 1) + 1)
-    run = max(runs, key=len)
+    if int(counts.max()) < 2:
+        return int(counts.max()), None
+    # The cycle's swing is where many passages cross many levels: a start-up crosses many levels once, ringing
+    # a few levels often.
+    candidates = [(int(c) * run.size, int(c), run) for c in np.unique(counts[counts >= 2]) for run in _runs(counts, c)]
+    _, most, run = max(candidates, key=lambda x: x[:2])
     bottom, top = levels[run[0]] - half, levels[run[-1]] + half
     swing = float(top - bottom)
     return most, Band(float(bottom + top) / 2, min(max(0.25 * swing, half), 0.45 * swing), swing)
+
+
+def _runs(counts: Index, count: int) -> list[Index]:
+    """Stretches of levels that nearly so many passages cross."""
+    good = np.flatnonzero(counts >= 0.8 * count)
+    return np.split(good, np.flatnonzero(np.diff(good) > 1) + 1)
 
 
 def block_means(values: Array, block: int) -> Array:
@@ -143,7 +148,39 @@ def find_turns(trace: Trace, passages: Crossings, points: int = 400) -> Turns:
     stops = np.clip(stops, starts + 1, values.size)
     top = passages.rising[:-1]
     index = np.where(top, _extreme(values, starts, stops, True), _extreme(values, starts, stops, False))
+    index = _off_spikes(values, index, starts, stops, top, trace.noise / np.sqrt(block))
     return Turns(_near_passages((index + 0.5) * block - 0.5, passages), top, block)
+
+
+def _off_spikes(values: Array, index: Index, starts: Index, stops: Index, top: Mask, noise: float) -> Index:
+    """The extremes of the few turns that are spikes found anew, on the median of neighbours."""
+    around = np.clip(index[:, None] + np.arange(-3, 4), 0, values.size - 1)
+    away = np.abs(values[index] - np.median(values[around], axis=1))
+    spiky = np.flatnonzero(away > max(8.0 * noise, 4.0 * float(np.median(away))))
+    if spiky.size > 0.25 * index.size:
+        return index
+    index = index.copy()
+    for k in spiky:
+        calm = running_median(values[starts[k] : stops[k]])
+        index[k] = starts[k] + int(calm.argmax() if top[k] else calm.argmin())
+    return index
+
+
+def running_median(values: Array, width: int = 7) -> Array:
+    """Median of ``width`` neighbours; fewer than that are left as they are."""
+    if values.size < width:
+        return values
+    half = width // 2
+    result = np.empty(values.size)
+    for begin in range(0, values.size, _CHUNK // 4):
+        end = min(begin + _CHUNK // 4, values.size)
+        low, high = max(begin - half, 0), min(end + half, values.size)
+        # At the record's own ends the window stays whole and inside.
+        windows = np.lib.stride_tricks.sliding_window_view(values[min(low, max(high - width, 0)) : high], width)
+        medians = np.median(windows, axis=1)
+        at = np.clip(np.arange(begin, end) - half - min(low, max(high - width, 0)), 0, medians.size - 1)
+        result[begin:end] = medians[at]
+    return result
 
 
 def _near_passages(index: Array, passages: Crossings) -> Array:
