@@ -118,6 +118,8 @@ def _found(captures: Sequence[list[str]]) -> list[list[str]]:
     found: list[list[str]] = []
     for paths in captures:
         path = paths[0]
+        if path.lower().endswith(".toml"):
+            raise UsageError(f"{path}: this is no capture by its name; a build sheet goes behind --build")
         if path == "-" or Path(path).exists():
             found.append(paths)
             continue
@@ -159,6 +161,8 @@ def _check_command(word: str) -> None:
 
     from benchfit.commands.main import COMMANDS
 
+    if word == "help":
+        raise UsageError("help: benchfit --help lists what can be given, benchfit COMMAND --help for a command")
     close = get_close_matches(word, COMMANDS, n=1, cutoff=0.7)
     if close:
         raise UsageError(f'{word}: neither a file nor a command; the nearest command is "{close[0]}"')

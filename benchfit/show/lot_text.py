@@ -14,8 +14,9 @@ def render_lot(lot: Lot, *, width: int = 80, colour: bool = False) -> str:
     """The printed report of a lot, no line wider than ``width`` (60 at least); no newline at the end."""
     page = Page(max(width, 60), colour)
     page.prose(heading(lot), style="bold")
-    page.lines.append("")
-    for sentence in sentences(lot):
+    if said := sentences(lot):
+        page.lines.append("")
+    for sentence in said:
         page.prose(sentence, style="bold")
     _units(page, lot)
     _spreads(page, lot)

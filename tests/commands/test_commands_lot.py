@@ -32,6 +32,7 @@ def test_one_line_for_each_unit_then_the_lot(asked, capsys):
     """The failed ones are named; nothing else is printed of a unit."""
     assert main(["a.csv", "missing.csv", "b.csv", "--set", "title=Sump alarm"]) == 3
     out, err = capsys.readouterr()
+    assert "\n\n\n" not in out
     assert out.splitlines()[0] == "Sump alarm, lot of 3 units"
     assert "2 pass and 1 not explained." in out
     assert len([line for line in out.splitlines() if line.lstrip().startswith(("a.csv ", "b.csv "))]) == 2
@@ -98,7 +99,7 @@ def test_nothing_but_records_on_standard_output(asked, capsys):
 
 
 def test_a_lot_of_failures(asked, capsys):
-    """Each is named, and there is still a page, a picture and a table."""
+    """Each is named, and there is still a page, a picture and a table; a lot without verdicts is told too."""
     words = ["missing1.csv", "missing2.csv", "--report", "lot.html", "--plot", "lot.png", "--csv", "t.csv"]
     assert main(words) == 3
     out, err = capsys.readouterr()

@@ -64,6 +64,8 @@ def test_help_lists_every_command(capsys):
         (["x.csv", "--plto=x.png"], "unknown option --plto=x.png, the nearest known one is --plot"),
         (["x.csv", "--build"], "argument --build: expected one argument"),
         (["predct", "s.toml"], 'predct: neither a file nor a command; the nearest command is "predict"'),
+        (["help"], "help: benchfit --help lists what can be given"),
+        (["a.csv", "s.toml"], "s.toml: this is no capture by its name; a build sheet goes behind --build"),
         (["--with", "b.csv"], "--with adds a file to the capture named before it, and there is none"),
         (["a.csv", "--with"], "--with needs the name of a file after it"),
         (["a.csv", "--columns", "time"], '--columns time: "time" is not NAME=N'),
