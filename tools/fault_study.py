@@ -37,7 +37,7 @@ from tools.bench.identify import judge  # noqa: E402
 from tools.bench.score import Outcome, report, score  # noqa: E402
 
 # Raise it whenever the draws or the judgement change: what is in the cache is of no use then.
-JUDGEMENT = 3
+JUDGEMENT = 4
 SKIP = "skip"
 
 Task = tuple[str, int, str, bool, str | None, str | None]
@@ -68,7 +68,7 @@ def explained(build: Build) -> tuple[Mapping[str, Any] | None, float, str]:
 
 def judged(build: Build, name: str, cache: str | None) -> Mapping[str, Any] | None:
     """What the bench says could be decided, from the cache where it has been judged before."""
-    if not build.waves.oscillates or (len(build.fault.causes) > 1 and build.fault.how != "swap"):
+    if not build.waves.oscillates or cache == SKIP or build.fault.how == "family":
         return None
     path = Path(cache) / f"{name}.json" if cache else None
     if path is not None and path.exists():
