@@ -145,7 +145,14 @@ def _trend(x: Array) -> tuple[float, bool]:
     return slope * (n - 1), abs(slope) > _SURE * student(n - 2) ** 1.5 * error
 
 
-def ripple(observed: Observed) -> list[Remark]:
+def _beat(observed: Observed, interval: float) -> float:
+    """Samples by which sampling alone may swing the periods."""
+    if "upper" not in observed.names:
+        return 1.5
+    return 0.5 if observed.value("period") < 16.0 * interval else 0.0
+
+
+def ripple(observed: Observed, interval: float) -> list[Remark]:
     """``ripple``: periods or levels swing to and fro at one frequency, as supply ripple makes them."""
     for name, what in (
         ("period", "period"),
@@ -166,7 +173,10 @@ def ripple(observed: Observed) -> list[Remark]:
         g, m = float(power.max()) / total, power.size
         if m * (1.0 - g) ** (m - 1) < _LINE:
             at = (int(power.argmax()) + 2) / x.size / float(observed.value("period"))
-            size = float(np.sqrt(2.0 * power.max())) * 2.0 / x.size
+            size = float(np.sqrt(power.max())) * 2.0 / x.size
+            # Samples that run nearly in step with the cycle make a beat of their own.
+            if name == "period" and size < _beat(observed, interval) * interval:
+                continue
             mean = abs(float(x.mean()))
             return [
                 Remark(

@@ -25,11 +25,17 @@ class Edges:
     rising : ndarray of bool
     variance : ndarray
         Of each instant, from noise and sampling (samples²).
+    before : ndarray of int
+        The last sample before the passage.
+    sharp : ndarray of bool
+        The whole passage lies between two neighbouring samples.
     """
 
     index: Array
     rising: Mask
     variance: Array
+    before: Index
+    sharp: Mask
 
     @property
     def size(self) -> int:
@@ -37,7 +43,9 @@ class Edges:
 
     def take(self, which: Index) -> Edges:
         """Some of the edges."""
-        return Edges(self.index[which], self.rising[which], self.variance[which])
+        return Edges(
+            self.index[which], self.rising[which], self.variance[which], self.before[which], self.sharp[which]
+        )
 
 
 def find_edges(trace: Trace, states: States) -> Edges:
@@ -46,7 +54,7 @@ def find_edges(trace: Trace, states: States) -> Edges:
     middle = states.at(0.5)
     passed = crossings(trace.values, middle - half, middle + half)
     if passed.size == 0:
-        return Edges(np.empty(0), passed.rising, np.empty(0))
+        return Edges(np.empty(0), passed.rising, np.empty(0), passed.before, passed.rising)
     sign = np.where(passed.rising, 1.0, -1.0)
     at, slope = _interpolate(trace, passed.before, passed.after, middle, sign)
     wide, fitted, error = _regress(trace, passed.before, passed.after, middle, sign)
@@ -57,7 +65,7 @@ def find_edges(trace: Trace, states: States) -> Edges:
     unknown = (passed.after - passed.before) ** 2 / 12.0
     crossing = np.where(slope > 0, (trace.noise / np.where(slope > 0, slope, 1.0)) ** 2 / 2, unknown)
     variance = np.where(wide, error, crossing + np.where(sharp, 1.0 / 12.0, 0.0))
-    return Edges(at, passed.rising, variance)
+    return Edges(at, passed.rising, variance, passed.before, sharp)
 
 
 def _interpolate(

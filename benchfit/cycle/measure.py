@@ -90,7 +90,7 @@ def _remarks(
         shares = tuple(p.value(n) for p in parts for n in ("charge_share", "high_share") if n in p.names)
         remarks += conditions.sampling(period, shares, capture.samples, capture.interval)
         for part in parts[:1]:
-            remarks += conditions.drift(part) or conditions.ripple(part)
+            remarks += conditions.drift(part) or conditions.ripple(part, capture.interval)
     else:
         remarks.append(Remark("no-oscillation", _rest_says(parts)))
     remarks += conditions.clipping(traces) + conditions.quantisation(traces) + conditions.coupling(traces)

@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from benchfit.cycle.arrays import Array, Mask
+from benchfit.cycle.arrays import Array, Index, Mask
 from benchfit.cycle.conditions import irregularities
 from benchfit.cycle.edges import Edges, durations, find_edges
 from benchfit.cycle.levels import States, state_levels
@@ -14,7 +14,9 @@ from benchfit.cycle.observed import Observed
 from benchfit.cycle.period import fit_period
 from benchfit.cycle.scatter import mean_scatter
 from benchfit.cycle.sequence import Sequence, closed, put_in_order, regular
+from benchfit.cycle.sharp import steady_share
 from benchfit.cycle.trace import Trace
+from benchfit.errors import Remark
 
 
 @dataclass(frozen=True, eq=False)
@@ -43,6 +45,12 @@ def observe_output(trace: Trace) -> OutputFound:
     at, number = closed(kept.index * dt, kept.rising, order.odd)
     fit = fit_period(at, number, kept.rising.astype(int), kept.variance * dt**2)
     share, share_variance, share_jitter = _share(kept, dt, order.odd)
+    if kept.sharp.mean() > 0.8:
+        run = _longest_run(order.odd)
+        sharp = run[kept.sharp[run]]
+        steady = steady_share(kept.before[sharp], kept.rising[sharp], number[sharp], fit.period / dt, fit.u / dt)
+        if steady is not None:
+            share, share_variance, share_jitter = *steady, 0.0
     names = ["period", "high_share", "high", "low"]
     values = [fit.period, share, states.high, states.low]
     variances = [fit.u**2, share_variance, *(_level_variance(trace, kept) for _ in range(2))]
@@ -60,12 +68,34 @@ def observe_output(trace: Trace) -> OutputFound:
         turns,
         fit.jitter,
         trace.noise,
-        remarks=tuple(irregularities(trace.node, order)),
+        remarks=tuple(_begun(trace, kept, order) + irregularities(trace.node, order)),
         series=_series(kept, dt, order.odd),
         share_jitter=share_jitter,
         node=trace.node,
     )
     return OutputFound(observed, states, kept, order)
+
+
+def _longest_run(odd: Mask) -> Index:
+    """The edges between two irregular intervals (or ends) of which there are most."""
+    cuts = np.flatnonzero(odd) + 1
+    runs = np.split(np.arange(odd.size + 1), cuts)
+    return max(runs, key=len)
+
+
+def _begun(trace: Trace, edges: Edges, order: Sequence) -> list[Remark]:
+    """``startup``, where the record begins in a phase that has lasted longer already than all like it."""
+    if order.leading != 1.0 or edges.size < 4:
+        return []
+    gaps = np.diff(edges.index)
+    like = gaps[(edges.rising[:-1] != edges.rising[0]) & ~order.odd]
+    if like.size == 0:
+        return []
+    lead, longest = float(edges.index[0]), float(like.max())
+    if lead < longest + max(3.0, 0.05 * longest, 3.0 * float(np.ptp(like))):
+        return []
+    says = f"{trace.node}: the first phase lasts over {lead / longest:.3g} times as long as the others; left out"
+    return [Remark("startup", says)]
 
 
 def _share(edges: Edges, dt: float, odd: Mask) -> tuple[float, float, float]:
