@@ -59,7 +59,9 @@ def make_plan(page: Page, layout: Layout, columns: Mapping[str, int | str] | Non
     Raises CaptureError where ``columns`` names what is not there, or no channel is left.
     """
     table = Columns(page, layout.titles)
-    plan = Plan(interval=layout.interval, start=layout.start, stated=layout.stated)
+    # A garbled first stamp is none.
+    start = layout.start if layout.start is not None and np.isfinite(layout.start) else None
+    plan = Plan(interval=layout.interval, start=start, stated=layout.stated)
     if columns:
         return _wanted(plan, page, layout, table, columns, refusal)
     time, why = _time_column(page, layout, table)

@@ -162,7 +162,9 @@ def _from_stamps(
         remarks = (*remarks, Remark("envelope", _ENVELOPE.format(count=stamps.size)))
     origin = "distance between different stamps" if doubled else "time column"
     if interval is not None:
-        axis = Axis(float(stamps[0]), robust_step(stamps), origin, steps, remarks, doubled)
+        known = int(np.argmax(np.isfinite(stamps)))
+        start = float(stamps[known]) - known * interval if np.isfinite(stamps[known]) else 0.0
+        axis = Axis(start, robust_step(stamps), origin, steps, remarks, doubled)
     else:
         spacing = settle(stamps, quantum, refusal, () if doubled else values)
         steps, remarks = steps + spacing.steps, remarks + spacing.remarks
