@@ -7,16 +7,20 @@ from typing import TYPE_CHECKING, Any, Literal
 import numpy as np
 
 from benchfit.errors import UsageError
+from benchfit.quantity import si
 from benchfit.show.palette import LIGHT, legend_above, nothing, plain, scale, settings, symbol
 
 if TYPE_CHECKING:
     import os
+    from collections.abc import Sequence
 
     from matplotlib.figure import Figure
 
-    from benchfit.show.lot import Lot
+    from benchfit.show.lot import Lot, Spread, Unit
 
 LotKind = Literal["frequency", "parts"]
+_WIDE = 50.0
+"""Limits beyond this (%) do not stretch the picture."""
 
 
 def plot_lot(
@@ -58,16 +62,21 @@ def plot_lot(
 
 def draw_frequencies(ax: Any, lot: Lot) -> None:
     """How many units run at which frequency."""
-    values = np.array([u.frequency for u in lot.units if u.frequency is not None], dtype=float)
-    if values.size == 0:
+    known = [u for u in lot.units if u.frequency is not None]
+    if not known:
         nothing(ax, "no unit runs")
         return
+    apart = [u for u in known if u.name in lot.apart]
+    values = np.array([u.frequency for u in known if u.name not in lot.apart], dtype=float)
     factor, unit = scale(float(values.max()), "Hz")
     x = values * factor
     bins = int(np.clip(2 * np.sqrt(x.size), 5, 60))
     ax.hist(x, bins=bins, color=LIGHT["data"], edgecolor=LIGHT["paper"], linewidth=0.6, label="units")
     ticks = {"color": LIGHT["ink"], "ms": 8, "mew": 0.8, "zorder": 3, "transform": ax.get_xaxis_transform()}
     ax.plot(x, np.full(x.size, 0.03), "|", **ticks)
+    # Units with a fault of their own may lie far off: they are named at the edge, and no bin is lost to them.
+    _beside(ax, [u for u in apart if (u.frequency or 0.0) < values.mean()], "left")
+    _beside(ax, [u for u in apart if (u.frequency or 0.0) >= values.mean()], "right")
     spread = lot.spread("frequency")
     if spread is not None:
         ax.axvline(spread.mean * factor, color=LIGHT["charge"], lw=1.5, label="mean")
@@ -80,6 +89,16 @@ def draw_frequencies(ax: Any, lot: Lot) -> None:
     ax.set_xlabel(f"frequency ({unit})")
     ax.set_ylabel("units")
     legend_above(ax)
+
+
+def _beside(ax: Any, units: Sequence[Unit], side: Literal["left", "right"]) -> None:
+    """Name the units that lie beyond one edge."""
+    if not units:
+        return
+    named = f"{plain(units[0].name)}: {si(units[0].frequency or 0.0, 'Hz')}"
+    text = named if len(units) == 1 else f"{len(units)} units with a fault of their own"
+    place = {"x": 0.01, "s": f"← {text}"} if side == "left" else {"x": 0.99, "s": f"{text} →"}
+    ax.text(**place, y=0.96, transform=ax.transAxes, ha=side, va="top", fontsize=8.5, color=LIGHT["soft"])
 
 
 def draw_parts(ax: Any, lot: Lot) -> None:
@@ -111,10 +130,24 @@ def draw_parts(ax: Any, lot: Lot) -> None:
         style = {"color": LIGHT["charge"], "lw": 2.2, "solid_capstyle": "butt"}
         ax.plot([mean, mean], [row - 0.36, row + 0.36], label="mean" if row == 0 else None, **style)
     ax.axvline(0.0, color=LIGHT["ink"], lw=0.8)
+    ax.set_xlim(*_reach(spreads, [u for u in lot.units if u.name not in lot.apart]))
     ax.set_yticks(range(len(spreads)), [symbol(s.name) if s.name else plain(s.name) for s in spreads])
     ax.set_ylim(len(spreads) - 0.4, -0.6)
     ax.tick_params(axis="y", length=0)
     ax.grid(False, axis="y")
-    ax.margins(x=0.03)
     ax.set_xlabel("off its nominal (%)")
     legend_above(ax)
+
+
+def _reach(spreads: Sequence[Spread], units: Sequence[Unit]) -> tuple[float, float]:
+    """From where to where (%) to draw: every unit, and limits unless they are so wide that they hide the rest."""
+    shown = [0.0]
+    for s in spreads:
+        nominal = s.nominal or 1.0
+        ends = [100 * (x / nominal - 1) for x in s.limits or ()]
+        shown += ends if max(map(abs, ends), default=0.0) <= _WIDE else []
+        seen = [u.parts[s.name].deviation for u in units if u.parts and s.name in u.parts]
+        shown += [100 * d for d in seen if d is not None]
+    low, high = min(shown), max(shown)
+    margin = 0.04 * (high - low) or 1.0
+    return low - margin, high + margin

@@ -208,6 +208,17 @@ def test_lots_are_drawn(kind: str, tmp_path: Path) -> None:
     assert plot_lot(lot_of([]), kind=kind).axes  # type: ignore[arg-type]
 
 
+def test_a_unit_far_off_does_not_squeeze_the_others() -> None:
+    """It is named at the edge of the picture instead."""
+    made = lot_of(lot())
+    assert made.apart == ("beeper 006.csv",)
+    ax = plot_lot(made, kind="frequency").axes[0]
+    low, high = ax.get_xlim()
+    assert 436.41 < low < 480
+    assert high < 600
+    assert [t.get_text() for t in ax.texts] == ["← beeper 006.csv: 436.4 Hz"]
+
+
 def test_no_other_picture_of_a_lot_is_promised() -> None:
     with pytest.raises(UsageError, match="there are frequency, parts"):
         plot_lot(lot_of(lot()), kind="pie")  # type: ignore[arg-type]
