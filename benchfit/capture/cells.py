@@ -16,75 +16,20 @@ _NUMBERS = {
 }
 
 # Words that instruments and loggers write where the converter ran out of range; common practice.
-_OVERLOAD_WORDS = frozenset(
-    [
-        "ol",
-        "o.l",
-        "over",
-        "overload",
-        "overloaded",
-        "overflow",
-        "overrange",
-        "overrun",
-        "ovld",
-        "ovl",
-        "ovfl",
-        "ovrng",
-        "ovr",
-        "oor",
-        "out-of-range",
-        "out_of_range",
-        "outofrange",
-        "clip",
-        "clipped",
-        "clipping",
-        "sat",
-        "saturated",
-        "saturation",
-        "under",
-        "underflow",
-        "underrange",
-        "inf",
-        "infinity",
-        "∞",
-        "1.#inf",
-        "1.#inf00",
-        "#inf",
-        "übersteuert",
-        "überlauf",
-        "overlast",
-        "saturé",
-        "dépassement",
-    ]
-) | {"out of range", "over range", "under range", "off scale", "offscale", "****", "*****", ">>>>", "<<<<"}
+OVERLOAD_WORDS = frozenset((
+    "ol", "o.l", "over", "overload", "overloaded", "overflow", "overrange", "overrun", "ovld", "ovl", "ovfl", "ovrng",
+    "ovr", "oor", "out-of-range", "out_of_range", "outofrange", "out of range", "over range", "under range", "under",
+    "underflow", "underrange", "clip", "clipped", "clipping", "sat",
+    "saturated", "saturation", "off scale", "offscale",
+    "inf", "infinity", "∞", "1.#inf", "1.#inf00", "#inf", "übersteuert", "überlauf", "overlast", "saturé", "dépassement",
+    "****", "*****", ">>>>", "<<<<",
+))  # fmt: skip
 
 # Words for "no value"; the first line is what the C engine of pandas takes for a missing value too.
-_MISSING_WORDS = frozenset(
-    [
-        "nan",
-        "na",
-        "n/a",
-        "#n/a",
-        "#na",
-        "null",
-        "none",
-        "<na>",
-        "nil",
-        "1.#ind",
-        "1.#qnan",
-        "-nan",
-        "-",
-        "--",
-        "---",
-        "----",
-        "?",
-        "invalid",
-        "missing",
-        "no-data",
-        "nodata",
-        "undefined",
-    ]
-)
+_MISSING_WORDS = frozenset((
+    "nan", "na", "n/a", "#n/a", "#na", "null", "none", "<na>", "1.#ind", "1.#qnan", "-nan",
+    "nil", "-", "--", "---", "----", "?", "invalid", "missing", "no-data", "nodata", "undefined",
+))  # fmt: skip
 
 # SCPI-1999, vol. 1, 7.2.1.5: 9.9E37 stands for infinity and 9.91E37 for "not a number".
 SCPI_INFINITY = 9.9e37
@@ -104,10 +49,9 @@ def number(cell: str, decimal: str) -> float:
 
 
 def is_overload(cell: str) -> bool:
-    """Whether ``cell`` is a word for a value out of the converter's range."""
-    return (
-        cell.casefold().lstrip("+-> <").strip(" !.") in _OVERLOAD_WORDS or cell.casefold() in _OVERLOAD_WORDS
-    )
+    """Whether ``cell`` is a word for a value out of the converter's range, with or without a sign."""
+    word = cell.casefold()
+    return word in OVERLOAD_WORDS or word.lstrip("+-> <").strip(" !.") in OVERLOAD_WORDS
 
 
 def is_missing(cell: str) -> bool:

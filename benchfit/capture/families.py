@@ -63,8 +63,11 @@ def _units_row(found: Evidence) -> Claim | None:
     """A row of names (or none) above a row of units."""
     if not found.header.has_units_row or found.header.in_comment:
         return None
+    layout = _stated(found, found.above)
+    if not found.header.has_names:
+        layout = replace(layout, titles=_named_by_settings(layout.titles, found))
     names = "a row of names and " if found.header.has_names else ""
-    return Claim(0.9, (f"{names}a row of units above the table",), _stated(found, found.above))
+    return Claim(0.9, (f"{names}a row of units above the table",), layout)
 
 
 def _units_inside(found: Evidence) -> Claim | None:
@@ -131,6 +134,16 @@ def _stated(found: Evidence, settled: Settings) -> Layout:
         if cell and column < len(titles) and titles[column].unit is None and not titles[column].is_time:
             titles[column] = replace(titles[column], unit=header.title(cell.rpartition(":")[2]).unit)
     return Layout(tuple(titles), settled, settled.interval, settled.start, stated, horizontal)
+
+
+def _named_by_settings(titles: tuple[Title, ...], found: Evidence) -> tuple[Title, ...]:
+    """Titles of which those of the values have the names that the setting "Source" gives, if it gives all."""
+    names = [cell for cell in found.above.cells(*_SOURCE) if cell]
+    columns = [k for k in found.page.numeric if not titles[k].is_time]
+    if len(names) != len(columns):
+        return titles
+    named = dict(zip(columns, names, strict=True))
+    return tuple(replace(title, name=named.get(k, title.name)) for k, title in enumerate(titles))
 
 
 def _from_settings(found: Evidence, settled: Settings) -> tuple[Title, ...]:

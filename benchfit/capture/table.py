@@ -15,6 +15,7 @@ from benchfit.capture.cells import (
     EMPTY,
     NUMBER,
     OVERLOAD,
+    OVERLOAD_WORDS,
     SCPI_INFINITY,
     SCPI_NOT_A_NUMBER,
     TEXT,
@@ -33,6 +34,10 @@ _MOST_BREAKS = 10_000
 _LINE_ENDS = re.compile(r"\r\n|\n|\r")
 
 Floats = NDArray[np.float64]
+# Overload words as cells, and the number that stands for infinity, without a decimal mark.
+_WORDS = sorted((re.escape(word.encode()) for word in OVERLOAD_WORDS), key=len, reverse=True)
+_OVERLOADS = re.compile(rb"(?i)(?<=[,;\t |])[+-]?(?![\d. ])(?:" + b"|".join(_WORDS) + rb")(?=[,;\t\r\n |])")
+_INFINITY = b"99E36"
 
 
 @dataclass(frozen=True)
@@ -90,9 +95,7 @@ class _Work:
         self.example = self.example or f'line {line}: "{text.strip()[:40]}"'
 
 
-def read_table(
-    source: Source, page: Page, wanted: Sequence[int], time: int | None, wide_rows: int = 1
-) -> Table:
+def read_table(source: Source, page: Page, wanted: Sequence[int], time: int | None, wide_rows: int = 1) -> Table:
     """The ``wanted`` columns of the table on ``page``, read to the end of the file.
 
     ``time`` is the column without which a row has no place; without one, a spoilt row keeps its place as
@@ -243,15 +246,15 @@ def _quick(work: _Work, block: bytes) -> list[Floats] | None:
     try:
         frame = pandas.read_csv(io.BytesIO(text), encoding="latin-1", **options)
     except (ValueError, OverflowError):
-        return None
+        with_numbers = _OVERLOADS.sub(_INFINITY, text)
+        # Only where words were replaced can a second look end better.
+        return _quick(work, with_numbers) if with_numbers != text else None
     columns = _columns(frame, work)
     if columns is None:
         return None
     if work.selected or any(_has_gaps(values) for values in columns):
         separator = work.dialect.engine_delimiter
         if len(separator) > 1 or text.count(separator.encode()) != frame.shape[0] * (work.width - 1):
-            return None
-        if any(np.isinf(values).any() for values in columns):
             return None
     # Views would keep the whole block of pandas alive.
     return [values.copy() for values in columns] if work.selected else columns
@@ -314,16 +317,12 @@ def _is_cut(work: _Work, last: bytes, before: bytes) -> bool:
     that no row before has although all of those agree.
     """
     decimal = work.dialect.decimal
-    earlier = [
-        work.dialect.cells(line.decode("latin-1")) for line in before.split(b"\n")[1:-1] if line.strip()
-    ][-40:]
+    earlier = [work.dialect.cells(line.decode("latin-1")) for line in before.split(b"\n")[1:-1] if line.strip()][-40:]
     cells = work.dialect.cells(last.decode("latin-1"))
     if len(cells) <= max(work.wanted) or kind(cells[max(work.wanted)], decimal) == TEXT:
         return True
     end = max((k for k, cell in enumerate(cells) if cell), default=-1)
-    if end < max(work.wanted) and all(
-        len(row) > max(work.wanted) and row[max(work.wanted)] for row in earlier
-    ):
+    if end < max(work.wanted) and all(len(row) > max(work.wanted) and row[max(work.wanted)] for row in earlier):
         return True
     shapes = {_shape(row[end], decimal) for row in earlier if end < len(row)}
     return len(earlier) >= 8 and len(shapes) == 1 and _shape(cells[end], decimal) not in shapes

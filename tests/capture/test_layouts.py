@@ -50,6 +50,11 @@ SETTINGS_LEFT = (
     "Vertical Units,V,,", "Vertical Scale,2.0e-02,,", "Horizontal Units,s,,", "Pt Fmt,Y,,", "Yzero,0.0e+00,,", "Probe Atten,1.0e+00,,",
 )  # fmt: skip
 
+MARKED = (
+    "Format,2.0B,\nMemory Length,300,\nTrigger Level,1.08E-01,\nSource,CH1,\nVertical Units,V,\nLabel,,\nVertical Scale,2.0E+00,\n"
+    "Horizontal Units,S,\nHorizontal Scale,5.0e-04,\nSampling Period,5.000E-07,\nFirmware,V1.19,\nTime,04-Aug-23 14:07:43,\n"
+)
+
 
 def settings_left(n: int) -> str:
     rows = []
@@ -217,6 +222,28 @@ CASES = [
          names=("Voltage_0", "Voltage_1"), units=("V", "V"), codes=frozenset({"layout-guessed"})),
     Case("trace names and units in settings, values behind an empty cell", '"TraceName","CH1","CH2"\n"BlockSize",40\n"VUnit","V","V"\n"SampleRate",1.0E+4\n"HUnit","s"\n\n'
          + table(40, ",{v:.3e},{w:.3e}"), 40, 1e-4, start=0.0, names=("CH1", "CH2"), units=("V", "V")),
+    # -- more of the same families
+    Case("converter codes below a marker line", MARKED + "Mode,Fast,\nWaveform Data,\n" + table(300, "{k}7,"), 300, 5e-7, start=0.0,
+         units=("",), codes=frozenset({"layout-guessed"})),
+    Case("time and value below a marker line", MARKED + "Mode,Detail,\nWaveform Data,\n" + table(300, TV + ",", -1e-4, 5e-7), 300, 5e-7, start=-1e-4),
+    Case("units row right below settings", "Model,B4\nRecord Length,40\nSource,CH2\nHorizontal Scale,0.001\nSecond,Volt\n" + table(40, TV), 40, 1e-4,
+         names=("CH2",)),
+    Case("names in quotes", '"Time","CH1"\n' + table(40, '"{t:.6f}","{v:.3f}"'), 40, 1e-4, codes=frozenset({"layout-guessed"})),
+    Case("minimum and maximum in columns of their own", "Time [s],CH1 min [V],CH1 max [V]\n" + table(40, "{t:.6f},{v:.3f},{v:.3f}9"), 40, 1e-4,
+         names=("CH1 min", "CH1 max"), units=("V", "V")),
+    Case("a title line, then the header", "Versuch 3: Kippstufe\n\nt in ms;U in V\n" + table(40, "{t:.3f};{v:.3f}", -1, 0.1).replace(".", ","), 40, 1e-4,
+         names=("U",)),
+    Case("a time column for each channel", "Time (s),CH1 (V),Time (s),CH2 (V)\n" + table(40, "{t:.6f},{v:.3f},{t:.6f},{w:.1f}"), 40, 1e-4,
+         names=("CH1", "CH2"), units=("V", "V"), codes=frozenset({"derived-column"})),
+    Case("a time in microseconds by the word micros", "micros,raw,U (V)\n" + "".join(
+        f"{200 * k},{200 + 7 * (k % 23)},{(200 + 7 * (k % 23)) * 5 / 1023:.4f}\n" for k in range(40)), 40, 2e-4, start=0.0, names=("U",),
+        codes=frozenset({"derived-column"})),
+    Case("row numbers under an empty name", ",Time (s),U (V)\n" + table(40, "{k},{t:.5f},{v:.3f}"), 40, 1e-4, names=("U",), codes=frozenset({"derived-column"})),
+    Case("the separator told in the first line", "sep=;\nTime (s);U (V)\n" + table(40, "{t:.5f};{v:.3f}"), 40, 1e-4, names=("U",)),
+    Case("clock times beside elapsed seconds", "Timestamp,Elapsed (s),U (V)\n" + "".join(
+        f"2023-08-04 14:07:{k:02d},{0.5 * k},{wave(k):.3f}\n" for k in range(40)), 40, 0.5, start=0.0, names=("U",)),
+    Case("a rate in a comment, names in the next", "# sampling frequency: 10 kHz\n# V_C, V_out\n" + table(40, "{v:.4f}, {w:.2f}"), 40, 1e-4, start=0.0,
+         names=("V_C", "V_out"), units=("V", "V"), codes=frozenset({"layout-guessed"})),
     # -- encodings
     Case("a degree sign in Latin-1", "# bench at 23 \xb0C\nTime (\xb5s),CH1 (V)\n" + table(40, TV, -1000, 100), 40, 1e-4),
 ]  # fmt: skip
