@@ -47,6 +47,11 @@ class Edges:
             self.index[which], self.rising[which], self.variance[which], self.before[which], self.sharp[which]
         )
 
+    def within(self, first: int, size: int) -> Edges:
+        """The edges in a part of the record, counted from its first sample."""
+        some = self.take(np.flatnonzero((self.index >= first) & (self.index < first + size)))
+        return Edges(some.index - first, some.rising, some.variance, some.before - first, some.sharp)
+
 
 def find_edges(trace: Trace, states: States) -> Edges:
     """The 50 % crossings, each passed with a hysteresis of several σ so that noise makes none."""

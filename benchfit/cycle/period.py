@@ -27,7 +27,7 @@ _POINTS = 14
 # is jitter, and where it shows none the interval must not be widened for it; few cycles cannot show it.
 _SLAB = 0.1
 _SLAB_FEW = 0.5
-_SLAB_MEAN = 0.04
+_SLAB_MEAN = 0.015
 
 
 @dataclass(frozen=True, eq=False)

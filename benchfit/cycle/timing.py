@@ -8,6 +8,7 @@ import numpy as np
 
 from benchfit.cycle.arrays import Array
 from benchfit.cycle.edges import Edges
+from benchfit.cycle.long import MANY, observe_long
 from benchfit.cycle.meeting import observe_meeting
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.output import OutputFound
@@ -30,6 +31,18 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
     if found_passages is None:
         return None
     calm, passages = found_passages
+    edges = None if output is None else output.edges
+    if passages.size > MANY:
+
+        def part(piece: Trace, inner: Crossings, first: int) -> Observed | None:
+            return _route(piece, piece, inner, None if edges is None else edges.within(first, piece.size))
+
+        return observe_long(trace, passages, part)
+    return _route(trace, calm, passages, edges)
+
+
+def _route(trace: Trace, calm: Trace, passages: Crossings, edges: Edges | None) -> Observed | None:
+    """The constants by the way that the waveform asks for; ``calm`` is the record without its spikes."""
     shape = trace.assignment.shape
     if shape == "jumping" and (stepped := observe_steps(trace, passages)) is not None:
         return stepped
@@ -41,7 +54,7 @@ def observe_timing(trace: Trace, output: OutputFound | None = None) -> Observed 
         if found is not None and not found.resolved:
             return observe_ramps(trace, found)
     turns = find_turns(calm, passages)
-    return observe_meeting(trace, from_edges(turns, output.edges) if output is not None else turns)
+    return observe_meeting(trace, turns if edges is None else from_edges(turns, edges))
 
 
 def _passages(trace: Trace, band: Band) -> tuple[Trace, Crossings] | None:
