@@ -113,9 +113,7 @@ def study_laws(runs: int, rng: np.random.Generator) -> bool:
                 rest = ", ".join(f"{k} {v}" for k, v in found.most_common() if k != law)
                 print(f"{law:12} {n:8} {name:>14} {found[law] / runs:7.1%}   {rest}")
         passed &= right >= 0.95 * total
-        print(
-            f"{law:12} {'all':>8} {'':14} {right / total:7.1%}   {'' if right >= 0.95 * total else 'MISSED'}"
-        )
+        print(f"{law:12} {'all':>8} {'':14} {right / total:7.1%}   {'' if right >= 0.95 * total else 'MISSED'}")
     print(f"\nwhite noise: the true change is within ± 2 u of that found in {np.mean(covered):.1%} of runs\n")
     return bool(passed)
 
@@ -210,7 +208,7 @@ BUILDS: dict[str, tuple[str, Form, dict[str, float], tuple[str, ...], dict[str, 
     ),
     "lamp": (
         'circuit = "gas-lamp"\n[channels]\ncapacitor = "CH1"\n', lamp,
-        {"supply": 125.0, "R": 2.2e6, "C": 5.6e-8, "V_strike": 90.0, "V_extinguish": 60.0, "V_maintain": 55.0,
+        {"supply": 125.0, "R": 2.2e6, "C": 5.6e-8, "V_strike": 90.0, "V_extinguish": 60.0, "V_maintain": 50.0,
          "r_lamp": 5e3}, ("capacitor",),
         {"supply": {"I_leak"}, "R": {"R_leak_supply"}, "C": set(), "V_strike": set(), "V_extinguish": set()},
     ),
@@ -237,9 +235,7 @@ def series_of(
     for i, name in enumerate(names):
         if name.endswith("_time"):
             values[i] *= 1 + SCATTER["time"] * rng.normal(size=n)
-        elif name.endswith(
-            "time_constant"
-        ):  # an asymptote and its time constant go together: correlation 0.99
+        elif name.endswith("time_constant"):  # an asymptote and its time constant go together: correlation 0.99
             values[i] *= 1 + SCATTER["constant"] * _correlated(common[name.split("_")[0]], rng)
         elif name.endswith("asymptote"):
             values[i] += SCATTER["asymptote"] * swing * _correlated(common[name.split("_")[0]], rng)
