@@ -56,9 +56,7 @@ def render(trend: Trend, *, width: int = 80, colour: bool = False) -> str:
     _heading(page, trend)
     for unit in trend.units:
         if len(trend.units) > 1:
-            page.section(
-                f"Unit {clean(unit.unit)}", f"{words.count(unit.records)} records, {unit.failures} failed"
-            )
+            page.section(f"Unit {clean(unit.unit)}", f"{words.count(unit.records)} records, {unit.failures} failed")
         _finding(page, unit, trend.started or 0.0)
     if len(trend.units) > 1:
         _siblings(page, trend)
@@ -100,8 +98,11 @@ def _finding(page: Page, unit: UnitTrend, started: float) -> None:
         page.prose("Too few records to tell a drift from noise.", style="bold")
     elif frequency.law == "none":
         half = 2 * frequency.u_change / abs(frequency.mean)
-        says = f"The frequency does not drift: any change over the run is below {percent(half)}"
-        page.prose(f"{says} ({words.chance(frequency.probability)} sure).", style="good")
+        if frequency.probability >= 0.5:
+            says = f"The frequency does not drift: any change over the run is below {percent(half)}"
+            page.prose(f"{says} ({words.chance(frequency.probability)} sure).", style="good")
+        else:
+            page.prose(f"No drift of the frequency is proven; a change of up to {percent(half)} is possible.")
     else:
         page.prose(_drifting(frequency, started), style="bold")
         for line in _blamed(unit):
@@ -134,9 +135,7 @@ def _blamed(unit: UnitTrend) -> list[str]:
         share = sum(c.share for c in unit.causes if c.cause in (first.cause, *first.either))
         return [f"Due to {names} (together {percent(share)} of it): these captures cannot tell which."]
     live = [c for c in unit.causes if abs(c.share) >= 0.1]
-    return [
-        f"Due to {words.listed([f'{c.cause} ({percent(c.share, c.u)} of it; {_moved(c)})' for c in live])}."
-    ]
+    return [f"Due to {words.listed([f'{c.cause} ({percent(c.share, c.u)} of it; {_moved(c)})' for c in live])}."]
 
 
 def _moved(cause: Cause) -> str:
@@ -173,7 +172,9 @@ def _table(page: Page, unit: UnitTrend, mark: str) -> None:
         if q.kind == "part" and (q.law is None or abs(q.mean) <= 2 * q.u):
             continue
         law = LAWS.get(q.law or "", "too few records")
-        if q.law is not None:
+        if q.law == "none" and q.probability < 0.5:
+            law = "no drift proven"
+        elif q.law is not None:
             law = f"{law}, {words.chance(q.probability)}"
         rows.append(
             [
@@ -261,15 +262,11 @@ def _alarms(page: Page, trend: Trend) -> None:
     units = {q.name: q.unit for unit in trend.units for q in unit.quantities.values()}
     rows = []
     for a in trend.alarms[:_MOST]:
-        value, limit = (
-            words.plain_amount(a.quantity, x, units.get(a.quantity, "")) for x in (a.value, a.limit)
-        )
+        value, limit = (words.plain_amount(a.quantity, x, units.get(a.quantity, "")) for x in (a.value, a.limit))
         side = "above" if a.value > a.limit else "below"
         ended = f"cleared by #{a.cleared}" if a.cleared else "still on"
         unit = f"{a.unit}: " if a.unit else ""
-        rows.append(
-            [f"#{a.seq}", _utc(a.acquired), f"{unit}{words.label(a.quantity)} {value} {side} {limit}", ended]
-        )
+        rows.append([f"#{a.seq}", _utc(a.acquired), f"{unit}{words.label(a.quantity)} {value} {side} {limit}", ended])
     page.table(rows, [Column(True), Column(rank=2), Column(), Column(rank=1)], [])
     if len(trend.alarms) > _MOST:
         page.prose(f"and {len(trend.alarms) - _MOST} more", "  ", "dim")
@@ -281,9 +278,7 @@ def _interruptions(page: Page, trend: Trend) -> None:
         page.section("Gaps", f"{len(trend.gaps)}, {_spoken(total)} in all; nothing is interpolated over them")
         for g in trend.gaps[:_MOST]:
             unit = f"{g.unit}: " if g.unit and len(trend.units) > 1 else ""
-            page.prose(
-                f"{unit}{_utc(g.began)} to {_utc(g.ended)}, {_spoken(g.ended - g.began)} ({g.why})", "  "
-            )
+            page.prose(f"{unit}{_utc(g.began)} to {_utc(g.ended)}, {_spoken(g.ended - g.began)} ({g.why})", "  ")
         if len(trend.gaps) > _MOST:
             page.prose(f"and {len(trend.gaps) - _MOST} more", "  ", "dim")
     if trend.errors:
