@@ -86,7 +86,7 @@ def test_degrees_of_freedom_against_allantools(alpha, m, points):
 
 
 def power_law(alpha: int, n: int, rng: np.random.Generator) -> np.ndarray:
-    """Frequency noise of spectrum f^alpha: shaped white noise of twice the length, to be rid of its period."""
+    """Frequency noise of spectrum f^alpha: shaped white noise, twice as long to be rid of its period."""
     f = np.fft.rfftfreq(2 * n)
     f[0] = f[1]
     return np.fft.irfft(np.fft.rfft(rng.normal(size=2 * n)) * f ** (alpha / 2))[:n]
