@@ -123,8 +123,11 @@ def _in_order(
             waiting.popleft()
             yield result
     finally:
-        for _, future in waiting:
-            future.cancel()
+        # Processes of our own are let go by whoever holds them; a pool that loses its processes after its
+        # futures were cancelled here would complain.
+        if renew is None:
+            for _, future in waiting:
+                future.cancel()
 
 
 def _one_by_one(

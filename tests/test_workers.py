@@ -3,7 +3,11 @@
 from __future__ import annotations
 
 import os
+import signal
+import subprocess
+import sys
 import threading
+import time
 from collections.abc import Iterator
 from concurrent.futures import BrokenExecutor, Executor, Future, ThreadPoolExecutor
 from pathlib import Path
@@ -137,3 +141,44 @@ def test_stopping_early_lets_go(tmp_path):
     results = workers.in_processes(double, iter(range(10**9)), 2, nothing, lost)
     assert [next(results) for _ in range(3)] == [0, 2, 4]
     results.close()
+
+
+@pytest.mark.skipif(os.name == "nt", reason="no signals to a group of processes here")
+def test_an_interruption_ends_everybody_quietly(tmp_path):
+    """Ctrl-C on a terminal reaches every process: one line, no traceback, nobody left behind."""
+    script = tmp_path / "interrupted.py"
+    script.write_text(
+        "import os, time\nfrom benchfit import workers\n"
+        "def work(x):\n    time.sleep(0.05)\n    return os.getpid()\n"
+        "def nothing():\n    pass\n"
+        "if __name__ == '__main__':\n"
+        "    try:\n"
+        "        for pid in workers.in_processes(work, range(10**6), 2, nothing, lambda t, e: -1):\n"
+        "            print(pid, flush=True)\n"
+        "    except KeyboardInterrupt:\n"
+        "        print('interrupted', flush=True)\n"
+    )
+    with subprocess.Popen(
+        [sys.executable, str(script)], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+        start_new_session=True, env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[1])},
+    ) as process:  # fmt: skip
+        assert process.stdout is not None
+        pids = {int(process.stdout.readline()) for _ in range(20)}
+        os.killpg(process.pid, signal.SIGINT)
+        out, err = process.communicate(timeout=60)
+    assert out.splitlines()[-1] == "interrupted"
+    assert err == ""
+    deadline = time.monotonic() + 10
+    while any(is_running(pid) for pid in pids):
+        assert time.monotonic() < deadline
+        time.sleep(0.05)
+
+
+def is_running(pid: int) -> bool:
+    try:
+        os.kill(pid, 0)
+    except ProcessLookupError:
+        return False
+    # One that has ended stands in the list of processes until whoever adopted it looks.
+    return subprocess.run(["ps", "-o", "stat=", "-p", str(pid)], capture_output=True, text=True,
+                          check=False).stdout.strip()[:1] not in ("", "Z")  # fmt: skip

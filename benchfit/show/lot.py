@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import math
 import re
+import sys
 from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
@@ -19,7 +20,7 @@ CONTENT = 0.95
 CONFIDENCE = 0.95
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class PartSeen:
     """One part in one unit: its value with u, ``deviation`` from the nominal, inside its limits or not."""
 
@@ -31,7 +32,7 @@ class PartSeen:
     from_sheet: bool
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Exchange:
     """A standard value that would bring a unit onto its target, with the frequency it then has (Hz)."""
 
@@ -42,7 +43,7 @@ class Exchange:
     frequency: float | None
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Unit:
     """What the lot keeps of one capture.
 
@@ -229,19 +230,20 @@ def _unit(record: Mapping[str, Any]) -> Unit:
         causes=None if first_suspect is None else tuple(first_suspect["causes"]),
         probability=None if first_suspect is None else first_suspect.get("probability"),
         settled=bool(record.get("settled")),
-        parts={n: seen for n, p in (record.get("parts") or {}).items() if (seen := _seen(p)) is not None},
+        # Names and units are the same in every record, and yet come as other texts from every worker.
+        parts={sys.intern(str(n)): seen for n, p in (record.get("parts") or {}).items()
+               if (seen := _seen(p)) is not None},
         exchange=_exchange(record),
-        warnings=tuple(w["code"] for w in record.get("warnings") or ()),
-    )
+        warnings=tuple(sys.intern(str(w["code"])) for w in record.get("warnings") or ()),
+    )  # fmt: skip
 
 
 def _seen(part: Mapping[str, Any]) -> PartSeen | None:
     if part.get("value") is None:
         return None
     sheet = part.get("known_from") == "build sheet"
-    return PartSeen(
-        part["value"], part.get("u"), part.get("unit") or "", part.get("deviation"), part.get("within"), sheet
-    )
+    unit = sys.intern(str(part.get("unit") or ""))
+    return PartSeen(part["value"], part.get("u"), unit, part.get("deviation"), part.get("within"), sheet)
 
 
 def _exchange(record: Mapping[str, Any]) -> Exchange | None:
