@@ -150,7 +150,6 @@ def test_no_warning_that_is_not_earned():
     assert codes(found("healthy gas-lamp")) == {"hazard"}
 
 
-@pytest.mark.xfail(raises=RuntimeWarning, reason="an edge's slope of next to nothing is squared")
 def test_slow_edges_raise_no_warning_of_numpy():
     """A comparator that takes a tenth of the period to cross, recorded clean: nothing else is said."""
     from benchfit import cycle
