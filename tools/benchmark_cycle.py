@@ -14,6 +14,7 @@ import tempfile
 import threading
 import time
 from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -23,7 +24,7 @@ ROOT = Path(__file__).resolve().parents[1]
 if str(ROOT) not in sys.path:
     sys.path.insert(0, str(ROOT))
 
-from benchfit.capture.model import Capture, Channel  # noqa: E402
+from benchfit.capture.model import Capture  # noqa: E402
 from benchfit.cycle import measure  # noqa: E402
 from benchfit.cycle.fold import bins_per_phase, gather  # noqa: E402
 from benchfit.cycle.phase import fit_exponentials  # noqa: E402
@@ -67,15 +68,14 @@ def against_reading(samples: int) -> None:
 
     print(f"\n{samples:,} samples: the whole stage against pandas.read_csv of the same file")
     for cycles in (5.3, 1e3, 1e4, 1e5, samples / 10.0):
-        train = Train(3.0, 2.0, cycles, samples / cycles, 0.01)
-        capture = train.capture(0.3, 1)
+        capture = Train(3.0, 2.0, cycles, samples / cycles, 0.01).capture(0.3, 1)
         with tempfile.TemporaryDirectory() as folder:
             path = Path(folder) / "capture.csv"
             pd.DataFrame({"Time (s)": capture.time, "CH1 (V)": capture.channels[0].values}).to_csv(
-                path, index=False, float_format="%.6e"
+                path, index=False, float_format="%.9e"
             )
-            reading = min(watched(lambda: pd.read_csv(path))[0] for _ in range(2))
-        results = [watched(lambda: measure(capture, NODE)) for _ in range(2)]
+            reading = min(watched(partial(pd.read_csv, path))[0] for _ in range(2))
+        results = [watched(partial(measure, capture, NODE)) for _ in range(2)]
         taken, grown = min(r[0] for r in results), max(r[1] for r in results)
         own = capture.samples * 8 / 1e6
         print(

@@ -94,7 +94,7 @@ def look(waves: Waves, rng: np.random.Generator, cycles: float, per_cycle: float
     setting = Input(noise_divisions=noise, **settings)  # type: ignore[arg-type]
     interval = waves.period / per_cycle
     seen = record(
-        waves, {n: setting for n in names}, interval, int(cycles * per_cycle), seed=int(rng.integers(1 << 30))
+        waves, dict.fromkeys(names, setting), interval, int(cycles * per_cycle), seed=int(rng.integers(1 << 30))
     )
     return to_capture(seen.channels, interval), seen
 
@@ -312,7 +312,7 @@ def ringing(seed: int) -> Case:
         part = v[at + 1 : at + 1 + k.size]
         part += rng.uniform(0.8, 1.2) * swing * ring[: part.size] * np.sign(output[at + 1] - output[at])
     capture = replace(case.capture, channels=(replace(capacitor, values=v), case.capture.channels[1]))
-    return Case(capture, case.assignments, case.truth, "")
+    return Case(capture, case.assignments, case.truth, "ringing")
 
 
 def inverted(seed: int) -> Case:

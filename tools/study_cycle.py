@@ -67,7 +67,7 @@ class Train:
 
     def grid(self, phase: float) -> Array:
         """Time (s) since a lower turn of every sample; the record begins ``phase`` of a period after one."""
-        return phase * self.period + self.interval * np.arange(int(round(self.cycles * self.per_cycle)))
+        return phase * self.period + self.interval * np.arange(round(self.cycles * self.per_cycle))
 
     def volts(self, t: Array) -> Array:
         u = np.mod(t, self.period)
@@ -229,8 +229,10 @@ def _table(title: str, rows: list[tuple[Train, dict[str, float]]]) -> None:
     for name in STUDIED:
         squares = np.array([r[1][name] for r in rows if name in r[1]])
         if squares.size:
-            ratio = np.sqrt(squares.mean())
-            cells.append(f"{name.replace('discharge', 'dis').replace('charge', 'ch')} {ratio:.3f}±{ratio * squares.std() / squares.mean() / 2 / np.sqrt(squares.size):.3f}")
+            ratio = float(np.sqrt(squares.mean()))
+            error = 0.5 * ratio * squares.std() / squares.mean() / np.sqrt(squares.size)
+            short = name.replace("discharge", "dis").replace("charge", "ch")
+            cells.append(f"{short} {ratio:.3f}±{error:.3f}")
     print(f"  {title:12s} " + "  ".join(cells))
 
 

@@ -8,12 +8,11 @@ of the seven says about the others (generalised least squares with one linear co
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 import numpy as np
 
 from benchfit.cycle.arrays import Array
 from benchfit.cycle.phase import PhaseModel
+from benchfit.cycle.propagation import jacobian
 
 # The order of the seven: period, upper, lower, then slope and curvature of the rising and of the falling phase.
 PERIOD, UPPER, LOWER, RISE, FALL = 0, 1, 2, slice(3, 5), slice(5, 7)
@@ -37,19 +36,19 @@ def close_cycle(
     covariance = covariance.copy()
     covariance[PERIOD, PERIOD] += slack
 
-    def gap(y: Array) -> float:
+    def gap(y: Array) -> Array:
         up, down = durations(y, rising, falling)
-        return up + down - float(y[PERIOD])
+        return np.array([up + down - y[PERIOD]])
 
     for _ in range(2):
-        row = _gradient(gap, x, covariance)
-        miss = gap(x)
+        row = jacobian(gap, x, covariance)[0]
+        miss = float(gap(x)[0])
         spread = float(row @ covariance @ row)
         if not (np.isfinite(miss) and np.all(np.isfinite(row)) and spread > 0):
             return x, covariance
         gain = covariance @ row / spread
         moved = x - gain * miss
-        if not np.isfinite(gap(moved)):
+        if not np.isfinite(gap(moved)[0]):
             return x, covariance
         x = moved
     return x, covariance - np.outer(gain, gain) * spread
@@ -58,25 +57,8 @@ def close_cycle(
 def constants_of(x: Array, rising: PhaseModel, falling: PhaseModel, covariance: Array) -> tuple[Array, Array]:
     """(period, charge_share, upper, lower, charge_curvature, discharge_curvature) and their Jacobian (6, 7)."""
 
-    def share(y: Array) -> float:
+    def six(y: Array) -> Array:
         up, down = durations(y, rising, falling)
-        return up / (up + down)
+        return np.array([y[PERIOD], up / (up + down), y[UPPER], y[LOWER], y[4], y[6]])
 
-    values = np.array([x[PERIOD], share(x), x[UPPER], x[LOWER], x[4], x[6]])
-    jacobian = np.zeros((6, 7))
-    for row, column in ((0, 0), (2, 1), (3, 2), (4, 4), (5, 6)):
-        jacobian[row, column] = 1.0
-    jacobian[1] = _gradient(share, x, covariance)
-    return values, jacobian
-
-
-def _gradient(of: Callable[[Array], float], x: Array, covariance: Array) -> Array:
-    """Central differences over a small part of each one's standard error, which is the scale that matters."""
-    row = np.zeros(x.size)
-    for i in range(x.size):
-        step = 1e-3 * float(np.sqrt(covariance[i, i])) + 1e-9 * abs(float(x[i])) + 1e-300
-        up, down = x.copy(), x.copy()
-        up[i] += step
-        down[i] -= step
-        row[i] = (of(up) - of(down)) / (up[i] - down[i])
-    return row
+    return six(x), jacobian(six, x, covariance)

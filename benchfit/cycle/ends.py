@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from benchfit.cycle.arrays import Array, Mask
@@ -47,6 +49,18 @@ def trim_ends(trace: Trace, layout: Layout, turns: Turns) -> Layout:
     if values.size > 1:
         stop[-1] = min(trace.size, first[-1] + (int(values.argmin()) + 1) * turns.block)
     return Layout(first, np.maximum(stop, first + 1), layout.rising, layout.whole)
+
+
+def begun(trace: Trace, layout: Layout) -> Layout:
+    """Leave out what lies before the first phase's own extreme: a rest before the start-up, the end of a flyback."""
+    block = max(1, int(layout.length[0]) // 200)
+    values = block_means(trace.values[layout.first[0] : layout.stop[0]], block)
+    values = values * (1.0 if layout.rising[0] else -1.0)
+    if values.size == 0:
+        return layout
+    first = layout.first.copy()
+    first[0] = min(int(first[0]) + int(values.argmin()) * block, int(layout.stop[0]) - 1)
+    return replace(layout, first=first)
 
 
 def extend_ends(fitted: Fitted, layout: Layout, trace: Trace, index: Array, top: Mask) -> Layout:

@@ -42,12 +42,15 @@ def state_levels(trace: Trace) -> States:
     centres = (edges[:-1] + edges[1:]) / 2
     low = centres[int(np.argmax(_smooth(counts[:middle])))]
     high = centres[middle + int(np.argmax(_smooth(counts[middle:])))]
-    reach = max(4.0 * trace.noise, 0.04 * (high - low))
-    for _ in range(3):
+    for narrow in (1.0, 1.0, 0.125, 0.125):
+        # Edges on their way are near a level too: at last only what is within the noise counts.
+        reach = max(4.0 * trace.noise, narrow * 0.04 * (high - low))
         near_low, near_high = np.abs(values - low) <= reach, np.abs(values - high) <= reach
         low = float(values[near_low].mean()) if near_low.any() else low
         high = float(values[near_high].mean()) if near_high.any() else high
-    return States(float(high), float(low), float((near_low | near_high).mean()))
+    reach = max(4.0 * trace.noise, 0.04 * (high - low))
+    settled = (np.abs(values - low) <= reach) | (np.abs(values - high) <= reach)
+    return States(float(high), float(low), float(settled.mean()))
 
 
 def _robust_extremes(values: Array, noise: float) -> tuple[float, float]:

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+import numpy as np
+
 from benchfit.capture.model import Capture
 from benchfit.cycle import conditions
 from benchfit.cycle.constants import Assignment, CycleConstants
@@ -36,16 +38,28 @@ def measure(capture: Capture, assignments: Sequence[Assignment]) -> CycleConstan
     traces = [prepare(capture, a) for a in assignments]
     timing = next((t for t in traces if t.assignment.shape != "square"), None)
     output = next((t for t in traces if t.assignment.shape == "square"), None)
-    seen = observe_output(output) if output is not None else None
-    found = [observe_timing(timing, seen)] if timing is not None else []
-    found += [seen.observed] if seen is not None else []
-    parts = [p for p in found if p is not None]
-    oscillates = bool(parts)
-    if not oscillates:
-        parts = [observe_rest(timing)] if timing is not None else []
-        parts += [observe_output_rest(output)] if output is not None else []
+    # Records that are no cycle at all can drive a fit anywhere; what does not come back finite is not used.
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore", under="ignore"):
+        parts = _oscillating(timing, output)
+        oscillates = bool(parts)
+        if not oscillates:
+            parts = [observe_rest(timing)] if timing is not None else []
+            parts += [observe_output_rest(output)] if output is not None else []
     noise = {t.node: t.noise for t in traces} | {p.node: p.noise for p in parts}
     return _result(capture, traces, parts, noise, _remarks(capture, traces, parts, oscillates))
+
+
+def _oscillating(timing: Trace | None, output: Trace | None) -> list[Observed]:
+    """What the nodes show of a cycle; nothing where there is none."""
+    seen = observe_output(output) if output is not None else None
+    found = [seen.observed] if seen is not None and seen.observed is not None else []
+    if timing is not None:
+        try:
+            timed = observe_timing(timing, seen)
+        except np.linalg.LinAlgError:
+            timed = None
+        found = [timed, *found] if timed is not None else found
+    return [p for p in found if np.all(np.isfinite(p.values)) and np.all(np.isfinite(p.covariance))]
 
 
 def _result(

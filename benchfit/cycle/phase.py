@@ -19,6 +19,8 @@ from benchfit.cycle.arrays import Array, Index
 
 # Kurtosis of a uniform distribution: bins hold evenly spaced samples.
 _KURTOSIS = 9.0 / 5.0
+# Of a span: beyond, an exponential is a step.
+_STEEP = 50.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -170,6 +172,7 @@ def fit_exponentials(
     spread: Array | None = None,
     start: float | None = None,
     curvature: float | None = None,
+    hold: bool = False,
 ) -> ExponentialFit:
     """Fit one phase in many cycles: shared asymptote and κ, one amplitude per cycle.
 
@@ -187,8 +190,12 @@ def fit_exponentials(
         Level (V) at t = 0 where it is known; no amplitude is then fitted.
     curvature : float, optional
         Where to begin the search (1/s); else a coarse scan finds it.
+    hold : bool
+        Keep to ``curvature`` (0 where it is left out: a straight line).
     """
     problem = _Problem(t, v, cycle, weight, spread, start)
+    if hold:
+        return problem.finish((curvature or 0.0) * problem.unit_t, held=True)
     begin = problem.scan() if curvature is None else curvature * problem.unit_t
     return problem.solve(begin)
 
@@ -289,7 +296,7 @@ class _Problem:
             bare, _, _, _, _, residual = self.jacobian(k)
             normal = (bare * self.w) @ bare.T
             gradient = (bare * self.w) @ residual
-            step = float(_solve2(normal, gradient)[1])
+            step = float(np.clip(k + _solve2(normal, gradient)[1], -_STEEP, 10.0 * _STEEP)) - k
             moved = False
             for _ in range(40):
                 trial = self.rss(k + step)
@@ -304,8 +311,10 @@ class _Problem:
                 break
         return self.finish(k)
 
-    def finish(self, k: float) -> ExponentialFit:
+    def finish(self, k: float, held: bool = False) -> ExponentialFit:
         bare, coupling, see, slope, levels, residual = self.jacobian(k)
+        if held:
+            bare[1] = 0.0
         shared = _inverse2((bare * self.w) @ bare.T)
         units = np.array([self.unit_v / self.unit_t, 1.0 / self.unit_t])
         return ExponentialFit(
@@ -315,7 +324,7 @@ class _Problem:
             shared=shared * np.outer(units, units) / self.unit_v**2,
             coupling=coupling * self.unit_v / units,
             rss=float(np.sum(self.w * residual**2)) * self.unit_v**2,
-            freedom=self.freedom,
+            freedom=self.freedom + int(held),
         )
 
 

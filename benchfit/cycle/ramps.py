@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
 from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.conditions import irregularities
 from benchfit.cycle.constants import PhaseFit
-from benchfit.cycle.ends import follows, started_beyond
+from benchfit.cycle.ends import begun, follows, started_beyond
 from benchfit.cycle.gaps import Gaps, Threshold, censored_mean, find_gaps, rough_gaps
 from benchfit.cycle.linear import (
     Form,
@@ -26,7 +26,7 @@ from benchfit.cycle.residuals import Profile, body_profile, poor_fit
 from benchfit.cycle.scatter import correlation, student
 from benchfit.cycle.sequence import Sequence, evened, odd_periods
 from benchfit.cycle.trace import Trace
-from benchfit.cycle.turns import Crossings, block_means
+from benchfit.cycle.turns import Crossings
 
 FEW = 4
 
@@ -64,7 +64,7 @@ def fit_ramps(trace: Trace, passages: Crossings, fast: bool) -> Ramps | None:
     gaps = rough_gaps(passages, fast)
     if gaps.last.size == 0:
         return None
-    layout = _begun(trace, _layout(trace, gaps, fast, 0, trace.size))
+    layout = begun(trace, _layout(trace, gaps, fast, 0, trace.size))
     fitted = fit_phases(trace, _guarded(layout), (not fast,))
     for _ in range(3):
         if not fitted.fits:
@@ -77,15 +77,6 @@ def fit_ramps(trace: Trace, passages: Crossings, fast: bool) -> Ramps | None:
         layout = _layout(trace, gaps, fast, first, trace.size)
         fitted = fit_phases(trace, layout, (not fast,), begin=fitted)
     return Ramps(fitted, gaps, fast) if fitted.fits else None
-
-
-def _begun(trace: Trace, layout: Layout) -> Layout:
-    """Leave out what lies before the first ramp's own extreme: a rest before the start-up."""
-    block = max(1, int(layout.length[0]) // 200)
-    values = block_means(trace.values[: layout.stop[0]], block) * (1.0 if layout.rising[0] else -1.0)
-    first = layout.first.copy()
-    first[0] = min(int(values.argmin()) * block, int(layout.stop[0]) - 1) if values.size else 0
-    return replace(layout, first=first)
 
 
 def _reach(fitted: Fitted) -> float:

@@ -62,8 +62,8 @@ def _find_ramp(w: Array, noise: float, block: int, size: int) -> _Ramp | None:
     y = w if rising else -w
     low, high = int(y.argmin()), int(y.argmax())
     # The level at the extreme itself is off by the luck of the noise: take the median of what is near it.
-    bottom = float(np.median(y[y < y[low] + 8.0 * noise]))
-    top = float(np.median(y[y > y[high] - 8.0 * noise]))
+    bottom = float(np.median(y[y <= y[low] + 8.0 * noise]))
+    top = float(np.median(y[y >= y[high] - 8.0 * noise]))
     if top - bottom < 8.0 * noise:
         return None
     low_at = np.flatnonzero(y[: high + 1] <= bottom + 4.0 * noise)

@@ -9,7 +9,7 @@ import numpy as np
 from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.constants import PhaseFit
 from benchfit.cycle.corners import Met, turn_guards
-from benchfit.cycle.ends import with_ends
+from benchfit.cycle.ends import begun, with_ends
 from benchfit.cycle.gaps import Threshold, censored_mean
 from benchfit.cycle.joints import Joints, clear_of, split
 from benchfit.cycle.linear import (
@@ -122,7 +122,7 @@ def fit_steps(trace: Trace, rough: Array, top: Array, level: float | None) -> St
     """Fit the phases between joints and find each joint by the split that both curves leave the least for."""
     last = np.floor(rough).astype(np.int64)
     joints = Joints(last, last + 1)
-    layout = _layout(trace, joints, top)
+    layout = begun(trace, _layout(trace, joints, top))
     kinds = (True, False) if level is None else (True,)
     fitted = fit_phases(trace, guarded(layout, _guard(layout), _guard(layout)), kinds)
     for _ in range(4):
@@ -135,7 +135,7 @@ def fit_steps(trace: Trace, rough: Array, top: Array, level: float | None) -> St
         found = clear_of(trace, fitted, split(trace, fitted, joints.middle, reach), max(6.0 * sigma, 1e-3 * _swing(trace)))
         same = np.array_equal(found.last, joints.last) and np.array_equal(found.first, joints.first)
         joints = found
-        layout = _layout(trace, joints, top)
+        layout = begun(trace, _layout(trace, joints, top))
         fitted = fit_phases(trace, layout, kinds, begin=fitted)
         if same:
             break

@@ -1,27 +1,33 @@
-"""Captures for the tests of the cycle stage."""
+"""Captures for the tests of the cycle stage.
+
+Closed-form exponential trains ask what the estimators make of noise, and need an exact truth; everything that
+concerns a circuit comes from ``tools.cycle_families``, which integrates it.
+"""
 
 from __future__ import annotations
 
 import numpy as np
 
 from benchfit.capture.model import Capture, Channel
+from benchfit.cycle import Assignment
+from tools.study_cycle import Train
+
+CAPACITOR = (Assignment("CH1", "capacitor"),)
 
 
-def train(x_up=3.0, x_down=3.0, cycles=5.3, samples=2000, noise=0.01, phase=0.3, seed=0, lower=-1.0, upper=1.0, tau=1.0):
-    """A closed-form exponential train with known truth (legitimate for studies of the estimator alone).
+def train(cycles: float = 5.3, noise: float = 0.01, seed: int = 0, phase: float = 0.3, x_up: float = 3.0,
+          x_down: float = 2.0, per_cycle: float = 300.0) -> tuple[Capture, dict[str, float]]:
+    """A closed-form train and its truth."""
+    made = Train(x_up, x_down, cycles, per_cycle, noise)
+    return made.capture(phase, seed), made.truth()
 
-    x = (A − S)/(A − E) of the rising and of the falling phase; noise as a share of the swing.
-    """
-    swing = upper - lower
-    a_up = lower + swing * x_up / (x_up - 1)
-    a_down = upper - swing * x_down / (x_down - 1)
-    t_up, t_down = tau * np.log(x_up), tau * np.log(x_down)
-    period = t_up + t_down
-    dt = cycles * period / samples
-    t = np.arange(samples) * dt
-    u = np.mod(t + phase * period, period)
-    v = np.where(u < t_up, a_up - (a_up - lower) * np.exp(-u / tau), a_down - (a_down - upper) * np.exp(-(u - t_up) / tau))
-    rng = np.random.default_rng(seed)
-    v = v + noise * swing * rng.standard_normal(samples)
-    truth = dict(period=period, charge_share=t_up / period, upper=upper, lower=lower, charge_curvature=1 / tau, discharge_curvature=1 / tau)
-    return Capture("train", dt, 0.0, (Channel("CH1", "V", v, 0.0),)), truth
+
+def capture_of(values: np.ndarray, interval: float = 1e-3, resolution: float = 0.0) -> Capture:
+    """One channel."""
+    return Capture("made", interval, 0.0, (Channel("CH1", "V", values, resolution),))
+
+
+def jittered(walk: float, white: float, cycles: int, rng: np.random.Generator) -> np.ndarray:
+    """Instants of a steady cycle of 1 s with accumulating and white jitter (s rms per cycle, per instant)."""
+    steps = 1.0 + walk * rng.standard_normal(cycles)
+    return np.concatenate([[0.0], np.cumsum(steps)]) + white * rng.standard_normal(cycles + 1)
