@@ -19,10 +19,9 @@ _NUMBERS = {
 OVERLOAD_WORDS = frozenset((
     "ol", "o.l", "over", "overload", "overloaded", "overflow", "overrange", "overrun", "ovld", "ovl", "ovfl", "ovrng",
     "ovr", "oor", "out-of-range", "out_of_range", "outofrange", "out of range", "over range", "under range", "under",
-    "underflow", "underrange", "clip", "clipped", "clipping", "sat",
-    "saturated", "saturation", "off scale", "offscale",
-    "inf", "infinity", "∞", "1.#inf", "1.#inf00", "#inf", "übersteuert", "überlauf", "overlast", "saturé", "dépassement",
-    "****", "*****", ">>>>", "<<<<",
+    "underflow", "underrange", "clip", "clipped", "clipping", "sat", "saturated", "saturation", "off scale", "offscale",
+    "inf", "infinity", "∞", "1.#inf", "1.#inf00", "#inf", "übersteuert", "überlauf", "overlast", "saturé",
+    "dépassement", "****", "*****", ">>>>", "<<<<",
 ))  # fmt: skip
 
 # Words for "no value"; the first line is what the C engine of pandas takes for a missing value too.

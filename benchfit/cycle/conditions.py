@@ -30,14 +30,12 @@ def sampling(period: float, shares: tuple[float, ...], samples: int, interval: f
     per_cycle = period / interval
     shortest = min((min(s, 1.0 - s) for s in shares), default=1.0) * per_cycle
     if per_cycle < 12:
-        remarks.append(
-            Remark("coarse-sampling", f"a cycle has only {per_cycle:.3g} samples: use a faster time base")
-        )
+        remarks.append(Remark("coarse-sampling", f"a cycle has only {per_cycle:.3g} samples: use a faster time base"))
     elif shortest < 4:
         remarks.append(
             Remark(
                 "coarse-sampling",
-                f"the shortest phase of the cycle has only {max(shortest, 0.0):.2g} samples: its course is not resolved",
+                f"the shortest phase of the cycle has only {max(shortest, 0.0):.2g} samples: its course is unresolved",
             )
         )
     return remarks
@@ -96,9 +94,7 @@ def irregularities(node: str, order: Sequence) -> list[Remark]:
         )
     elif order.leading < 1.0:
         remarks.append(
-            Remark(
-                "startup", f"{node}: the record begins with a pulse that is no part of the cycle; left out"
-            )
+            Remark("startup", f"{node}: the record begins with a pulse that is no part of the cycle; left out")
         )
     if order.missing or order.doubled:
         parts = [f"{order.missing} too long"] if order.missing else []

@@ -35,9 +35,7 @@ def fast_direction(passages: Crossings) -> bool | None:
     """The direction (True: rising) whose passages take no more than a few samples, None where both are slow."""
     taken = passages.after - passages.before
     medians = {
-        up: float(np.median(taken[passages.rising == up]))
-        for up in (True, False)
-        if np.any(passages.rising == up)
+        up: float(np.median(taken[passages.rising == up])) for up in (True, False) if np.any(passages.rising == up)
     }
     if len(medians) < 2:
         return None
@@ -151,8 +149,14 @@ def observe_ramps(trace: Trace, ramps: Ramps) -> Observed | None:
 
 
 def _observed(
-    trace: Trace, ramps: Ramps, names: list[str], values: Array, cov: Array, period: PeriodFit,
-    profiles: dict[bool, Profile], irregular: tuple[int, int],
+    trace: Trace,
+    ramps: Ramps,
+    names: list[str],
+    values: Array,
+    cov: Array,
+    period: PeriodFit,
+    profiles: dict[bool, Profile],
+    irregular: tuple[int, int],
 ) -> Observed:
     fitted, gaps, rising = ramps.fitted, ramps.gaps, not ramps.fast
     known = dict(zip(names, values, strict=True))
@@ -162,7 +166,13 @@ def _observed(
     ratio = 1.0 if not profiles or profiles[rising].sigma == 0 else np.sqrt(fit.variance) / profiles[rising].sigma
     length = known["charge_share"] if rising else 1.0 - known["charge_share"]
     drawn = PhaseFit(
-        trace.node, rising, float(start), float(end), fit.model.curvature, float(length * known["period"]), max(float(ratio), 1.0)
+        trace.node,
+        rising,
+        float(start),
+        float(end),
+        fit.model.curvature,
+        float(length * known["period"]),
+        max(float(ratio), 1.0),
     )
     order = Sequence(np.empty(0, dtype=np.int64), np.empty(0, dtype=bool), 0, 1.0, *irregular)
     begin = float(fitted.values_at(np.zeros(1, dtype=np.int64), fitted.layout.first[:1].astype(float))[0][0])
@@ -171,9 +181,18 @@ def _observed(
     instants = _passages(fitted, np.flatnonzero(fitted.sound))[0]
     sigma = [p.sigma for p in profiles.values() if p.structure > 0]
     return Observed(
-        tuple(names), values, cov, (gaps.first if rising else gaps.last) * fitted.interval, period.jitter,
-        float(sigma[0] if sigma else np.sqrt(fit.variance)), (float(known["upper"]), float(u["upper"])),
-        (float(known["lower"]), float(u["lower"])), (drawn,), remarks, {"period": np.diff(instants)}, node=trace.node,
+        tuple(names),
+        values,
+        cov,
+        (gaps.first if rising else gaps.last) * fitted.interval,
+        period.jitter,
+        float(sigma[0] if sigma else np.sqrt(fit.variance)),
+        (float(known["upper"]), float(u["upper"])),
+        (float(known["lower"]), float(u["lower"])),
+        (drawn,),
+        remarks,
+        {"period": np.diff(instants)},
+        node=trace.node,
     )
 
 

@@ -98,7 +98,9 @@ def hold_ends(trace: Trace, passages: Crossings) -> tuple[Array, Array, float] |
     if rises.size < 1:
         return None
     starts, stops = passages.after[rises], passages.before[rises + 1] + 1
-    tails = np.concatenate([trace.values[(a + b) // 2 : b][:2000] for a, b in zip(starts[:50], stops[:50], strict=True)])
+    tails = np.concatenate(
+        [trace.values[(a + b) // 2 : b][:2000] for a, b in zip(starts[:50], stops[:50], strict=True)]
+    )
     if tails.size == 0:
         return None
     level = float(np.median(tails))
@@ -132,7 +134,9 @@ def fit_steps(trace: Trace, rough: Array, top: Array, level: float | None) -> St
             fitted = _with_hold(fitted, layout, level)
         reach = max(6, int(0.15 * np.median(layout.length[1:-1]))) if layout.size > 2 else 6
         sigma = float(np.sqrt(fitted.fits[True].variance))
-        found = clear_of(trace, fitted, split(trace, fitted, joints.middle, reach), max(6.0 * sigma, 1e-3 * _swing(trace)))
+        found = clear_of(
+            trace, fitted, split(trace, fitted, joints.middle, reach), max(6.0 * sigma, 1e-3 * _swing(trace))
+        )
         same = np.array_equal(found.last, joints.last) and np.array_equal(found.first, joints.first)
         joints = found
         layout = begun(trace, _layout(trace, joints, top))
@@ -166,13 +170,23 @@ def _with_hold(fitted: Fitted, layout: Layout, level: float) -> Fitted:
     levels = np.where(mine, level, fitted.level)
     size = int(mine.sum())
     flat = ExponentialFit(
-        PhaseModel(level, 0.0, 0.0), np.full(size, level), np.full(size, np.inf), np.zeros((2, 2)), np.zeros((size, 2)), 0.0, 1
+        PhaseModel(level, 0.0, 0.0),
+        np.full(size, level),
+        np.full(size, np.inf),
+        np.zeros((2, 2)),
+        np.zeros((size, 2)),
+        0.0,
+        1,
     )
     information = np.where(mine, np.inf, fitted.information)
     middle = (layout.first + layout.stop - 1) / 2.0
     return replace(
-        fitted, level=levels, information=information, sound=fitted.sound | mine,
-        middle=np.where(mine, middle, fitted.middle), fits={**fitted.fits, False: flat},
+        fitted,
+        level=levels,
+        information=information,
+        sound=fitted.sound | mine,
+        middle=np.where(mine, middle, fitted.middle),
+        fits={**fitted.fits, False: flat},
     )
 
 
@@ -218,8 +232,17 @@ def constants(trace: Trace, found: Stepped) -> Observed | None:
     values = np.array([p[1] for p in parts])
     extremes = _extremes(trace, found, names, values, cov)
     return Observed(
-        names, values, cov, t_low, period.jitter, float(np.sqrt(variance)), *extremes, phases=_phase_fits(trace, found, names, values),
-        remarks=poor_fit(profiles, values[2] - values[3]), series={"period": np.diff(t_low)}, node=trace.node,
+        names,
+        values,
+        cov,
+        t_low,
+        period.jitter,
+        float(np.sqrt(variance)),
+        *extremes,
+        phases=_phase_fits(trace, found, names, values),
+        remarks=poor_fit(profiles, values[2] - values[3]),
+        series={"period": np.diff(t_low)},
+        node=trace.node,
     )
 
 
@@ -256,8 +279,12 @@ def _threshold(fitted: Fitted, joints: Joints, these: Index, variance: float, be
     found: Threshold = censored_mean(np.minimum(a, b), np.maximum(a, b), own)
     rate = float(rates.mean())
     form = phase_form(fitted, phase, joints.middle[these], np.full(these.size, 1.0 / these.size))
-    spread = float(np.sum(variance * form.own[information_held(fitted)] ** 2 / fitted.information[information_held(fitted)]))
-    return _Turn(found.mean, rate, (found.mean - float(middle.mean())) / rate, max(found.u**2 - spread, 0.0) / rate**2, form)
+    spread = float(
+        np.sum(variance * form.own[information_held(fitted)] ** 2 / fitted.information[information_held(fitted)])
+    )
+    return _Turn(
+        found.mean, rate, (found.mean - float(middle.mean())) / rate, max(found.u**2 - spread, 0.0) / rate**2, form
+    )
 
 
 def information_held(fitted: Fitted) -> Array:
@@ -312,13 +339,21 @@ def _share(t_up: Array, t_low: Array, up_first: bool, period: float) -> tuple[fl
 def _phase_fits(trace: Trace, found: Stepped, names: tuple[str, ...], values: Array) -> tuple[PhaseFit, ...]:
     known = dict(zip(names, values, strict=True))
     rise = PhaseFit(
-        trace.node, True, known.get("charge_start", known["lower"]), known["upper"], known["charge_curvature"],
+        trace.node,
+        True,
+        known.get("charge_start", known["lower"]),
+        known["upper"],
+        known["charge_curvature"],
         known["charge_share"] * known["period"],
     )
     if found.held:
         return (rise,)
     fall = PhaseFit(
-        trace.node, False, known["discharge_start"], known["lower"], known["discharge_curvature"],
+        trace.node,
+        False,
+        known["discharge_start"],
+        known["lower"],
+        known["discharge_curvature"],
         (1.0 - known["charge_share"]) * known["period"],
     )
     return rise, fall
