@@ -121,7 +121,7 @@ capacitance = "12p"
 
 [record]
 unit = "mast 2, spare"
-caution = "125 V d.c.: work with one hand, let the capacitor discharge, use a probe rated for it; qualified persons only"
+caution = "125 V d.c.: one hand, discharge the capacitor first, a probe rated for it; qualified persons only"
 """
 
 SHEETS["orchard_night_marker"] = """\
