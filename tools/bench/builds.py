@@ -15,7 +15,7 @@ import numpy as np
 
 from tools.bench.chain import Input, Record, measure
 from tools.bench.designs import DESIGNS, Rng
-from tools.bench.faults import Fault, draw_fault, matters, restored, sensible, within
+from tools.bench.faults import Fault, alone, draw_fault, matters, restored, sensible, within
 from tools.bench.prior import draw_prior
 from tools.bench.simulate import Waves, simulate
 from tools.bench.specs import Design, written
@@ -55,15 +55,11 @@ class Build:
     inputs: Mapping[str, Input] = field(default_factory=dict)
 
 
-def _frequency(
-    design: Design, values: Mapping[str, float], probe: Mapping[str, tuple[float, float]]
-) -> float:
+def _frequency(design: Design, values: Mapping[str, float], probe: Mapping[str, tuple[float, float]]) -> float:
     return 1.0 / simulate(design.circuit, values, probe=probe).period
 
 
-def draw(
-    circuit: str, seed: int, *, mix: str = "rectangular", kind: str | None = None, rough: bool = False
-) -> Build:
+def draw(circuit: str, seed: int, *, mix: str = "rectangular", kind: str | None = None, rough: bool = False) -> Build:
     """One build of a circuit. ``mix``: "rectangular", "gaussian", or "prior" (the program's own table).
     ``rough``: devices that are not as simple as their models (bends, soft clamps)."""
     rng = np.random.default_rng([seed, sorted(DESIGNS).index(circuit)])
@@ -73,11 +69,7 @@ def draw(
         meant = simulate(circuit, design.nominal())
         if not meant.oscillates:
             continue
-        fault = (
-            draw_prior(rng, design, meant.period)
-            if mix == "prior"
-            else draw_fault(rng, design, meant.period, kind)
-        )
+        fault = draw_prior(rng, design, meant.period) if mix == "prior" else draw_fault(rng, design, meant.period, kind)
         true = {**within(rng, design, mix, fault.values), **fault.values}
         if not sensible(design, true):
             continue
@@ -147,9 +139,7 @@ def _built(
     waves, interval, begin = _run(rng, seed, design, true, probe, ideal, cycles, samples, options)
     inputs, scope = _scope(rng, waves, nodes)
     ppm = 50.0 if not scope else 25.0
-    record = measure(
-        waves, inputs, interval, samples, timebase=1e-6 * rng.uniform(-ppm, ppm), begin=begin, seed=seed
-    )
+    record = measure(waves, inputs, interval, samples, timebase=1e-6 * rng.uniform(-ppm, ppm), begin=begin, seed=seed)
     readings = _readings(rng, design, true)
     names = {n: f"CH{i + 1}" for i, n in enumerate(nodes)}
     target = float(f"{1 / meant.period:.4g}")
@@ -171,7 +161,7 @@ def _built(
         lifted=_frequency(design, true, {}),
         restored=_frequency(design, restored(fault, design, true), probe),
         nominal=_frequency(design, design.nominal(), probe),
-        alone=_frequency(design, {**design.nominal(), **fault.values}, probe),
+        alone=_frequency(design, alone(fault, design), probe),
         readings=readings,
         gains={n: i.gain for n, i in inputs.items()},
         offsets={n: i.offset for n, i in inputs.items()},
@@ -193,9 +183,7 @@ def _run(
     """The waves to be recorded, the interval, and where the record begins."""
     if not ideal.oscillates:
         powered = rng.uniform() < 0.7
-        waves = simulate(
-            design.circuit, true, probe=probe, start="from rest" if powered else "running", **options
-        )
+        waves = simulate(design.circuit, true, probe=probe, start="from rest" if powered else "running", **options)
         length = max(waves.span, 1e-3) * rng.uniform(0.15, 0.6)
         return waves, float(f"{length / samples:.3g}"), -0.08 * length if powered else 0.0
     interval = float(f"{cycles * ideal.period / samples:.3g}")
@@ -203,9 +191,7 @@ def _run(
     if rng.uniform() < 0.4:
         swing = np.ptp(ideal.at(np.linspace(0, ideal.period, 400))[design.nodes[0]])
         noise = swing * float(np.exp(rng.uniform(np.log(1e-4), np.log(2e-3))))
-    lag = (
-        ideal.period * rng.uniform(0.0, 0.01) if design.circuit == "gas-lamp" and rng.uniform() < 0.5 else 0.0
-    )
+    lag = ideal.period * rng.uniform(0.0, 0.01) if design.circuit == "gas-lamp" and rng.uniform() < 0.5 else 0.0
     if not noise and not lag:
         return ideal, interval, None
     try:
@@ -240,11 +226,7 @@ def _scope(rng: Rng, waves: Waves, nodes: tuple[str, ...]) -> tuple[dict[str, In
             offset=offset * rng.uniform(-1, 1),
             noise_divisions=float(np.exp(rng.uniform(np.log(0.015), np.log(0.08)))),
         )
-    scope = (
-        {"gain": f"{gain:g}%", "offset": f"{written(limit)} V", "timebase": "25ppm"}
-        if stated and limit
-        else {}
-    )
+    scope = {"gain": f"{gain:g}%", "offset": f"{written(limit)} V", "timebase": "25ppm"} if stated and limit else {}
     return inputs, scope
 
 

@@ -95,9 +95,7 @@ def _begin(waves: Waves, length: float, begin: float | None, rng: np.random.Gene
         return float(rng.uniform(0.0, waves.period))
     room = waves.span - waves.starts[0] - length
     if room < 0:
-        raise ValueError(
-            f"{waves.span - waves.starts[0]:.3g} s were simulated, {length:.3g} s are to be recorded"
-        )
+        raise ValueError(f"{waves.span - waves.starts[0]:.3g} s were simulated, {length:.3g} s are to be recorded")
     return float(waves.starts[0] + rng.uniform(0.0, min(room, waves.period)))
 
 

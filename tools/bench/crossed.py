@@ -24,9 +24,7 @@ def _half(p: Values, off: int, late: bool) -> Mode:
     resistor, nominal, load, other = _pair(p, off)
     on = 3 - off
     aside = p.C_stray + getattr(p, f"C_probe_base{off}")
-    source = loaded(
-        p, lambda v: (p.supply / resistor + 0.0 * v, 1.0 / resistor + 0.0 * v), f"base{off}", p.supply
-    )
+    source = loaded(p, lambda v: (p.supply / resistor + 0.0 * v, 1.0 / resistor + 0.0 * v), f"base{off}", p.supply)
 
     def base(w: Array) -> tuple[Array, Array]:
         c = nominal * (1.0 + p.C_slope * (w - p.V_CE))

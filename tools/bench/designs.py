@@ -299,9 +299,7 @@ def triangle(rng: Rng) -> Design:
         ratio("V_high", up, percent, "level"),
         ratio("V_low", down, percent, "level"),
     )
-    return Design(
-        "triangle", specs, ("capacitor", "output"), (), (("R_in", "R_feedback"),), ("delay", "slew")
-    )
+    return Design("triangle", specs, ("capacitor", "output"), (), (("R_in", "R_feedback"),), ("delay", "slew"))
 
 
 def current_ramp(rng: Rng) -> Design:

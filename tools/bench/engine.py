@@ -299,9 +299,7 @@ def run(
     n = p.size
     if until is None:
         until = rig.horizon(p) * (cycles or 1)
-    out = Run(
-        np.zeros(n), np.array(y, dtype=float), [mode] * n, np.zeros(n, dtype=int), np.zeros(n, dtype=bool)
-    )
+    out = Run(np.zeros(n), np.array(y, dtype=float), [mode] * n, np.zeros(n, dtype=int), np.zeros(n, dtype=bool))
     waiting: dict[str, NDArray[np.int64]] = {mode: np.arange(n)}
     for _ in range(400 * (cycles or 1)):
         if not waiting:
@@ -338,14 +336,10 @@ def _stay(
         if not some.size:
             continue
         bound = stay.mode_of(some)
-        after, jump = (
-            (bound.then, bound.jump) if j == len(mode.ends) else (bound.ends[j].then, bound.ends[j].jump)
-        )
+        after, jump = (bound.then, bound.jump) if j == len(mode.ends) else (bound.ends[j].then, bound.ends[j].jump)
         state = left[:, some] if jump is None else jump(left[:, some])
         out.state[:, index[some]] = state
-        out.entries.append(
-            Entry(name, after, index[some], out.time[index[some]].copy(), left[:, some], state)
-        )
+        out.entries.append(Entry(name, after, index[some], out.time[index[some]].copy(), left[:, some], state))
         _enter(rig, after, index[some], cycles, out, waiting)
     over = np.flatnonzero(stay.exit < 0)
     out.state[:, index[over]] = left[:, over]

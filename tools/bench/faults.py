@@ -32,9 +32,7 @@ def _spread(rng: Rng, spec: Spec, mix: str, move: float) -> float:
     if spec.log:
         low, high = np.log(low), np.log(high)
     if mix == "gaussian":
-        value = 0.5 * (low + high) + (high - low) / np.sqrt(12) * float(
-            np.clip(rng.standard_normal(), -2.5, 2.5)
-        )
+        value = 0.5 * (low + high) + (high - low) / np.sqrt(12) * float(np.clip(rng.standard_normal(), -2.5, 2.5))
     else:
         value = rng.uniform(low, high)
     return float(np.exp(value)) * move if spec.log else float(value) + move
@@ -225,14 +223,10 @@ def matters(design: Design, values: Mapping[str, float], fault: Fault) -> bool:
     for cause in fault.causes:
         if cause in values:
             continue
-        without = simulate(
-            design.circuit, {**values, **{k: v for k, v in fault.values.items() if k != cause}}
-        )
+        without = simulate(design.circuit, {**values, **{k: v for k, v in fault.values.items() if k != cause}})
         if not (with_it.oscillates and without.oscillates):
             continue
-        change = max(
-            abs(np.log(with_it.period / without.period)), abs(with_it.high_share - without.high_share)
-        )
+        change = max(abs(np.log(with_it.period / without.period)), abs(with_it.high_share - without.high_share))
         if change < 0.02 and _moved_levels(with_it, without, design.nodes[0]) < 0.02:
             return False
     return True
@@ -245,7 +239,24 @@ def _moved_levels(one: Waves, two: Waves, node: str) -> float:
 
 
 def restored(fault: Fault, design: Design, true: Mapping[str, float]) -> dict[str, float]:
-    """The build with what is off at its nominal, and no parasitic."""
-    out = {k: v for k, v in true.items() if k not in fault.values}
+    """The build with what is off at its nominal, and no parasitic; what follows a part moves back with it."""
     nominal = design.nominal()
-    return {**out, **{k: nominal[k] for k in fault.values if k in nominal}}
+    out = {k: nominal.get(k, v) if k in fault.values else v for k, v in true.items()}
+    out = {k: v for k, v in out.items() if k in nominal}
+    return _carried(fault, design, true, out)
+
+
+def alone(fault: Fault, design: Design) -> dict[str, float]:
+    """The nominal parts with the fault as the only thing amiss; what follows a part moves with it."""
+    nominal = design.nominal()
+    return _carried(fault, design, nominal, {**nominal, **fault.values})
+
+
+def _carried(fault: Fault, design: Design, before: Mapping[str, float], after: dict[str, float]) -> dict[str, float]:
+    """Values after a change, with the parts that follow others carried along."""
+    out = dict(after)
+    for spec in design.specs:
+        if spec.follows and spec.name not in fault.values:
+            was, now = _moved(spec, design, before), _moved(spec, design, after)
+            out[spec.name] = before[spec.name] * now / was if spec.log else before[spec.name] + now - was
+    return out

@@ -96,9 +96,7 @@ def _horizon(p: Values) -> Array:
     return 60.0 * np.where(ramp > 0, ramp, free) + 20.0 * (p.delay + p.late_up)
 
 
-def _rig(
-    name: str, required: tuple[str, ...], defaults: Numbers, device: Callable[[Numbers], Numbers]
-) -> Rig:
+def _rig(name: str, required: tuple[str, ...], defaults: Numbers, device: Callable[[Numbers], Numbers]) -> Rig:
     """A rig whose ``device`` turns parts into fire, quit, floor (V), r (ohm) and the source that feeds the
     node."""
 

@@ -179,9 +179,7 @@ class Judge(Laboratory):
             if not open_.size:
                 break
             here, _, after, curvature = self._solve(x[open_], [hypothesis[k] for k in open_])
-            settled = np.isfinite(here) & (
-                np.abs(here - np.where(np.isfinite(best[open_]), best[open_], 1e300)) < 0.02
-            )
+            settled = np.isfinite(here) & (np.abs(here - np.where(np.isfinite(best[open_]), best[open_], 1e300)) < 0.02)
             better = here < best[open_]
             some = open_[better]
             best[some], kept[some], curve[some] = here[better], x[some], curvature[better]
@@ -255,9 +253,7 @@ class Judge(Laboratory):
             left = residual[:, mine] + use @ step
             misfit = (left**2).sum(axis=0) + (step**2).sum(axis=0)
             best = int(np.argmin(misfit))
-            start[k] = points[mine[best]] + self._limited(
-                h, points[mine[best]], step[:, best] * self._scale()
-            )
+            start[k] = points[mine[best]] + self._limited(h, points[mine[best]], step[:, best] * self._scale())
         return start
 
     def _evidence(self, h: Hypothesis, misfit: float, curvature: Array) -> float:
@@ -273,9 +269,7 @@ class Judge(Laboratory):
             more = -float(np.log(width / np.sqrt(2 * np.pi)))
         return float(-0.5 * misfit - 0.5 * np.linalg.slogdet(curvature)[1] + more)
 
-    def _posterior(
-        self, hypothesis: list[Hypothesis], log_z: Array, misfit: Array, curve: Array
-    ) -> Judgement:
+    def _posterior(self, hypothesis: list[Hypothesis], log_z: Array, misfit: Array, curve: Array) -> Judgement:
         weight = np.exp(log_z - log_z.max())
         sums: dict[tuple[str, ...], float] = {}
         fits: dict[tuple[str, ...], float] = {}

@@ -71,9 +71,7 @@ class Laboratory:
         stated = "[scope]" in b.sheet
         gain = float(b.sheet.split('gain = "')[1].split("%")[0]) / 100 if stated else 0.03
         offset = (
-            [float(b.sheet.split('offset = "')[1].split(" V")[0])] * len(spans)
-            if stated
-            else [0.02 * s for s in spans]
+            [float(b.sheet.split('offset = "')[1].split(" V")[0])] * len(spans) if stated else [0.02 * s for s in spans]
         )
         clock = 25e-6 if stated else 50e-6
         self.scope_u = np.array([clock, *(x for o in offset for x in (gain, o))]) / np.sqrt(3)
@@ -90,9 +88,7 @@ class Laboratory:
             s = self.specs[i]
             value = np.exp(x[:, i]) if s.log else x[:, i].copy()
             if s.follows == "low":
-                value += (out["V_breakover"] - out["V_breakback"]) - (
-                    nominal["V_breakover"] - nominal["V_breakback"]
-                )
+                value += (out["V_breakover"] - out["V_breakback"]) - (nominal["V_breakover"] - nominal["V_breakback"])
             elif s.follows:
                 now, meant = out[s.follows], nominal[s.follows]
                 value = value * (now / meant) if s.log else value + (now - meant)
@@ -183,9 +179,7 @@ class Laboratory:
     # ----------------------------------------------------------------------------------------------------
 
 
-def follow(
-    specs: Mapping[str, Spec], nominal: Mapping[str, float], true: Mapping[str, float], s: Spec
-) -> float:
+def follow(specs: Mapping[str, Spec], nominal: Mapping[str, float], true: Mapping[str, float], s: Spec) -> float:
     """How far a following part's limits moved with the true value of what it follows."""
     if s.follows == "low":
         return (true["V_breakover"] - true["V_breakback"]) - (nominal["V_breakover"] - nominal["V_breakback"])
@@ -210,9 +204,7 @@ def _first_stretch(rig: Rig, done: Run) -> Array:
     return out
 
 
-def _sample(
-    rig: Rig, p: Values, done: Run, high: Array, nodes: tuple[str, ...]
-) -> dict[str, tuple[Array, Array]]:
+def _sample(rig: Rig, p: Values, done: Run, high: Array, nodes: tuple[str, ...]) -> dict[str, tuple[Array, Array]]:
     """Node voltages at the quadrature points of both stretches: {node: ((points, N), (points, N))}."""
     element = np.concatenate([s.element for s in done.steps])
     time = np.concatenate([s.time for s in done.steps])
@@ -241,6 +233,4 @@ def _sample(
         for node in nodes:
             out[node][mine] = seen[node]
     count = NODES.size
-    return {
-        node: (v.reshape(2 * count, n)[:count], v.reshape(2 * count, n)[count:]) for node, v in out.items()
-    }
+    return {node: (v.reshape(2 * count, n)[:count], v.reshape(2 * count, n)[count:]) for node, v in out.items()}

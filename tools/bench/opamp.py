@@ -96,13 +96,9 @@ def _level(p: Values, late: bool, high: bool) -> Mode:
 
     if late:
         wait = p.delay + (p.late_up if high else p.late_down)
-        return Mode(
-            rates, nodes, lasts=np.maximum(wait, 0.0), then="falling" if high else "rising", jump=leave
-        )
+        return Mode(rates, nodes, lasts=np.maximum(wait, 0.0), then="falling" if high else "rising", jump=leave)
     sign, trip = (1.0, p.trip_up) if high else (-1.0, p.trip_down)
-    past = End(
-        lambda y: sign * (node(y[0]) - _plus(p, output(y)) - trip), "late high" if high else "late low"
-    )
+    past = End(lambda y: sign * (node(y[0]) - _plus(p, output(y)) - trip), "late high" if high else "late low")
     return Mode(rates, nodes, ends=(past,))
 
 

@@ -48,9 +48,7 @@ def _cause(rng: Rng, design: Design, period: float) -> Fault:
     circuit = benchfit.circuits.get(design.circuit)
     specs = {s.name: s for s in design.specs if s.high > s.low and s.name not in ("I_peak", "I_valley")}
     weights: dict[tuple[str, ...], float] = {
-        (p.name,): odds.weight(p.name, p.kind)
-        for p in circuit.parts
-        if p.name in specs or p.name in design.parasitics
+        (p.name,): odds.weight(p.name, p.kind) for p in circuit.parts if p.name in specs or p.name in design.parasitics
     }
     swaps = [s for s in design.swaps if _apart(specs[s[0]], specs[s[1]])]
     families = [f for f in getattr(circuit, "families", ()) if f[0] in specs and f[1] in specs]
@@ -67,9 +65,7 @@ def _cause(rng: Rng, design: Design, period: float) -> Fault:
     if name in specs:
         value, how = _off(rng, specs[name])
         return Fault((name,), {name: value}, how)
-    scales: Mapping[str, object] = {
-        k: np.asarray(v) for k, v in {**design.nominal(), "period": period}.items()
-    }
+    scales: Mapping[str, object] = {k: np.asarray(v) for k, v in {**design.nominal(), "period": period}.items()}
     low, high = circuit.part(name).reach(scales)  # type: ignore[misc]
     size = float(np.exp(rng.uniform(*sorted((np.log(low), np.log(high))))))
     sign = -1.0 if name in ("C_slope", "I_leak") and rng.uniform() < 0.5 else 1.0

@@ -161,9 +161,7 @@ def _share(build: Build, record: Mapping[str, Any] | None) -> tuple[float, float
         return None
     if not (np.isfinite(build.restored) and np.isfinite(build.frequency)):
         return None
-    said = sum(
-        s["share"] for s in miss["shares"] if s["cause"] in build.fault.causes and s["share"] is not None
-    )
+    said = sum(s["share"] for s in miss["shares"] if s["cause"] in build.fault.causes and s["share"] is not None)
     back = (build.frequency - build.restored) / build.target
     alone = (build.alone - build.nominal) / build.target
     return float(said), back, 0.5 * (back + alone) if np.isfinite(alone) else back
@@ -195,8 +193,7 @@ def _judged_lines(outcomes: Sequence[Outcome]) -> list[str]:
         f"  truth within the first three         {_rate([o.in_three for o in open_])}",
         f"healthy builds accused                 {_rate([not o.first_right for o in healthy])}",
         f"settled on a wrong answer, of all      {_rate([o.settled_wrong for o in outcomes])}",
-        f"  or on one of two, the other hidden   "
-        f"{_rate([bool(o.settled) and not o.first_right for o in outcomes])}",
+        f"  or on one of two, the other hidden   {_rate([bool(o.settled) and not o.first_right for o in outcomes])}",
         f"two faults that no single cause explains {len(needed)} of {len(two)}",
         f"  both named in one of three           {_rate([o.in_three for o in needed])}",
         f"  first right                          {_rate([o.first_right for o in needed])}",

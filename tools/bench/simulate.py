@@ -84,9 +84,7 @@ def settle(
             break
         index = np.flatnonzero(alive)
         again = run(rig, p.take(index), rig.first, done.state[:, index], cycles=1, rtol=rtol)
-        moved = np.max(
-            np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0
-        )
+        moved = np.max(np.abs(again.state - done.state[:, index]) / np.maximum(np.abs(again.state), 1e-3), axis=0)
         alive[index[(again.cycles < 1) | (again.time <= 0)]] = False
         done.state[:, index] = again.state
         if np.all(moved[again.cycles >= 1] < close):
@@ -113,9 +111,7 @@ def _chain(rig: Rig, p: Values, first: Array, n: int) -> tuple[Run, Array]:
     for _ in range(50):
         done = run(rig, p, rig.first, y, cycles=1, keep=True)
         if (done.cycles < 1).any():
-            raise RuntimeError(
-                f"{rig.name}: a cycle did not come; the noise on the thresholds stops this build"
-            )
+            raise RuntimeError(f"{rig.name}: a cycle did not come; the noise on the thresholds stops this build")
         after = np.concatenate([first[:, None], done.state[:, :-1]], axis=1)
         moved = np.max(np.abs(after - y))
         y = after
@@ -177,11 +173,7 @@ def simulate(
     noisy = threshold_noise > 0 or lag > 0
     if start == "running" and not noisy:
         cycles = 1
-    own = (
-        _repeat(p, cycles).changed(**_draw(rng, cycles, threshold_noise, lag))
-        if noisy
-        else _repeat(p, cycles)
-    )
+    own = _repeat(p, cycles).changed(**_draw(rng, cycles, threshold_noise, lag)) if noisy else _repeat(p, cycles)
     if start == "running":
         done, lengths = _chain(rig, own, settled.state[:, 0], cycles)
         return _waves(rig, own, done.steps, lengths, 0.0, not noisy, _share(done, rig))
@@ -193,9 +185,7 @@ def _waves(
 ) -> Waves:
     starts = lead + np.concatenate([[0.0], np.cumsum(lengths)])
     moved = tuple(replace(s, time=s.time + starts[s.element]) for s in steps)
-    return Waves(
-        rig, own, moved, starts, float(starts[-1]), repeats, float(lengths.mean()), share, periods=lengths
-    )
+    return Waves(rig, own, moved, starts, float(starts[-1]), repeats, float(lengths.mean()), share, periods=lengths)
 
 
 def _from_rest(rig: Rig, own: Values, cycles: int, settled: Array) -> Waves:
@@ -233,9 +223,6 @@ def _resting(rig: Rig, p: Values, start: str) -> Waves:
 def trips(waves_entries: list[Entry]) -> list[tuple[str, str, float]]:
     """The mode changes of the first element in order of time: (from, to, s)."""
     all_of = [
-        (e.before, e.after, float(t))
-        for e in waves_entries
-        for i, t in zip(e.element, e.time, strict=True)
-        if i == 0
+        (e.before, e.after, float(t)) for e in waves_entries for i, t in zip(e.element, e.time, strict=True) if i == 0
     ]
     return sorted(all_of, key=lambda x: x[2])

@@ -50,8 +50,7 @@ def decimal_comma(record: Record, names: Mapping[str, str]) -> str:
     """Semicolons and decimal commas; names, units, a blank row; times in milliseconds; a byte order mark."""
     head = [["Time", *names.values()], ["(ms)", *("(V)" for _ in names)], []]
     times = [
-        f"{1e3 * (record.start + i * record.interval):.9g}"
-        for i in range(next(iter(record.channels.values())).size)
+        f"{1e3 * (record.start + i * record.interval):.9g}" for i in range(next(iter(record.channels.values())).size)
     ]
     body = [[t, *row[1:]] for t, row in zip(times, _columns(record, names), strict=True)]
     text = [";".join(cell.replace(".", ",") for cell in row) for row in [*head, *body]]
