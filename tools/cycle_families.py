@@ -59,20 +59,30 @@ def nodes(*names: str, shape: str = "timing", coupling: str = "dc") -> tuple[Ass
     )
 
 
-def op_amp(rng: np.random.Generator, **more: float) -> tuple[Waves, dict[str, float]]:
-    """An astable of random parts and what is true of it; levels apart, so that its halves differ."""
+def op_amp_parts(rng: np.random.Generator) -> dict[str, float]:
+    """Random parts of an astable; levels apart, so that its halves differ."""
     high, low = rng.uniform(8, 14), -rng.uniform(6, 14)
     top, bottom = 10e3, 10e3 * rng.uniform(0.4, 2.0)
     r, c = 10 ** rng.uniform(3.7, 5), 10 ** rng.uniform(-8.5, -6)
-    parts = {"R": r, "C": c, "R_top": top, "R_bottom": bottom, "V_high": high, "V_low": low, **more}
-    waves = simulate("op-amp", parts)
-    share = bottom / (top + bottom)
-    truth = {
+    return {"R": r, "C": c, "R_top": top, "R_bottom": bottom, "V_high": high, "V_low": low}
+
+
+def op_amp(rng: np.random.Generator, **more: float) -> tuple[Waves, dict[str, float]]:
+    """An astable of random parts and what is true of it."""
+    parts = op_amp_parts(rng)
+    waves = simulate("op-amp", {**parts, **more})
+    return waves, op_amp_truth(parts, waves)
+
+
+def op_amp_truth(parts: Mapping[str, float], waves: Waves) -> dict[str, float]:
+    """Constants of an ideal astable."""
+    share, kappa = parts["R_bottom"] / (parts["R_top"] + parts["R_bottom"]), 1 / (parts["R"] * parts["C"])
+    high, low = parts["V_high"], parts["V_low"]
+    return {
         "period": waves.period, "charge_share": waves.high_share, "upper": high * share, "lower": low * share,
-        "charge_curvature": 1 / (r * c), "discharge_curvature": 1 / (r * c), "high": high, "low": low,
+        "charge_curvature": kappa, "discharge_curvature": kappa, "high": high, "low": low,
         "high_share": waves.high_share,
     }
-    return waves, truth
 
 
 def lamp(rng: np.random.Generator, cycles: int, lag: float = 0.0, **more: float) -> tuple[Waves, dict[str, float]]:
@@ -228,9 +238,11 @@ def alternating(seed: int) -> Case:
     """Captured a.c.-coupled, and declared so."""
     rng = np.random.default_rng(seed)
     waves, truth = op_amp(rng)
-    corner = rng.uniform(0.0005, 0.003) / waves.period
+    while waves.period > 0.02:
+        waves, truth = op_amp(rng)
+    corner = rng.uniform(2.0, 10.0)
     capture, _ = look(waves, rng, *_shape(rng), "capacitor", coupling="ac", corner=corner)
-    known = {n: truth[n] for n in ("period", "charge_share")}
+    known = {n: truth[n] for n in ("period", "charge_share", "charge_curvature", "discharge_curvature")}
     return Case(capture, nodes("capacitor", coupling="ac"), known, "ac-coupled")
 
 

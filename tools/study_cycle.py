@@ -1,12 +1,13 @@
-"""How well the cycle stage measures: ``python tools/study_cycle.py [bound] [coverage] [conditions] [cost]``.
+"""How well the cycle stage measures: ``python tools/study_cycle.py [bound] [coverage] [jitter] [conditions]``.
 
 ``bound``      root-mean-square errors over the Cramér–Rao bound, on white noise
 ``coverage``   how often 95 % intervals hold the truth, and how wide they are against the best possible
+``jitter``     the same with jitter, 8 bits and scope errors drawn, intervals with the scope's terms
 ``conditions`` how often each condition of the bench is named where it is, and where it is not
-``cost``       time and memory of the whole stage, and of the fit once the samples are binned
 
 Closed-form exponential trains are the right signals for the first two: they ask what the estimators make of white
-noise, and their truth must be exact. All other captures are integrated (``tools/bench``).
+noise, and their truth must be exact. All other captures are integrated (``tools/bench``). What the stage costs, and how
+it stands against an hour's own work, is in ``benchmark_cycle.py``.
 """
 
 from __future__ import annotations
@@ -277,7 +278,65 @@ def _coverage_table(rows: list[dict[str, tuple[float, float, float]]], title: st
     print(f"  {title:16s} all together {100 * np.mean(every):.1f} %;  " + ", ".join(cells))
 
 
-STUDIES: dict[str, Callable[[], None]] = {"bound": study_bound, "coverage": study_coverage}
+def study_jitter(repeats: int = 400) -> None:
+    """With jitter, 8 bits and scope errors drawn: intervals from u, that is with the scope's own terms."""
+    from tools.bench.chain import Input
+    from tools.bench.chain import measure as record
+    from tools.bench.simulate import simulate
+    from tools.cycle_families import nodes, op_amp_parts, op_amp_truth, to_capture
+
+    rng = np.random.default_rng(8)
+    held: dict[str, list[bool]] = {}
+    sharp: dict[str, list[float]] = {}
+    for k in range(repeats):
+        parts = op_amp_parts(rng)
+        truth = op_amp_truth(parts, simulate("op-amp", parts))
+        swing = truth["upper"] - truth["lower"]
+        cycles, per_cycle = float(np.exp(rng.uniform(np.log(4), np.log(40)))), float(rng.uniform(100, 400))
+        jitter = 10 ** rng.uniform(-4, -2.3) * swing
+        waves = simulate("op-amp", parts, cycles=int(cycles) + 4, seed=k, threshold_noise=jitter)
+        error = {"gain": rng.uniform(-0.03, 0.03), "offset": rng.uniform(-0.02, 0.02) * swing,
+                 "timebase": rng.uniform(-50e-6, 50e-6)}
+        interval = truth["period"] / per_cycle
+        setting = Input(gain=error["gain"], offset=error["offset"], noise_divisions=float(rng.uniform(0.02, 0.06)))
+        seen = record(waves, {"capacitor": setting}, interval, int(cycles * per_cycle), timebase=error["timebase"],
+                      seed=k + 1)
+        found = measure(to_capture(seen.channels, interval), nodes("capacitor"))
+        for name in COVERED[:6]:
+            level = name in ("upper", "lower")
+            clock = 0.0 if level or name == "charge_share" else 50e-6 / np.sqrt(3) * truth[name]
+            scope = np.hypot(0.03 / np.sqrt(3) * truth[name], 0.02 * swing / np.sqrt(3)) if level else clock
+            u = float(np.hypot(found.u(name), scope))
+            held.setdefault(name, []).append(abs(found.value(name) - truth[name]) < 1.96 * u)
+            sharp.setdefault(name, []).append(u / (swing if level else truth[name]))
+    print(f"jitter, 8 bits and scope errors, {repeats} captures: share of 95 % intervals (u) that hold the truth")
+    cells = [f"{n} {100 * np.mean(held[n]):.1f} % (median u {np.median(sharp[n]):.1e})" for n in held]
+    print(f"  all together {100 * np.mean(list(held.values())):.1f} %;  " + ", ".join(cells))
+
+
+def study_conditions(repeats: int = 100) -> None:
+    """How often each condition is named, how often something else is, and how often the constants are within 3 u."""
+    from tools.cycle_families import FAMILIES
+
+    print(f"conditions, {repeats} captures each: named; named beside it; constants within 3 u of the truth")
+    for family, build in FAMILIES.items():
+        named, beside, within = 0, dict[str, int](), list[bool]()
+        for seed in range(repeats):
+            case = build(seed)
+            found = measure(case.capture, case.assignments)
+            codes = {r.code for r in found.remarks}
+            named += case.code in codes
+            for code in codes - {case.code}:
+                beside[code] = beside.get(code, 0) + 1
+            within += [abs(found.value(n) - t) < 3 * found.u(n) for n, t in case.truth.items() if n in found]
+        wanted = f"{build(0).code} {100 * named / repeats:.0f} %" if build(0).code else "nothing to name"
+        others = ", ".join(f"{c} {100 * n / repeats:.0f} %" for c, n in beside.items()) or "nothing"
+        print(f"  {family:18s} {wanted:24s} beside it: {others:40s} within 3 u: {100 * np.mean(within):.1f} %")
+
+
+STUDIES: dict[str, Callable[[], None]] = {
+    "bound": study_bound, "coverage": study_coverage, "jitter": study_jitter, "conditions": study_conditions,
+}
 
 
 def main(words: list[str]) -> None:

@@ -61,7 +61,11 @@ def quantisation(traces: list[Trace]) -> list[Remark]:
 def coupling(traces: list[Trace]) -> list[Remark]:
     """``ac-coupled``, where it was declared."""
     return [
-        Remark("ac-coupled", f"{t.node} was captured a.c.-coupled: its levels are known only as differences")
+        Remark(
+            "ac-coupled",
+            f"{t.node} was captured a.c.-coupled: its levels are known only as differences, and the coupling's droop"
+            " bends its phases: capture it d.c.-coupled if you can",
+        )
         for t in traces
         if t.assignment.coupling == "ac"
     ]

@@ -58,3 +58,20 @@ def _common_jitter(names: tuple[str, ...], covariance: Array, a: Observed, b: Ob
         covariance = covariance.copy()
         covariance[i, j] = covariance[j, i] = common if near else -common
     return covariance
+
+
+# Corner frequency of a scope's a.c. coupling (Hz) and its standard uncertainty: common practice, 2 Hz to 10 Hz.
+_CORNER, _CORNER_U = 5.0, 2.5
+
+
+def without_droop(names: tuple[str, ...], values: Array, covariance: Array) -> tuple[Array, Array]:
+    """Curvatures of an a.c.-coupled node as they are before the coupling, and their covariance.
+
+    A high-pass of corner frequency f adds −2πf·v to dv/dt: every curvature is larger by 2πf, as if by a leak. The
+    corner is known only as scopes usually have it, and that is what the curvatures are uncertain by, all together.
+    """
+    values, covariance = values.copy(), covariance.copy()
+    mine = [i for i, n in enumerate(names) if n.endswith("_curvature")]
+    values[mine] -= 2.0 * np.pi * _CORNER
+    covariance[np.ix_(mine, mine)] += (2.0 * np.pi * _CORNER_U) ** 2
+    return values, covariance

@@ -9,7 +9,7 @@ import numpy as np
 from benchfit.capture.model import Capture
 from benchfit.cycle import conditions
 from benchfit.cycle.constants import Assignment, CycleConstants
-from benchfit.cycle.join import join
+from benchfit.cycle.join import join, without_droop
 from benchfit.cycle.observed import Observed
 from benchfit.cycle.output import observe_output
 from benchfit.cycle.rest import observe_output_rest, observe_rest
@@ -70,6 +70,9 @@ def _result(
     remarks: tuple[Remark, ...],
 ) -> CycleConstants:
     names, values, covariance = join(parts)
+    timing = next((t for t in traces if t.assignment.shape != "square"), None)
+    if timing is not None and timing.assignment.coupling == "ac":
+        values, covariance = without_droop(names, values, covariance)
     period = float(values[names.index("period")]) if "period" in names else 0.0
     return CycleConstants(
         oscillates=period > 0,

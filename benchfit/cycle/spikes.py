@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from benchfit.cycle.arrays import Index
+from benchfit.cycle.arrays import Array, Index
 from benchfit.cycle.corners import Met, fit_corners
 from benchfit.cycle.fold import bins_per_phase, chunks, gather
 from benchfit.cycle.phases import Fitted
@@ -46,7 +46,7 @@ def find_spikes(trace: Trace, fitted: Fitted) -> Index:
         return np.empty(0, dtype=np.int64)
     bins = bins_per_phase(mine.size)
     sigma = _robust_sigma(trace, fitted, mine)
-    suspects = []
+    suspects, heights = [], []
     for part in chunks(np.minimum(layout.length[mine], bins)):
         phases = mine[part]
         b = gather(trace, layout.first[phases], layout.stop[phases], fitted.middle[phases], bins)
@@ -60,10 +60,13 @@ def find_spikes(trace: Trace, fitted: Fitted) -> Index:
             first = round(index[i] - (b.n[i] - 1) / 2.0)
             where = np.arange(first, first + int(b.n[i]))
             curve = fitted.values_at(np.full(where.size, phases[b.cycle[i]]), where.astype(float))[0]
-            suspects.append(where[np.abs(trace.values[where] - curve) > _FAR * sigma])
+            away = np.abs(trace.values[where] - curve) / sigma
+            suspects.append(where[away > _FAR])
+            heights.append(away[away > _FAR])
     if not suspects:
         return np.empty(0, dtype=np.int64)
-    return _isolated(np.unique(np.concatenate(suspects)), fitted)
+    index, first = np.unique(np.concatenate(suspects), return_index=True)
+    return _isolated(index.astype(np.int64), np.concatenate(heights)[first], fitted)
 
 
 def _robust_sigma(trace: Trace, fitted: Fitted, mine: Index) -> float:
@@ -77,7 +80,7 @@ def _robust_sigma(trace: Trace, fitted: Fitted, mine: Index) -> float:
     return max(1.4826 * float(np.median(np.abs(residual))), float(trace.resolution / np.sqrt(12.0)), 1e-300)
 
 
-def _isolated(index: Index, fitted: Fitted) -> Index:
+def _isolated(index: Index, height: Array, fitted: Fitted) -> Index:
     """Those of short runs that are no matter of the turns: rounded corners and ringing come with every one."""
     starts = np.flatnonzero(np.concatenate([[True], np.diff(index) > 1]))
     lengths = np.diff(np.concatenate([starts, [index.size]]))
@@ -86,7 +89,9 @@ def _isolated(index: Index, fitted: Fitted) -> Index:
     phase = np.clip(np.searchsorted(layout.first, index, side="right") - 1, 0, layout.size - 1)
     after, before = index - layout.first[phase], layout.stop[phase] - 1 - index
     near = np.minimum(after, before) < np.maximum(_AWAY, 0.1 * layout.length[phase])
+    # Next to a turn a sample that is off may be no more than a turn that came a little early or late.
     keep = np.ones(starts.size, dtype=bool)
+    keep[run[near & (height < 2.5 * _FAR)]] = False
     for kind in (True, False):
         phases = int(np.sum(layout.rising == kind))
         for side in (after < before, after >= before):
